@@ -1,0 +1,1 @@
+"""Rigs that come with Finback: published profiles and an invented rig with known truth."""

@@ -1,0 +1,24 @@
+"""What solving a fin gives, whichever solver did it."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Solution:
+    """Temperatures and heat flows of a block of fins.
+
+    Shapes: temperatures (n_sets, n_positions) [K] at the positions asked for; base_temperature [K], of the
+    fin's side of a joint; base_heat [W], into the fin; tip_temperature [K]; tip_heat [W], out through the
+    tip face; the last four of shape (n_sets,).
+    """
+
+    temperatures: Array
+    base_temperature: Array
+    base_heat: Array
+    tip_temperature: Array
+    tip_heat: Array
