@@ -1,0 +1,229 @@
+"""The command line: `fit`, `check` and `demo`. The only module that prints.
+
+Results go to standard output; errors and progress to standard error. Nothing heavy is imported at the top, so
+that `finback --help` answers at once. Exit status: 0 done, 1 the computation failed, 2 the input is wrong,
+130 interrupted.
+"""
+
+import os
+import sys
+import warnings
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
+
+import typer
+
+from finback import __version__
+from finback.errors import FinbackError, InputError
+
+if TYPE_CHECKING:
+    from finback.readings import Readings
+    from finback.rig import Rig
+
+INTERRUPTED = 130
+DEMO_FOLDER = Path("finback-demo")
+DEMO_RIG = "bench-pin"
+
+USAGE_ERROR: type[Exception] = typer.BadParameter.__mro__[1]
+"""What typer raises for a command line it cannot read; typer has no public name for it."""
+
+app = typer.Typer(
+    help="Work back from temperatures along a fin to h, k and the joint at its base, with their uncertainty.",
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+)
+
+RigFile = Annotated[Path, typer.Argument(metavar="RIG", help="The rig file, rig.toml.")]
+ReadingsFile = Annotated[Path, typer.Argument(metavar="READINGS", help="The readings, .csv or .xlsx.")]
+Seed = Annotated[int, typer.Option("--seed", metavar="N", min=0, help="Seed of the random draws.")]
+Quiet = Annotated[bool, typer.Option("--quiet", help="Print nothing but errors.")]
+Force = Annotated[bool, typer.Option("--force", help="Overwrite an earlier result in the folder.")]
+
+
+def _show_version(wanted: bool) -> None:
+    if wanted:
+        print(f"finback {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def options(
+    _version: Annotated[
+        bool,
+        typer.Option("--version", callback=_show_version, is_eager=True, help="Show the version and exit."),
+    ] = False,
+) -> None:
+    """Take the options that stand before a command."""
+
+
+@app.command()
+def fit(
+    rig_file: RigFile,
+    readings_file: ReadingsFile,
+    out: Annotated[Path, typer.Option("--out", metavar="DIR", help="The folder to write the result to.")],
+    run: Annotated[
+        str | None, typer.Option("--run", metavar="NAME", help="The run, where there are several.")
+    ] = None,
+    seed: Seed = 1,
+    quiet: Quiet = False,
+    force: Force = False,
+) -> int:
+    """Estimate h, k and the joint of one run and write the report."""
+    from finback import readings as readings_reader
+    from finback import rig as rig_reader
+
+    rig = rig_reader.read(rig_file)
+    readings = readings_reader.read(readings_file, rig).pick(run)
+    return _fit_into(out, rig, readings, seed=seed, quiet=quiet, force=force)
+
+
+@app.command()
+def check(
+    rig_file: RigFile,
+    readings_file: Annotated[
+        Path | None, typer.Argument(metavar="READINGS", help="The readings, .csv or .xlsx.")
+    ] = None,
+) -> None:
+    """Read everything, compute nothing; show what was understood."""
+    from finback import overview
+    from finback import readings as readings_reader
+    from finback import rig as rig_reader
+
+    rig = rig_reader.read(rig_file)
+    table = None if readings_file is None else readings_reader.read(readings_file, rig)
+    print(overview.describe(rig, table))
+
+
+@app.command()
+def demo(
+    folder: Annotated[Path, typer.Argument(metavar="DIR", help="The folder to write to.")] = DEMO_FOLDER,
+    name: Annotated[str, typer.Option("--rig", metavar="NAME", help="Which bundled rig to take.")] = DEMO_RIG,
+    listing: Annotated[bool, typer.Option("--list", help="List the bundled rigs and exit.")] = False,
+    seed: Seed = 1,
+    quiet: Quiet = False,
+    force: Force = False,
+) -> int:
+    """Write a bundled rig to a folder and estimate it there."""
+    from finback import datasets
+
+    if listing:
+        width = max(len(each) for each in datasets.names())
+        for each in datasets.names():
+            print(f"{each:{width}}  {datasets.title(each)}")
+        return 0
+    if name not in datasets.names():
+        known = ", ".join(datasets.names())
+        raise InputError(None, "--rig", f"there is no bundled rig {name!r}", f"choose one of {known}")
+
+    from finback import readings as readings_reader
+    from finback import rig as rig_reader
+    from finback.report import files
+
+    taken = [each for each in datasets.file_names(name) if (folder / each).exists()]
+    if taken and not force:
+        raise InputError(
+            folder,
+            None,
+            f"already holds {' and '.join(taken)}",
+            "choose another folder, or overwrite with --force",
+        )
+    files.prepare(folder, force)
+    datasets.copy(name, folder)
+    rig = rig_reader.read(folder / "rig.toml")
+    readings = readings_reader.read(folder / "readings.csv", rig).pick(None)
+    return _fit_into(folder, rig, readings, seed=seed, quiet=quiet, force=True)
+
+
+def _fit_into(folder: Path, rig: "Rig", readings: "Readings", *, seed: int, quiet: bool, force: bool) -> int:
+    """Fit, write the result to the folder and print the summary; return the exit status."""
+    from finback import analysis
+    from finback.report import files, terminal
+
+    files.prepare(folder, force)
+    with _progress(quiet) as progress:
+        estimate = analysis.fit(rig, readings, seed=seed, progress=progress)
+        if progress is not None:
+            progress("writing the report", 1.0)
+        files.write(estimate, folder, force)
+    if not quiet:
+        print(terminal.summary(estimate, folder))
+    return 1 if estimate.status == "failed" else 0
+
+
+@contextmanager
+def _progress(quiet: bool) -> Iterator[Callable[[str, float], None] | None]:
+    """Yield a callable (stage, fraction) that draws a bar on standard error, or None where nobody watches."""
+    if quiet or not sys.stderr.isatty():
+        yield None
+        return
+    from rich.console import Console
+    from rich.progress import BarColumn, Progress, TaskProgressColumn, TextColumn
+
+    columns = TextColumn("{task.description:<24}", markup=False), BarColumn(), TaskProgressColumn()
+    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
+        task = bar.add_task("reading", total=1.0)
+        yield lambda stage, fraction: bar.update(task, description=stage, completed=fraction)
+
+
+def run(arguments: Sequence[str]) -> int:
+    """Carry out one command line and return its exit status; whatever goes wrong is one sentence on stderr.
+
+    Argument: arguments, without the program's name; none at all asks for help.
+    """
+    command = typer.main.get_command(app)
+    try:
+        status = command.main(list(arguments) or ["--help"], prog_name="finback", standalone_mode=False)
+        sys.stdout.flush()
+    except FinbackError as error:
+        return _complain(str(error), error.exit_status)
+    except (KeyboardInterrupt, typer.Abort):
+        return _complain("interrupted before the result was complete.", INTERRUPTED)
+    except USAGE_ERROR as error:
+        return _complain(_usage_sentence(error), InputError.exit_status)
+    except BrokenPipeError:  # whoever read the output has seen enough
+        _drop_output()
+        return 0
+    except OSError as error:
+        _drop_output()
+        return _complain(f"{error.filename or 'standard output'}: {error.strerror or error}.", 1)
+    except Exception as error:  # noqa: BLE001  # the last net: a user must never meet a traceback
+        return _complain(
+            f"stopped at an unexpected {type(error).__name__} ({_one_line(error)}); this is a defect of "
+            "Finback, please report it with the command and the input files.",
+            1,
+        )
+    return int(status or 0)
+
+
+def main() -> None:
+    """Run the command line of this process and exit with its status."""
+    if not sys.warnoptions:
+        warnings.simplefilter("ignore")  # what an engineer must know is a finding, not a library's warning
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="replace")  # a console without "²" must not end the run
+    sys.exit(run(sys.argv[1:]))
+
+
+def _usage_sentence(error: Any) -> str:
+    message = _one_line(error.format_message()).rstrip(".")
+    context = getattr(error, "ctx", None)
+    path = context.command_path if context else "finback"
+    return f"{message}; see {path} --help."
+
+
+def _drop_output() -> None:
+    """Send what standard output still holds nowhere, or the interpreter complains of it once more at exit."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), 1)
+
+
+def _one_line(text: object) -> str:
+    return " ".join(str(text).split())
+
+
+def _complain(sentence: str, status: int) -> int:
+    print(f"finback: {sentence}", file=sys.stderr)
+    return status
