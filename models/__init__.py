@@ -1,4 +1,4 @@
-"""Forward physics of fins: profiles, ends, surface laws and their solutions. SI units; knows nothing of data."""
+"""Forward physics of fins: profiles, ends, surface laws and their solutions, in SI units. Knows no data."""
 
 from finback.models.ends import (
     AdiabaticTip,

@@ -52,10 +52,9 @@ class Uniform:
     section_perimeter: float
 
     def __post_init__(self) -> None:
-        for name in ("length", "section_area", "section_perimeter"):
-            value = getattr(self, name)
-            if not (np.isfinite(value) and value > 0):
-                raise ValueError(f"{name} must be positive and finite, got {value!r}")
+        _require_positive(
+            length=self.length, section_area=self.section_area, section_perimeter=self.section_perimeter
+        )
 
     @property
     def uniform(self) -> bool:
@@ -78,16 +77,40 @@ class Uniform:
 def pin(length: float, diameter: float) -> Uniform:
     """Return the profile of a cylindrical pin.
 
-    Arguments: length [m], diameter [m]. A = pi d²/4, P = pi d.
+    Arguments: length [m], diameter [m]; both positive. A = pi d²/4, P = pi d.
+    Raises ValueError for a value that is not positive and finite.
+
+    Examples:
+    >>> profile = pin(length=0.12, diameter=0.008)
+    >>> round(profile.section_area / profile.section_perimeter, 6)  # a quarter of the diameter
+    0.002
+
     """
+    _require_positive(length=length, diameter=diameter)
     return Uniform(length, np.pi * diameter**2 / 4, np.pi * diameter)
 
 
 def rectangular(length: float, width: float, thickness: float, guarded_edges: bool = False) -> Uniform:
     """Return the profile of a straight fin or bar of rectangular cross-section.
 
-    Arguments: length [m], width [m], thickness [m]; guarded_edges: the two narrow side faces (thickness by
-    length) lose no heat, so that P = 2 width; otherwise P = 2 (width + thickness).
+    Arguments: length [m], width [m], thickness [m], all positive; guarded_edges: the two narrow side faces
+    (thickness by length) lose no heat, so that P = 2 width; otherwise P = 2 (width + thickness).
+    Raises ValueError for a value that is not positive and finite.
+
+    Examples:
+    >>> round(rectangular(length=0.02, width=0.2, thickness=0.002).section_perimeter, 6)
+    0.404
+    >>> round(rectangular(0.02, 0.2, 0.002, guarded_edges=True).section_perimeter, 6)
+    0.4
+
     """
+    _require_positive(length=length, width=width, thickness=thickness)
     perimeter = 2 * width if guarded_edges else 2 * (width + thickness)
     return Uniform(length, width * thickness, perimeter)
+
+
+def _require_positive(**lengths: float) -> None:
+    """Refuse a length or an area that is not positive and finite, by the name its giver knows it by."""
+    for name, value in lengths.items():
+        if not (np.isfinite(value) and value > 0):
+            raise ValueError(f"{name} must be positive and finite, got {value!r}")

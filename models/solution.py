@@ -13,8 +13,9 @@ class Solution:
     """Temperatures and heat flows of a block of fins.
 
     Shapes: temperatures (n_sets, n_positions) [K] at the positions asked for; base_temperature [K], of the
-    fin's side of a joint; base_heat [W], into the fin; tip_temperature [K]; tip_heat [W], out through the
-    tip face; the last four of shape (n_sets,).
+    fin's side of a joint; base_heat [W], into the fin; tip_temperature [K], at x = length; tip_heat [W],
+    out through the tip face, or through the section at x = length of a fin that goes on; the last four of
+    shape (n_sets,).
     """
 
     temperatures: Array

@@ -17,6 +17,15 @@ def transverse_biot(coefficient: Values, area: float, perimeter: float, conducti
 
     Arguments: coefficient h [W/(m² K)]; area A [m²]; perimeter P [m]; conductivity k [W/(m K)]. For a pin
     A/P = d/4, for a wide plate fin half its thickness.
+
+    Examples:
+    A pin of 10 mm with h = 5000 W/(m² K) (Sachdeva, Fundamentals of Engineering Heat and Mass Transfer,
+    Example 3.34) is no one-dimensional fin:
+
+    >>> biot = transverse_biot(5000.0, area=np.pi * 0.01**2 / 4, perimeter=np.pi * 0.01, conductivity=16.0)
+    >>> round(biot, 2), is_one_dimensional(biot)
+    (0.78, False)
+
     """
     return coefficient * (area / perimeter) / conductivity
 
