@@ -1,0 +1,167 @@
+"""Candidates: the physical models that a run is compared with, and what the readings say of each.
+
+A rig that states its tip asks for that tip alone; one that leaves it out asks which of the three that a
+finite fin can have the readings support (infinite is only taken when stated: on a long fin it is the
+limit of the others, on a short one it is nothing that can be built). With a sensor on the plate each comes
+with and without a joint. All candidates have the same probability before the readings.
+"""
+
+import math
+import zlib
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import diagnostics, evidence, laplace, optimum, sampling
+from finback import proposal as proposals
+from finback.estimate import CandidateScore
+from finback.evidence import Evidence
+from finback.laplace import Mode
+from finback.optimum import LeastSquares
+from finback.posing import is_read, pose
+from finback.problem import Candidate, Problem
+from finback.readings import Readings
+from finback.rig import Rig, TipName
+from finback.sampling import Settings
+
+Array = NDArray[np.float64]
+Progress = Callable[[str, float], None]
+
+COMPARED_TIPS: tuple[TipName, ...] = ("adiabatic", "convective", "fixed")
+WORTH_SAMPLING = 8.0  # nats below the best: a candidate further down has a probability below 0.0003
+KEPT_DRAWS = 2500  # an ensemble
+LOO_DRAWS = 500  # an ensemble
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """What one candidate made of the readings.
+
+    `problem` with its noise linearised; `point`, its least-squares fit; `mode`; `draws` (chains, n, p);
+    `evidence`; how the draws were made: `ess_min`, `rhat_max`, `converged` (None, None, True where the
+    candidate was so improbable that its draws are weighted ones).
+    """
+
+    problem: Problem
+    point: LeastSquares
+    mode: Mode
+    draws: Array
+    evidence: Evidence
+    ess_min: float | None
+    rhat_max: float | None
+    converged: bool
+    n_draws: int
+
+    @property
+    def sampled(self) -> bool:
+        """Whether the draws come from MCMC."""
+        return self.ess_min is not None
+
+
+def enumerate_candidates(rig: Rig, readings: Readings | None = None) -> tuple[Candidate, ...]:
+    """Return the candidates that a fit compares, for one run or for any run that reads every sensor."""
+    tips = COMPARED_TIPS if rig.tip is None else (rig.tip,)
+    reads_plate = any(
+        s.place == "plate" and (readings is None or is_read(s, readings)) for s in rig.sensors.values()
+    )
+    joints = (True, False) if reads_plate else (False,)
+    return tuple(Candidate(tip, joint, reads_plate) for tip in tips for joint in joints)
+
+
+def compare(
+    rig: Rig, readings: Readings, seed: int, progress: Progress, settings: Settings | None = None
+) -> list[Outcome]:
+    """Fit every candidate to one run and return the outcomes, most probable first.
+
+    Arguments: rig; readings; seed; progress, called with a stage and the fraction done; settings of the
+    sampler. The random streams belong to seed, run and candidate, whatever else is computed.
+    """
+    settings = settings or Settings()
+    run = zlib.crc32(readings.run.encode())
+    chosen = enumerate_candidates(rig, readings)
+    prepared = []
+    for number, candidate in enumerate(chosen):
+        progress("comparing candidates", 0.1 * number / len(chosen))
+        seeds = np.random.SeedSequence([seed, run, zlib.crc32(candidate.name.encode())]).spawn(3)
+        point = optimum.fit(pose(rig, readings, candidate))
+        mode = _find_mode(point)
+        quick = evidence.importance(point.problem.log_density, proposals.from_mode(mode), seeds[0])
+        prepared.append((point, mode, quick, seeds))
+    best = max(quick.evidence.log for _, _, quick, _ in prepared)
+    worth = [quick.evidence.log > best - WORTH_SAMPLING for _, _, quick, _ in prepared]
+    outcomes = []
+    for (point, mode, quick, seeds), sampled in zip(prepared, worth, strict=True):
+        if not sampled:
+            problem = point.problem
+            outcomes.append(Outcome(problem, point, mode, quick.draws[None], quick.evidence, None, None, True, len(quick.draws)))
+            continue
+        done = sum(o.sampled for o in outcomes)
+
+        def report(fraction: float, done: int = done) -> None:
+            progress("sampling", 0.1 + 0.8 * (done + fraction) / sum(worth))
+
+        outcomes.append(_sample(point, mode, seeds, settings, report))
+    return sorted(outcomes, key=lambda o: -o.evidence.log)
+
+
+def _find_mode(point: LeastSquares) -> Mode:
+    """Find the posterior's mode from the least-squares optimum; the scale is guessed from its information."""
+    problem, n = point.problem, point.problem.n_physical
+    stated = np.where(problem.is_stated[:n], 0.0, 1.0)  # stated priors are among the residuals already
+    precision = point.point.jacobian.T @ point.point.jacobian + np.diag(stated / problem.prior_sd[:n] ** 2)
+    root = np.zeros((len(point.z), len(point.z)))
+    root[:n, :n] = np.linalg.cholesky(np.linalg.inv(precision))
+    if problem.noise.estimated:
+        root[n, n] = math.sqrt(0.5 / max(point.degrees_of_freedom, 1))
+    start = np.clip(point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd)
+    return laplace.find_mode(problem.log_density, start, root)
+
+
+def _sample(
+    point: LeastSquares,
+    mode: Mode,
+    seeds: Sequence[np.random.SeedSequence],
+    settings: Settings,
+    progress: Callable[[float], None],
+) -> Outcome:
+    problem = point.problem
+    chain = sampling.sample(problem.log_density, mode, seeds[1], settings, progress)
+    found = evidence.bridge(problem.log_density, chain, seeds[2])
+    ensembles, steps, walkers, p = chain.z.shape
+    flat = chain.z.reshape(ensembles, steps * walkers, p)
+    kept = flat[:, np.linspace(0, steps * walkers - 1, KEPT_DRAWS).astype(int)]
+    return Outcome(problem, point, mode, kept, found, chain.ess_min, chain.rhat_max, chain.converged, chain.n_draws)
+
+
+def probabilities(outcomes: Sequence[Outcome]) -> Array:
+    """Return the posterior probability of each outcome's candidate, equal before the readings."""
+    logs = np.array([o.evidence.log for o in outcomes])
+    weights = np.exp(logs - logs.max())
+    return weights / weights.sum()
+
+
+def score(outcome: Outcome, probability: float) -> CandidateScore:
+    """Return the scores of one candidate; AICc is None with too few readings for it."""
+    problem, point = outcome.problem, outcome.point
+    n = len(problem.measured.values)
+    free = int((~problem.is_stated).sum())
+    z = point.z.copy()
+    if problem.noise.estimated:  # the likelihood is greatest at the biased estimate of the noise
+        z[-1] += 0.5 * math.log(max(point.degrees_of_freedom, 1) / n)
+    deviance = -2 * float(problem.log_likelihood(z[None])[0])
+    spare = n - free - 1
+    stride = max(1, outcome.draws.shape[1] // LOO_DRAWS)
+    thinned = outcome.draws[:, ::stride]
+    pointwise = problem.pointwise(thinned.reshape(-1, thinned.shape[-1])).reshape(*thinned.shape[:2], n)
+    loo, _ = diagnostics.loo(pointwise)
+    return CandidateScore(
+        name=problem.candidate.name,
+        probability=probability,
+        log_evidence=outcome.evidence.log,
+        log_evidence_error=outcome.evidence.error,
+        loo=loo,
+        aicc=deviance + 2 * free + 2 * free * (free + 1) / spare if spare > 0 else None,
+        bic=deviance + free * math.log(n),
+    )

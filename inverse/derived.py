@@ -1,0 +1,77 @@
+"""What follows from a problem's parameters: the quantities that are reported beside them."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback.models import effectiveness, efficiency, transverse_biot
+from finback.parameters import ZERO_CELSIUS
+from finback.problem import Problem
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Meaning:
+    """What a derived quantity is called, and the unit it is reported in."""
+
+    label: str
+    unit: str
+
+
+DERIVED: Mapping[str, Meaning] = {
+    "h_over_k": Meaning("ratio h/k", "1/m"),
+    "m": Meaning("fin parameter m", "1/m"),
+    "joint_times_k": Meaning("product R''·k", "m"),
+    "base_temperature": Meaning("base temperature", "degC"),
+    "heat": Meaning("heat into the fin", "W"),
+    "base_heat_flux": Meaning("heat flux at the base", "W/m^2"),
+    "efficiency": Meaning("fin efficiency", "1"),
+    "effectiveness": Meaning("fin effectiveness", "1"),
+    "transverse_biot": Meaning("transverse Biot number", "1"),
+}
+
+
+def evaluate(problem: Problem, z: Array) -> dict[str, Array]:
+    """Return every parameter and derived quantity of a block z (n_sets, p), SI units, each of shape (n_sets,).
+
+    A candidate without a joint has none, and no product with k.
+    """
+    values = problem.values(z)
+    fin, base, air = problem.build(values)
+    solution = problem.solve(values, np.zeros(0))
+    area = float(fin.profile.area(np.zeros(1))[0])
+    perimeter = float(fin.profile.perimeter(np.zeros(1))[0])
+    h, k = np.asarray(values["h"]), np.asarray(values["k"])
+    found = {name: np.broadcast_to(np.asarray(value, dtype=np.float64), len(z)) for name, value in values.items()}
+    found |= {
+        "h_over_k": h / k,
+        "m": np.sqrt(h / k * (perimeter / area)),
+        "base_temperature": solution.base_temperature,
+        "heat": solution.base_heat,
+        "base_heat_flux": solution.base_heat / area,
+        "efficiency": efficiency(fin, solution, air),
+        "effectiveness": effectiveness(fin, solution, air),
+        "transverse_biot": np.asarray(transverse_biot(h, area, perimeter, k)),
+    }
+    if "joint" in values:
+        found["joint_times_k"] = np.asarray(values["joint"]) * k
+    return found
+
+
+def gradients(problem: Problem, z: Array) -> dict[str, Array]:
+    """Return d quantity/d z of the physical parameters at z (p,), by name, each of shape (n_physical,)."""
+    n = problem.n_physical
+    step = 1e-5
+    offsets = np.zeros((2 * n, len(z)))
+    offsets[:n, :n] = step * np.eye(n)
+    offsets[n:, :n] = -step * np.eye(n)
+    found = evaluate(problem, z + offsets)
+    return {name: (values[:n] - values[n:]) / (2 * step) for name, values in found.items()}
+
+
+def reported(name: str, values: Array) -> Array:
+    """Return SI values of a derived quantity in its reported unit: temperatures in degC."""
+    return values - ZERO_CELSIUS if DERIVED[name].unit == "degC" else values

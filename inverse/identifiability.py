@@ -1,0 +1,70 @@
+"""What the readings determine, what is taken from a statement, and what nothing determines.
+
+All in the coordinates of a problem and linear at one point. The wide default priors set the yardstick: a
+combination counts as determined when readings and stated values shrink its variance to a small part of what
+the default priors alone leave. No tolerance on a rank is needed, and weakly determined is a number, not a
+switch.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import least_squares
+from finback.estimate import DeterminedBy
+from finback.problem import Problem
+
+Array = NDArray[np.float64]
+
+DETERMINED = 0.2  # of the default prior's variance: below it the prior adds at most a fifth of the information
+ALONE = 1.25  # a source decides alone when leaving out the other costs at most this factor in variance
+
+
+@dataclass(frozen=True, slots=True)
+class Information:
+    """Information on the physical parameters at one point.
+
+    `readings` (p, p): J'J of the whitened readings; `stated` (p,): precisions of stated priors; `default`
+    (p,): precisions of the wide priors, for every parameter.
+    """
+
+    readings: Array
+    stated: Array
+    default: Array
+
+    def variance(self, gradient: Array, readings: bool = True, stated: bool = True) -> float:
+        """Return the variance of the combination gradient (p,) from the chosen sources and the wide priors."""
+        precision = np.diag(self.default + stated * self.stated) + readings * self.readings
+        return float(gradient @ np.linalg.solve(precision, gradient))
+
+    def determines(self, gradient: Array) -> bool:
+        """Tell whether readings and stated values determine the combination."""
+        return self.variance(gradient) <= DETERMINED * self.variance(gradient, readings=False, stated=False)
+
+    def source(self, gradient: Array) -> DeterminedBy:
+        """Tell what determines the combination."""
+        both = self.variance(gradient)
+        if self.variance(gradient, stated=False) <= ALONE * both and self.determines(gradient):
+            return "readings"
+        if self.variance(gradient, readings=False) <= ALONE * both:
+            return "prior"
+        return "both"
+
+
+def information(problem: Problem, z: Array, sigma: float) -> Information:
+    """Return the information at a parameter vector z (p,) with the noise at sigma [K]."""
+    n = problem.n_physical
+    rest = z[n:]
+
+    def residuals(block: Array) -> Array:
+        whole = np.concatenate([block, np.tile(rest, (len(block), 1))], axis=1)
+        return problem.whitened(whole, sigma)[0]
+
+    slopes = least_squares.jacobian(residuals, z[:n])
+    physical = problem.parameters[:n]
+    return Information(
+        readings=slopes.T @ slopes,
+        stated=np.array([p.prior.sd**-2 if p.stated else 0.0 for p in physical]),
+        default=np.array([p.default_prior.sd**-2 for p in physical]),
+    )

@@ -1,0 +1,143 @@
+"""Where a problem's parameter vector is best: by least squares on the readings, and at the posterior's mode.
+
+The least-squares fit uses the readings and what the rig states of k (as one more reading of it), no wide
+prior. Where the noise is estimated it is the value at which chi-square equals the degrees of freedom.
+"""
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import least_squares, posing
+from finback.least_squares import PointEstimate
+from finback.noise import REFERENCE_SIGMA
+from finback.parameters import UNMEASURED_AIR
+from finback.problem import Problem
+
+Array = NDArray[np.float64]
+
+SMALLEST_SIGMA, LARGEST_SIGMA = 1e-9, 1e6  # K; readings that a model meets exactly leave no noise to estimate
+NOISE_ROUNDS = 20
+LINEARISING_ROUNDS = 3
+
+
+@dataclass(frozen=True, slots=True)
+class LeastSquares:
+    """Least-squares optimum of a problem.
+
+    `problem`: with its noise linearised at the optimum. `z` (p,): the parameter vector, noise included.
+    `point`: the estimate of the physical parameters, residuals whitened with the noise at `sigma` [K].
+    `chi_square` and `degrees_of_freedom` count the readings, without heaters and stated values.
+    """
+
+    problem: Problem
+    z: Array
+    point: PointEstimate
+    sigma: float
+    chi_square: float
+    degrees_of_freedom: int
+
+
+def fit(problem: Problem) -> LeastSquares:
+    """Fit a problem by least squares, from a start of its own."""
+    z = starting_point(problem)
+    found = _fit_given_noise_model(problem, z)
+    if posing.needs_linearising(problem):
+        for _ in range(LINEARISING_ROUNDS):
+            before = found.z
+            found = _fit_given_noise_model(posing.linearise(problem, before), before)
+            if np.allclose(found.z, before, rtol=1e-7, atol=1e-7):
+                break
+    return found
+
+
+def starting_point(problem: Problem) -> Array:
+    """Return a parameter vector near the optimum (p,): the best of a grid in h and joint, levels adjusted."""
+    measured, names = problem.measured, problem.names
+    fin = measured.values[: len(measured.positions)]
+    first = problem.prior_mean.copy()
+    level: dict[str, float] = {"air": UNMEASURED_AIR.mean, "base_temperature": fin[0], "tip_temperature": fin[-1]}
+    level.update(problem.fixed)
+    level.update({s.place: v for s, v in zip(measured.sensors, measured.values, strict=True)})
+    air = level["air"]
+    for i, name in enumerate(names):
+        first[i] = level.get(name, first[i])
+    h_grid = np.linspace(math.log(0.3), math.log(3e4), 47)
+    joint_grid = np.log([3e-6, 3e-5, 3e-4, 3e-3]) if "joint" in names else np.zeros(1)
+    block = np.tile(first, (len(h_grid) * len(joint_grid), 1))
+    block[:, names.index("h")] = np.repeat(h_grid, len(joint_grid))
+    if "joint" in names:
+        block[:, names.index("joint")] = np.tile(joint_grid, len(h_grid))
+    if "base_temperature" in names:
+        column = names.index("base_temperature")
+        shape = problem.predict(block)[:, : len(fin)] - air
+        scale = (shape @ (fin - air)) / np.maximum(np.einsum("ij,ij->i", shape, shape), 1e-12)
+        block[:, column] = air + np.clip(scale, 0.1, 1e3) * (block[:, column] - air)
+    whitened, _ = problem.whitened(block, REFERENCE_SIGMA)
+    cost = np.einsum("ij,ij->i", whitened, whitened)
+    return np.asarray(block[int(np.nanargmin(cost))])
+
+
+def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
+    physical, n = problem.n_physical, len(problem.measured.values)
+    sigma = REFERENCE_SIGMA
+    point = least_squares.fit(_residuals(problem, sigma), start[:physical])
+    freedom = n + int(problem.is_stated[:physical].sum()) - point.rank
+    for _ in range(NOISE_ROUNDS if problem.noise.estimated else 0):
+        before = sigma
+        sigma = _matching_sigma(problem, point.residuals, before, freedom)
+        if abs(sigma - before) <= 1e-10 * before:
+            break
+        if _scales_with_sigma(problem):
+            point = point.rescaled(before / sigma)
+        else:
+            point = least_squares.fit(_residuals(problem, sigma), point.values)
+    z = np.concatenate([point.values, [math.log(sigma)] * (len(problem.parameters) - physical)])
+    is_reading = np.ones(len(point.residuals), dtype=bool)
+    is_reading[n : n + len(problem.measured.bounds)] = False
+    chi_square = float(np.square(point.residuals[is_reading]).sum())
+    return LeastSquares(problem, z, point, sigma, chi_square, freedom)
+
+
+def _residuals(problem: Problem, sigma: float) -> least_squares.Residuals:
+    """Return the residuals of the physical parameters at one sigma: readings, heaters, what the rig states."""
+    physical = problem.n_physical
+    noise_columns = ((0, 0), (0, len(problem.parameters) - physical))
+    chosen = np.flatnonzero(problem.is_stated[:physical])
+    mean, sd = problem.prior_mean[chosen], problem.prior_sd[chosen]
+
+    def residuals(block: Array) -> Array:
+        whitened, _ = problem.whitened(np.pad(block, noise_columns), sigma)
+        if not len(chosen):
+            return whitened
+        return np.concatenate([whitened, (block[:, chosen] - mean) / sd], axis=1)
+
+    return residuals
+
+
+def _scales_with_sigma(problem: Problem) -> bool:
+    """Tell whether sigma scales every residual alike, so that the optimum does not depend on it."""
+    slope = problem.noise.slope
+    alike = not problem.noise.floor.any() and bool(np.ptp(slope) <= 1e-12 * slope.max())
+    return alike and not problem.is_stated.any() and not problem.measured.bounds
+
+
+def _matching_sigma(problem: Problem, residuals: Array, sigma: float, freedom: int) -> float:
+    """Return the sigma [K] at which chi-square equals the degrees of freedom; the smallest where it never does."""
+    from scipy.optimize import brentq
+
+    n = len(problem.measured.values)
+    squares = np.square(residuals[:n]) * problem.noise.variances(sigma)
+    rest = float(np.square(residuals[n + len(problem.measured.bounds) :]).sum())
+
+    def excess(log_sigma: float) -> float:
+        return float((squares / problem.noise.variances(math.exp(log_sigma))).sum()) + rest - max(freedom, 1)
+
+    low, high = math.log(SMALLEST_SIGMA), math.log(LARGEST_SIGMA)
+    if excess(low) <= 0:
+        return SMALLEST_SIGMA
+    if excess(high) >= 0:
+        return LARGEST_SIGMA
+    return math.exp(brentq(excess, low, high, xtol=1e-13))

@@ -1,0 +1,164 @@
+"""Posing a problem: which parameters a candidate has on a run, and what the noise of its readings is."""
+
+from collections.abc import Mapping
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import noise as noises
+from finback.parameters import UNMEASURED_AIR, Parameter, default, stated
+from finback.problem import Candidate, Measured, Problem
+from finback.quantity import Quantity
+from finback.readings import Readings
+from finback.rig import Rig, Sensor
+
+Array = NDArray[np.float64]
+
+SMALLEST_NOISE = 1e-6  # K or W; keeps two sensors that share all their error from being told apart exactly
+LENGTH_STEP = 1e-4  # relative step of a length in the sensitivities
+
+
+def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
+    """Return the problem of one candidate on one run.
+
+    Hole positions and geometry enter the noise through the slopes at the optimum; `linearise` adds them.
+    """
+    measured, exact = _measure(rig, readings)
+    parameters, fixed = _unknowns(rig, candidate, measured, exact)
+    covariance, estimated = _stated_covariance(measured)
+    if estimated.any():
+        parameters.append(default("noise"))
+    return Problem(
+        rig=rig,
+        readings=readings,
+        candidate=candidate,
+        parameters=tuple(parameters),
+        fixed=fixed,
+        measured=measured,
+        noise=noises.build(covariance, estimated),
+    )
+
+
+def is_read(sensor: Sensor, readings: Readings) -> bool:
+    """Tell whether a sensor has a reading that counts in this run."""
+    return sensor.name in readings.values and sensor.name not in readings.excluded
+
+
+def needs_linearising(problem: Problem) -> bool:
+    """Tell whether positions or geometry are uncertain, so that the noise depends on the optimum."""
+    positions = any(s.position_sd > 0 for s in problem.measured.sensors)
+    return positions or any(q.sd > 0 for q in problem.rig.geometry.values())
+
+
+def linearise(problem: Problem, z: Array) -> Problem:
+    """Return the problem with the noise of hole positions and geometry added, at the parameter vector z (p,)."""
+    covariance, estimated = _stated_covariance(problem.measured)
+    n = len(estimated)
+    for name, sd in _uncertain_lengths(problem.rig):
+        slope = _length_sensitivity(problem, z, name)[:n] * sd
+        covariance = covariance + np.outer(slope, slope)
+    spread = np.zeros(n)
+    slopes = _temperature_slopes(problem, z)
+    for i, sensor in enumerate(problem.measured.sensors):
+        if sensor.place == "fin":
+            spread[i] = (slopes[i] * sensor.position_sd) ** 2
+    return replace(problem, noise=noises.build(covariance + np.diag(spread), estimated))
+
+
+def _measure(rig: Rig, readings: Readings) -> tuple[Measured, dict[str, float]]:
+    """Sort the sensors that were read: those with noise, those exactly known, the heaters."""
+    sensors: list[Sensor] = []
+    bounds: list[Sensor] = []
+    exact: dict[str, float] = {}
+    for place in ("fin", "plate", "air", "heat", "heater"):
+        for sensor in rig.sensors.values():
+            if sensor.place != place or not is_read(sensor, readings):
+                continue
+            if place == "heater":
+                bounds.append(sensor)
+            elif place in ("plate", "air") and sensor.noise == 0 and sensor.calibration == 0:
+                exact[place] = readings.values[sensor.name]
+            else:
+                sensors.append(sensor)
+    values = np.array([readings.values[s.name] for s in sensors])
+    bound_values = np.array([readings.values[s.name] for s in bounds])
+    bound_sds = np.array(
+        [np.hypot(*_random_and_shared(s, v)) for s, v in zip(bounds, bound_values, strict=True)], dtype=np.float64
+    )
+    # a place that is exactly known needs no further reading
+    kept = [i for i, s in enumerate(sensors) if s.place not in exact]
+    return Measured(tuple(sensors[i] for i in kept), values[kept], tuple(bounds), bound_values, bound_sds), exact
+
+
+def _random_and_shared(sensor: Sensor, value: float) -> tuple[float, float]:
+    """Return random and common standard uncertainty of one reading [K or W]; nan random when estimated."""
+    random = max(sensor.noise, SMALLEST_NOISE) if sensor.noise is not None else np.nan
+    if sensor.noise_relative is not None:
+        random = sensor.noise_relative * abs(value)
+    shared = sensor.calibration
+    if sensor.calibration_relative is not None:
+        shared = sensor.calibration_relative * abs(value)
+    return random, shared
+
+
+def _stated_covariance(measured: Measured) -> tuple[Array, NDArray[np.bool_]]:
+    """Return the stated part of the covariance (n, n) and which readings have an estimated noise (n,)."""
+    parts = [_random_and_shared(s, v) for s, v in zip(measured.sensors, measured.values, strict=True)]
+    random = np.array([p[0] for p in parts])
+    shared = np.array([p[1] for p in parts])
+    places = np.array([s.place for s in measured.sensors])
+    estimated = np.isnan(random)
+    same_place = places[:, None] == places[None, :]
+    covariance = np.where(same_place, np.outer(shared, shared), 0.0)
+    return covariance + np.diag(np.where(estimated, 0.0, random**2)), estimated
+
+
+def _unknowns(
+    rig: Rig, candidate: Candidate, measured: Measured, exact: Mapping[str, float]
+) -> tuple[list[Parameter], dict[str, float]]:
+    """Return the physical parameters of a candidate and what is exactly known."""
+    unknown: list[Parameter] = [default("h")]
+    fixed: dict[str, float] = dict(exact)
+
+    def add(name: str, quantity: Quantity | None) -> None:
+        if quantity is None:
+            unknown.append(default(name))
+        elif quantity.sd == 0:
+            fixed[name] = quantity.value
+        else:
+            unknown.append(stated(name, quantity))
+
+    read = {s.place for s in measured.sensors}
+    add("k", rig.conductivity)
+    if candidate.joint:
+        unknown.append(default("joint"))
+    if "plate" not in exact:
+        unknown.append(default("plate" if "plate" in read else "base_temperature"))
+    if "air" not in exact:
+        unknown.append(default("air") if "air" in read else Parameter("air", UNMEASURED_AIR))
+    if candidate.tip == "fixed":
+        add("tip_temperature", rig.tip_temperature)
+    return unknown, fixed
+
+
+def _uncertain_lengths(rig: Rig) -> list[tuple[str, float]]:
+    return [(name, quantity.sd) for name, quantity in rig.geometry.items() if quantity.sd > 0]
+
+
+def _length_sensitivity(problem: Problem, z: Array, name: str) -> Array:
+    """Return d prediction/d length [K/m, W/m] of every reading, by a central difference."""
+    length = problem.rig.geometry[name].value
+    step = LENGTH_STEP * length
+    up, down = (problem.predict(z[None], {name: length + sign * step})[0] for sign in (1, -1))
+    return (up - down) / (2 * step)
+
+
+def _temperature_slopes(problem: Problem, z: Array) -> Array:
+    """Return dT/dx [K/m] at the fin sensors, by a difference that stays inside the fin."""
+    x = problem.measured.positions
+    length = problem.rig.geometry["length"].value
+    step = LENGTH_STEP * length
+    low, high = np.maximum(x - step, 0.0), np.minimum(x + step, length)
+    found = problem.solve(problem.values(z[None]), np.concatenate([low, high])).temperatures[0]
+    return (found[len(x) :] - found[: len(x)]) / (high - low)

@@ -1,0 +1,211 @@
+"""A problem: rig + readings + parameters + noise for one candidate. The seam where physics meets data.
+
+Least squares, the sampler and the evidence all go through `Problem.whitened`, so they cannot disagree about
+the noise. Everything takes a block of parameter vectors, (n_sets, n_parameters).
+"""
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback.models import Base, Fin, Solution, solve
+from finback.noise import Noise
+from finback.parameters import LARGEST_LOG, Parameter
+from finback.readings import Readings
+from finback.rig import Rig, Sensor, TipName
+
+Array = NDArray[np.float64]
+Values = Mapping[str, float | Array]
+
+LOG_TWO_PI = math.log(2 * math.pi)
+
+
+@dataclass(frozen=True, slots=True)
+class Candidate:
+    """One hypothesis of the physics: the tip, and whether there is a joint at the base.
+
+    `joint_possible`: whether the rig reads a plate, so that a joint could be seen at all.
+    """
+
+    tip: TipName
+    joint: bool
+    joint_possible: bool
+
+    @property
+    def name(self) -> str:
+        """Name in results, such as "convective tip, joint"."""
+        if not self.joint_possible:
+            return f"{self.tip} tip"
+        return f"{self.tip} tip, {'joint' if self.joint else 'no joint'}"
+
+
+@dataclass(frozen=True)
+class Measured:
+    """What the likelihood compares predictions with.
+
+    `sensors`: those with Gaussian noise, fin sensors first, then plate, air, heat; `values` (n,) [K, W] in
+    that order. `bounds`: heaters, whose power only limits the heat from above; `bound_values`, `bound_sds` [W].
+    """
+
+    sensors: tuple[Sensor, ...]
+    values: Array
+    bounds: tuple[Sensor, ...]
+    bound_values: Array
+    bound_sds: Array
+
+    @cached_property
+    def positions(self) -> Array:
+        """Positions of the fin sensors [m], shape (n_fin,)."""
+        return np.array([s.position for s in self.sensors if s.place == "fin"], dtype=np.float64)
+
+
+@dataclass(frozen=True)
+class Problem:
+    """One candidate posed on one run.
+
+    `parameters`: the unknowns in the order of a parameter vector, the noise last where it is estimated.
+    `fixed`: what is exactly known, by name, in SI units.
+    """
+
+    rig: Rig
+    readings: Readings
+    candidate: Candidate
+    parameters: tuple[Parameter, ...]
+    fixed: Mapping[str, float]
+    measured: Measured
+    noise: Noise
+
+    @cached_property
+    def names(self) -> tuple[str, ...]:
+        """Names of the parameters, in order."""
+        return tuple(p.name for p in self.parameters)
+
+    @cached_property
+    def prior_mean(self) -> Array:
+        """Means of the coordinates before the readings, shape (p,)."""
+        return np.array([p.prior.mean for p in self.parameters])
+
+    @cached_property
+    def prior_sd(self) -> Array:
+        """Standard deviations of the coordinates before the readings, shape (p,)."""
+        return np.array([p.prior.sd for p in self.parameters])
+
+    @cached_property
+    def is_stated(self) -> NDArray[np.bool_]:
+        """Which priors the rig states, shape (p,)."""
+        return np.array([p.stated for p in self.parameters])
+
+    @cached_property
+    def n_physical(self) -> int:
+        """Number of parameters that are not the noise."""
+        return len(self.parameters) - self.noise.estimated
+
+    @cached_property
+    def _logs(self) -> NDArray[np.bool_]:
+        return np.array([p.transform == "log" for p in self.parameters])
+
+    @cached_property
+    def _constant(self) -> float:
+        return -0.5 * (self.noise.log_det + len(self.measured.values) * LOG_TWO_PI)
+
+    @cached_property
+    def _prior_constant(self) -> float:
+        return -float(np.log(self.prior_sd).sum() + 0.5 * LOG_TWO_PI * len(self.parameters))
+
+    def values(self, z: Array) -> dict[str, float | Array]:
+        """Return the values by name, SI units, of a block z (n_sets, p); each of shape (n_sets,) or exact."""
+        found: dict[str, float | Array] = dict(self.fixed)
+        natural = np.where(self._logs, np.exp(np.clip(z, -LARGEST_LOG, LARGEST_LOG)), z)
+        found.update(zip(self.names, natural.T, strict=True))
+        return found
+
+    def build(self, values: Values, changes: Mapping[str, float] | None = None) -> tuple[Fin, Base, float | Array]:
+        """Return fin, base and air temperature for values by name; `changes` replaces lengths of the rig [m]."""
+        return self.rig.build(values, self.candidate.tip, changes)
+
+    def solve(self, values: Values, x: Array, changes: Mapping[str, float] | None = None) -> Solution:
+        """Solve the fin for values by name at positions x [m]."""
+        fin, base, air = self.build(values, changes)
+        return solve(fin, base, air, x)
+
+    def predict(self, z: Array, changes: Mapping[str, float] | None = None) -> Array:
+        """Predict all readings: block z (n_sets, p) -> (n_sets, n + n_bounds) [K, W], heaters last."""
+        return self.predict_values(self.values(z), len(z), changes)
+
+    def predict_values(self, values: Values, n_sets: int, changes: Mapping[str, float] | None = None) -> Array:
+        """Predict all readings from values by name; see `predict`."""
+        measured = self.measured
+        n_fin = len(measured.positions)
+        solution = self.solve(values, measured.positions, changes)
+        found = np.empty((n_sets, len(measured.sensors) + len(measured.bounds)))
+        found[:, :n_fin] = solution.temperatures
+        for column, sensor in enumerate(measured.sensors[n_fin:] + measured.bounds, start=n_fin):
+            if sensor.place in ("heat", "heater"):
+                found[:, column] = solution.base_heat
+            else:
+                found[:, column] = values[sensor.place]
+        return found
+
+    def whitened(self, z: Array, sigma: float | None = None) -> tuple[Array, Array | float]:
+        """Return whitened residuals (n_sets, n + n_bounds) and the sum of log variances (n_sets,).
+
+        Each Gaussian residual has unit variance under the noise; one for a heater is sqrt(-2 ln Phi(y)), with
+        y the margin of its power over the predicted heat in standard deviations, so that half the sum of
+        squares is the negative log likelihood up to constants. `sigma` [K] overrides the noise parameter.
+        """
+        values = self.values(z)
+        predicted = self.predict_values(values, len(z))
+        n = len(self.measured.values)
+        if not self.noise.estimated:
+            variances: Array = self.noise.floor
+        elif sigma is None:
+            noise_values = values["noise"]
+            assert isinstance(noise_values, np.ndarray)
+            variances = self.noise.variances(noise_values[:, None])
+        else:
+            variances = self.noise.variances(sigma)
+        whitened = ((self.measured.values - predicted[:, :n]) @ self.noise.basis) / np.sqrt(variances)
+        log_variances = np.log(variances).sum(axis=-1) if self.noise.estimated else 0.0
+        if self.measured.bounds:
+            from scipy.special import log_ndtr
+
+            margin = (self.measured.bound_values - predicted[:, n:]) / self.measured.bound_sds
+            whitened = np.concatenate([whitened, np.sqrt(-2 * log_ndtr(margin))], axis=1)
+        return whitened, log_variances
+
+    def log_likelihood(self, z: Array) -> Array:
+        """Return ln p(readings | z) of a block (n_sets, p) -> (n_sets,)."""
+        whitened, log_variances = self.whitened(z)
+        return self._constant - 0.5 * (np.einsum("ij,ij->i", whitened, whitened) + log_variances)
+
+    def log_prior(self, z: Array) -> Array:
+        """Return ln p(z) of a block (n_sets, p) -> (n_sets,)."""
+        scaled = (z - self.prior_mean) / self.prior_sd
+        return self._prior_constant - 0.5 * np.einsum("ij,ij->i", scaled, scaled)
+
+    def log_density(self, z: Array) -> Array:
+        """Return ln p(readings, z) of a block (n_sets, p) -> (n_sets,); -inf where it is not a number."""
+        found = self.log_likelihood(z) + self.log_prior(z)
+        return np.where(np.isfinite(found), found, -np.inf)
+
+    def pointwise(self, z: Array) -> Array:
+        """Return ln p(reading i | the other readings, z), (n_sets, n): what leave-one-out needs of correlated noise.
+
+        With C the covariance, P its inverse and e = P r: mean y_i - e_i/P_ii, variance 1/P_ii.
+        Source: Bürkner, Gabry, Vehtari, Computational Statistics 36 (2021) 1243, eq. for Gaussian models.
+        """
+        values = self.values(z)
+        n = len(self.measured.values)
+        residuals = self.measured.values - self.predict_values(values, len(z))[:, :n]
+        if self.noise.estimated:
+            weights = 1 / self.noise.variances(np.asarray(values["noise"])[:, None])
+        else:
+            weights = 1 / np.broadcast_to(self.noise.floor, (len(z), n))
+        basis = self.noise.basis
+        pull = ((residuals @ basis) * weights) @ basis.T
+        precision = weights @ np.square(basis).T
+        return 0.5 * (np.log(precision) - LOG_TWO_PI - np.square(pull) / precision)
