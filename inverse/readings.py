@@ -42,6 +42,11 @@ class Readings:
         for name in ("values", "excluded", "extra"):
             object.__setattr__(self, name, MappingProxyType(dict(getattr(self, name))))
 
+    @property
+    def used(self) -> Mapping[str, float]:
+        """The values that count, sensor name -> value: those that are not set aside."""
+        return {name: value for name, value in self.values.items() if name not in self.excluded}
+
 
 @dataclass(frozen=True, slots=True)
 class Column:
