@@ -1,0 +1,305 @@
+"""View: everything a report says, computed from an estimate and frozen. Templates hold no arithmetic.
+
+All text here is plain; each output escapes it in its own way.
+"""
+
+from dataclasses import dataclass
+from pathlib import PurePath
+
+from finback.estimate import CandidateScore, Estimate, ReadingFit, Summary
+from finback.findings import Finding
+from finback.report import method, phrases
+
+ZERO_CELSIUS = 273.15
+SEVERITIES = ("fault", "caution", "note")
+PLACES = {"fin": "fin", "plate": "plate", "air": "air", "heat": "heat into the fin", "heater": "heater power"}
+HEADLINES = ("h", "k", "joint")
+SHOWN_FIRST = 3  # findings in the first screen
+
+
+@dataclass(frozen=True, slots=True)
+class Answer:
+    """One headline: `value` with its uncertainty, or a verdict such as "not determined" with its `reason`."""
+
+    symbol: str
+    label: str
+    value: str
+    median: str
+    interval: str
+    determined_by: str
+    reason: str
+
+
+@dataclass(frozen=True, slots=True)
+class QuantityRow:
+    """One row of the table of parameters and derived quantities."""
+
+    symbol: str
+    label: str
+    value: str
+    median: str
+    interval: str
+    least_squares: str
+    determined_by: str
+
+
+@dataclass(frozen=True, slots=True)
+class CandidateRow:
+    """One row of the table of candidates."""
+
+    name: str
+    probability: str
+    log_evidence: str
+    loo: str
+    aicc: str
+    bic: str
+
+
+@dataclass(frozen=True, slots=True)
+class ReadingRow:
+    """One row of the table of readings; `ratio` is residual over uncertainty."""
+
+    sensor: str
+    place: str
+    position: str
+    measured: str
+    predicted: str
+    residual: str
+    uncertainty: str
+    ratio: str
+    excluded: str
+
+
+@dataclass(frozen=True, slots=True)
+class FindingRow:
+    """One finding."""
+
+    severity: str
+    code: str
+    sensor: str
+    message: str
+
+
+@dataclass(frozen=True, slots=True)
+class View:
+    """All that a report says, as text."""
+
+    title: str
+    run: str
+    status: str
+    status_text: str
+    answers: tuple[Answer, ...]
+    verdict: str
+    worst: tuple[FindingRow, ...]
+    more_findings: str
+    candidates: tuple[CandidateRow, ...]
+    loo_note: str
+    quantities: tuple[QuantityRow, ...]
+    readings: tuple[ReadingRow, ...]
+    fit: str
+    findings: tuple[FindingRow, ...]
+    assumptions: tuple[str, ...]
+    priors: tuple[str, ...]
+    method: str
+    equations: tuple[method.Equation, ...]
+    provenance: tuple[tuple[str, str], ...]
+    cautions: tuple[str, ...]
+    version: str
+
+
+def build(estimate: Estimate) -> View:
+    """Return the view of an estimate."""
+    findings = _findings(estimate.findings)
+    told = [row for row in findings if row.severity != "note"] or [
+        row for row in findings if row.code == "healthy"
+    ]
+    worst = tuple(told[:SHOWN_FIRST])
+    rest = len(findings) - len(worst)
+    return View(
+        title=phrases.clean(estimate.rig.title),
+        run=phrases.clean(estimate.readings.run),
+        status=estimate.status,
+        status_text=phrases.STATUS[estimate.status],
+        answers=_answers(estimate),
+        verdict=phrases.clean(estimate.comparison, 400),
+        worst=worst,
+        more_findings=f"{rest} more in the list of findings." if rest > 0 and worst else "",
+        candidates=tuple(_candidate(score) for score in estimate.candidates),
+        loo_note=_loo_note(estimate),
+        quantities=tuple(_quantity(s) for s in (*estimate.parameters.values(), *estimate.derived.values())),
+        readings=tuple(_reading(row) for row in estimate.table),
+        fit=_fit(estimate),
+        findings=findings,
+        assumptions=tuple(phrases.clean(f.message, 400) for f in estimate.findings if f.code == "assumed"),
+        priors=tuple(phrases.clean(phrases.pretty(line), 400) for line in estimate.priors),
+        method=method.paragraph(estimate.rig),
+        equations=method.equations(estimate.rig),
+        provenance=_provenance(estimate),
+        cautions=method.CAUTIONS,
+        version=estimate.provenance.finback,
+    )
+
+
+def _answers(estimate: Estimate) -> tuple[Answer, ...]:
+    """Headlines: h, k and the joint, then what is determined in their stead where one of them is not."""
+    answers = []
+    for name in HEADLINES:
+        summary = estimate.parameters.get(name)
+        answers.append(_answer(estimate, name, summary) if summary else _absent(estimate, name))
+    missing = {name for name in HEADLINES if (s := estimate.parameters.get(name)) and s.median is None}
+    for name, summary in estimate.derived.items():
+        stands_in = name == "h_over_k" if missing & {"h", "k"} else False
+        stands_in = stands_in or ("joint" in missing and name.startswith("joint"))
+        if stands_in and summary.median is not None:
+            answers.append(_answer(estimate, name, summary))
+    return tuple(answers)
+
+
+def _answer(estimate: Estimate, name: str, summary: Summary) -> Answer:
+    label = _label(summary)
+    if name == "h":
+        label = "total coefficient: convection and radiation together"
+    return Answer(
+        symbol=phrases.symbol(name),
+        label=label,
+        value=phrases.value(summary),
+        median=phrases.median(summary),
+        interval=phrases.interval(summary),
+        determined_by=phrases.DETERMINED_BY[summary.determined_by] if summary.median is not None else "",
+        reason=_reason(estimate, summary) if summary.median is None else "",
+    )
+
+
+def _absent(estimate: Estimate, name: str) -> Answer:
+    """Headline of a quantity that was no unknown of this fit."""
+    label, value, reason = {
+        "h": (
+            "total coefficient: convection and radiation together",
+            phrases.NOT_DETERMINED,
+            "It was not fitted.",
+        ),
+        "k": ("conductivity", phrases.NOT_DETERMINED, "It was not fitted."),
+        "joint": (
+            "joint resistance",
+            "not looked at",
+            "It needs a temperature on the plate side of the joint.",
+        ),
+    }[name]
+    stated = estimate.rig.conductivity
+    if name == "k" and stated is not None and stated.sd == 0:
+        value, reason = (
+            phrases.number(stated.value, 0.0, "W/(m K)"),
+            "Taken as exactly known, as the rig states.",
+        )
+    return Answer(phrases.symbol(name), label, value, phrases.NOTHING, phrases.NOTHING, "", reason)
+
+
+def _reason(estimate: Estimate, summary: Summary) -> str:
+    """The sentence of the finding that says why a quantity is not determined."""
+    told = [finding for finding in estimate.findings if finding.code == "not-determined"]
+    for finding in told:
+        named = {str(value) for key, value in finding.evidence.items() if key in ("quantity", "parameter")}
+        if summary.name in named or summary.name in finding.evidence:
+            return phrases.clean(finding.message, 400)
+    for finding in told:
+        words = finding.message.replace(",", " ").replace(":", " ").split()
+        if summary.name in words or summary.label in finding.message:
+            return phrases.clean(finding.message, 400)
+    return phrases.clean(told[0].message, 400) if told else ""
+
+
+def _label(summary: Summary) -> str:
+    """The label without the symbol that stands beside it anyway."""
+    label = phrases.clean(summary.label)
+    for mark in (phrases.symbol(summary.name), summary.name, "R''"):
+        label = label.removesuffix(f" {mark}")
+    return label
+
+
+def _quantity(summary: Summary) -> QuantityRow:
+    return QuantityRow(
+        phrases.symbol(summary.name),
+        _label(summary),
+        phrases.value(summary),
+        phrases.median(summary),
+        phrases.interval(summary),
+        phrases.least_squares(summary),
+        summary.determined_by if summary.median is not None else phrases.NOTHING,
+    )
+
+
+def _candidate(score: CandidateScore) -> CandidateRow:
+    return CandidateRow(
+        phrases.clean(score.name),
+        phrases.probability(score.probability),
+        f"{phrases.number(score.log_evidence, 0.1)} ± {score.log_evidence_error:.2g}",
+        phrases.number(score.loo, 1.0),
+        phrases.number(score.aicc, 1.0),
+        phrases.number(score.bic, 1.0),
+    )
+
+
+def _reading(row: ReadingFit) -> ReadingRow:
+    thermal = row.place not in ("heat", "heater")
+    zero, unit, unit_of_difference = (ZERO_CELSIUS, "degC", "K") if thermal else (0.0, "W", "W")
+    position = phrases.NOTHING
+    if row.position is not None:
+        position = phrases.number(1e3 * row.position, 2e3 * row.position_sd or 1.0, "")
+        position += f" ± {1e3 * row.position_sd:.2g} mm" if row.position_sd else " mm"
+    return ReadingRow(
+        phrases.clean(row.sensor),
+        PLACES.get(row.place, row.place),
+        position,
+        phrases.number(row.measured - zero, row.uncertainty, unit),
+        phrases.number(row.predicted - zero, row.uncertainty, unit),
+        phrases.number(row.residual, row.uncertainty, unit_of_difference),
+        phrases.number(row.uncertainty, row.uncertainty, unit_of_difference),
+        phrases.number(row.residual / row.uncertainty, 1.0) if row.uncertainty > 0 else phrases.NOTHING,
+        phrases.clean(row.excluded) if row.excluded else "",
+    )
+
+
+def _findings(findings: tuple[Finding, ...]) -> tuple[FindingRow, ...]:
+    """Findings, worst first, each sentence once; assumptions have their own list."""
+    rows: dict[str, FindingRow] = {}
+    for finding in sorted(findings, key=lambda finding: SEVERITIES.index(finding.severity)):
+        if finding.code != "assumed":
+            message = phrases.clean(finding.message, 400)
+            sensor = phrases.clean(finding.sensor or "")
+            rows.setdefault(message, FindingRow(finding.severity, finding.code, sensor, message))
+    return tuple(rows.values())
+
+
+def _loo_note(estimate: Estimate) -> str:
+    if all(score.loo is None for score in estimate.candidates):
+        return ""
+    n = sum(row.excluded is None for row in estimate.table)
+    return f"LOO is the expected log density of a left-out reading, summed. With {n} readings it is indicative only."
+
+
+def _fit(estimate: Estimate) -> str:
+    fit = estimate.fit
+    text = f"χ² = {fit.chi_square:.3g} with {fit.degrees_of_freedom} degrees of freedom"
+    if fit.p_value is not None:
+        return f"{text}, p = {fit.p_value:.2g}."
+    if fit.noise is not None:
+        return f"{text}; no test of the fit, since the noise of a reading, {fit.noise:.2g} K, was estimated from it."
+    return f"{text}."
+
+
+def _provenance(estimate: Estimate) -> tuple[tuple[str, str], ...]:
+    sampler, source = estimate.sampler, estimate.provenance
+    ess = phrases.NOTHING if sampler.ess_min is None else f"{sampler.ess_min:.0f}"
+    rhat = phrases.NOTHING if sampler.rhat_max is None else f"{sampler.rhat_max:.3f}"
+    converged = "converged" if sampler.converged else "not converged"
+    return (
+        ("Finback", source.finback),
+        ("with", ", ".join(f"{name} {version}" for name, version in source.versions.items())),
+        ("seed", str(sampler.seed)),
+        ("sampler", f"{phrases.clean(sampler.method)}; {sampler.draws} draws, {converged}"),
+        ("diagnostics", f"largest R-hat {rhat}, smallest effective sample size {ess}"),
+        *(
+            (f"SHA-256 of {phrases.clean(PurePath(name).name)}", digest)
+            for name, digest in source.inputs.items()
+        ),
+    )
