@@ -88,13 +88,15 @@ def check(
     ] = None,
 ) -> None:
     """Read everything, compute nothing; show what was understood."""
-    from finback import overview
+    from finback import candidates, overview
     from finback import readings as readings_reader
     from finback import rig as rig_reader
 
     rig = rig_reader.read(rig_file)
-    table = None if readings_file is None else readings_reader.read(readings_file, rig)
-    print(overview.describe(rig, table))
+    runs = None
+    if readings_file is not None:
+        runs = [readings.run for readings in readings_reader.read(readings_file, rig)]
+    print(overview.describe(rig, runs, [each.name for each in candidates.enumerate_candidates(rig)]))
 
 
 @app.command()
