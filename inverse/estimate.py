@@ -1,13 +1,17 @@
 """Estimates: what a fit found, frozen, with its status and where it came from."""
 
+import math
+import textwrap
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
+from html import escape
 from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from finback.findings import Finding
+from finback.quantity import format_number, format_value, pretty_unit
 from finback.readings import Readings
 from finback.rig import Rig
 
@@ -35,6 +39,15 @@ class Summary:
     least_squares: float | None
     standard_error: float | None
     determined_by: DeterminedBy
+
+    def in_words(self) -> str:
+        """Return value, posterior sd and 95 % interval as text, or what is known instead."""
+        if self.median is None or self.sd is None or self.low95 is None or self.high95 is None:
+            if self.high95 is not None:
+                return f"at most {format_number(self.high95)} {pretty_unit(self.unit)} (95 %)"
+            return "not determined"
+        low, high = format_number(self.low95), format_number(self.high95)
+        return f"{format_value(self.median, self.sd, self.unit)} (95 %: {low} to {high})"
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,13 +97,19 @@ class Draws:
     """Posterior draws, in reported units.
 
     `names`; `units`; `values` (n_chains, n_draws, n_names), chains being independent ensembles; `prior`
-    (n_prior, n_names), draws from the prior, nan where a quantity has none of its own.
+    (n_prior, n_names), draws from the prior, nan where a quantity has none of its own. nan in `values` where
+    the draw's candidate has no such quantity. `candidate` (n_chains, n_draws): which candidate a draw is from,
+    0 being the best; `pointwise` (n_chains, n_draws, n_readings): log likelihood of each reading given the
+    others; `sensors`, their names.
     """
 
     names: tuple[str, ...]
     units: tuple[str, ...]
     values: Array
     prior: Array
+    candidate: NDArray[np.intp]
+    pointwise: Array
+    sensors: tuple[str, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -153,5 +172,89 @@ class Estimate:
     provenance: Provenance
 
     def to_dict(self) -> dict[str, Any]:
-        """Return the contents of estimate.json, in its key order; never a nan."""
-        raise NotImplementedError
+        """Return the contents of estimate.json, in its key order; a number that is not determined is None."""
+        return {
+            "finback": self.provenance.finback,
+            "rig": self.rig.title,
+            "run": self.readings.run,
+            "status": self.status,
+            "parameters": {name: _numbers(summary) for name, summary in self.parameters.items()},
+            "derived": {name: _numbers(summary) for name, summary in self.derived.items()},
+            "candidates": [_rounded(asdict(score)) for score in self.candidates],
+            "fit": _rounded(asdict(self.fit)),
+            "sampler": _rounded(asdict(self.sampler)),
+            "budget": [],
+            "findings": [
+                {"code": f.code, "severity": f.severity, "sensor": f.sensor, "message": f.message}
+                for f in self.findings
+            ],
+            "provenance": asdict(self.provenance),
+        }
+
+    def to_tree(self) -> Any:
+        """Return arviz's container of the posterior; its `to_netcdf(path, engine="h5netcdf")` writes it."""
+        from finback import diagnostics
+
+        draws = self.draws
+        posterior = {name: draws.values[..., i] for i, name in enumerate(draws.names)}
+        prior = {name: draws.prior[None, :, i] for i, name in enumerate(draws.names)}
+        measured = {row.sensor: row.measured for row in self.table}
+        groups = {
+            "posterior": posterior,
+            "prior": {name: values for name, values in prior.items() if np.isfinite(values).all()},
+            "sample_stats": {"candidate": draws.candidate},
+            "log_likelihood": {"reading": draws.pointwise},
+            "observed_data": {"reading": np.array([measured[name] for name in draws.sensors])},
+        }
+        attributes = {
+            "finback": self.provenance.finback,
+            "rig": self.rig.title,
+            "run": self.readings.run,
+            "seed": str(self.sampler.seed),
+            "candidates": "; ".join(score.name for score in self.candidates),
+            "units": "; ".join(f"{name}: {unit}" for name, unit in zip(draws.names, draws.units, strict=True)),
+        }
+        return diagnostics.tree(groups, draws.sensors, attributes)
+
+    def __str__(self) -> str:
+        """Return the main results as text that fits 80 columns."""
+        lines = [f"{self.rig.title}, run {self.readings.run}: {self.status}"]
+        lines += [f"  {summary.label:<26} {value}" for summary, value in self._shown()]
+        lines += textwrap.wrap(self.comparison, 78, initial_indent="  ", subsequent_indent="  ")
+        for finding in self.findings:
+            if finding.severity != "note":
+                text = f"{finding.severity}: {finding.message}"
+                lines += textwrap.wrap(text, 78, initial_indent="  ", subsequent_indent="    ")
+        return "\n".join(lines)
+
+    def _repr_html_(self) -> str:
+        """Return the main results as a table, for a notebook."""
+        rows = "".join(f"<tr><td>{escape(s.label)}</td><td>{escape(value)}</td></tr>" for s, value in self._shown())
+        head = escape(f"{self.rig.title}, run {self.readings.run}: {self.status}")
+        return f"<table><caption>{head}</caption>{rows}</table><p>{escape(self.comparison)}</p>"
+
+    def _shown(self) -> list[tuple[Summary, str]]:
+        everything = {**self.parameters, **self.derived}
+        return [(everything[name], everything[name].in_words()) for name in SHOWN if name in everything]
+
+
+SHOWN = ("h", "k", "joint", "h_over_k", "base_temperature", "heat", "efficiency")
+"""What an estimate shows of itself, in this order."""
+
+DIGITS = 10  # significant ones in estimate.json: more than any number here has, fewer than rounding leaves
+
+
+def _numbers(summary: Summary) -> dict[str, Any]:
+    found = _rounded(asdict(summary))
+    return {name: value for name, value in found.items() if name not in ("name", "label")}
+
+
+def _rounded(value: Any) -> Any:
+    """Return nested values with floats rounded to DIGITS; a nan would be a defect and is refused."""
+    if isinstance(value, Mapping):
+        return {name: _rounded(each) for name, each in value.items()}
+    if isinstance(value, float):
+        if not math.isfinite(value):
+            raise ValueError(f"{value} is no result")
+        return float(f"{value:.{DIGITS}g}")
+    return value

@@ -85,4 +85,4 @@ def importance(log_density: LogDensity, proposal: Proposal, seed: np.random.Seed
     # systematic resampling: one random number, the least added scatter
     targets = (random.random_sample() + np.arange(RESAMPLED)) / RESAMPLED
     chosen = np.searchsorted(np.cumsum(weights) / weights.sum(), targets)
-    return Weighted(Evidence(highest + np.log(mean), error), z[np.minimum(chosen, DRAWS - 1)])
+    return Weighted(Evidence(highest + float(np.log(mean)), error), z[np.minimum(chosen, DRAWS - 1)])

@@ -1,0 +1,254 @@
+"""The main job: one run of one rig to an estimate. What `finback fit` does is one call of `fit` here."""
+
+import sys
+from collections.abc import Callable, Mapping, Sequence
+from importlib.metadata import version
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+import finback
+from finback import candidates, concerns, derived, summaries
+from finback import readings as readings_file
+from finback import rig as rig_file
+from finback.candidates import Outcome
+from finback.estimate import (
+    CandidateScore,
+    Draws,
+    Estimate,
+    FitQuality,
+    ProfileBand,
+    Provenance,
+    ReadingFit,
+    SamplerRecord,
+    Summary,
+)
+from finback.readings import Readings
+from finback.rig import Rig
+from finback.sampling import Settings
+
+Array = NDArray[np.float64]
+Progress = Callable[[str, float], None]
+
+BAND_DRAWS = 1000
+BAND_POINTS = 121
+PRIOR_DRAWS = 4000
+PACKAGES = ("numpy", "scipy", "emcee", "arviz", "pandas", "matplotlib")
+PARAMETERS = ("h", "k", "joint", "plate", "air", "tip_temperature", "noise")
+
+
+def fit(
+    rig: Rig | Path | str,
+    readings: Readings | Path | str,
+    *,
+    run: str | None = None,
+    seed: int = 1,
+    progress: Progress | None = None,
+    settings: Settings | None = None,
+) -> Estimate:
+    """Estimate h, k and the joint of one run, with the model that the readings support.
+
+    Arguments: rig, a `Rig` or the path of a rig.toml; readings, the `Readings` of one run or the path of a
+    .csv or .xlsx; run, which one, where the file has several; seed of the random draws: the same seed gives
+    the same result; progress, called with a stage and the fraction done; settings of the sampler.
+
+    Returns an `Estimate`. Raises InputError, with a sentence for the user, when the input is wrong. A sampler
+    that does not converge is a finding of the result, not an error.
+    """
+    if not isinstance(rig, Rig):
+        rig = rig_file.read(Path(rig))
+    if not isinstance(readings, Readings):
+        readings = readings_file.read(Path(readings), rig).pick(run)
+    readings_file.check_run(rig, readings)
+    progress = progress or (lambda _stage, _fraction: None)
+    outcomes = candidates.compare(rig, readings, seed, progress, settings)
+    progress("summing up", 0.95)
+    return _assemble(rig, readings, outcomes, seed)
+
+
+def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: int) -> Estimate:
+    probabilities = candidates.probabilities(outcomes)
+    scores = tuple(candidates.score(o, float(p)) for o, p in zip(outcomes, probabilities, strict=True))
+    evaluated = [derived.evaluate(o.problem, o.draws.reshape(-1, o.draws.shape[-1])) for o in outcomes]
+    mixture = summaries.mix(outcomes, probabilities, evaluated)
+    found = _summaries(outcomes, probabilities, evaluated, mixture)
+    best = outcomes[0]
+    table = _table(best)
+    quality = _quality(best, table)
+    sampled = [o for o in outcomes if o.sampled]
+    sampler = SamplerRecord(
+        method="emcee, independence and differential-evolution moves, "
+        f"{best.draws.shape[0]} independent ensembles",
+        draws=sum(o.n_draws for o in sampled),
+        ess_min=min(o.ess_min for o in sampled if o.ess_min is not None),
+        rhat_max=max(o.rhat_max for o in sampled if o.rhat_max is not None),
+        seed=seed,
+        converged=all(o.converged for o in sampled),
+    )
+    found_concerns = concerns.collect(rig, found, quality, sampler, best)
+    worst = {f.severity for f in found_concerns}
+    return Estimate(
+        rig=rig,
+        readings=readings,
+        status="caution" if worst & {"caution", "fault"} else "ok",
+        parameters={name: found[name] for name in PARAMETERS if name in found},
+        derived={name: found[name] for name in derived.DERIVED if name in found},
+        candidates=scores,
+        comparison=concerns.compare_in_words(scores, rig.tip is not None),
+        fit=quality,
+        table=table,
+        band=_band(outcomes, mixture),
+        draws=_draws(outcomes, mixture),
+        sampler=sampler,
+        findings=found_concerns,
+        priors=_priors(best),
+        provenance=_provenance(rig, readings),
+    )
+
+
+def _summaries(
+    outcomes: Sequence[Outcome],
+    probabilities: Array,
+    evaluated: Sequence[Mapping[str, Array]],
+    mixture: summaries.Mixture,
+) -> dict[str, Summary]:
+    """Return the summaries by name; those of the joint from the candidates that have one."""
+    best = summaries.judge(outcomes[0])
+    found = {
+        name: best.summarise(name, mixture.values[name])
+        for name in evaluated[0]
+        if name not in summaries.OF_THE_JOINT
+    }
+    with_joint = [i for i, o in enumerate(outcomes) if o.problem.candidate.joint]
+    if not with_joint:
+        for name in summaries.OF_THE_JOINT:
+            label, unit = summaries.describe(name)
+            found[name] = Summary(name, label, unit, None, None, None, None, None, None, None, "prior")
+        return found
+    joint_judge = summaries.judge(outcomes[with_joint[0]])
+    weights = probabilities[with_joint] + np.finfo(np.float64).tiny
+    joint_mixture = summaries.mix(
+        [outcomes[i] for i in with_joint], weights / weights.sum(), [evaluated[i] for i in with_joint]
+    )
+    for name in summaries.OF_THE_JOINT:
+        found[name] = joint_judge.summarise(name, joint_mixture.values[name])
+    return found
+
+
+def _table(best: Outcome) -> tuple[ReadingFit, ...]:
+    """Return every reading beside what the best candidate's least-squares fit predicts for it."""
+    problem, measured = best.problem, best.problem.measured
+    predicted = problem.predict(best.point.z[None])[0]
+    uncertainty = np.sqrt(np.diag(problem.noise.covariance(best.point.sigma)))
+    rows = zip(
+        measured.sensors + measured.bounds,
+        np.concatenate([measured.values, measured.bound_values]),
+        predicted,
+        np.concatenate([uncertainty, measured.bound_sds]),
+        strict=True,
+    )
+    found = [
+        ReadingFit(s.name, s.place, s.position, s.position_sd, float(v), float(p), float(v - p), float(u))
+        for s, v, p, u in rows
+    ]
+    return tuple(found) + _set_aside(best)
+
+
+def _set_aside(best: Outcome) -> tuple[ReadingFit, ...]:
+    """Return the excluded readings, predicted all the same."""
+    problem = best.problem
+    values = problem.values(best.point.z[None])
+    found = []
+    for name, reason in problem.readings.excluded.items():
+        sensor, measured = problem.rig.sensors[name], problem.readings.values.get(name)
+        if measured is None:
+            continue
+        solution = problem.solve(values, np.array([sensor.position or 0.0]))
+        predictions = {"fin": solution.temperatures[0, 0], "heat": solution.base_heat[0], "heater": solution.base_heat[0]}
+        predicted = float(np.ravel(predictions.get(sensor.place, values.get(sensor.place, np.nan)))[0])
+        found.append(
+            ReadingFit(
+                name, sensor.place, sensor.position, sensor.position_sd, measured, predicted, measured - predicted,
+                best.point.sigma, reason,
+            )
+        )  # fmt: skip
+    return tuple(found)
+
+
+def _quality(best: Outcome, table: Sequence[ReadingFit]) -> FitQuality:
+    from scipy.special import gammaincc
+
+    point, estimated = best.point, best.problem.noise.estimated
+    freedom = point.degrees_of_freedom
+    judged = not estimated and freedom > 0
+    return FitQuality(
+        residuals={row.sensor: row.residual for row in table if row.excluded is None},
+        chi_square=point.chi_square,
+        degrees_of_freedom=freedom,
+        p_value=float(gammaincc(freedom / 2, point.chi_square / 2)) if judged else None,
+        noise=point.sigma if estimated else None,
+    )
+
+
+def _band(outcomes: Sequence[Outcome], mixture: summaries.Mixture) -> ProfileBand:
+    """Return the temperature along the fin with its 95 % band, averaged over candidates."""
+    x = np.linspace(0.0, outcomes[0].problem.rig.geometry["length"].value, BAND_POINTS)
+    which, index = mixture.which.ravel(), mixture.index.ravel()
+    picked = np.linspace(0, len(which) - 1, min(BAND_DRAWS, len(which))).astype(int)
+    profiles = []
+    for number, outcome in enumerate(outcomes):
+        rows = index[picked[which[picked] == number]]
+        if len(rows):
+            z = outcome.draws.reshape(-1, outcome.draws.shape[-1])[rows]
+            profiles.append(outcome.problem.solve(outcome.problem.values(z), x).temperatures)
+    low, median, high = np.quantile(np.concatenate(profiles), (0.025, 0.5, 0.975), axis=0)
+    return ProfileBand(x, median, low, high)
+
+
+def _draws(outcomes: Sequence[Outcome], mixture: summaries.Mixture) -> Draws:
+    """Return the averaged draws in reported units, with the prior of each parameter and the log likelihoods."""
+    names = tuple(name for name in (*PARAMETERS, *derived.DERIVED) if name in mixture.values)
+    random = np.random.default_rng(0)
+    prior = np.full((PRIOR_DRAWS, len(names)), np.nan)
+    known = {p.name: p for outcome in reversed(outcomes) for p in outcome.problem.parameters}
+    for column, name in enumerate(names):
+        if name in known:
+            z = random.normal(known[name].prior.mean, known[name].prior.sd, PRIOR_DRAWS)
+            prior[:, column] = summaries.to_reported(name, np.exp(z) if known[name].transform == "log" else z)
+    shape = mixture.which.shape
+    likelihoods = np.empty((*shape, len(outcomes[0].problem.measured.values)))
+    for number, outcome in enumerate(outcomes):
+        here = mixture.which == number
+        if here.any():
+            z = outcome.draws.reshape(-1, outcome.draws.shape[-1])[mixture.index[here]]
+            likelihoods[here] = outcome.problem.pointwise(z)
+    return Draws(
+        names=names,
+        units=tuple(summaries.describe(name)[1] for name in names),
+        values=np.stack([summaries.to_reported(name, mixture.values[name]) for name in names], axis=-1),
+        prior=prior,
+        candidate=np.array(mixture.which),
+        pointwise=likelihoods,
+        sensors=tuple(s.name for s in outcomes[0].problem.measured.sensors),
+    )
+
+
+def _priors(best: Outcome) -> tuple[str, ...]:
+    exact = best.problem.fixed
+    lines = [p.describe() for p in best.problem.parameters]
+    for name in exact:
+        label, unit = summaries.describe(name)
+        value = float(summaries.to_reported(name, np.array([exact[name]]))[0])
+        lines.append(f"{label}: {value:.6g} {unit} exactly (stated)")
+    return tuple(lines)
+
+
+def _provenance(rig: Rig, readings: Readings) -> Provenance:
+    inputs = {
+        source.name: digest
+        for source, digest in ((rig.source, rig.sha256), (readings.source, readings.sha256))
+        if source is not None and digest is not None
+    }
+    versions = {"python": ".".join(map(str, sys.version_info[:3]))} | {name: version(name) for name in PACKAGES}
+    return Provenance(finback.__version__, versions, inputs)

@@ -1,0 +1,157 @@
+"""Turning the candidates' draws into reported numbers: averages over candidates, intervals, what is determined.
+
+Each candidate adds draws in proportion to its probability, so that an interval carries the candidates' spread.
+The joint's resistance is averaged over the candidates that have a joint: whether there is one is a
+probability, how large it is a number.
+"""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import derived, identifiability, parameters
+from finback.candidates import Outcome
+from finback.derived import DERIVED
+from finback.estimate import Summary
+from finback.identifiability import Information
+
+Array = NDArray[np.float64]
+
+OF_THE_JOINT = ("joint", "joint_times_k")
+ONE_SIDED = 0.95  # probability of a limit where only a limit exists
+
+
+@dataclass(frozen=True)
+class Mixture:
+    """Draws averaged over candidates.
+
+    `chosen`: which outcome each draw is from and its index there, (chains, n) each; `values`: (chains, n) by
+    quantity, SI units, nan where a candidate has no such quantity.
+    """
+
+    which: NDArray[np.intp]
+    index: NDArray[np.intp]
+    values: Mapping[str, Array]
+
+
+def mix(outcomes: Sequence[Outcome], weights: Array, evaluated: Sequence[Mapping[str, Array]]) -> Mixture:
+    """Average over outcomes, each adding draws in proportion to its weight.
+
+    Arguments: outcomes; weights, their probabilities, summing to one; evaluated, the quantities of all draws
+    of each outcome, flat (chains * n,).
+    """
+    chains, n = outcomes[0].draws.shape[:2]
+    counts = np.diff(np.round(np.concatenate([[0.0], np.cumsum(weights)]) * n).astype(int))
+    which = np.repeat(np.arange(len(outcomes)), counts)
+    index = np.empty((chains, n), dtype=np.intp)
+    names = {name: None for each, count in zip(evaluated, counts, strict=True) if count for name in each}
+    values = {name: np.full((chains, n), np.nan) for name in names}
+    start = 0
+    for outcome, quantities, count in zip(outcomes, evaluated, counts, strict=True):
+        here = slice(start, start + count)
+        own_chains, own_n = outcome.draws.shape[:2]
+        picked = np.linspace(0, own_n - 1, count).astype(int)
+        rows = np.arange(chains)[:, None] % own_chains
+        index[:, here] = rows * own_n + picked
+        for name, found in quantities.items():
+            if count:
+                values[name][:, here] = found[index[:, here]]
+        start += count
+    return Mixture(np.broadcast_to(which, (chains, n)), index, values)
+
+
+@dataclass(frozen=True)
+class Judge:
+    """What one candidate says of how well each quantity is known: information and gradients at its optimum."""
+
+    outcome: Outcome
+    information: Information
+    gradients: Mapping[str, Array]
+
+    def summarise(self, name: str, draws: Array) -> Summary:
+        """Return the summary of one quantity from its draws (any shape, SI units)."""
+        label, unit = describe(name)
+        exact = name in self.outcome.problem.fixed
+        gradient = self.gradients.get(name)
+        if exact or name == "noise" or gradient is None:
+            determined = True
+        else:
+            determined = self.information.determines(gradient)
+        least_squares, standard_error = self._least_squares(name)
+        if not determined:
+            limit = self._upper_limit(name, draws)
+            low = None if limit is None else 0.0
+            return Summary(name, label, unit, None, None, None, low, limit, None, None, "prior")
+        shown = to_reported(name, draws)
+        low, median, high = (float(q) for q in np.quantile(shown, (0.025, 0.5, 0.975)))
+        return Summary(
+            name,
+            label,
+            unit,
+            median,
+            float(shown.mean()),
+            0.0 if exact else float(shown.std(ddof=1)),
+            low,
+            high,
+            least_squares,
+            standard_error,
+            self._source(name, gradient, exact),
+        )
+
+    def _source(self, name: str, gradient: Array | None, exact: bool) -> identifiability.DeterminedBy:
+        if exact:
+            return "prior"
+        if name == "noise" or gradient is None:
+            return "readings"
+        return self.information.source(gradient)
+
+    def _least_squares(self, name: str) -> tuple[float | None, float | None]:
+        point = self.outcome.point
+        if name == "noise":
+            return point.sigma, None
+        value = derived.evaluate(point.problem, point.z[None])[name]
+        if name in point.problem.fixed:
+            return float(to_reported(name, value)[0]), 0.0
+        gradient = derived.gradients(point.problem, point.z)[name]
+        if np.abs(gradient @ point.point.null_space).max(initial=0.0) > 1e-6 * np.linalg.norm(gradient):
+            return None, None
+        return float(to_reported(name, value)[0]), float(np.sqrt(gradient @ point.point.covariance @ gradient))
+
+    def _upper_limit(self, name: str, draws: Array) -> float | None:
+        """Return the one-sided upper limit of a positive parameter, if larger values would have been seen.
+
+        Were the parameter at its limit, the readings would determine it: then they exclude what lies beyond,
+        and the limit is theirs and not the prior's.
+        """
+        problem = self.outcome.problem
+        if name not in ("h", "k", "joint") or name not in problem.names:
+            return None
+        limit = float(np.quantile(draws, ONE_SIDED))
+        column = problem.names.index(name)
+        flat = self.outcome.draws.reshape(-1, self.outcome.draws.shape[-1])
+        at = flat[int(np.argmin(np.abs(np.exp(flat[:, column]) - limit)))]
+        sigma = float(np.exp(at[-1])) if problem.noise.estimated else self.outcome.point.sigma
+        there = identifiability.information(problem, at, sigma)
+        return limit if there.determines(np.eye(problem.n_physical)[column]) else None
+
+
+def judge(outcome: Outcome) -> Judge:
+    """Return the judge of one outcome, at its posterior mode."""
+    problem, z = outcome.problem, outcome.mode.z
+    sigma = float(np.exp(z[-1])) if problem.noise.estimated else outcome.point.sigma
+    information = identifiability.information(problem, z, sigma)
+    return Judge(outcome, information, derived.gradients(problem, z))
+
+
+def describe(name: str) -> tuple[str, str]:
+    """Return label and reported unit of a parameter or derived quantity."""
+    if name in DERIVED:
+        return DERIVED[name].label, DERIVED[name].unit
+    return parameters.LABELS[name], parameters.DEFAULT_PRIORS[name][2]
+
+
+def to_reported(name: str, values: Array) -> Array:
+    """Return SI values of any quantity in its reported unit."""
+    return derived.reported(name, values) if name in DERIVED else parameters.reported(name, values)
