@@ -30,6 +30,11 @@ class Quantity:
     sd: float = 0.0
     text: str = ""
 
+    @property
+    def states_uncertainty(self) -> bool:
+        """Whether the text gives an uncertainty, be it zero."""
+        return "+/-" in self.text or "±" in self.text
+
 
 Dimension = Literal[
     "length",
@@ -68,14 +73,14 @@ SCALES: Mapping[str, tuple[float, float]] = {
     "degF": (5 / 9, 459.67 * 5 / 9),
     "degR": (5 / 9, 0.0),
 }
-"""Temperature scales: T [K] = factor · reading + offset. Exact by the scales' definitions (ITS-90; °F and °R of
-NIST SP 811, appendix B)."""
+"""Temperature scales: T [K] = factor · reading + offset. Exact by the definitions of the scales (NIST SP 811,
+appendix B)."""
 
 _SCALE_NAMES = {
-    **{name: "K" for name in ("K", "kelvin", "Kelvin", "degK")},
-    **{name: "degC" for name in ("degC", "C", "celsius", "Celsius", "deg_C")},
-    **{name: "degF" for name in ("degF", "F", "fahrenheit", "Fahrenheit", "deg_F")},
-    **{name: "degR" for name in ("degR", "rankine", "Rankine")},
+    **dict.fromkeys(("K", "kelvin", "Kelvin", "degK"), "K"),
+    **dict.fromkeys(("degC", "C", "celsius", "Celsius", "deg_C"), "degC"),
+    **dict.fromkeys(("degF", "F", "fahrenheit", "Fahrenheit", "deg_F"), "degF"),
+    **dict.fromkeys(("degR", "rankine", "Rankine"), "degR"),
 }
 _DIFFERENCES = {"K": "kelvin", "degC": "kelvin", "degF": "delta_degF", "degR": "degR"}
 
@@ -126,6 +131,11 @@ def parse(text: object, dimension: Dimension) -> Quantity:
     if not (math.isfinite(result) and math.isfinite(sd)):
         raise InputError(None, None, f"{quoted(text)} is too large a number", written)
     return Quantity(result, sd, text)
+
+
+def is_temperature_scale(unit: str) -> bool:
+    """Tell whether a unit is that of a thermometer: degC, °F, K and how else they are written."""
+    return _plain(unit) in _SCALE_NAMES
 
 
 def is_relative(text: object) -> bool:
@@ -188,6 +198,8 @@ def scale(unit: str, dimension: Dimension) -> tuple[float, float]:
     kind = KINDS[dimension]
     written = f'write {kind.words} with its unit, such as "{kind.example}"'
     unfit = InputError(None, None, f"the unit {quoted(unit)} is not that of {kind.words}", written)
+    if len(unit) > LONGEST:
+        raise unfit
     plain = _plain(unit)
     if dimension == "temperature":
         if plain not in _SCALE_NAMES:
@@ -286,14 +298,17 @@ def format_number(value: float | None, digits: int = 3) -> str:
         return "–"
     if value == 0:
         return "0"
-    return _with_places(value, digits - 1 - _exponent(value, digits))
+    power = _exponent(value, digits)
+    if -3 <= power < 6:
+        return _rounded(value, digits - 1 - power)
+    return f"{value / 10.0**power:.{digits - 1}f} × {_power_of_ten(power)}"
 
 
 def format_value(value: float | None, sd: float | None, unit: str = "") -> str:
     """Return a value with its uncertainty, rounded to the same place: "41.3 ± 1.8 W/(m² K)".
 
-    Arguments: value and its standard uncertainty sd in `unit`, an ASCII unit. The uncertainty is shown with two
-    significant digits; without one (None or 0) the value is shown with four.
+    Arguments: value and its standard uncertainty sd in `unit`, an ASCII unit. The uncertainty is shown with
+    two significant digits; without one (None or 0) the value is shown with four.
     """
     tail = f" {pretty_unit(unit)}" if unit else ""
     if value is None or not math.isfinite(value):
@@ -303,9 +318,9 @@ def format_value(value: float | None, sd: float | None, unit: str = "") -> str:
     places = 1 - _exponent(sd, 2)
     power = _exponent(max(abs(value), abs(sd)), 2)
     if -3 <= power < 6:
-        return f"{_with_places(value, places)} ± {_with_places(sd, places)}{tail}"
-    shifted = [f"{number / 10.0**power:.{max(places + power, 0)}f}" for number in (value, sd)]
-    return f"({shifted[0]} ± {shifted[1]}) × 10{str(power).translate(_RAISED)}{tail}"
+        return f"{_rounded(value, places)} ± {_rounded(sd, places)}{tail}"
+    pair = " ± ".join(_rounded(number / 10.0**power, places + power) for number in (value, sd))
+    return f"({pair}) × {_power_of_ten(power)}{tail}"
 
 
 def _exponent(value: float, digits: int) -> int:
@@ -313,9 +328,10 @@ def _exponent(value: float, digits: int) -> int:
     return int(f"{value:.{digits - 1}e}".partition("e")[2])
 
 
-def _with_places(value: float, places: int) -> str:
+def _rounded(value: float, places: int) -> str:
     """Return the value rounded to so many decimal places, which may be negative."""
-    power = math.floor(math.log10(abs(value))) if value else 0
-    if value and not -3 <= power < 6:
-        return f"{value / 10.0**power:.{max(places + power, 0)}f} × 10{str(power).translate(_RAISED)}"
     return f"{round(value, places):.{max(places, 0)}f}"
+
+
+def _power_of_ten(power: int) -> str:
+    return f"10{str(power).translate(_RAISED)}"

@@ -1,25 +1,32 @@
-"""Readings: what was measured in one run. Reads readings.csv and .xlsx."""
+"""Readings: what was measured in one run. Reads readings.csv and .xlsx.
+
+One row a run, one column a sensor, named as in the rig. A column may carry its unit, in its header as
+"TA [degF]" or in a row of units below it; temperatures are in °C otherwise and heat in W. An empty cell was
+not measured. Other columns are kept as text.
+"""
 
 import hashlib
+import math
 import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from types import MappingProxyType
 
+from finback.columns import Column, Columns, assign, is_empty
 from finback.errors import InputError
-from finback.quantity import scale
-from finback.rig import Rig, Sensor, read_file
-from finback.table import Sheet, read_csv, split_header
-from finback.wording import listed, nearest, quoted
+from finback.rig import Rig, read_file
+from finback.sensors import RUN_COLUMN
+from finback.table import WORKBOOK_START, Row, parse_text, parse_workbook
+from finback.wording import listed, nearest, plain, quoted
 
-RUN = "run"
-"""The column that names the runs."""
-
+LONGEST_RUN = 120
 LARGEST_FILE = 200_000_000
 """Bytes of the largest table that is read."""
 
-_EMPTY = frozenset(("", "-", "–", "—", "nan", "n/a", "na", "#n/a"))
+HOTTEST = 3000.0 + 273.15
+"""No fin is hotter [K]: tungsten melts at 3422 °C, and a thermometer that says more is broken."""
+
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,4})?")
 
 
@@ -44,32 +51,23 @@ class Readings:
 
     @property
     def used(self) -> Mapping[str, float]:
-        """The values that count, sensor name -> value: those that are not set aside."""
+        """The values that count, sensor name -> value [K or W]: those that are not set aside."""
         return {name: value for name, value in self.values.items() if name not in self.excluded}
-
-
-@dataclass(frozen=True, slots=True)
-class Column:
-    """A sensor's column: where it is, and how its numbers become SI values (factor · number + offset)."""
-
-    sensor: Sensor
-    index: int
-    header: str
-    factor: float
-    offset: float
 
 
 @dataclass(frozen=True)
 class Table:
-    """The runs of one file, of which only those asked for become Readings."""
+    """The runs of one file, of which only those asked for become Readings.
 
-    rig: Rig
-    sheet: Sheet
-    columns: tuple[Column, ...]
-    extra: Mapping[str, int]
-    rows: Mapping[str, int]  # run -> index in sheet.rows
-    source: Path | None
-    sha256: str | None
+    `columns`: what each column of the file means; `rows`: the row of each run by its name, in the order of
+    the file; `decimal_comma`: a comma in a number is its decimal sign.
+    """
+
+    columns: Columns
+    rows: Mapping[str, Row]
+    decimal_comma: bool
+    source: Path | None = None
+    sha256: str | None = None
 
     @property
     def runs(self) -> tuple[str, ...]:
@@ -87,55 +85,96 @@ class Table:
 
         Raises InputError for an unknown run, for none named among several, and for a wrong cell in its row.
         """
+        if run is None and len(self.rows) > 1:
+            problem = f"there are {len(self.rows)} runs ({listed(self.rows, 3)})"
+            raise InputError(self.source, None, problem, "name the one that is meant")
         if run is None:
-            if len(self.rows) > 1:
-                problem = f"there are {len(self.rows)} runs ({listed(self.rows, 3)})"
-                raise InputError(self.source, None, problem, "name the one that is meant")
             run = next(iter(self.rows))
         if run not in self.rows:
             near = nearest(run, self.rows)
             remedy = f"the nearest is {quoted(near)}" if near else f"there are {listed(self.rows, 3)}"
             raise InputError(self.source, None, f"there is no run {quoted(run)}", remedy)
-        number, cells = self.sheet.rows[self.rows[run]]
+        row = self.rows[run]
         values = {}
-        for column in self.columns:
-            cell = cells[column.index] if column.index < len(cells) else ""
-            if cell.casefold() not in _EMPTY:
-                values[column.sensor.name] = self._value(cell, column, number)
-        extra = {name: cells[at] if at < len(cells) else "" for name, at in self.extra.items()}
+        for column in self.columns.sensors:
+            value = self._value(column, row)
+            if value is not None:
+                values[column.sensor.name] = value
+        if not any(c.sensor.place == "fin" and c.sensor.name in values for c in self.columns.sensors):
+            problem = f"run {quoted(run)} has no temperature along the fin"
+            raise InputError(
+                self.source, f"row {row[0]}", problem, "fill in at least one, or choose another run"
+            )
+        extra = {name: _cell(row, at) for name, at in self.columns.extra.items()}
         return Readings(run, values, extra=extra, source=self.source, sha256=self.sha256)
 
-    def _value(self, cell: str, column: Column, row: int) -> float:
+    def _value(self, column: Column, row: Row) -> float | None:
+        """Return what a sensor read in a row [K or W], None where it was not measured."""
+        cell = _cell(row, column.index)
+        if is_empty(cell):
+            return None
+        place = f"row {row[0]}, column {plain(column.sensor.name)}"
         text = cell.replace("−", "-")
-        if self.sheet.decimal_comma:
+        if self.decimal_comma:
             text = text.replace(",", ".")
         if not _NUMBER.fullmatch(text):
-            raise InputError(self.source, f"row {row}, column {column.header}", f"{quoted(cell)} is not a number", "write a number")
-        return float(text) * column.factor + column.offset
+            raise InputError(
+                self.source, place, f"{quoted(cell)} is no number", "write a number or leave it empty"
+            )
+        value = float(text) * column.factor + column.offset
+        if not math.isfinite(value):
+            raise InputError(
+                self.source, place, f"{quoted(cell)} is too large", "write a number or leave it empty"
+            )
+        if column.sensor.reads_temperature and value < 0:
+            problem = f"{quoted(cell)} {column.unit} is below absolute zero"
+            raise InputError(self.source, place, problem, "correct the value, or its unit in the header")
+        if column.sensor.reads_temperature and value > HOTTEST:
+            problem = f"{quoted(cell)} {column.unit} is hotter than any fin (3000 degC)"
+            raise InputError(self.source, place, problem, "correct the value, or its unit in the header")
+        return value
 
 
 def read(path: Path | str, rig: Rig) -> Table:
-    """Read a table of readings. Raises InputError for the first thing that is wrong."""
+    """Read the table of readings of a rig, .csv or .xlsx.
+
+    Raises InputError for the first thing that is wrong with the file, its columns or the names of its runs;
+    the cells of a run are checked when it is picked.
+    """
     path = Path(path)
     return read_bytes(read_file(path, LARGEST_FILE), rig, path)
 
 
 def read_bytes(content: bytes, rig: Rig, source: Path | None = None) -> Table:
     """Read the content of a table of readings. Raises InputError as `read` does."""
-    sheet = read_csv(content, {*rig.sensors, RUN}, source)
-    columns, extra = [], {}
-    run_index = None
-    for index, cell in enumerate(sheet.header):
-        name, unit = (cell, None) if cell in rig.sensors else split_header(cell)
-        if name in rig.sensors:
-            sensor = rig.sensors[name]
-            factor, offset = scale(unit or ("degC" if sensor.reads_temperature else "W"), "temperature" if sensor.reads_temperature else "heat")
-            columns.append(Column(sensor, index, name, factor, offset))
-        elif cell == RUN:
-            run_index = index
-        else:
-            extra[cell] = index
-    rows = {}
-    for at, (_, cells) in enumerate(sheet.rows):
-        rows[cells[run_index] if run_index is not None else str(at + 1)] = at
-    return Table(rig, sheet, tuple(columns), extra, rows, source, hashlib.sha256(content).hexdigest())
+    workbook = content.startswith(WORKBOOK_START) or (source is not None and source.suffix.lower() == ".xlsx")
+    if workbook:
+        sheet = parse_workbook(content, source)
+    else:
+        sheet = parse_text(content, {RUN_COLUMN, *rig.sensors}, source)
+    columns, body = assign(sheet, rig.sensors, source)
+    runs = _runs(body, columns.run, source)
+    return Table(columns, runs, sheet.decimal_comma, source, hashlib.sha256(content).hexdigest())
+
+
+def _runs(body: tuple[Row, ...], column: int | None, source: Path | None) -> dict[str, Row]:
+    """Return the row of each run by its name; without a column of names they are counted from 1."""
+    if column is None:
+        return {str(count): row for count, row in enumerate(body, start=1)}
+    runs: dict[str, Row] = {}
+    for row in body:
+        name = _cell(row, column)
+        place = f"row {row[0]}, column {RUN_COLUMN}"
+        if not name or len(name) > LONGEST_RUN or not name.isprintable():
+            remedy = f"write a name of 1 to {LONGEST_RUN} printable characters"
+            raise InputError(source, place, "this run has no proper name", remedy)
+        if name in runs:
+            problem = f"the run {quoted(name)} stands in row {runs[name][0]} already"
+            raise InputError(source, place, problem, "give each run a name of its own")
+        runs[name] = row
+    return runs
+
+
+def _cell(row: Row, at: int) -> str:
+    cells = row[1]
+    return cells[at] if at < len(cells) else ""

@@ -6,7 +6,7 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from types import MappingProxyType
@@ -33,17 +33,15 @@ from finback.models import (
     rectangular,
 )
 from finback.quantity import Quantity
-from finback.wording import listed, quoted
+from finback.sensors import Sensor, SensorPlace, assumed, place_sensors
 
 if TYPE_CHECKING:
-    from finback.rig_file import RigSection, SensorSection, Spread
+    from finback.rig_file import RigSection
 
-SensorPlace = Literal["fin", "plate", "air", "heat", "heater"]
+__all__ = ["Rig", "Sensor", "SensorPlace", "TipName", "read", "read_bytes", "read_file"]
+
 TipName = Literal["adiabatic", "convective", "fixed", "infinite"]
 Values = float | NDArray[np.float64]
-
-HEAT_NOISE = 0.05
-"""Noise of a heat reading where the rig states none, as a fraction of the reading."""
 
 LARGEST_FILE = 1_000_000
 """Bytes of the largest rig.toml that is read."""
@@ -55,44 +53,13 @@ LENGTHS: Mapping[str, tuple[str, ...]] = {
 """The lengths that describe each profile, named as in [fin]."""
 
 
-@dataclass(frozen=True, slots=True)
-class Sensor:
-    """One sensor of a rig, in SI units.
-
-    `place`: what it reads. `position` [m] from the base, fin sensors only, with its standard uncertainty
-    `position_sd` [m]. `noise`: standard deviation from reading to reading, K for temperatures and W for heat,
-    None when it is to be estimated from the readings; `calibration`: standard uncertainty of the error common
-    to all sensors of this place. Where either was given in per cent of the reading, `noise_relative` or
-    `calibration_relative` holds the fraction and the absolute one is None or 0.
-    """
-
-    name: str
-    place: SensorPlace
-    position: float | None = None
-    position_sd: float = 0.0
-    noise: float | None = None
-    noise_relative: float | None = None
-    calibration: float = 0.0
-    calibration_relative: float | None = None
-
-    @property
-    def reads_temperature(self) -> bool:
-        """Whether it reads a temperature rather than a heat flow."""
-        return self.place in ("fin", "plate", "air")
-
-    @property
-    def exactly_known(self) -> bool:
-        """Whether its reading is the true value: a stated noise of zero."""
-        return self.noise == 0
-
-
 @dataclass(frozen=True)
 class Rig:
     """A rig as described in rig.toml, every number in SI units.
 
     `geometry`: the keys of [fin] that are lengths (length, diameter, width, thickness), as quantities in m.
-    `tip` None: candidates are compared. `conductivity` None: a wide prior. `assumed`: defaults that were used,
-    each an `assumed` finding.
+    `tip` None: candidates are compared. `conductivity` None: a wide prior. `assumed`: defaults that were
+    used, each an `assumed` finding.
     """
 
     title: str
@@ -122,7 +89,7 @@ class Rig:
         return _rig(document, None, None)
 
     def sensors_on(self, place: SensorPlace) -> tuple[Sensor, ...]:
-        """Return the sensors that read this place, in the order of the file; along the fin, from base to tip."""
+        """Return the sensors that read this place: along the fin from base to tip, others as in the file."""
         found = [sensor for sensor in self.sensors.values() if sensor.place == place]
         return tuple(sorted(found, key=lambda sensor: sensor.position or 0.0))
 
@@ -145,9 +112,10 @@ class Rig:
     ) -> tuple[Fin, Base, Values]:
         """Turn names into physics: the one place where this is done.
 
-        Arguments: values by name, floats or arrays of shape (n_sets,): h [W/(m² K)], k [W/(m K)], air [K]; plate
-        [K] and joint [m² K/W] for a base behind a joint, plate alone for a base at plate temperature, otherwise
-        base_temperature [K]; tip_temperature [K] for a fixed tip. tip; changes, as in `profile`.
+        Arguments: values by name, floats or arrays of shape (n_sets,): h [W/(m² K)], k [W/(m K)], air [K];
+        plate [K] and joint [m² K/W] for a base behind a joint, plate alone for a base at the plate's
+        temperature, otherwise base_temperature [K]; tip_temperature [K] for a fixed tip. tip; changes, as in
+        `profile`.
         Returns the fin, its base and the air temperature [K], as `finback.models.solve` takes them.
         """
         base: Base
@@ -161,20 +129,27 @@ class Rig:
         return fin, base, values["air"]
 
 
+_TIPS: Mapping[str, Tip] = {
+    "adiabatic": AdiabaticTip(),
+    "convective": ConvectiveTip(),
+    "infinite": InfiniteTip(),
+}
+
+
 def _tip(name: TipName, values: Mapping[str, Values]) -> Tip:
     if name == "fixed":
         return FixedTip(values["tip_temperature"])
-    return {"adiabatic": AdiabaticTip, "convective": ConvectiveTip, "infinite": InfiniteTip}[name]()
+    return _TIPS[name]
 
 
 def read(path: Path | str) -> Rig:
-    """Read a rig.toml. Raises InputError for the first thing that is wrong, with the file and the place in it."""
+    """Read a rig.toml. Raises InputError for the first thing that is wrong, with its place in the file."""
     path = Path(path)
     return read_bytes(read_file(path, LARGEST_FILE), path)
 
 
 def read_file(path: Path, largest: int) -> bytes:
-    """Return the content of a file. Raises InputError for what is no file, cannot be opened or is too large."""
+    """Return the content of a file of at most so many bytes. Raises InputError where it cannot be read."""
     try:
         if path.is_dir():
             raise InputError(path, None, "this is a folder", "name the file in it")
@@ -188,7 +163,9 @@ def read_file(path: Path, largest: int) -> bytes:
     except FileNotFoundError:
         raise InputError(path, None, "there is no such file", "check its name and folder") from None
     except (OSError, ValueError):
-        raise InputError(path, None, "this file cannot be read", "check its name and its permissions") from None
+        raise InputError(
+            path, None, "this file cannot be read", "check its name and its permissions"
+        ) from None
 
 
 def read_bytes(content: bytes, source: Path | None = None) -> Rig:
@@ -204,8 +181,8 @@ def _rig(document: Mapping[str, Any], source: Path | None, sha256: str | None) -
 
     section = check(document, source)
     geometry = _geometry(section, source)
-    sensors = _sensors(section, geometry["length"], source)
-    _check_whole(section, sensors, source)
+    sensors = place_sensors(section.sensors, geometry["length"], source)
+    _check_together(section, sensors, source)
     return Rig(
         title=section.title,
         profile_name=section.fin.profile,
@@ -217,64 +194,66 @@ def _rig(document: Mapping[str, Any], source: Path | None, sha256: str | None) -
         conductivity=section.material.conductivity,
         expected_joint=section.joint.expected if section.joint else None,
         expected_coefficient=section.air.expected_h,
-        assumed=_assumed(section, sensors),
+        assumed=(*_assumed(section), *assumed(section.sensors, sensors)),
         source=source,
         sha256=sha256,
     )
 
 
 def _geometry(section: RigSection, source: Path | None) -> dict[str, Quantity]:
-    """Return the lengths of the profile; those of another profile, or none, are refused."""
+    """Return the lengths of the profile; a missing one is refused, and so is one of another profile."""
     fin = section.fin
-    given = {name: getattr(fin, name) for name in ("length", "diameter", "width", "thickness")}
     wanted = LENGTHS[fin.profile]
+    given: dict[str, Quantity | None] = {
+        "length": fin.length,
+        "diameter": fin.diameter,
+        "width": fin.width,
+        "thickness": fin.thickness,
+    }
+    geometry = {}
     for name, quantity in given.items():
         if quantity is None and name in wanted:
             problem = f'a {fin.profile} fin needs the key "{name}"'
             raise InputError(source, "[fin]", problem, f'add a line such as {name} = "8 mm"')
         if quantity is not None and name not in wanted:
-            problem = f'a {fin.profile} fin has no "{name}"'
+            problem = f"a {fin.profile} fin has no {name}"
             raise InputError(source, f"[fin] {name}", problem, f"it is described by {', '.join(wanted)}")
-    return {name: given[name] for name in wanted}
+        if quantity is not None:
+            geometry[name] = quantity
+    return geometry
 
 
-def _sensors(section: RigSection, length: Quantity, source: Path | None) -> dict[str, Sensor]:
-    sensors = {}
-    for name, entry in (section.sensors.model_extra or {}).items():
-        sensors[name] = _sensor(name, entry, section, length, source)
-    return sensors
+def _check_together(section: RigSection, sensors: Mapping[str, Sensor], source: Path | None) -> None:
+    """Check what no table can tell alone."""
+    fin = section.fin
+    if fin.edges is not None and fin.profile != "rectangular":
+        problem = f"a {fin.profile} fin has no edges"
+        raise InputError(source, "[fin] edges", problem, "leave edges out")
+    if fin.tip_temperature is not None and fin.tip != "fixed":
+        problem = 'only a tip = "fixed" has a temperature of its own'
+        raise InputError(source, "[fin] tip_temperature", problem, 'leave it out, or write tip = "fixed"')
+    if section.joint is not None and not any(sensor.place == "plate" for sensor in sensors.values()):
+        problem = "no sensor reads the plate, so the readings cannot tell of a joint"
+        raise InputError(
+            source, "[joint]", problem, 'leave it out, or add a sensor such as TP = { on = "plate" }'
+        )
 
 
-def _sensor(
-    name: str, entry: SensorSection, section: RigSection, length: Quantity, source: Path | None
-) -> Sensor:
-    """Return one sensor, with the defaults filled in where they apply."""
-    from finback.rig_file import Spread
-
-    defaults = section.sensors.defaults
-    place: SensorPlace = entry.on or "fin"
-    temperature = place in ("fin", "plate", "air")
-    noise = entry.noise or (defaults.noise if temperature else Spread(HEAT_NOISE, True))
-    calibration = entry.calibration or (defaults.calibration if temperature else None) or Spread(0.0, False)
-    position_sd = 0.0
-    if entry.at is not None:
-        default = defaults.position.value if defaults.position else 0.0
-        position_sd = entry.position.value if entry.position else entry.at.sd or default
-    return Sensor(
-        name,
-        place,
-        position=entry.at.value if entry.at else None,
-        position_sd=position_sd,
-        noise=None if noise is None or noise.relative else noise.amount,
-        noise_relative=noise.amount if noise and noise.relative else None,
-        calibration=0.0 if calibration.relative else calibration.amount,
-        calibration_relative=calibration.amount if calibration.relative else None,
-    )
-
-
-def _check_whole(section: RigSection, sensors: Mapping[str, Sensor], source: Path | None) -> None:
-    pass
-
-
-def _assumed(section: RigSection, sensors: Mapping[str, Sensor]) -> tuple[Finding, ...]:
-    return ()
+def _assumed(section: RigSection) -> Iterator[Finding]:
+    """Yield a finding for each default of fin and material that was used."""
+    if section.fin.profile == "rectangular" and section.fin.edges is None:
+        yield Finding(
+            "assumed",
+            "note",
+            "It is not stated whether the two narrow side faces lose heat: they are taken to; state it with "
+            'edges = "exposed" or "guarded" in [fin].',
+            evidence={"key": "edges", "value": "exposed"},
+        )
+    if section.material.conductivity is None:
+        yield Finding(
+            "assumed",
+            "note",
+            "No conductivity is stated: k is left free within a wide prior; state it with "
+            'conductivity = "167 W/(m K) +/- 5 %" in [material].',
+            evidence={"key": "conductivity"},
+        )

@@ -1,49 +1,122 @@
 """Tables: the cells of a .csv or .xlsx file as text, row by row, before anyone asks what they mean.
 
-A CSV file may be separated by commas, semicolons or tabs, written in UTF-8 (with or without a byte order mark),
-UTF-16 or Windows-1252. Rows are counted as a spreadsheet shows them, the header being the first that is not
-empty.
+A CSV file may be separated by commas, semicolons or tabs, and written in UTF-8 (with or without a byte order
+mark), UTF-16 or Windows-1252. Of a workbook the first sheet is taken. Rows are counted as a spreadsheet shows
+them; the first that is not empty is the header.
 """
 
 import csv
+import datetime
 import io
 import re
-from collections.abc import Collection, Iterator
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
 from finback.errors import InputError
 from finback.wording import quoted
 
-SEPARATORS = ",;\t"
-_HEADER = re.compile(r"(.*?)\s*(?:\[([^\[\]]*)\]|\(([^()]*)\))", re.DOTALL)
+SEPARATORS = {",": "comma", ";": "semicolon", "\t": "tab"}
+WORKBOOK_START = b"PK\x03\x04"
+"""First bytes of a .xlsx file, which is a ZIP archive."""
+
+_EXCEL_SEPARATOR = re.compile(r"sep=([,;\t])\s*", re.IGNORECASE)
+
+Row = tuple[int, tuple[str, ...]]
+"""The number of a row and its cells."""
 
 
 @dataclass(frozen=True)
 class Sheet:
-    """A table of text: header, its row number, and the rows that are not empty with theirs.
+    """A table of text: its header, and below it the rows that are not empty, each with its number.
 
     `decimal_comma`: a comma in a number is its decimal sign.
     """
 
     header: tuple[str, ...]
-    header_row: int
-    rows: tuple[tuple[int, tuple[str, ...]], ...]
+    rows: tuple[Row, ...]
     decimal_comma: bool
 
 
 def split_header(cell: str) -> tuple[str, str | None]:
     """Return the name and the unit of a header cell such as "TA [degF]" or "TA (K)"; None without a unit."""
-    match = _HEADER.fullmatch(cell)
-    if match is None or not match[1]:
-        return cell, None
-    unit = match[2] if match[2] is not None else match[3]
-    return match[1], unit.strip()
+    for opening, closing in ("[]", "()"):
+        name, bracket, unit = cell.removesuffix(closing).rpartition(opening)
+        if cell.endswith(closing) and bracket and name.strip():
+            return name.strip(), unit.strip()
+    return cell, None
 
 
-def decode(content: bytes, source: Path | None) -> str:
-    """Return the text of a CSV file. Raises InputError for what is not text."""
-    not_text = InputError(source, None, "this is not a text file", "save the table as CSV in UTF-8, or as XLSX")
+def parse_text(content: bytes, names: Collection[str], source: Path | None) -> Sheet:
+    """Return the table in the content of a CSV file.
+
+    Arguments: content; names, the columns that are expected, by which the separator is told; source, for
+    errors. Raises InputError for what is no text, is empty, or cannot be split into cells.
+    """
+    text = _decode(content, source)
+    lines = (line for line in text.splitlines() if line.strip())
+    first = next(lines, "")
+    declared = _EXCEL_SEPARATOR.fullmatch(first)
+    if declared:
+        separator = declared[1]
+    else:
+        separator = max(SEPARATORS, key=lambda mark: _known_columns(first, mark, names))
+    reader = csv.reader(io.StringIO(text, newline=""), delimiter=separator, strict=True)
+    rows: list[Row] = []
+    number = 0
+    try:
+        for number, cells in enumerate(reader, start=1):
+            if any(cell.strip() for cell in cells) and not (declared and not rows and number == 1):
+                rows.append((number, tuple(cell.strip() for cell in cells)))
+    except csv.Error:
+        problem = "this row cannot be split into cells"
+        remedy = "close every quotation mark, and write one inside a cell twice"
+        raise InputError(source, f"row {number + 1}", problem, remedy) from None
+    return _sheet(rows, separator != ",", source)
+
+
+def parse_workbook(content: bytes, source: Path | None) -> Sheet:
+    """Return the table in the first sheet of a .xlsx file.
+
+    Raises InputError for what is no such workbook, is empty, or holds a formula whose value was not stored.
+    """
+    rows = _workbook_rows(content, True, source)
+    if not rows or any("" in cells for _, cells in rows):
+        _check_formulas(_workbook_rows(content, False, source), dict(rows), source)
+    return _sheet(rows, True, source)
+
+
+def _check_formulas(typed: list[Row], stored: Mapping[int, tuple[str, ...]], source: Path | None) -> None:
+    """Refuse a workbook whose formulas were never computed: a program that wrote it stored no values."""
+    first = None
+    for number, cells in typed:
+        for at, cell in enumerate(cells):
+            if cell.startswith("="):
+                if "".join(stored.get(number, ())[at : at + 1]):
+                    return
+                first = first or (f"row {number}, column {_letters(at)}", cell)
+    if first:
+        problem = f"the formula {quoted(first[1])} has no stored value"
+        raise InputError(source, first[0], problem, "open the workbook in a spreadsheet and save it")
+
+
+def _sheet(rows: list[Row], decimal_comma: bool, source: Path | None) -> Sheet:
+    """Return the sheet of these rows, once each is known to fit under the header."""
+    remedy = "write a header with one column a sensor and below it one row a run"
+    if not rows:
+        raise InputError(source, None, "this file is empty", remedy)
+    (_, header), *body = rows
+    if not body:
+        raise InputError(source, None, "there is no run below the header", remedy)
+    for number, cells in body:
+        if any(cells[len(header) :]):
+            problem = f"this row has {len(cells)} cells and the header {len(header)}"
+            remedy = "write one cell a column; where the comma is the decimal sign, separate by semicolons"
+            raise InputError(source, f"row {number}", problem, remedy)
+    return Sheet(header, tuple(body), decimal_comma)
+
+
+def _decode(content: bytes, source: Path | None) -> str:
     encodings = ("utf-16",) if content[:2] in (b"\xff\xfe", b"\xfe\xff") else ("utf-8-sig", "cp1252")
     for encoding in encodings:
         try:
@@ -53,39 +126,56 @@ def decode(content: bytes, source: Path | None) -> str:
         if "\0" in text:
             break
         return text
-    raise not_text
-
-
-def read_csv(content: bytes, names: Collection[str], source: Path | None) -> Sheet:
-    """Read the content of a CSV file.
-
-    Arguments: content; names, columns that are expected, by which the separator is told; source, for errors.
-    """
-    text = decode(content, source)
-    first = next((line for line in text.splitlines() if line.strip()), "")
-    if not first:
-        raise InputError(source, None, "this file is empty", "write a header with one column a sensor, then one row a run")
-    separator = max(SEPARATORS, key=lambda mark: _known_columns(first, mark, names))
-    reader = csv.reader(io.StringIO(text, newline=""), delimiter=separator, strict=True)
-    rows: list[tuple[int, tuple[str, ...]]] = []
-    number = 0
-    try:
-        for number, row in enumerate(reader, start=1):
-            cells = tuple(cell.strip() for cell in row)
-            if any(cells):
-                rows.append((number, cells))
-    except csv.Error as error:
-        problem = f"this row cannot be split into cells ({error})"
-        raise InputError(source, f"row {number + 1}", problem, "close every quotation mark") from None
-    (header_row, header), *body = rows
-    return Sheet(header, header_row, tuple(body), separator != ",")
+    raise InputError(source, None, "this is not a text file", "save the table as CSV in UTF-8, or as XLSX")
 
 
 def _known_columns(line: str, separator: str, names: Collection[str]) -> tuple[int, int]:
-    """Return how many columns of the header are known by name, and how many there are."""
+    """Return how many columns of a header are known by name, and how many there are."""
     try:
-        cells = next(csv.reader([line], delimiter=separator), [])
+        cells = [cell.strip() for cell in next(csv.reader([line], delimiter=separator), [])]
     except csv.Error:
         return 0, 0
-    known = sum(cell.strip() in names or split_header(cell.strip())[0] in names for cell in cells)
-    return known, len(cells)
+    return sum(cell in names or split_header(cell)[0] in names for cell in cells), len(cells)
+
+
+def _workbook_rows(content: bytes, values: bool, source: Path | None) -> list[Row]:
+    """Return the rows of the first sheet that are not empty: the stored values, or what was typed."""
+    import openpyxl
+
+    try:
+        book = openpyxl.load_workbook(io.BytesIO(content), read_only=True, data_only=values)
+        sheet = book.worksheets[0]
+        sheet.reset_dimensions()  # or a sheet that says it is a million columns wide is padded to that
+        rows = [
+            (number, _texts(row)) for number, row in enumerate(sheet.iter_rows(values_only=True), start=1)
+        ]
+    except Exception:  # noqa: BLE001  # openpyxl has no error of its own: a damaged workbook raises a dozen kinds
+        problem = "this is not a readable XLSX workbook"
+        raise InputError(source, None, problem, "save the table as XLSX or CSV") from None
+    return [(number, cells) for number, cells in rows if any(cells)]
+
+
+def _texts(row: Iterable[object]) -> tuple[str, ...]:
+    return tuple(_text(value) for value in row)
+
+
+def _text(value: object) -> str:
+    """Return the content of a workbook's cell as text; whole numbers without a decimal point."""
+    if value is None:
+        return ""
+    if isinstance(value, bool):
+        return str(value).upper()
+    if isinstance(value, float):
+        return str(int(value)) if value.is_integer() and abs(value) < 1e15 else repr(value)
+    if isinstance(value, datetime.datetime | datetime.date | datetime.time):
+        return value.isoformat()
+    return str(value).strip()
+
+
+def _letters(at: int) -> str:
+    """Return the letters by which a spreadsheet names a column, counted from 0."""
+    name, at = "", at + 1
+    while at:
+        at, rest = divmod(at - 1, 26)
+        name = chr(ord("A") + rest) + name
+    return name

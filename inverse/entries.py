@@ -1,0 +1,139 @@
+"""Entries: what one key of rig.toml may hold.
+
+Each function checks one entry and returns its value in SI units, lengths in [m] and temperatures in [K], or
+raises `EntryError`. The sections of `finback.rig_file` say which key takes which.
+"""
+
+from collections.abc import Callable
+from typing import NamedTuple, NoReturn
+
+from finback.errors import InputError
+from finback.quantity import Dimension, Quantity, is_relative, parse
+from finback.wording import listed, nearest, quoted
+
+LONGEST_TITLE = 200
+
+
+class Spread(NamedTuple):
+    """A stated noise or calibration uncertainty: K or W, or a fraction of the reading where `relative`."""
+
+    amount: float
+    relative: bool
+
+
+class EntryError(ValueError):
+    """An entry that cannot be taken: what is wrong, what would be right."""
+
+    def __init__(self, problem: str, remedy: str) -> None:
+        self.problem, self.remedy = problem, remedy
+        super().__init__(f"{problem}; {remedy}")
+
+
+def quantity(dimension: Dimension) -> Callable[[object], Quantity]:
+    """Return the function that reads a quantity of this dimension."""
+    return lambda text: _parsed(text, dimension)
+
+
+def choice(what: str, known: tuple[str, ...], later: tuple[str, ...] = ()) -> Callable[[object], str]:
+    """Return the function that takes one of the known words and says which ones come later."""
+
+    def choose(word: object) -> str:
+        if not isinstance(word, str):
+            raise EntryError(f"this is no {what}", f"write one of {listed(known)}")
+        if word in known:
+            return word
+        if word in later:
+            problem = f"this version does not have the {what} {quoted(word)} yet"
+            raise EntryError(problem, f"write one of {listed(known)}")
+        near = nearest(word, known)
+        remedy = f"the nearest known one is {quoted(near)}" if near else f"write one of {listed(known)}"
+        raise EntryError(f"{quoted(word)} is no {what}", remedy)
+
+    return choose
+
+
+def later(what: str, instead: str) -> Callable[[object], NoReturn]:
+    """Return the function that refuses what this version does not have yet."""
+
+    def refuse(_: object) -> NoReturn:
+        raise EntryError(f"this version does not have {what} yet", instead)
+
+    return refuse
+
+
+def title(text: object) -> str:
+    """Read a title: one printable line."""
+    if not isinstance(text, str) or not text.strip() or len(text) > LONGEST_TITLE or not text.isprintable():
+        remedy = f"write one line of 1 to {LONGEST_TITLE} printable characters in quotes"
+        raise EntryError("this is no title", remedy)
+    return text.strip()
+
+
+def positive(value: Quantity) -> Quantity:
+    """Check that a quantity is above zero."""
+    if value.value <= 0:
+        raise EntryError(f"{quoted(value.text)} is not above zero", "write a positive value")
+    return value
+
+
+def narrow(value: Quantity) -> Quantity:
+    """Check that a positive quantity is known better than to its own size."""
+    if value.sd >= value.value:
+        problem = f"the uncertainty in {quoted(value.text)} is as large as the value"
+        raise EntryError(problem, "write a standard uncertainty smaller than the value")
+    return value
+
+
+def from_base(value: Quantity) -> Quantity:
+    """Check a distance from the base."""
+    if value.value < 0:
+        raise EntryError(
+            f"{quoted(value.text)} is negative", "write the distance from the base towards the tip"
+        )
+    return value
+
+
+def above_absolute_zero(value: Quantity) -> Quantity:
+    """Check an absolute temperature."""
+    if value.value < 0:
+        problem = f"{quoted(value.text)} is below absolute zero"
+        raise EntryError(problem, 'write a temperature in degC, degF or K, such as "21.3 degC"')
+    return value
+
+
+def uncertainty(value: Quantity) -> Quantity:
+    """Check a quantity that is itself a standard uncertainty."""
+    if value.value < 0:
+        raise EntryError(f"{quoted(value.text)} is negative", "write a standard uncertainty of zero or more")
+    if value.states_uncertainty:
+        problem = f"{quoted(value.text)} states the uncertainty of an uncertainty"
+        raise EntryError(problem, 'leave out the part after "+/-"')
+    return value
+
+
+def spread(text: object, key: str, place: str) -> Spread:
+    """Read noise or calibration of a sensor: K for temperatures, W or per cent for heat.
+
+    Arguments: text; key, "noise" or "calibration"; place, what the sensor reads.
+    """
+    if isinstance(text, str) and "class" in text.casefold():
+        problem = f"this version does not know thermocouple classes such as {quoted(text)} yet"
+        raise EntryError(problem, 'write the standard uncertainty in kelvin, such as "0.3 K"')
+    reads_heat = place in ("heat", "heater")
+    relative = is_relative(text)
+    if relative and not reads_heat:
+        problem = f"{quoted(text)} is a share of the reading, which means nothing for a temperature"
+        raise EntryError(problem, 'write a temperature difference, such as "0.2 K"')
+    dimension: Dimension = "relative" if relative else "heat" if reads_heat else "temperature difference"
+    found = uncertainty(_parsed(text, dimension))
+    if key == "noise" and found.value == 0 and place not in ("plate", "air"):
+        problem = "a noise of zero means exactly known, which only plate and air can be"
+        raise EntryError(problem, "write how much the sensor scatters, or leave noise out")
+    return Spread(found.value, relative)
+
+
+def _parsed(text: object, dimension: Dimension) -> Quantity:
+    try:
+        return parse(text, dimension)
+    except InputError as error:
+        raise EntryError(error.problem, error.remedy) from None
