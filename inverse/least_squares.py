@@ -1,7 +1,9 @@
 """Least squares on the readings, and how well each unknown is fixed by it.
 
 The one entry for every fit without priors. Residuals come as a function of a whole block of parameter
-vectors, so that a 3-point Jacobian costs one evaluation of it.
+vectors, and the method makes use of that: a 3-point Jacobian is one evaluation, and so are all the damped
+steps of an iteration of Levenberg and Marquardt's method, of which the best is taken. Columns are scaled by
+the Jacobian's, the iteration ends only when the full step has shrunk to rounding.
 """
 
 from collections.abc import Callable
@@ -13,7 +15,15 @@ from numpy.typing import NDArray
 Array = NDArray[np.float64]
 Residuals = Callable[[Array], Array]
 
-TOLERANCE = 1e-12  # looser ones report success on hard problems with no correct digits
+MAX_ITERATIONS = 1000
+SMALLEST_STEP = 1e-10  # of the values: looser ends report success on hard problems with no correct digits
+SMALLEST_GAIN = 1e-15  # of the sum of squares, that the full step still promises
+ROUNDING_GAIN = 1e-10  # the same, once no step gains anything any more
+FULL_STEP_BELOW = 1e-2  # dampings below which the undamped step is tried too
+SMALLEST_DAMPING = 1e-12
+FIRST_DAMPING = 1e-1  # of the largest squared singular value
+DAMPINGS = 10.0 ** np.array([-3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0])  # of the last one that was best
+SINGULAR = 1e-14  # of the largest singular value: smaller ones are rounding
 RANK_TOLERANCE = 1e-7  # of the scaled Jacobian's largest singular value; 3-point differences are good to 1e-10
 STEP = np.finfo(np.float64).eps ** (1 / 3)
 
@@ -50,43 +60,64 @@ class PointEstimate:
         )
 
 
-def jacobian(residuals: Residuals, values: Array) -> Array:
-    """Return d residuals/d values, shape (n, p), by central differences in one block evaluation."""
-    p = len(values)
-    steps = STEP * np.maximum(1.0, np.abs(values))
-    block = np.concatenate([values + np.diag(steps), values - np.diag(steps)])
-    found = residuals(block)
-    return np.asarray((found[:p] - found[p:]).T / (2 * steps), dtype=np.float64)
-
-
-def fit(residuals: Residuals, start: Array) -> PointEstimate:
+def fit(residuals: Residuals, start: Array, typical: Array | float = 1.0) -> PointEstimate:
     """Minimise the sum of squared residuals.
 
-    Arguments: residuals, from a block (n_sets, p) to (n_sets, n); start (p,). Returns a `PointEstimate`.
-    """
-    from scipy.optimize import least_squares
+    Arguments: residuals, from a block (n_sets, p) to (n_sets, n); start (p,); typical, the size of a change
+    in each value that matters, which bounds the difference steps from below, (p,) or one for all.
 
-    found = least_squares(
-        lambda z: residuals(z[None])[0],
-        start,
-        jac=lambda z: jacobian(residuals, z),
-        method="trf",
-        x_scale="jac",
-        ftol=TOLERANCE,
-        xtol=TOLERANCE,
-        gtol=TOLERANCE,
-        max_nfev=200,
-    )
-    covariance, rank, null_space = invert_information(found.jac)
-    return PointEstimate(
-        values=found.x,
-        covariance=covariance,
-        rank=rank,
-        null_space=null_space,
-        residuals=found.fun,
-        jacobian=found.jac,
-        converged=bool(found.success),
-    )
+    Returns a `PointEstimate`; `converged` is False when the iteration ended for want of progress or time.
+    """
+    z = np.array(start, dtype=np.float64)
+    r, slopes = _linearise(residuals, z, typical)
+    cost, scale, damping, converged = float(r @ r), np.zeros(len(z)), FIRST_DAMPING, False
+    for _ in range(MAX_ITERATIONS):
+        scale = np.maximum(scale, np.linalg.norm(slopes, axis=0))
+        dampings = np.concatenate([[0.0], damping * DAMPINGS])
+        steps, promised = _damped_steps(slopes, r, np.where(scale > 0, scale, 1.0), dampings)
+        small = np.abs(steps[0]) <= SMALLEST_STEP * np.maximum(np.abs(z), typical)
+        if small.all() or promised <= SMALLEST_GAIN * cost:
+            converged = True
+            break
+        tried = steps if damping <= FULL_STEP_BELOW else steps[1:]
+        trials = residuals(z + tried)
+        costs = np.einsum("ij,ij->i", trials, trials)
+        best = int(np.argmin(np.where(np.isfinite(costs), costs, np.inf)))
+        if not costs[best] < cost:
+            converged = promised <= ROUNDING_GAIN * cost
+            break
+        z, cost = z + tried[best], float(costs[best])
+        damping = max(float(dampings[-len(tried) :][best]), SMALLEST_DAMPING)
+        r, slopes = _linearise(residuals, z, typical)
+    covariance, rank, null_space = invert_information(slopes)
+    return PointEstimate(z, covariance, rank, null_space, r, slopes, converged)
+
+
+def _damped_steps(slopes: Array, r: Array, scale: Array, dampings: Array) -> tuple[Array, float]:
+    """Return the steps for all dampings (n_dampings, p), the full one first, and the gain that one promises."""
+    left, singular, right = np.linalg.svd(slopes / scale, full_matrices=False)
+    kept = singular > SINGULAR * singular[0]
+    along = -(left.T @ r)
+    squares = np.square(singular)
+    lost = np.where(kept, 0.0, np.inf)
+    shares = singular / (squares + dampings[:, None] * squares[0] + lost)
+    return ((shares * along) @ right) / scale, float(np.square(along[kept]).sum())
+
+
+def _linearise(residuals: Residuals, values: Array, typical: Array | float) -> tuple[Array, Array]:
+    """Return residuals (n,) and their Jacobian (n, p) from one block evaluation."""
+    p = len(values)
+    steps = STEP * np.maximum(np.abs(values), typical)
+    offsets = np.zeros((2 * p + 1, p))
+    offsets[1 : p + 1] = np.diag(steps)
+    offsets[p + 1 :] = -offsets[1 : p + 1]
+    found = residuals(values + offsets)
+    return found[0], (found[1 : p + 1] - found[p + 1 :]).T / (2 * steps)
+
+
+def jacobian(residuals: Residuals, values: Array, typical: Array | float = 1.0) -> Array:
+    """Return d residuals/d values, shape (n, p), by central differences in one block evaluation."""
+    return _linearise(residuals, values, typical)[1]
 
 
 def invert_information(derivatives: Array) -> tuple[Array, int, Array]:

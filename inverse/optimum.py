@@ -104,12 +104,13 @@ def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
 def _residuals(problem: Problem, sigma: float) -> least_squares.Residuals:
     """Return the residuals of the physical parameters at one sigma: readings, heaters, what the rig states."""
     physical = problem.n_physical
-    noise_columns = ((0, 0), (0, len(problem.parameters) - physical))
     chosen = np.flatnonzero(problem.is_stated[:physical])
     mean, sd = problem.prior_mean[chosen], problem.prior_sd[chosen]
 
     def residuals(block: Array) -> Array:
-        whitened, _ = problem.whitened(np.pad(block, noise_columns), sigma)
+        whole = np.zeros((len(block), len(problem.parameters)))
+        whole[:, :physical] = block
+        whitened, _ = problem.whitened(whole, sigma)
         if not len(chosen):
             return whitened
         return np.concatenate([whitened, (block[:, chosen] - mean) / sd], axis=1)
