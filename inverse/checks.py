@@ -1,4 +1,4 @@
-"""Checks of a run against its rig before anything is computed: can these readings be fitted at all?"""
+"""Checks of a run against its rig before anything is computed: can it be fitted at all."""
 
 from collections.abc import Sequence
 
@@ -67,7 +67,7 @@ def _check_number(rig: Rig, read: Sequence[Sensor], readings: Readings) -> None:
     known = {sensor.place for sensor in read if sensor.place in ("plate", "air") and sensor.exactly_known}
     counted = [sensor for sensor in read if sensor.place != "heater" and sensor.place not in known]
     places = {sensor.place for sensor in read}
-    unknowns = ["h" if rig.conductivity or "heat" in places else "h/k"]
+    unknowns = ["h" if rig.conductivity is not None or "heat" in places else "h/k"]
     if "plate" not in known:
         unknowns.append("plate temperature" if "plate" in places else "base temperature")
     if "plate" in places:

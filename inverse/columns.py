@@ -161,9 +161,7 @@ def _check_stranger(name: str, unit: str | None, sensors: Collection[str], sourc
         return
     near = near or nearest(bare, sensors, cutoff=0.0)
     problem = "the rig has no sensor of this name"
-    remedy = (
-        f"the nearest is {quoted(near)}: rename the column, add the sensor to the rig, or take the column out"
-    )
+    remedy = f"the nearest is {quoted(near)}: rename the column, add the sensor, or take the column out"
     raise InputError(source, f"column {plain(name)}", problem, remedy)
 
 
@@ -172,19 +170,16 @@ def _complain_of_missing(
 ) -> None:
     problem = f"the sensor {quoted(name)} of the rig has no column"
     if len(header) == 1:
-        remedy = (
-            f"separate the columns by commas, semicolons or tabs, the header being {quoted(header[0])} now"
-        )
+        remedy = f"separate the columns, which are now {quoted(header[0])}, by commas, semicolons or tabs"
         raise InputError(source, None, problem, remedy)
     near = nearest(name, extra)
-    remedy = (
-        f"the nearest column is {quoted(near)}" if near else "add one, with empty cells where it was not read"
-    )
+    rename = f"rename the nearest column, {quoted(near)}, or " if near else ""
+    remedy = f"{rename}add it, with empty cells where it was not measured"
     raise InputError(source, None, problem, remedy)
 
 
 def _nearly_same(name: str, sensor: str) -> bool:
-    """Tell whether a column's name is a sensor's but for capitals, blanks and marks, or one letter of many."""
+    """Tell whether a column's name is a sensor's but for capitals, blanks, marks, or one letter of many."""
     one, other = (re.sub(r"[\W_]+", "", each.casefold()) for each in (name, sensor))
     if one and one == other:
         return True

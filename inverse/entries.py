@@ -52,11 +52,11 @@ def choice(what: str, known: tuple[str, ...], later: tuple[str, ...] = ()) -> Ca
     return choose
 
 
-def later(what: str, instead: str) -> Callable[[object], NoReturn]:
+def later(problem: str, instead: str) -> Callable[[object], NoReturn]:
     """Return the function that refuses what this version does not have yet."""
 
     def refuse(_: object) -> NoReturn:
-        raise EntryError(f"this version does not have {what} yet", instead)
+        raise EntryError(problem, instead)
 
     return refuse
 

@@ -87,7 +87,7 @@ class Table:
         """
         if run is None and len(self.rows) > 1:
             problem = f"there are {len(self.rows)} runs ({listed(self.rows, 3)})"
-            raise InputError(self.source, None, problem, "name the one that is meant")
+            raise InputError(self.source, None, problem, "name the one that is meant (--run)")
         if run is None:
             run = next(iter(self.rows))
         if run not in self.rows:

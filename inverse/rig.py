@@ -8,6 +8,7 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
+from functools import cached_property
 from pathlib import Path
 from types import MappingProxyType
 from typing import TYPE_CHECKING, Any, Literal
@@ -125,8 +126,13 @@ class Rig:
             base = BaseTemperature(values["plate"])
         else:
             base = BaseTemperature(values["base_temperature"])
-        fin = Fin(self.profile(changes), values["k"], UniformCoefficient(values["h"]), _tip(tip, values))
+        profile = self._as_drawn if changes is None else self.profile(changes)
+        fin = Fin(profile, values["k"], UniformCoefficient(values["h"]), _tip(tip, values))
         return fin, base, values["air"]
+
+    @cached_property
+    def _as_drawn(self) -> Uniform:
+        return self.profile()
 
 
 _TIPS: Mapping[str, Tip] = {

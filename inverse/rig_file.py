@@ -45,7 +45,7 @@ TIPS = ("adiabatic", "convective", "fixed", "infinite")
 EDGES = ("exposed", "guarded")
 PLACES = ("plate", "air", "heat", "heater")
 
-_SHAPES = "it has the profiles pin and rectangular"
+_SHAPES = "leave it out, and describe a pin or a rectangular fin"
 _EXPECTED_H = 'write expected_h instead, such as "45 W/(m^2 K) +/- 20 %"'
 
 # The validators before a value run from right to left, those after it from left to right.
@@ -75,8 +75,12 @@ Edges = Annotated[Literal["exposed", "guarded"], BeforeValidator(entries.choice(
 Place = Annotated[
     Literal["plate", "air", "heat", "heater"], BeforeValidator(entries.choice("place of a sensor", PLACES))
 ]
-LaterShape = Annotated[None, BeforeValidator(entries.later("profiles that this key describes", _SHAPES))]
-LaterAir = Annotated[None, BeforeValidator(entries.later("correlations", _EXPECTED_H))]
+LaterShape = Annotated[
+    None, BeforeValidator(entries.later("no profile of this version has this key yet", _SHAPES))
+]
+LaterAir = Annotated[
+    None, BeforeValidator(entries.later("this version has no correlations yet", _EXPECTED_H))
+]
 
 
 class Section(BaseModel):
@@ -111,12 +115,20 @@ class MaterialSection(Section):
     name: Annotated[
         None,
         BeforeValidator(
-            entries.later("materials by name", 'write conductivity instead, such as "167 W/(m K) +/- 5 %"')
+            entries.later(
+                "this version knows no materials by name yet",
+                'write conductivity instead, such as "167 W/(m K) +/- 5 %"',
+            )
         ),
     ] = None
     emissivity: Annotated[
         None,
-        BeforeValidator(entries.later("radiation", "leave emissivity out: h is then the total coefficient")),
+        BeforeValidator(
+            entries.later(
+                "this version does not part radiation from convection yet",
+                "leave emissivity out: h is then the total coefficient",
+            )
+        ),
     ] = None
 
 
@@ -180,7 +192,10 @@ class RigSection(Section):
     plate: Annotated[
         None,
         BeforeValidator(
-            entries.later("plates with several fins", "leave [plate] out and give the heat of one fin")
+            entries.later(
+                "this version does not share heat among several fins yet",
+                "leave [plate] out and give the heat of one fin",
+            )
         ),
     ] = None
     air: AirSection = AirSection()
@@ -198,8 +213,10 @@ def decode(content: bytes, source: Path | None) -> dict[str, Any]:
         raise InputError(source, None, "brackets are nested too deeply", remedy) from None
     except ValueError as error:  # tomllib.TOMLDecodeError, or a number too long to be read
         message, _, place = str(error).partition(" (at ")
-        shown = f"this is not TOML ({plain(message, 80)})"
-        raise InputError(source, plain(place.rstrip(")")) or None, shown, remedy) from None
+        place = plain(place.rstrip(")"))
+        if message.startswith("Cannot"):  # overwrite a value, declare a table twice, and the like
+            raise InputError(source, place, "a key or table is given twice", "keep one of the two") from None
+        raise InputError(source, place, f"this is not TOML ({plain(message, 80)})", remedy) from None
 
 
 def check(document: Mapping[str, Any], source: Path | None) -> RigSection:
@@ -207,7 +224,7 @@ def check(document: Mapping[str, Any], source: Path | None) -> RigSection:
     try:
         return RigSection.model_validate(document)
     except ValidationError as error:
-        raise _sentence(error.errors(include_url=False, include_input=False), source) from None
+        raise _sentence(error.errors(include_url=False), source) from None
 
 
 def place_of(path: tuple[str, ...]) -> str | None:
@@ -242,7 +259,7 @@ def _sentence(errors: list[ErrorDetails], source: Path | None) -> InputError:
     if kind == "value_error" and isinstance(entry := first["ctx"]["error"], EntryError):
         return InputError(source, place_of(path), entry.problem, entry.remedy)
     if kind == "extra_forbidden":
-        return _unknown_key(path, source)
+        return _unknown_key(path, source, isinstance(first["input"], Mapping))
     if kind == "missing" and len(path) == 1:
         return InputError(source, None, f"the table [{path[0]}] is missing", _EXAMPLES[path[0]])
     if kind == "missing":
@@ -257,7 +274,7 @@ def _sentence(errors: list[ErrorDetails], source: Path | None) -> InputError:
     )
 
 
-def _unknown_key(path: tuple[str, ...], source: Path | None) -> InputError:
+def _unknown_key(path: tuple[str, ...], source: Path | None, is_table: bool) -> InputError:
     *table, key = path
     model: type[BaseModel] = RigSection
     if table[:1] == ["sensors"]:
@@ -266,5 +283,8 @@ def _unknown_key(path: tuple[str, ...], source: Path | None) -> InputError:
         model = _SECTIONS[table[0]]
     known = [name for name, field in model.model_fields.items() if field.annotation is not type(None)]
     near = nearest(key, known)
+    if is_table and not table:
+        remedy = f"the nearest known one is [{near}]" if near else f"known are {', '.join(known)}"
+        return InputError(source, f"[{plain(key)}]", "this table is unknown", remedy)
     remedy = f"the nearest known key is {quoted(near)}" if near else f"known are {', '.join(known)}"
     return InputError(source, place_of(tuple(table)), f"the key {quoted(key)} is unknown", remedy)

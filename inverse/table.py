@@ -9,6 +9,7 @@ import csv
 import datetime
 import io
 import re
+import warnings
 from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -20,6 +21,7 @@ SEPARATORS = {",": "comma", ";": "semicolon", "\t": "tab"}
 WORKBOOK_START = b"PK\x03\x04"
 """First bytes of a .xlsx file, which is a ZIP archive."""
 
+_BINARY = re.compile(r"[\x00-\x08\x0e-\x1f]")
 _EXCEL_SEPARATOR = re.compile(r"sep=([,;\t])\s*", re.IGNORECASE)
 
 Row = tuple[int, tuple[str, ...]]
@@ -68,9 +70,11 @@ def parse_text(content: bytes, names: Collection[str], source: Path | None) -> S
         for number, cells in enumerate(reader, start=1):
             if any(cell.strip() for cell in cells) and not (declared and not rows and number == 1):
                 rows.append((number, tuple(cell.strip() for cell in cells)))
-    except csv.Error:
+    except csv.Error as error:
         problem = "this row cannot be split into cells"
         remedy = "close every quotation mark, and write one inside a cell twice"
+        if str(error).startswith("field larger"):
+            problem, remedy = "this row has a cell of more than 131072 characters", "shorten it"
         raise InputError(source, f"row {number + 1}", problem, remedy) from None
     return _sheet(rows, separator != ",", source)
 
@@ -123,7 +127,7 @@ def _decode(content: bytes, source: Path | None) -> str:
             text = content.decode(encoding)
         except UnicodeDecodeError:
             continue
-        if "\0" in text:
+        if _BINARY.search(text):
             break
         return text
     raise InputError(source, None, "this is not a text file", "save the table as CSV in UTF-8, or as XLSX")
@@ -143,12 +147,12 @@ def _workbook_rows(content: bytes, values: bool, source: Path | None) -> list[Ro
     import openpyxl
 
     try:
-        book = openpyxl.load_workbook(io.BytesIO(content), read_only=True, data_only=values)
-        sheet = book.worksheets[0]
-        sheet.reset_dimensions()  # or a sheet that says it is a million columns wide is padded to that
-        rows = [
-            (number, _texts(row)) for number, row in enumerate(sheet.iter_rows(values_only=True), start=1)
-        ]
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore")  # of styles and extensions that say nothing of the readings
+            book = openpyxl.load_workbook(io.BytesIO(content), read_only=True, data_only=values)
+            sheet = book.worksheets[0]
+            sheet.reset_dimensions()  # or a sheet that says it is 16384 columns wide is padded to that
+            rows = [(number, _texts(row)) for number, row in enumerate(sheet.iter_rows(values_only=True), 1)]
     except Exception:  # noqa: BLE001  # openpyxl has no error of its own: a damaged workbook raises a dozen kinds
         problem = "this is not a readable XLSX workbook"
         raise InputError(source, None, problem, "save the table as XLSX or CSV") from None

@@ -4,10 +4,17 @@ What the user wrote is shown short and without control characters, so that no fi
 """
 
 import difflib
+import re
 from collections.abc import Iterable
+from itertools import islice
 
 SHOWN = 40
 """Characters of the user's text that a sentence shows."""
+
+MOST_COMPARED = 5000
+"""Names among which the nearest is looked for: enough for a rig, a limit for a table of a million runs."""
+
+_SAME_SHAPE = 0.01
 
 
 def plain(text: object, most: int = SHOWN) -> str:
@@ -29,9 +36,23 @@ def listed(names: Iterable[str], most: int = 5) -> str:
 
 
 def nearest(name: str, known: Iterable[str], cutoff: float = 0.6) -> str | None:
-    """Return the known name most like this one, capitals aside, or None when none is like it."""
-    by_key: dict[str, str] = {}
-    for candidate in known:
-        by_key.setdefault(candidate[:80].casefold(), candidate)
-    found = difflib.get_close_matches(name[:80].casefold(), by_key, n=1, cutoff=cutoff)
-    return by_key[found[0]] if found else None
+    """Return the known name most like this one, capitals aside, or None when none is like it.
+
+    Of two that are equally like it, one with digits in the same places wins: "T3" for "T7", not "TA".
+    """
+    wanted = name[:SHOWN].casefold()
+    matcher = difflib.SequenceMatcher(None, b=wanted)
+    best, best_score = None, cutoff
+    for candidate in islice(known, MOST_COMPARED):
+        other = candidate[:SHOWN].casefold()
+        matcher.set_seq1(other)
+        if matcher.real_quick_ratio() + _SAME_SHAPE < best_score:
+            continue
+        score = matcher.ratio() + _SAME_SHAPE * (_shape(other) == _shape(wanted))
+        if score > best_score or (best is None and score == best_score):
+            best, best_score = candidate, score
+    return best
+
+
+def _shape(name: str) -> str:
+    return re.sub(r"[0-9]", "0", re.sub(r"[^0-9]", "a", name))
