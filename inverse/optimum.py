@@ -20,7 +20,7 @@ Array = NDArray[np.float64]
 
 SMALLEST_SIGMA, LARGEST_SIGMA = 1e-9, 1e6  # K; readings that a model meets exactly leave no noise to estimate
 NOISE_ROUNDS = 20
-LINEARISING_ROUNDS = 3
+LINEARISING_ROUNDS = 2
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,10 +46,7 @@ def fit(problem: Problem) -> LeastSquares:
     found = _fit_given_noise_model(problem, z)
     if posing.needs_linearising(problem):
         for _ in range(LINEARISING_ROUNDS):
-            before = found.z
-            found = _fit_given_noise_model(posing.linearise(problem, before), before)
-            if np.allclose(found.z, before, rtol=1e-7, atol=1e-7):
-                break
+            found = _fit_given_noise_model(posing.linearise(problem, found.z), found.z)
     return found
 
 

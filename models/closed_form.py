@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 
 from finback.models.ends import AdiabaticTip, Base, FixedTip, InfiniteTip, Joint, Tip
 from finback.models.fin import Fin
-from finback.models.profiles import Profile
+from finback.models.profiles import Uniform
 from finback.models.solution import Solution
 from finback.models.surface import UniformCoefficient
 
@@ -33,17 +33,7 @@ SMALLEST_ML = 1e-150
 
 def applies(fin: Fin) -> bool:
     """Tell whether this module can solve the fin: uniform profile, uniform coefficient."""
-    return fin.profile.uniform and isinstance(fin.surface, UniformCoefficient)
-
-
-def fin_parameter(profile: Profile, coefficient: Values, conductivity: Values) -> Array:
-    """Return m = sqrt(h P/(k A)) of a uniform fin [1/m].
-
-    Arguments: profile; coefficient h [W/(m² K)] and conductivity k [W/(m K)], floats or of shape (n_sets,).
-    """
-    base = np.zeros(1)
-    ratio = float(profile.perimeter(base)[0] / profile.area(base)[0])
-    return np.sqrt(np.atleast_1d(np.asarray(coefficient * ratio / conductivity, dtype=np.float64)))
+    return isinstance(fin.profile, Uniform) and isinstance(fin.surface, UniformCoefficient)
 
 
 def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
@@ -53,25 +43,21 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
     0 at the base. Returns a `Solution` of n_sets rows. Right to rounding for m L from 0 to 1e4 and beyond.
     Raises TypeError for a surface law that has no closed form.
     """
-    profile, k, L = fin.profile, fin.conductivity, fin.profile.length
-    A = float(profile.area(np.zeros(1))[0])
-    if not isinstance(fin.surface, UniformCoefficient):
-        raise TypeError(f"no closed form for {type(fin.surface).__name__}")
-    h = fin.surface.coefficient
-    m = np.maximum(fin_parameter(profile, h, k), SMALLEST_ML / L)
+    profile, surface, k = fin.profile, fin.surface, fin.conductivity
+    if not isinstance(profile, Uniform) or not isinstance(surface, UniformCoefficient):
+        raise TypeError(f"no closed form for {type(profile).__name__} with {type(surface).__name__}")
+    h, L, A = surface.coefficient, profile.length, profile.section_area
+    m = np.maximum(np.sqrt(h * (profile.section_perimeter / A) / k), SMALLEST_ML / L).reshape(-1)
     r, one_plus_r, one_minus_r = _reflection(fin.tip, h, k, m)
 
-    decay = np.expm1(-2 * L * m)
+    decay = np.expm1(m * (-2 * L))
     whole = one_plus_r + r * decay
-    far = np.exp(-L * m)
+    far = np.exp(m * -L)
     base_slope = m * (one_minus_r - r * decay) / whole
 
     column = m[:, None]  # one row a set, one column a position
-    r_column, plus_column = r, one_plus_r
-    if isinstance(r, np.ndarray) and isinstance(one_plus_r, np.ndarray):
-        r_column, plus_column = r[:, None], one_plus_r[:, None]
-    echo = plus_column + r_column * np.expm1(column * (-2 * (L - x)))
-    shape = np.exp(column * -x) * echo / whole[:, None]
+    echo = _as_column(one_plus_r) + _as_column(r) * np.expm1(column * (2 * (x - L)))
+    shape = echo * np.exp(column * -x)
 
     driving = base.plate_temperature if isinstance(base, Joint) else base.temperature
     bond = base.resistance * k if isinstance(base, Joint) else 0.0
@@ -85,26 +71,36 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
         theta_b = (drive + bond * through * tip_excess) / slack
         base_fall = (through * across + half * drive) / slack
         tip_fall = (through * across - half * tip_excess * (1 + bond * (through + base_slope))) / slack
-        from_tip = np.exp(column * (x - L)) * np.expm1(column * (-2 * x)) / decay[:, None]
-        theta = shape * theta_b[:, None] + from_tip * np.atleast_1d(tip_excess)[:, None]
+        from_tip = np.exp(column * (x - L)) * np.expm1(column * (-2 * x))
+        theta = shape * (theta_b / whole)[:, None] + from_tip * _as_column(tip_excess / decay)
         tip_theta: Values = tip_excess
     else:
         theta_b = drive / slack
         base_fall = base_slope * theta_b
-        tip_fall = m * far * one_minus_r / whole * theta_b
-        theta = shape * theta_b[:, None]
-        tip_theta = far * one_plus_r / whole * theta_b
+        scaled = theta_b / whole
+        at_end = far * scaled
+        tip_fall = m * one_minus_r * at_end
+        theta = shape * scaled[:, None]
+        tip_theta = one_plus_r * at_end
 
-    air_column = air[:, None] if isinstance(air, np.ndarray) and air.ndim else air
-    base_heat = k * A * base_fall
-    rows = np.zeros_like(base_heat)  # what does not depend on an array still has a row for each set
+    base_heat = (k * A) * base_fall
     return Solution(
-        temperatures=theta + air_column,
-        base_temperature=theta_b + air + rows,
+        temperatures=theta + _as_column(air),
+        base_temperature=_rows(theta_b + air, base_heat),
         base_heat=base_heat,
-        tip_temperature=tip_theta + air + rows,
-        tip_heat=k * A * tip_fall,
+        tip_temperature=_rows(tip_theta + air, base_heat),
+        tip_heat=(k * A) * tip_fall,
     )
+
+
+def _as_column(value: Values) -> Values:
+    """Return a value as a column that spreads over positions; a float spreads by itself."""
+    return value[:, None] if isinstance(value, np.ndarray) and value.ndim else value
+
+
+def _rows(value: Values, like: Array) -> Array:
+    """Return a value with a row for each set, also where it does not depend on any array."""
+    return value if isinstance(value, np.ndarray) and value.shape == like.shape else np.full_like(like, value)
 
 
 def _reflection(tip: Tip, side: Values, k: Values, m: Array) -> tuple[Values, Values, Values]:

@@ -18,16 +18,12 @@ class Profile(Protocol):
     """The shape of a fin.
 
     `area` and `perimeter` take positions x [m] of shape (n,) and return the conducting cross-section [m²]
-    and the perimeter that loses heat [m] there, shape (n,). `uniform` tells that neither changes along x.
+    and the perimeter that loses heat [m] there, shape (n,).
     """
 
     @property
     def length(self) -> float:
         """Length from base to tip [m]."""
-
-    @property
-    def uniform(self) -> bool:
-        """Whether area and perimeter are the same at every x."""
 
     def area(self, x: Array) -> Array:
         """Conducting cross-section at x [m] -> [m²]."""
@@ -55,11 +51,6 @@ class Uniform:
         _require_positive(
             length=self.length, section_area=self.section_area, section_perimeter=self.section_perimeter
         )
-
-    @property
-    def uniform(self) -> bool:
-        """True: that is what the class is for."""
-        return True
 
     def area(self, x: Array) -> Array:
         """Conducting cross-section at x [m], the same everywhere -> [m²]."""
