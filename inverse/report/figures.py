@@ -23,10 +23,24 @@ from numpy.typing import NDArray
 
 from finback.estimate import Estimate
 from finback.report import scenes
+from finback.report.layout import (
+    CROWDED,
+    FIN_END,
+    JOINT,
+    LETTER,
+    LINE,
+    PLATE,
+    SECTION,
+    WIDTH,
+    Layout,
+    lay_out,
+    names,
+    on_fin,
+    spread,
+)
 
 Array = NDArray[np.float64]
 
-WIDTH = 6.4  # inches, of every figure
 DPI = 160
 BLACK, ORANGE, SKY, GREEN, BLUE, VERMILION, PURPLE = (
     "#000000", "#E69F00", "#56B4E9", "#009E73", "#0072B2", "#D55E00", "#CC79A7"
@@ -70,7 +84,7 @@ def draw(estimate: Estimate) -> tuple[Picture, ...]:
     ]
     if estimate.band.x.size:
         painters.append(("profile", lambda: _profile(scenes.profile(estimate))))
-    if estimate.candidates:
+    if len(estimate.candidates) > 1:
         painters.append(("candidates", lambda: _bars(scenes.bars(estimate))))
     paired = scenes.pairs(estimate)
     if paired:
@@ -84,247 +98,180 @@ def draw(estimate: Estimate) -> tuple[Picture, ...]:
 
 def _picture(name: str, figure: Figure) -> Picture:
     png, svg = io.BytesIO(), io.BytesIO()
-    FigureCanvasAgg(figure).print_figure(png, format="png", dpi=DPI, metadata={"Software": None})
-    FigureCanvasSVG(figure).print_figure(svg, format="svg", dpi=DPI, metadata={"Date": None, "Creator": None})
+    figure.set_dpi(DPI)  # the canvases' own print methods: print_figure would lay everything out twice
+    FigureCanvasAgg(figure).print_png(png, metadata={"Software": None})
+    FigureCanvasSVG(figure).print_svg(svg, metadata={"Date": None, "Creator": None})
     return Picture(name, png.getvalue(), svg.getvalue())
 
 
 # The drawing: one pair of axes in inches over the whole figure.
 
-HEIGHT, FIN_LEFT, FIN_RIGHT, AXIS = 2.9, 1.0, 4.75, 1.45
-LEAST_THICKNESS, MOST_THICKNESS = 0.12, 0.9
-STRETCHES = (2, 3, 4, 5, 8, 10, 15, 20, 30, 40, 50, 80, 100, 200, 500, 1000)
-
 
 def _drawing(scene: scenes.DrawingScene) -> Figure:
-    figure = Figure(figsize=(WIDTH, HEIGHT))
-    axes = figure.add_axes((0, 0, 1, 1), xlim=(0, WIDTH), ylim=(0, HEIGHT))
+    lay = lay_out(scene)
+    figure = Figure(figsize=(WIDTH, lay.height))
+    axes = figure.add_axes((0, 0, 1, 1), xlim=(0, WIDTH), ylim=(0, lay.height))
     axes.set_axis_off()
-    scale = min((FIN_RIGHT - FIN_LEFT) / scene.length, MOST_THICKNESS / scene.thickness)
-    stretch = 1
-    if scene.thickness * scale < LEAST_THICKNESS:
-        stretch = next(
-            (s for s in STRETCHES if s * scene.thickness * scale >= 1.5 * LEAST_THICKNESS), STRETCHES[-1]
-        )
-    thickness = max(scene.thickness * scale * stretch, 0.02)
-    right = FIN_LEFT + scene.length * scale
-
-    _fin_and_plate(axes, scene, thickness, right)
-    _fin_sensors(axes, scene, thickness, scale)
-    _other_sensors(axes, scene, thickness, right)
-    _cross_section(axes, scene)
-    _dimension(axes, FIN_LEFT, right, 0.42, f"{scene.length:.4g} mm")
-    to_scale = "to scale" if stretch == 1 else f"length to scale, thickness drawn {stretch} times larger"
-    axes.text(FIN_LEFT, 0.1, f"Side view, {to_scale}", color=INK, fontsize=8)
+    _draw_fin_and_plate(axes, scene, lay)
+    _draw_fin_sensors(axes, scene, lay)
+    _draw_other_sensors(axes, scene, lay)
+    _draw_section(axes, scene, lay)
+    _draw_dimension(axes, lay, f"{scene.length:.4g} mm")
+    to_scale = (
+        "to scale" if lay.stretch == 1 else f"length to scale, thickness drawn {lay.stretch} times larger"
+    )
+    axes.text(lay.left, 0.1, f"Side view, {to_scale}; {scene.tip}", color=INK, fontsize=8)
     return figure
 
 
-def _fin_and_plate(axes: Axes, scene: scenes.DrawingScene, thickness: float, right: float) -> None:
-    gap = 0.08 if scene.joint else 0.0
-    half = thickness / 2 + 0.33
-    plate = Rectangle(
-        (FIN_LEFT - gap - 0.34, AXIS - half), 0.34, 2 * half, facecolor="white", edgecolor=FAINT, hatch="////"
-    )
-    fin = Rectangle(
-        (FIN_LEFT, AXIS - thickness / 2), right - FIN_LEFT, thickness, facecolor=METAL, edgecolor=INK
-    )
+def _draw_fin_and_plate(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
+    gap = JOINT if scene.joint else 0.0
+    low, half = lay.axis - lay.thickness / 2, lay.plate_half
+    edge = {"edgecolor": INK, "linewidth": 0.8}
+    plate = Rectangle((lay.left - gap - PLATE, lay.axis - half), PLATE, 2 * half, hatch="////")
+    plate.set(facecolor="white", edgecolor=FAINT)
     axes.add_patch(plate)
-    axes.add_patch(fin)
-    below = AXIS - half - 0.06
+    axes.add_patch(Rectangle((lay.left, low), lay.right - lay.left, lay.thickness, facecolor=METAL, **edge))
+    bottom, middle = lay.axis - half - 0.06, lay.left - gap - PLATE / 2
+    axes.text(middle, bottom, "plate" if scene.joint else "base", ha="center", va="top", color=INK)
     if scene.joint:
-        strip = Rectangle(
-            (FIN_LEFT - gap, AXIS - thickness / 2),
-            gap,
-            thickness,
-            facecolor=ORANGE,
-            edgecolor=INK,
-            linewidth=0.6,
-        )
-        axes.add_patch(strip)
-        axes.text(FIN_LEFT - gap - 0.17, below, "plate", ha="center", va="top", color=INK)
-        axes.annotate(
-            "joint R″", (FIN_LEFT - gap / 2, AXIS - thickness / 2), (FIN_LEFT + 0.12, below), va="top", color=INK,
-            arrowprops={"arrowstyle": "-", "color": FAINT, "linewidth": 0.8},
-        )  # fmt: skip
-    else:
-        axes.text(FIN_LEFT - 0.17, below, "base", ha="center", va="top", color=INK)
-    axes.text(
-        right + 0.06,
-        AXIS,
-        scene.tip,
-        va="center",
-        color=INK,
-        fontsize=8,
-        rotation=90 if thickness > 0.8 else 0,
-    )
+        axes.add_patch(Rectangle((lay.left - gap, low), gap, lay.thickness, facecolor=ORANGE, **edge))
+        x = lay.left - gap / 2
+        axes.plot([x, x], [low, bottom - 0.2], color=FAINT, linewidth=0.7)
+        axes.text(x + 0.05, bottom - 0.22, "joint R″", ha="right", va="top", color=INK)
 
 
-def _fin_sensors(axes: Axes, scene: scenes.DrawingScene, thickness: float, scale: float) -> None:
-    """Markers on the fin, names above and positions below, moved sideways where they would overlap."""
-    marks = sorted((m for m in scene.marks if m.position is not None), key=lambda m: m.position or 0.0)
+def _draw_fin_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
+    """Draw markers on the fin, names above and positions below, moved sideways where they would overlap."""
+    marks = on_fin(scene)
     if not marks:
         return
-    x = np.array([FIN_LEFT + (m.position or 0.0) * scale for m in marks])
+    x = np.array([lay.left + position * lay.scale for position, _ in marks])
     shape, colour = MARKERS["fin"]
-    axes.plot(
-        x,
-        np.full_like(x, AXIS),
-        shape,
-        color=colour,
-        markersize=5,
-        markeredgecolor="white",
-        markeredgewidth=0.5,
-    )
-    size = 9.0 if len(marks) <= 26 else max(4.0, 9.0 * 26 / len(marks))
-    top, bottom = AXIS + thickness / 2, AXIS - thickness / 2
-    for texts, edge, sign in (
-        ([m.name for m in marks], top, 1),
-        ([f"{m.position:.4g}" for m in marks], bottom, -1),
-    ):
-        width = 0.0085 * size * max(len(t) for t in texts) + 0.05
-        upright = width * len(texts) > 3.9
-        places = _spread(x, size / 72 * 1.25 if upright else width, FIN_LEFT - 0.05, FIN_RIGHT + 0.25)
+    axes.plot(x, np.full_like(x, lay.axis), shape, color=colour, markersize=5, markeredgecolor="white")
+    size = 9.0 if len(marks) <= CROWDED else max(3.5, 9.0 * CROWDED / len(marks))
+    sides = (([name for _, name in marks], 1), ([f"{position:.4g}" for position, _ in marks], -1))
+    for texts, sign in sides:
+        edge = lay.axis + sign * lay.thickness / 2
+        width = LETTER * max(len(text) for text in texts) + 0.05
+        upright = width * len(texts) > 1.15 * (lay.right - lay.left)
+        places = spread(x, 1.3 * size / 72 if upright else width, lay.left + 0.02, FIN_END + 0.1)
         for at, place, text in zip(x, places, texts, strict=True):
-            axes.plot(
-                [at, at, place, place],
-                edge + sign * np.array([0, 0.05, 0.16, 0.2]),
-                color=FAINT,
-                linewidth=0.7,
-            )
-            axes.text(
-                place, edge + sign * 0.22, text, ha="center", va="bottom" if sign > 0 else "top", color=INK,
-                fontsize=size, rotation=90 if upright else 0, **PLAIN,
-            )  # fmt: skip
+            bend = edge + sign * np.array([0.02, 0.06, 0.15, 0.19])
+            axes.plot([at, at, place, place], bend, color=FAINT, linewidth=0.7)
+            label = axes.text(place, edge + sign * 0.21, text, ha="center", fontsize=size, color=INK, **PLAIN)
+            label.set(va="bottom" if sign > 0 else "top", rotation=90 if upright else 0)
 
 
-def _spread(wanted: Array, apart: float, low: float, high: float) -> Array:
-    """Return places as near the wanted ones (ascending) as can be with `apart` between neighbours."""
-    apart = min(apart, (high - low) / max(1, len(wanted) - 1))
-    steps = apart * np.arange(len(wanted))
-    from_left = np.maximum.accumulate(wanted - steps) + steps
-    from_right = np.minimum.accumulate((wanted - steps)[::-1])[::-1] + steps
-    places = (from_left + from_right) / 2  # each keeps the distance, so their mean does
-    return np.minimum(np.maximum(places, low + steps), high - steps[::-1])
-
-
-def _other_sensors(axes: Axes, scene: scenes.DrawingScene, thickness: float, right: float) -> None:
-    """Markers of the plate's and the air's sensors, and the heat as an arrow into the base."""
-    by_place = {
-        place: [m.name for m in scene.marks if m.place == place]
-        for place in ("plate", "air", "heat", "heater")
-    }
-    half = thickness / 2 + 0.33
-    middle = FIN_LEFT - (0.25 if scene.joint else 0.17)
-    if by_place["plate"]:
+def _draw_other_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
+    """Draw the plate's and the air's sensors, and the heat as an arrow into plate or base."""
+    gap = JOINT if scene.joint else 0.0
+    middle, top = lay.left - gap - PLATE / 2, lay.axis + lay.plate_half + 0.06
+    plate, air, heat = names(scene, "plate"), names(scene, "air"), names(scene, "heat", "heater")
+    if plate:
         shape, colour = MARKERS["plate"]
-        heights = np.linspace(-1, 1, len(by_place["plate"]) + 2)[1:-1] * half + AXIS
-        axes.plot(
-            np.full_like(heights, middle), heights, shape, color=colour, markersize=6, markeredgecolor="white"
-        )
-        axes.text(
-            middle,
-            AXIS + half + 0.06,
-            "\n".join(by_place["plate"]),
-            ha="center",
-            va="bottom",
-            color=INK,
-            **PLAIN,
-        )
-    if by_place["air"]:
-        shape, colour = MARKERS["air"]
-        axes.plot([right + 0.3], [HEIGHT - 0.2], shape, color=colour, markersize=6, markeredgecolor="white")
-        axes.text(right + 0.42, HEIGHT - 0.2, ", ".join(by_place["air"]), va="center", color=INK, **PLAIN)
-    power = by_place["heat"] + by_place["heater"]
-    if power:
-        axes.annotate(
-            "", (middle - 0.2, AXIS), (0.12, AXIS),
-            arrowprops={"arrowstyle": "-|>", "color": PURPLE, "linewidth": 2.2, "shrinkA": 0, "shrinkB": 0},
-        )  # fmt: skip
-        axes.text(0.12, AXIS + 0.12, "\n".join(power), va="bottom", color=INK, **PLAIN)
+        heights = np.linspace(-1, 1, len(plate) + 2)[1:-1] * lay.plate_half + lay.axis
+        axes.plot(np.full_like(heights, middle), heights, shape, color=colour, markeredgecolor="white")
+        axes.text(lay.left - gap, top, "\n".join(plate), ha="right", va="bottom", color=INK, **PLAIN)
+    shape, colour = MARKERS["air"]
+    for row, name in enumerate(air):
+        y = top + 0.1 + row * LINE
+        axes.plot([lay.right + 0.3], [y], shape, color=colour, markeredgecolor="white")
+        axes.text(lay.right + 0.4, y, name, va="center", color=INK, **PLAIN)
+    if heat:
+        arrow = {"arrowstyle": "-|>", "color": PURPLE, "linewidth": 2.2, "shrinkA": 0, "shrinkB": 0}
+        axes.annotate("", (middle - PLATE / 2 - 0.03, lay.axis), (0.12, lay.axis), arrowprops=arrow)
+        axes.text(0.12, lay.axis + 0.1, "\n".join(heat), va="bottom", color=INK, **PLAIN)
 
 
-def _cross_section(axes: Axes, scene: scenes.DrawingScene) -> None:
-    """The cross-section at the right, at a scale of its own."""
-    x, y, room = WIDTH - 0.55, AXIS, 0.72
+def _draw_section(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
+    """Draw the cross-section at the right, at a scale of its own."""
+    x, y = WIDTH - 0.65, lay.axis
     if scene.round:
-        axes.add_patch(Circle((x, y), room / 2, facecolor=METAL, edgecolor=INK))
-        text, low = f"⌀ {scene.thickness:.4g} mm", room / 2
+        axes.add_patch(Circle((x, y), SECTION / 2, facecolor=METAL, edgecolor=INK, linewidth=0.8))
+        text, half = f"⌀ {scene.thickness:.4g} mm", SECTION / 2
     else:
-        scale = room / max(scene.width, scene.thickness)
+        scale = SECTION / max(scene.width, scene.thickness)
         wide, high = scene.width * scale, max(scene.thickness * scale, 0.02)
-        axes.add_patch(Rectangle((x - wide / 2, y - high / 2), wide, high, facecolor=METAL, edgecolor=INK))
-        if scene.guarded:
-            for left in (x - wide / 2 - 0.07, x + wide / 2):
-                axes.add_patch(
-                    Rectangle(
-                        (left, y - high / 2), 0.07, high, facecolor="white", edgecolor=INK, hatch="xxxx"
-                    )
-                )
-        text, low = f"{scene.width:.4g} × {scene.thickness:.4g} mm", high / 2
-    axes.text(x, y - low - 0.08, text, ha="center", va="top", color=INK)
-    note = "Section, edges guarded" if scene.guarded else "Section"
-    axes.text(x, 0.1, note, ha="center", color=INK, fontsize=8)
+        edges = {"edgecolor": INK, "linewidth": 0.8}
+        axes.add_patch(Rectangle((x - wide / 2, y - high / 2), wide, high, facecolor=METAL, **edges))
+        for left in (x - wide / 2 - 0.08, x + wide / 2) if scene.guarded else ():
+            axes.add_patch(
+                Rectangle((left, y - high / 2), 0.08, high, facecolor="white", hatch="xxxx", **edges)
+            )
+        text, half = f"{scene.width:.4g} × {scene.thickness:.4g} mm", high / 2
+    axes.text(x, y - half - 0.08, text, ha="center", va="top", color=INK)
+    axes.text(
+        x, 0.1, "Section, edges guarded" if scene.guarded else "Section", ha="center", color=INK, fontsize=8
+    )
 
 
-def _dimension(axes: Axes, left: float, right: float, y: float, text: str) -> None:
-    axes.annotate(
-        "", (left, y), (right, y),
-        arrowprops={"arrowstyle": "<|-|>", "color": INK, "linewidth": 0.8, "shrinkA": 0, "shrinkB": 0},
-    )  # fmt: skip
-    axes.text((left + right) / 2, y, text, ha="center", va="center", color=INK, backgroundcolor="white")
+def _draw_dimension(axes: Axes, lay: Layout, text: str) -> None:
+    arrow = {"arrowstyle": "<|-|>", "color": INK, "linewidth": 0.8, "shrinkA": 0, "shrinkB": 0}
+    axes.annotate("", (lay.left, lay.dimension), (lay.right, lay.dimension), arrowprops=arrow)
+    middle = (lay.left + lay.right) / 2
+    backed = {"facecolor": "white", "edgecolor": "none", "pad": 2}
+    axes.text(middle, lay.dimension, text, ha="center", va="center", color=INK, bbox=backed)
 
 
 def _profile(scene: scenes.ProfileScene) -> Figure:
-    """Temperatures with band and readings; residuals beneath; plate and air readings at either side."""
-    figure = Figure(figsize=(WIDTH, 4.5))
-    axes = figure.add_axes((0.105, 0.36, 0.875, 0.62))
+    """Draw temperatures with band and readings, residuals beneath, plate and air readings at either side."""
+    figure = Figure(figsize=(WIDTH, 4.4))
+    axes = figure.add_axes((0.105, 0.37, 0.875, 0.61))
     below = figure.add_axes((0.105, 0.105, 0.875, 0.22), sharex=axes)
     axes.fill_between(scene.x, scene.low, scene.high, color=SKY, alpha=0.45, linewidth=0, label="95 % band")
     axes.plot(scene.x, scene.median, color=BLUE, linewidth=1.4, label="posterior median")
     if scene.air is not None:
-        axes.axhline(
-            scene.air, color=GREEN, linestyle=(0, (5, 3)), linewidth=1, label="air, posterior median"
-        )
+        dashes = {"linestyle": (0, (5, 3)), "linewidth": 1}
+        axes.axhline(scene.air, color=GREEN, label="air, posterior median", **dashes)
     below.axhline(0, color=FAINT, linewidth=0.8)
-
-    beside = {"plate": -0.07 * scene.length, "air": 1.07 * scene.length}
-    for place, (shape, colour) in MARKERS.items():
-        label = f"{place} readings ± 2 sd"
-        for excluded in (False, True):
-            chosen = [p for p in scene.points if p.place == place and p.excluded == excluded]
-            if not chosen:
-                continue
-            x = [beside[place] if p.x is None else p.x for p in chosen]
-            bars = {
-                "yerr": [2 * p.uncertainty for p in chosen], "fmt": "x" if excluded else shape, "elinewidth": 1,
-                "color": FAINT if excluded else colour, "markersize": 5, "capsize": 2,
-            }  # fmt: skip
-            text = "set aside" if excluded else label
-            axes.errorbar(x, [p.measured for p in chosen], label=text, **bars)
-            below.errorbar(x, [p.residual for p in chosen], **bars)
-
+    for excluded in (False, True):
+        for place in MARKERS:
+            points = [p for p in scene.points if p.place == place and p.excluded == excluded]
+            if points:
+                _draw_readings(axes, below, points, scene)
+    _mark_positions(axes, below, scene)
     axes.set_ylabel("temperature, °C")
     below.set_ylabel("residual, K")
     below.set_xlabel("distance from the base, mm")
-    places = {p.place for p in scene.points if p.x is None}
-    axes.set_xlim(*(edge * 1.6 if place in places else inner for place, edge, inner in (
-        ("plate", beside["plate"], -0.02 * scene.length), ("air", beside["air"] / 1.6 * 1.12 / 1.07, 1.02 * scene.length)
-    )))  # fmt: skip
-    ticks = [t for t in MaxNLocator(7).tick_values(0, scene.length) if 0 <= t <= scene.length]
-    texts = [f"{t:g}" for t in ticks]
-    for place in sorted(places):
-        ticks.append(beside[place])
-        texts.append(place)
-    below.set_xticks(ticks, texts)
-    axes.tick_params(labelbottom=False)
-    axes.legend(frameon=False, fontsize=8.5)
+    handles = dict(zip(*reversed(axes.get_legend_handles_labels()), strict=True))
+    axes.legend(handles.values(), handles.keys(), frameon=False, fontsize=8.5)
     return figure
 
 
+def _draw_readings(axes: Axes, below: Axes, points: list[scenes.Point], scene: scenes.ProfileScene) -> None:
+    """Draw readings of one place with error bars of two standard deviations, in both panels."""
+    place, excluded = points[0].place, points[0].excluded
+    shape, colour = ("x", FAINT) if excluded else MARKERS[place]
+    x = [scene.beside(place) if p.x is None else p.x for p in points]
+    style: dict[str, Any] = {"fmt": shape, "color": colour, "markersize": 5, "elinewidth": 1, "capsize": 2}
+    style["yerr"] = [2 * p.uncertainty for p in points]
+    if any(p.position_sd for p in points):
+        style["xerr"] = [2 * p.position_sd for p in points]
+    label = "set aside" if excluded else f"{place} readings ± 2 sd"
+    axes.errorbar(x, [p.measured for p in points], label=label, **style)
+    below.errorbar(x, [p.residual for p in points], **style)
+
+
+def _mark_positions(axes: Axes, below: Axes, scene: scenes.ProfileScene) -> None:
+    """Set the ticks: distances along the fin, and the names of the places beside it."""
+    ticks = [float(t) for t in MaxNLocator(7).tick_values(0, scene.length) if 0 <= t <= scene.length]
+    texts = [f"{t:g}" for t in ticks]
+    limits = [-0.02 * scene.length, 1.02 * scene.length]
+    for side, place in enumerate(("plate", "air")):
+        if any(p.x is None and p.place == place for p in scene.points):
+            ticks.append(scene.beside(place))
+            texts.append(place)
+            limits[side] = scene.beside(place) + (0.04 if side else -0.04) * scene.length
+    below.set_xticks(ticks, texts)
+    axes.set_xlim(*limits)
+    axes.tick_params(labelbottom=False)
+
+
 def _bars(bars: tuple[scenes.Bar, ...]) -> Figure:
-    figure = Figure(figsize=(WIDTH, 0.7 + 0.3 * len(bars)))
-    height = figure.get_figheight()
-    axes = figure.add_axes((0.34, 0.5 / height, 0.63, 1 - 0.55 / height))
+    height = 0.6 + 0.27 * len(bars)
+    figure = Figure(figsize=(WIDTH, height))
+    axes = figure.add_axes((0.34, 0.48 / height, 0.63, 1 - 0.52 / height))
     rows = np.arange(len(bars))
     axes.barh(rows, [bar.percent for bar in bars], height=0.62, color=[BLUE] + [SKY] * (len(bars) - 1))
     for row, bar in zip(rows, bars, strict=True):
@@ -339,74 +286,53 @@ def _bars(bars: tuple[scenes.Bar, ...]) -> Figure:
 
 
 def _pairs(quantities: tuple[scenes.Paired, ...]) -> Figure:
-    """Marginals on the diagonal with the prior dashed, densities with 50 and 95 % contours below it."""
+    """Draw marginals on the diagonal with the prior dashed, densities with 50 and 95 % contours below it."""
     n = len(quantities)
-    size = WIDTH if n > 2 else 4.6
-    figure = Figure(figsize=(size, size * (0.94 if n > 1 else 0.6)))
-    left, bottom, gap = 0.13, 0.12, 0.025
-    side, tall = (0.985 - left + gap) / n, (0.985 - bottom + gap) / n
-    for row, below in enumerate(quantities):
-        for column in range(row + 1):
-            box = (left + column * side, bottom + (n - 1 - row) * tall, side - gap, tall - gap)
-            across = quantities[column]
-            axes = figure.add_axes(box, xlim=across.window)
+    wide = WIDTH if n > 2 else 4.6
+    high = wide * (0.9 if n > 1 else 0.6)
+    figure = Figure(figsize=(wide, high))
+    left, bottom, gap = 0.85 / wide, 0.5 / high, 0.025
+    across_step, up_step = (0.97 - left + gap) / n, (0.99 - bottom + gap) / n
+    for row, up in enumerate(quantities):
+        for column, across in enumerate(quantities[: row + 1]):
+            corner = left + column * across_step, bottom + (n - 1 - row) * up_step
+            axes = figure.add_axes((*corner, across_step - gap, up_step - gap), xlim=across.window)
             if row == column:
-                _marginal(axes, across, legend=row == 0)
+                _draw_marginal(axes, across, legend=row == 0)
             else:
-                _joint_density(axes, across, below)
+                _draw_density(axes, across, up)
             axes.xaxis.set_major_locator(MaxNLocator(3, prune="both"))
             axes.tick_params(labelbottom=row == n - 1, labelleft=column == 0 and row > 0, labelsize=8)
             if row == n - 1:
-                axes.set_xlabel(_axis_label(across))
+                axes.set_xlabel(across.label)
             if column == 0 and row > 0:
-                axes.set_ylabel(_axis_label(below))
+                axes.set_ylabel(up.label)
+                axes.yaxis.set_label_coords(-0.62 / (wide * (across_step - gap)), 0.5)
     return figure
 
 
-def _axis_label(quantity: scenes.Paired) -> str:
-    return f"{quantity.symbol}, {quantity.unit}" if quantity.unit else quantity.symbol
-
-
-def _marginal(axes: Axes, quantity: scenes.Paired, legend: bool) -> None:
+def _draw_marginal(axes: Axes, quantity: scenes.Paired, legend: bool) -> None:
     axes.fill_between(quantity.grid, quantity.posterior, color=SKY, alpha=0.45, linewidth=0)
     axes.plot(quantity.grid, quantity.posterior, color=BLUE, linewidth=1.2, label="posterior")
     if quantity.prior is not None:
-        axes.plot(
-            quantity.grid,
-            quantity.prior,
-            color=VERMILION,
-            linestyle=(0, (4, 2)),
-            linewidth=1.2,
-            label="prior",
-        )
+        dashes = {"linestyle": (0, (4, 2)), "linewidth": 1.2}
+        axes.plot(quantity.grid, quantity.prior, color=VERMILION, label="prior", **dashes)
     axes.set_ylim(0, 1.08 * float(quantity.posterior.max()))
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)
     if legend:
-        axes.legend(frameon=False, fontsize=8, loc="upper left", bbox_to_anchor=(1.02, 1.0), borderaxespad=0)
+        axes.legend(
+            frameon=False, fontsize=8.5, loc="upper left", bbox_to_anchor=(1.05, 1.0), borderaxespad=0
+        )
 
 
-BINS = 36
-
-
-def _joint_density(axes: Axes, across: scenes.Paired, up: scenes.Paired) -> None:
-    counts, x_edges, y_edges = np.histogram2d(across.draws, up.draws, BINS, (across.window, up.window))
-    density = _smooth(_smooth(counts.T).T).T
-    ordered = np.sort(density, axis=None)[::-1]
-    mass = np.cumsum(ordered) / ordered.sum()
-    levels = [float(ordered[np.searchsorted(mass, share)]) for share in (0.95, 0.5)]
+def _draw_density(axes: Axes, across: scenes.Paired, up: scenes.Paired) -> None:
+    cloud = scenes.cloud(across, up)
+    box = (*across.window, *up.window)
     axes.imshow(
-        density, origin="lower", aspect="auto", cmap=DENSITY, interpolation="bilinear",
-        extent=(*across.window, *up.window),
-    )  # fmt: skip
-    if levels[0] < levels[1]:
-        middles = [(edges[:-1] + edges[1:]) / 2 for edges in (x_edges, y_edges)]
-        axes.contour(*middles, density, levels=levels, colors=INK, linewidths=(0.7, 1.0))
+        cloud.density, origin="lower", aspect="auto", cmap=DENSITY, interpolation="bilinear", extent=box
+    )
+    if cloud.levels:
+        axes.contour(cloud.x, cloud.y, cloud.density, levels=cloud.levels, colors=INK, linewidths=(0.7, 1.0))
     axes.set_ylim(*up.window)
     axes.yaxis.set_major_locator(MaxNLocator(3, prune="both"))
-
-
-def _smooth(rows: Array) -> Array:
-    """Smooth each row by a short bell, so that contours don't follow single draws."""
-    bell = np.exp(-0.5 * np.square(np.arange(-3, 4) / 1.2))
-    return np.apply_along_axis(np.convolve, 1, rows, bell / bell.sum(), mode="same")

@@ -64,18 +64,17 @@ def prepare(folder: Path, force: bool = False) -> None:
 def write(estimate: Estimate, folder: Path, force: bool = False) -> Written:
     """Write a result: estimate.json, report.html, posterior.nc, and figures as PNG and SVG.
 
-    Arguments: estimate; folder, created when it is missing; force, whether an earlier result is replaced. Only
-    files of ours are: others in the folder stay as they are.
+    Arguments: estimate; folder, created when it is missing; force, whether an earlier result is replaced.
+    Only files of ours are: others in the folder stay as they are.
     Returns where they lie. Raises InputError as `prepare` does.
     """
-    from finback import diagnostics
     from finback.report import figures, html
 
     prepare(folder, force)
     pictures = figures.draw(estimate)
     page = html.render(estimate, pictures)
     text = json.dumps(estimate.to_dict(), allow_nan=False, ensure_ascii=False, indent=2) + "\n"
-    draws = diagnostics.inference_data(estimate)
+    draws = estimate.to_tree()
 
     drawn = {
         f"{FIGURES}/{p.name}{end}": data for p in pictures for end, data in ((".png", p.png), (".svg", p.svg))

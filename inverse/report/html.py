@@ -1,6 +1,7 @@
 """The page: one self-contained HTML file, its figures inside it, no script and nothing from outside."""
 
 import base64
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cache
@@ -14,11 +15,11 @@ if TYPE_CHECKING:
 
 ALT = {
     "drawing": "Drawing of the fin of {title}, side view and section, with its sensors at their places.",
-    "profile": "Temperature along the fin of {title}, run {run}: posterior median with its 95 % band, the readings "
-    "with error bars of two standard deviations, and the residuals beneath.",
+    "profile": "Temperature along the fin of {title}, run {run}: posterior median with its 95 % band, the "
+    "readings with error bars of two standard deviations, and the residuals beneath.",
     "candidates": "Posterior probability of each candidate as a bar: {verdict}",
-    "pairs": "Posterior of the main quantities of {title}: marginal densities with the prior dashed, and a density "
-    "for each pair with contours holding 50 % and 95 % of the draws.",
+    "pairs": "Posterior of the main quantities of {title}: marginal densities with the prior dashed, and a "
+    "density for each pair with contours holding 50 % and 95 % of the draws.",
 }
 
 
@@ -55,4 +56,23 @@ def _template() -> Any:
         loader=PackageLoader("finback.report"), autoescape=True, undefined=StrictUndefined, trim_blocks=True,
         lstrip_blocks=True, keep_trailing_newline=True,
     )  # fmt: skip
+    environment.filters |= {"whole": whole, "subscripts": subscripts}
     return environment.get_template("report.html.j2")
+
+
+def whole(text: str) -> str:
+    """Return a value that breaks across lines only before its "±" and its second limit."""
+    return (
+        text.replace(" ", "\N{NO-BREAK SPACE}")
+        .replace("\N{NO-BREAK SPACE}±", " ±")
+        .replace("\N{NO-BREAK SPACE}to", " to")
+    )
+
+
+def subscripts(text: str) -> Any:
+    """Return HTML of our own symbols and equations: "T_air" with "air" set as a subscript."""
+    from markupsafe import Markup
+
+    parts = re.split(r"_(\w+)", text)
+    marked = (Markup("<sub>{}</sub>").format(part) if n % 2 else part for n, part in enumerate(parts))
+    return Markup("").join(marked)  # which escapes what is not marked up

@@ -2,6 +2,7 @@
 
 from dataclasses import dataclass
 
+from finback.estimate import Estimate
 from finback.rig import Rig
 
 
@@ -21,18 +22,19 @@ TIPS = {
 }
 
 CAUTIONS = (
-    "An estimate is no certificate. It holds for this rig, this run and the assumptions listed above; it does not "
-    "replace a test to a standard, nor the judgement of a competent engineer.",
-    "Fins, plates and heaters stay hot long after the power is off: let them cool, and measure before touching.",
-    "Mains-powered heaters: isolate, earth and protect them by a residual-current device before wiring sensors. "
-    "Keep hands, hair and leads away from moving fans. Relieve the pressure before opening any loop.",
+    "An estimate is no certificate. It holds for this rig, this run and the assumptions listed above; it "
+    "does not replace a test to a standard, nor the judgement of a competent engineer.",
+    "Fins, plates and heaters stay hot long after the power is off: let them cool, measure, then touch.",
+    "Mains-powered heaters: isolate, earth and protect them by a residual-current device before wiring "
+    "sensors. Keep hands, hair and leads away from moving fans. Relieve pressure before opening a loop.",
     "Local codes and licensed practice prevail over anything in this report.",
 )
 
 
-def equations(rig: Rig) -> tuple[Equation, ...]:
-    """Return the equations behind a report on that rig, from the fin equation to the candidates' probabilities."""
-    joint = any(sensor.place == "plate" for sensor in rig.sensors.values())
+def equations(estimate: Estimate) -> tuple[Equation, ...]:
+    """Return the equations behind a report: fin, the candidates' tips, joint, likelihood, evidence."""
+    joint = any(sensor.place == "plate" for sensor in estimate.rig.sensors.values())
+    names = " ".join(score.name for score in estimate.candidates)
     lines = [
         Equation(
             "d²θ/dx² = m² θ,   θ = T − T_air", "steady conduction along the fin, heat lost from its side"
@@ -41,7 +43,7 @@ def equations(rig: Rig) -> tuple[Equation, ...]:
             "m² = h P / (k A)", "P perimeter that loses heat, A cross-section: temperatures alone give h/k"
         ),
     ]
-    lines += [TIPS[rig.tip]] if rig.tip else TIPS.values()
+    lines += [equation for tip, equation in TIPS.items() if tip in names]
     if joint:
         lines.append(Equation("−k θ′(0) = (T_plate − T_b) / R″", "joint at the base, of area resistance R″"))
     lines += [
@@ -49,9 +51,9 @@ def equations(rig: Rig) -> tuple[Equation, ...]:
             "q_b = −k A θ′(0)", "heat into the base of the fin; it separates h from k where it is measured"
         ),
         Equation(
-            "ln L(p) = −½ rᵀ C⁻¹ r − ½ ln det 2πC,   r = y − f(p)",
-            "likelihood of all readings y at once; C holds random noise, the calibration error common to a kind of "
-            "sensor, and hole positions through dT/dx",
+            "ln L(p) = −½ rᵀ C⁻¹ r − ½ ln det 2πC",
+            "likelihood of all readings y at once, r = y − f(p); C holds random noise, the calibration error "
+            "common to a kind of sensor, and hole positions through dT/dx",
         ),
         Equation("Zᵢ = ∫ Lᵢ(p) πᵢ(p) dp", "evidence of candidate i, with its prior π"),
         Equation("Pᵢ = Zᵢ / Σⱼ Zⱼ", "its probability, all candidates being equally likely beforehand"),
@@ -65,10 +67,11 @@ def paragraph(rig: Rig) -> str:
         rig.profile_name, rig.profile_name.replace("-", " ")
     )
     return (
-        f"The fin is a {profile} in steady, one-dimensional conduction. Every measured value, the air's and the "
-        "plate's included, is a reading with an uncertainty; every unknown is a parameter with a prior. The posterior "
-        "of the unknowns is sampled, and medians and 95 % intervals are read from its draws. Values with ± are the "
-        "posterior's mean and two standard deviations (coverage factor k = 2, not to be taken for the conductivity k); "
-        "where the posterior is too skewed for that, the median stands alone beside its interval. Least squares uses "
-        "the readings alone, without priors."
+        f"The fin is a {profile} in steady, one-dimensional conduction. Every measured value, the air's "
+        "and the plate's included, is a reading with an uncertainty; every unknown is a parameter with a "
+        "prior. The posterior of the unknowns is sampled, and medians and 95 % intervals are read from its "
+        "draws, which come from the candidates in proportion to their probabilities. Values with ± are the "
+        "posterior's mean and two standard deviations (k = 2 is the coverage factor, not the conductivity); "
+        "where the posterior is too skewed for that, the median stands alone beside its interval. Least "
+        "squares uses the readings and what the rig states, without the wide priors."
     )

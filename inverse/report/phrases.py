@@ -7,6 +7,7 @@ characters out), and each output escapes it in its own way.
 import math
 
 from finback.estimate import DeterminedBy, Status, Summary
+from finback.quantity import pretty_unit
 
 SYMBOLS = {
     "h": "h",
@@ -14,33 +15,39 @@ SYMBOLS = {
     "joint": "R″",
     "h_over_k": "h/k",
     "m": "m",
+    "joint_times_k": "R″·k",
     "air": "T_air",
     "plate": "T_plate",
     "base_temperature": "T_b",
     "tip_temperature": "T_tip",
     "heat": "q_b",
+    "base_heat_flux": "q″_b",
     "efficiency": "η",
+    "effectiveness": "ε",
+    "transverse_biot": "Bi",
     "noise": "σ",
 }
 """Symbol of a quantity by its name in estimate.json; others go by their name."""
 
 DETERMINED_BY: dict[DeterminedBy, str] = {
     "readings": "the readings",
-    "prior": "what was assumed beforehand, not by the readings",
-    "both": "the readings together with what was stated",
+    "prior": "what was known beforehand, not by the readings",
+    "both": "the readings together with what was known beforehand",
 }
+IN_SHORT: dict[DeterminedBy, str] = {"readings": "readings", "prior": "prior", "both": "both"}
 
 STATUS: dict[Status, str] = {"ok": "Done", "caution": "Done, with cautions", "failed": "Failed"}
 
 NOT_DETERMINED = "not determined"
 NOTHING = "–"
+COVERAGE = "(k = 2, 95 %)"
 SKEWED = 0.1  # share of the interval's width by which mean ± 2 sd may miss a limit before it is left out
 
 _SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
 
 def clean(text: str, longest: int = 200) -> str:
-    """Return user-given text on one line, without control or direction characters, cut at `longest` characters."""
+    """Return user-given text on one line, with nothing unprintable, cut at `longest` characters."""
     line = " ".join(text.split())
     line = "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in line)
     return line if len(line) <= longest else line[: longest - 1] + "…"
@@ -53,8 +60,7 @@ def symbol(name: str) -> str:
 
 def pretty(unit: str) -> str:
     """Return a unit as it is printed: "W/(m^2 K)" as "W/(m² K)", "degC" as "°C", "1" as nothing."""
-    text = unit.replace("^2", "²").replace("^3", "³").replace("degC", "°C")
-    return "" if text in ("1", "dimensionless") else text
+    return "" if unit == "1" else pretty_unit(unit)
 
 
 def numbers(values: tuple[float, ...], uncertainty: float) -> tuple[tuple[str, ...], str]:
@@ -63,8 +69,8 @@ def numbers(values: tuple[float, ...], uncertainty: float) -> tuple[tuple[str, .
     The power is "" for everyday numbers and " × 10⁻⁵" otherwise. An uncertainty of 0 keeps five digits, and
     no zeros behind them.
     """
-    largest = max(abs(v) for v in values)
-    power = math.floor(math.log10(largest)) if largest and not 1e-2 <= largest < 1e6 else 0
+    largest = max(abs(uncertainty), *(abs(v) for v in values))
+    power = math.floor(math.log10(largest)) if largest and not 1e-3 <= largest < 1e6 else 0
     scaled = [v / 10**power for v in values]
     if uncertainty > 0:
         last = math.floor(math.log10(float(f"{uncertainty / 10**power:.1e}"))) - 1
@@ -82,22 +88,28 @@ def ten(power: int) -> str:
     return f"10{str(power).translate(_SUPERSCRIPTS)}"
 
 
-def number(value: float | None, uncertainty: float, unit: str = "") -> str:
+def number(value: float | None, uncertainty: float, unit: str = "1") -> str:
     """Return one number with its unit, to two significant digits of its uncertainty; "–" for None."""
-    if value is None:
+    if value is None or not math.isfinite(value):
         return NOTHING
     (text,), power = numbers((value,), uncertainty)
     return f"{text}{power} {pretty(unit)}".rstrip()
 
 
 def plus_minus(value: float, expanded: float, unit: str) -> str:
-    """Return "41.3 W/(m² K) ± 1.8 W/(m² K) (k = 2, 95 %)"; a temperature's uncertainty is in K."""
+    """Return "41.3 W/(m² K) ± 1.8 W/(m² K)"; a temperature's uncertainty is in K."""
     (text, width), power = numbers((value, expanded), expanded)
-    of_width = "K" if unit == "degC" else unit
-    return f"{f'{text}{power} {pretty(unit)}'.rstrip()} ± {f'{width}{power} {pretty(of_width)}'.rstrip()} (k = 2, 95 %)"
+    of_value, of_width = (f"{power} {pretty(u)}".rstrip() for u in (unit, "K" if unit == "degC" else unit))
+    return f"{text}{of_value} ± {width}{of_width}"
 
 
-def span(low: float, high: float, unit: str) -> str:
+def compact(value: float, width: float) -> str:
+    """Return "41.3 ± 1.8", for a column whose unit stands elsewhere."""
+    (text, of_width), power = numbers((value, width), width)
+    return f"({text} ± {of_width}){power}" if power else f"{text} ± {of_width}"
+
+
+def span(low: float, high: float, unit: str = "1") -> str:
     """Return an interval, "39.6 to 43.1 W/(m² K)"."""
     (first, last), power = numbers((low, high), (high - low) / 2)
     text = f"({first} to {last}){power}" if power else f"{first} to {last}"
@@ -113,6 +125,11 @@ def skewed(summary: Summary) -> bool:
     return max(abs(miss) for miss in misses) > allowed
 
 
+def symmetric(summary: Summary) -> bool:
+    """Tell whether a quantity may be stated as mean ± two standard deviations."""
+    return summary.median is not None and bool(summary.sd) and not skewed(summary)
+
+
 def value(summary: Summary) -> str:
     """Return the headline of a quantity.
 
@@ -120,39 +137,51 @@ def value(summary: Summary) -> str:
     "at most 23 W (95 %)" where only an upper limit is known; "not determined" where nothing is.
     """
     if summary.median is None:
-        if summary.high95 is not None and not summary.low95:
-            return f"at most {number(summary.high95, 0.1 * summary.high95, summary.unit)} (95 %)"
-        return NOT_DETERMINED
-    if summary.mean is None or not summary.sd or skewed(summary):
+        limit = interval(summary)
+        return NOT_DETERMINED if limit == NOTHING else f"{limit} (95 %)"
+    if summary.mean is None or summary.sd is None or not symmetric(summary):
         return median(summary)
     return plus_minus(summary.mean, 2 * summary.sd, summary.unit)
 
 
-def median(summary: Summary) -> str:
-    """Return the posterior median with its unit, or "–"."""
-    return number(summary.median, _half_width(summary), summary.unit)
+def determined_by(summary: Summary, short: bool = False) -> str:
+    """Return what determined a quantity: a phrase, or one word; nothing where it is not determined."""
+    if summary.median is None:
+        return ""
+    if summary.sd == 0:
+        return "stated" if short else "the rig, as exactly known"
+    return (IN_SHORT if short else DETERMINED_BY)[summary.determined_by]
 
 
-def interval(summary: Summary) -> str:
-    """Return the 95 % interval with its unit; "at most 23 W" with an upper limit only; "–" with none."""
-    if summary.high95 is None:
+def median(summary: Summary, unit: bool = True) -> str:
+    """Return the posterior median, or "–"."""
+    return number(summary.median, _half_width(summary), summary.unit if unit else "1")
+
+
+def interval(summary: Summary, unit: bool = True) -> str:
+    """Return the 95 % interval; "at most 23 W" with an upper limit only; "–" with none or if exact."""
+    name, high = summary.unit if unit else "1", summary.high95
+    if high is None or summary.sd == 0:
         return NOTHING
     if not summary.low95 and summary.median is None:
-        return f"at most {number(summary.high95, 0.1 * summary.high95, summary.unit)}"
-    if summary.low95 is None:
+        return f"at most {number(high, 0.1 * abs(high), name)}"
+    return NOTHING if summary.low95 is None else span(summary.low95, high, name)
+
+
+def expanded(summary: Summary) -> str:
+    """Return mean ± two standard deviations without unit, or "–" where that would misstate the interval."""
+    if summary.mean is None or summary.sd is None or not symmetric(summary):
         return NOTHING
-    return span(summary.low95, summary.high95, summary.unit)
+    return compact(summary.mean, 2 * summary.sd)
 
 
 def least_squares(summary: Summary) -> str:
-    """Return the least-squares value ± its standard error, or "–"."""
-    if summary.least_squares is None:
+    """Return the least-squares value ± its standard error, without unit, or "–"."""
+    if summary.least_squares is None or summary.sd == 0:
         return NOTHING
     if not summary.standard_error:
-        return number(summary.least_squares, _half_width(summary), summary.unit)
-    (text, width), power = numbers((summary.least_squares, summary.standard_error), summary.standard_error)
-    text = f"({text} ± {width}){power}" if power else f"{text} ± {width}"
-    return f"{text} {pretty(summary.unit)}".rstrip()
+        return number(summary.least_squares, _half_width(summary))
+    return compact(summary.least_squares, summary.standard_error)
 
 
 def probability(p: float) -> str:

@@ -1,4 +1,4 @@
-"""Scenes: what each figure shows, chosen and converted for drawing (mm, °C, %), free of any drawing library."""
+"""Scenes: what each figure shows, chosen and converted for drawing (mm, °C, %); nothing is drawn here."""
 
 from dataclasses import dataclass
 
@@ -22,10 +22,20 @@ MAIN_QUANTITIES = (
     "noise",
     "tip_temperature",
 )
+NAMED = {
+    "base_temperature": "T base",
+    "air": "T air",
+    "tip_temperature": "T tip",
+    "noise": "noise",
+    "heat": "heat",
+}
+"""What an axis calls a quantity whose symbol has a subscript."""
+
 MOST_PAIRED = 4
 SAME = 0.9995  # correlation beyond which two quantities are one and only the first is drawn
 MOST_DRAWS = 20_000
 GRID = 160
+BINS = 40
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,7 +63,7 @@ class DrawingScene:
 
 @dataclass(frozen=True, slots=True)
 class Point:
-    """One temperature reading in the profile: x [mm], None beside the fin; temperatures and uncertainty [°C, K]."""
+    """One temperature reading of the profile: x [mm], None beside the fin; temperatures [°C, K]."""
 
     name: str
     place: str
@@ -67,7 +77,7 @@ class Point:
 
 @dataclass(frozen=True, slots=True)
 class ProfileScene:
-    """Temperature along the fin [mm, °C] with its band, the readings, and the air's level where it is known."""
+    """Temperature along the fin [mm, °C] with its band, the readings, and the air's level if known."""
 
     length: float
     air: float | None
@@ -77,21 +87,34 @@ class ProfileScene:
     high: Array
     points: tuple[Point, ...]
 
+    def beside(self, place: str) -> float:
+        """Where plate and air readings are drawn: at the base's side of the fin, or the tip's [mm]."""
+        return {"plate": -0.07, "air": 1.07}[place] * self.length
+
 
 @dataclass(frozen=True, slots=True)
 class Paired:
-    """One quantity of the pair plot: draws (n,), the window shown, and densities of posterior and prior in it.
+    """One quantity of the pair plot: its label, draws (n,), the window shown, and densities on a grid in it.
 
-    `prior` is None where the quantity has none of its own.
+    Draws are nan where a candidate has no such quantity. `prior` is None where the quantity has none.
     """
 
-    symbol: str
-    unit: str
+    label: str
     draws: Array
     window: tuple[float, float]
     grid: Array
     posterior: Array
     prior: Array | None
+
+
+@dataclass(frozen=True, slots=True)
+class Cloud:
+    """Density of the draws of two quantities on a grid x, y, and its levels around 95 % and 50 % of them."""
+
+    x: Array
+    y: Array
+    density: Array
+    levels: tuple[float, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -119,7 +142,7 @@ def drawing(estimate: Estimate) -> DrawingScene:
         round=round_,
         guarded=rig.guarded_edges,
         joint=any(mark.place == "plate" for mark in marks),
-        tip=f"{rig.tip} tip" if rig.tip else "tip compared",
+        tip=f"{rig.tip} tip" if rig.tip else "tip left open",
         marks=marks,
     )
 
@@ -148,23 +171,39 @@ def profile(estimate: Estimate) -> ProfileScene:
 
 
 def pairs(estimate: Estimate) -> tuple[Paired, ...]:
-    """Return the quantities of the pair plot: the main ones that were drawn, move, and aren't one and the same."""
+    """Return the quantities of the pair plot: the main ones that vary, and aren't one and the same."""
     draws = estimate.draws
     flat = draws.values.reshape(-1, len(draws.names))
     flat = flat[:: max(1, len(flat) // MOST_DRAWS)]
+    settled = {name for name, summary in estimate.parameters.items() if summary.median is not None}
     chosen: list[int] = []
     for name in MAIN_QUANTITIES:
-        if name in draws.names and len(chosen) < MOST_PAIRED and len(flat) > 1:
-            index = draws.names.index(name)
-            column = flat[:, index]
-            if not np.all(np.isfinite(column)) or np.ptp(column) <= 1e-12 * np.abs(column).max():
-                continue
-            if all(abs(np.corrcoef(column, flat[:, other])[0, 1]) < SAME for other in chosen):
-                chosen.append(index)
+        if name not in draws.names or (name == "h_over_k" and {"h", "k"} <= settled):
+            continue
+        index = draws.names.index(name)
+        alike = (_correlation(flat[:, index], flat[:, other]) >= SAME for other in chosen)
+        if len(chosen) < MOST_PAIRED and _varies(flat[:, index]) and not any(alike):
+            chosen.append(index)
     return tuple(
         _paired(draws.names[i], draws.units[i], flat[:, i], draws.prior[:, i] if draws.prior.size else None)
         for i in chosen
     )
+
+
+def cloud(across: Paired, up: Paired) -> Cloud:
+    """Return the density of two quantities' draws, smoothed by a short bell."""
+    both = np.isfinite(across.draws) & np.isfinite(up.draws)
+    windows = (across.window, up.window)
+    counts, x_edges, y_edges = np.histogram2d(across.draws[both], up.draws[both], BINS, windows)
+    bell = np.exp(-0.5 * np.square(np.subtract.outer(np.arange(BINS), np.arange(BINS)) / 1.3))
+    density = bell @ counts.T @ bell
+    x, y = ((edges[:-1] + edges[1:]) / 2 for edges in (x_edges, y_edges))
+    if not density.any():
+        return Cloud(x, y, density, ())
+    ordered = np.sort(density, axis=None)[::-1]
+    held = np.cumsum(ordered) / ordered.sum()
+    outer, inner = (float(ordered[np.searchsorted(held, share)]) for share in (0.95, 0.5))
+    return Cloud(x, y, density, (outer, inner) if outer < inner else ())
 
 
 def bars(estimate: Estimate) -> tuple[Bar, ...]:
@@ -175,32 +214,48 @@ def bars(estimate: Estimate) -> tuple[Bar, ...]:
     )
 
 
-def _paired(name: str, unit: str, draws: Array, prior: Array | None) -> Paired:
-    largest = float(np.abs(draws).max())
-    power = 0 if 1e-2 <= largest < 1e5 else int(np.floor(np.log10(largest)))
-    draws = draws / 10.0**power
-    label = f"{phrases.ten(power)} {phrases.pretty(unit)}" if power else phrases.pretty(unit)
+def _varies(draws: Array) -> bool:
+    finite = draws[np.isfinite(draws)]
+    return finite.size > 1 and float(np.ptp(finite)) > 1e-9 * float(np.abs(finite).max())
 
-    low, high = (float(limit) for limit in np.quantile(draws, [0.002, 0.998]))
+
+def _correlation(one: Array, other: Array) -> float:
+    both = np.isfinite(one) & np.isfinite(other)
+    if not (_varies(one[both]) and _varies(other[both])):
+        return 0.0
+    return abs(float(np.corrcoef(one[both], other[both])[0, 1]))
+
+
+def _paired(name: str, unit: str, draws: Array, prior: Array | None) -> Paired:
+    finite = draws[np.isfinite(draws)]
+    largest = float(np.abs(finite).max())
+    power = 0 if 1e-2 <= largest < 1e5 else int(np.floor(np.log10(largest)))
+    draws, finite = draws / 10.0**power, finite / 10.0**power
+    shown = f"{phrases.ten(power)} {phrases.pretty(unit)}" if power else phrases.pretty(unit)
+
+    low, high = (float(limit) for limit in np.quantile(finite, [0.002, 0.998]))
     margin = 0.08 * (high - low)
-    positive = unit != "degC" and bool(np.all(draws > 0))
+    positive = unit != "degC" and bool(np.all(finite > 0))
     window = (max(low - margin, 0.5 * low) if positive else low - margin, high + margin)
     grid = np.linspace(*window, GRID)
     given = None
-    if prior is not None and np.all(np.isfinite(prior)) and len(prior) > 1 and np.ptp(prior) > 0:
+    if prior is not None and np.all(np.isfinite(prior)) and _varies(prior):
         given = _density(prior / 10.0**power, grid, positive)
-    return Paired(
-        phrases.symbol(name), label.strip(), draws, window, grid, _density(draws, grid, positive), given
-    )
+    label = ", ".join(part for part in (NAMED.get(name, phrases.symbol(name)), shown.strip()) if part)
+    return Paired(label, draws, window, grid, _density(finite, grid, positive), given)
 
 
 def _density(draws: Array, grid: Array, logarithmic: bool) -> Array:
-    """Kernel density at grid points; in the logarithm for a positive quantity, whose prior may span decades."""
+    """Return the kernel density at grid points; that of a positive quantity is smoothed in its logarithm.
+
+    A wide prior spans decades, and a bell as wide as that would blur it beyond recognition.
+    """
     if logarithmic and np.all(draws > 0):
         return _density(np.log(draws), np.log(grid), False) / grid
-    draws = draws[:: max(1, len(draws) // 2000)]
-    low, high = np.quantile(draws, [0.25, 0.75])
-    spread = min(float(draws.std()), float(high - low) / 1.349) or float(draws.std())
-    width = 0.9 * spread * len(draws) ** -0.2  # Silverman's rule of thumb
-    kernels = np.exp(-0.5 * np.square((grid[:, None] - draws) / width))
-    return np.asarray(kernels.mean(axis=1) / (width * np.sqrt(2 * np.pi)), dtype=np.float64)
+    lower, upper = np.quantile(draws, [0.25, 0.75])
+    spread = min(float(draws.std()), float(upper - lower) / 1.349) or float(draws.std())
+    width = 1.06 * spread * len(draws) ** -0.2  # Silverman's rule of thumb
+    edges = np.linspace(grid.min() - 4 * width, grid.max() + 4 * width, 601)
+    counts, _ = np.histogram(draws, edges)
+    kernels = np.exp(-0.5 * np.square(np.subtract.outer(grid, (edges[:-1] + edges[1:]) / 2) / width))
+    return np.asarray(kernels @ counts / (len(draws) * width * np.sqrt(2 * np.pi)), dtype=np.float64)

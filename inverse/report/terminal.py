@@ -6,14 +6,14 @@ from finback.estimate import Estimate
 from finback.report import phrases, view
 
 COLUMNS = 79
-SYMBOL = 6  # columns of the symbol before its value
+SYMBOL = 5  # columns of the symbol before its value
 
 
 def summary(estimate: Estimate, folder: Path | str | None = None) -> str:
     """Return the summary of an estimate.
 
-    Arguments: estimate; folder the result was written to, None when it was not. Lines hold at most 79 columns,
-    no colour codes and no character that a terminal would obey.
+    Arguments: estimate; folder the result was written to, None when it was not. Lines hold at most 79
+    columns, no colour codes and no character that a terminal would obey.
     """
     seen = view.build(estimate)
     blocks = [_heading(seen), *(_answer(answer) for answer in seen.answers), _candidates(seen)]
@@ -29,7 +29,7 @@ def _heading(seen: view.View) -> list[str]:
 
 def _answer(answer: view.Answer) -> list[str]:
     indent = " " * (SYMBOL + 2)
-    lines = wrap(f"{answer.symbol:<{SYMBOL}}= {answer.value}", indent)
+    lines = wrap(f"= {answer.value} {answer.coverage}", indent, f"{answer.symbol:<{SYMBOL}}")
     if answer.median != phrases.NOTHING:
         lines += wrap(f"median {answer.median}, 95 % interval {answer.interval}", indent, indent)
     lines += wrap(answer.label, indent, indent)

@@ -14,16 +14,24 @@ ZERO_CELSIUS = 273.15
 SEVERITIES = ("fault", "caution", "note")
 PLACES = {"fin": "fin", "plate": "plate", "air": "air", "heat": "heat into the fin", "heater": "heater power"}
 HEADLINES = ("h", "k", "joint")
+STAND_INS = {
+    "h_over_k": {"h", "k"},
+    "joint_times_k": {"R″"},
+}  # what is told where one of those is not determined
 SHOWN_FIRST = 3  # findings in the first screen
 
 
 @dataclass(frozen=True, slots=True)
 class Answer:
-    """One headline: `value` with its uncertainty, or a verdict such as "not determined" with its `reason`."""
+    """One headline: `value` with its uncertainty, or a verdict such as "not determined" with its `reason`.
+
+    `coverage` goes with a value stated with ±.
+    """
 
     symbol: str
     label: str
     value: str
+    coverage: str
     median: str
     interval: str
     determined_by: str
@@ -32,13 +40,14 @@ class Answer:
 
 @dataclass(frozen=True, slots=True)
 class QuantityRow:
-    """One row of the table of parameters and derived quantities."""
+    """One row of the table of quantities; `expanded`: mean ± two standard deviations."""
 
     symbol: str
     label: str
-    value: str
+    unit: str
     median: str
     interval: str
+    expanded: str
     least_squares: str
     determined_by: str
 
@@ -133,7 +142,7 @@ def build(estimate: Estimate) -> View:
         assumptions=tuple(phrases.clean(f.message, 400) for f in estimate.findings if f.code == "assumed"),
         priors=tuple(phrases.clean(phrases.pretty(line), 400) for line in estimate.priors),
         method=method.paragraph(estimate.rig),
-        equations=method.equations(estimate.rig),
+        equations=method.equations(estimate),
         provenance=_provenance(estimate),
         cautions=method.CAUTIONS,
         version=estimate.provenance.finback,
@@ -141,16 +150,14 @@ def build(estimate: Estimate) -> View:
 
 
 def _answers(estimate: Estimate) -> tuple[Answer, ...]:
-    """Headlines: h, k and the joint, then what is determined in their stead where one of them is not."""
+    """Return the headlines: h, k and the joint, then what is determined in the stead of one that is not."""
     answers = []
     for name in HEADLINES:
         summary = estimate.parameters.get(name)
         answers.append(_answer(estimate, name, summary) if summary else _absent(estimate, name))
-    missing = {name for name in HEADLINES if (s := estimate.parameters.get(name)) and s.median is None}
+    missing = {answer.symbol for answer in answers if answer.value == phrases.NOT_DETERMINED}
     for name, summary in estimate.derived.items():
-        stands_in = name == "h_over_k" if missing & {"h", "k"} else False
-        stands_in = stands_in or ("joint" in missing and name.startswith("joint"))
-        if stands_in and summary.median is not None:
+        if summary.median is not None and missing & STAND_INS.get(name, set()):
             answers.append(_answer(estimate, name, summary))
     return tuple(answers)
 
@@ -163,15 +170,16 @@ def _answer(estimate: Estimate, name: str, summary: Summary) -> Answer:
         symbol=phrases.symbol(name),
         label=label,
         value=phrases.value(summary),
+        coverage=phrases.COVERAGE if phrases.symmetric(summary) else "",
         median=phrases.median(summary),
         interval=phrases.interval(summary),
-        determined_by=phrases.DETERMINED_BY[summary.determined_by] if summary.median is not None else "",
+        determined_by=phrases.determined_by(summary),
         reason=_reason(estimate, summary) if summary.median is None else "",
     )
 
 
 def _absent(estimate: Estimate, name: str) -> Answer:
-    """Headline of a quantity that was no unknown of this fit."""
+    """Return the headline of a quantity that was no unknown of this fit."""
     label, value, reason = {
         "h": (
             "total coefficient: convection and radiation together",
@@ -191,11 +199,11 @@ def _absent(estimate: Estimate, name: str) -> Answer:
             phrases.number(stated.value, 0.0, "W/(m K)"),
             "Taken as exactly known, as the rig states.",
         )
-    return Answer(phrases.symbol(name), label, value, phrases.NOTHING, phrases.NOTHING, "", reason)
+    return Answer(phrases.symbol(name), label, value, "", phrases.NOTHING, phrases.NOTHING, "", reason)
 
 
 def _reason(estimate: Estimate, summary: Summary) -> str:
-    """The sentence of the finding that says why a quantity is not determined."""
+    """Return the sentence of the finding that says why a quantity is not determined."""
     told = [finding for finding in estimate.findings if finding.code == "not-determined"]
     for finding in told:
         named = {str(value) for key, value in finding.evidence.items() if key in ("quantity", "parameter")}
@@ -209,22 +217,24 @@ def _reason(estimate: Estimate, summary: Summary) -> str:
 
 
 def _label(summary: Summary) -> str:
-    """The label without the symbol that stands beside it anyway."""
+    """Return the label without the symbol that stands beside it anyway."""
     label = phrases.clean(summary.label)
-    for mark in (phrases.symbol(summary.name), summary.name, "R''"):
+    for mark in (phrases.symbol(summary.name), "R''"):
         label = label.removesuffix(f" {mark}")
-    return label
+    return label.replace("R''", "R″")
 
 
 def _quantity(summary: Summary) -> QuantityRow:
+    determined = summary.median is not None
     return QuantityRow(
         phrases.symbol(summary.name),
         _label(summary),
-        phrases.value(summary),
-        phrases.median(summary),
-        phrases.interval(summary),
+        phrases.pretty(summary.unit),
+        phrases.median(summary, unit=False) if determined else phrases.NOT_DETERMINED,
+        phrases.interval(summary, unit=False),
+        phrases.expanded(summary),
         phrases.least_squares(summary),
-        summary.determined_by if summary.median is not None else phrases.NOTHING,
+        phrases.determined_by(summary, short=True) or phrases.NOTHING,
     )
 
 
@@ -260,7 +270,7 @@ def _reading(row: ReadingFit) -> ReadingRow:
 
 
 def _findings(findings: tuple[Finding, ...]) -> tuple[FindingRow, ...]:
-    """Findings, worst first, each sentence once; assumptions have their own list."""
+    """Return the findings, worst first, each sentence once; assumptions have their own list."""
     rows: dict[str, FindingRow] = {}
     for finding in sorted(findings, key=lambda finding: SEVERITIES.index(finding.severity)):
         if finding.code != "assumed":
@@ -274,7 +284,10 @@ def _loo_note(estimate: Estimate) -> str:
     if all(score.loo is None for score in estimate.candidates):
         return ""
     n = sum(row.excluded is None for row in estimate.table)
-    return f"LOO is the expected log density of a left-out reading, summed. With {n} readings it is indicative only."
+    return (
+        "LOO: log density expected for each reading when it is left out, summed. "
+        f"Few readings make LOO indicative only; here there are {n}."
+    )
 
 
 def _fit(estimate: Estimate) -> str:
@@ -283,7 +296,7 @@ def _fit(estimate: Estimate) -> str:
     if fit.p_value is not None:
         return f"{text}, p = {fit.p_value:.2g}."
     if fit.noise is not None:
-        return f"{text}; no test of the fit, since the noise of a reading, {fit.noise:.2g} K, was estimated from it."
+        return f"{text}; no test, since the noise of a reading, {fit.noise:.2g} K, was estimated from them."
     return f"{text}."
 
 

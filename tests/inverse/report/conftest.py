@@ -41,10 +41,8 @@ PROVENANCE = Provenance(
 
 def summarise(name, label, unit, draws, determined_by="readings", least_squares=None, standard_error=None):
     low, median, high = np.quantile(draws, [0.025, 0.5, 0.975])
-    return Summary(
-        name, label, unit, float(median), float(draws.mean()), float(draws.std(ddof=1)), float(low), float(high),
-        least_squares, standard_error, determined_by,
-    )  # fmt: skip
+    numbers = (float(each) for each in (median, draws.mean(), draws.std(ddof=1), low, high))
+    return Summary(name, label, unit, *numbers, least_squares, standard_error, determined_by)
 
 
 def nothing(name, label, unit):
@@ -70,6 +68,12 @@ def make_table(sensors, predicted, skip=()):
             )
         )  # fmt: skip
     return tuple(table), values
+
+
+def make_draws(names, units, values, prior, table):
+    counted = tuple(row.sensor for row in table if row.excluded is None)
+    pointwise = np.full((*values.shape[:2], len(counted)), -1.0)
+    return Draws(names, units, values, prior, np.zeros(values.shape[:2], dtype=int), pointwise, counted)
 
 
 def make_pin(names=None, title="Invented pin, bench 2"):
@@ -113,40 +117,44 @@ def make_pin(names=None, title="Invented pin, bench 2"):
         Finding("assumed", "note", "No emissivity was given: h holds convection and radiation together."),
     )
     rig = Rig(
-        title, "pin", {"length": Quantity(0.120, 0.0, "120 mm"), "diameter": Quantity(0.008, 2e-5, "8 mm +/- 0.02 mm")},
-        {sensor.name: sensor for sensor in sensors}, conductivity=Quantity(167.0, 8.35, "167 W/(m K) +/- 5 %"),
+        title,
+        "pin",
+        {"length": Quantity(0.120, 0.0, "120 mm"), "diameter": Quantity(0.008, 2e-5, "8 mm +/- 0.02 mm")},
+        {sensor.name: sensor for sensor in sensors},
+        conductivity=Quantity(167.0, 8.35, "167 W/(m K) +/- 5 %"),
         assumed=findings[1:],
-    )  # fmt: skip
+    )
 
     t_b = solution.base_temperature - ZERO
     quantities = {
         "h": ("W/(m^2 K)", h), "k": ("W/(m K)", k), "joint": ("m^2 K/W", joint), "air": ("degC", air - ZERO),
         "base_temperature": ("degC", t_b), "heat": ("W", solution.base_heat), "h_over_k": ("1/m", h / k),
     }  # fmt: skip
-    prior = np.column_stack([
+    none = np.full(2000, np.nan)
+    priors = (
         lognormal(rng, 50.0, 1.5, 2000), lognormal(rng, 167.0, 0.05, 2000), lognormal(rng, 1e-4, 1.5, 2000),
-        21.4 + 0.4 * rng.standard_normal(2000), np.full(2000, np.nan), np.full(2000, np.nan), np.full(2000, np.nan),
-    ])  # fmt: skip
-    draws = Draws(
-        tuple(quantities), tuple(unit for unit, _ in quantities.values()),
-        np.stack([values.reshape(n_chains, n_draws) for _, values in quantities.values()], axis=2), prior,
+        21.4 + 0.4 * rng.standard_normal(2000), none, none, none,
     )  # fmt: skip
+    columns = [values.reshape(n_chains, n_draws).copy() for _, values in quantities.values()]
+    columns[2][:, ::50] = np.nan  # draws of a candidate without a joint
+    units = tuple(unit for unit, _ in quantities.values())
+    draws = make_draws(tuple(quantities), units, np.stack(columns, axis=2), np.column_stack(priors), table)
     return Estimate(
         rig=rig,
         readings=Readings("hot-3", values, {names[5]: "judged faulty by the operator"}),
         status="caution",
         parameters={
-            "h": summarise("h", "film coefficient", "W/(m^2 K)", h, "readings", 42.2, 1.1),
-            "k": summarise("k", "conductivity", "W/(m K)", k, "both", 163.9, 5.6),
-            "joint": summarise("joint", "joint resistance", "m^2 K/W", joint, "readings", 5.2e-5, 0.8e-5),
+            "h": summarise("h", "convection coefficient h", "W/(m^2 K)", h, "readings", 42.2, 1.1),
+            "k": summarise("k", "conductivity k", "W/(m K)", k, "both", 163.9, 5.6),
+            "joint": summarise("joint", "joint resistance R''", "m^2 K/W", joint, "readings", 5.2e-5, 0.8e-5),
             "air": summarise("air", "air temperature", "degC", air - ZERO, "both", 21.42, 0.24),
         },
         derived={
             "h_over_k": summarise("h_over_k", "ratio h/k", "1/m", h / k),
-            "m": summarise("m", "fin parameter", "1/m", np.sqrt(4 * h / (k * 0.008))),
+            "m": summarise("m", "fin parameter m", "1/m", np.sqrt(4 * h / (k * 0.008))),
             "base_temperature": summarise("base_temperature", "base temperature", "degC", t_b),
             "heat": summarise("heat", "heat into the fin", "W", solution.base_heat),
-            "efficiency": summarise("efficiency", "fin efficiency", "", rng.normal(0.712, 0.004, n)),
+            "efficiency": summarise("efficiency", "fin efficiency", "1", rng.normal(0.712, 0.004, n)),
         },
         candidates=(
             CandidateScore("convective tip, joint", 0.931, -9.41, 0.02, -6.2, 31.1, 25.4),
@@ -171,7 +179,7 @@ def make_pin(names=None, title="Invented pin, bench 2"):
 
 
 def make_rod():
-    """Return a long square bar without plate or heat sensor and without conductivity: only h/k is determined."""
+    """Return a long square bar without plate sensor, heat sensor or conductivity: only h/k is determined."""
     rng = np.random.default_rng(7)
     n = 2000
     h = lognormal(rng, 19.0, 0.007, n)
@@ -187,13 +195,16 @@ def make_rod():
     reason = "The readings along the fin determine h/k only: state the conductivity or measure the heat."
     lengths = {"length": Quantity(0.7), "width": Quantity(0.0095), "thickness": Quantity(0.0095)}
     ratio = h / 237.0
+    values_of_draws = np.stack([ratio, base - ZERO], axis=1).reshape(4, n // 4, 2)
+    prior = np.column_stack([lognormal(rng, 0.1, 2.0, 1000), rng.uniform(0.0, 400.0, 1000)])
+    draws = make_draws(("h_over_k", "base_temperature"), ("1/m", "degC"), values_of_draws, prior, table)
     return Estimate(
         rig=Rig("Invented long bar", "rectangular", lengths, {s.name: s for s in sensors}, tip="convective"),
         readings=Readings("A", values),
         status="caution",
         parameters={
-            "h": nothing("h", "film coefficient", "W/(m^2 K)"),
-            "k": nothing("k", "conductivity", "W/(m K)"),
+            "h": nothing("h", "convection coefficient h", "W/(m^2 K)"),
+            "k": nothing("k", "conductivity k", "W/(m K)"),
         },
         derived={
             "h_over_k": summarise("h_over_k", "ratio h/k", "1/m", ratio, "readings", 0.0803, 0.0006),
@@ -205,12 +216,7 @@ def make_rod():
         fit=FitQuality({r.sensor: r.residual for r in table}, 12.9, 13, None, 0.24),
         table=table,
         band=ProfileBand(x, median, low, high),
-        draws=Draws(
-            ("h_over_k", "base_temperature"),
-            ("1/m", "degC"),
-            np.stack([ratio, base - ZERO], axis=1).reshape(4, n // 4, 2),
-            np.column_stack([lognormal(rng, 0.1, 2.0, 1000), rng.uniform(0.0, 400.0, 1000)]),
-        ),  # fmt: skip
+        draws=draws,
         sampler=SamplerRecord("emcee, 4 ensembles", n, 1210.0, 1.002, 1, True),
         findings=(
             Finding("not-determined", "caution", reason, None, {"quantity": "h"}),
@@ -223,7 +229,8 @@ def make_rod():
 
 HOSTILE = "<script>alert(1)</script>"
 HOSTILE_NAMES = (
-    'T"1"', "T'2'", "T<3>", "T&4", "$T_5$", "[bold]T6[/bold]", r"T\7", "{{ 7*7 }}", "[red]TP", "T--><b>A", "$Q"
+    'T"1"', "T'2'", "T<3>", "T&4", "$T_5$", "[bold]T6[/bold]", r"T\7", "{{ 7*7 }}", "[red]TP", "T--><b>A",
+    "\x1b[31m$Q",
 )  # fmt: skip
 
 
