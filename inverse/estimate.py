@@ -67,8 +67,9 @@ class CandidateScore:
 class ReadingFit:
     """One reading beside what the best candidate predicts for it (at its posterior median).
 
-    Values in K (absolute) or W. `uncertainty`: standard uncertainty of the reading, random and systematic
-    together. `excluded`: why it was set aside, or None.
+    Values in K (absolute) or W. `position` with its standard uncertainty [m], None where it is not on the fin.
+    `uncertainty`: standard uncertainty of the reading, random and systematic together. `excluded`: why it was
+    set aside, or None.
     """
 
     sensor: str
