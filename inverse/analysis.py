@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 import finback
-from finback import candidates, concerns, derived, summaries
+from finback import candidates, checks, concerns, derived, summaries
 from finback import readings as readings_file
 from finback import rig as rig_file
 from finback.candidates import Outcome
@@ -60,7 +60,7 @@ def fit(
         rig = rig_file.read(Path(rig))
     if not isinstance(readings, Readings):
         readings = readings_file.read(Path(readings), rig).pick(run)
-    readings_file.check_run(rig, readings)
+    checks.check_run(rig, readings)
     progress = progress or (lambda _stage, _fraction: None)
     outcomes = candidates.compare(rig, readings, seed, progress, settings)
     progress("summing up", 0.95)

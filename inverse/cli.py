@@ -88,14 +88,17 @@ def check(
     ] = None,
 ) -> None:
     """Read everything, compute nothing; show what was understood."""
-    from finback import candidates, overview
+    from finback import candidates, checks, overview
     from finback import readings as readings_reader
     from finback import rig as rig_reader
 
     rig = rig_reader.read(rig_file)
     runs = None
     if readings_file is not None:
-        runs = [readings.run for readings in readings_reader.read(readings_file, rig)]
+        runs = []
+        for readings in readings_reader.read(readings_file, rig):
+            checks.check_run(rig, readings)
+            runs.append(readings.run)
     print(overview.describe(rig, runs, [each.name for each in candidates.enumerate_candidates(rig)]))
 
 
@@ -185,7 +188,7 @@ def run(arguments: Sequence[str]) -> int:
         return _complain("interrupted before the result was complete.", INTERRUPTED)
     except USAGE_ERROR as error:
         return _complain(_usage_sentence(error), InputError.exit_status)
-    except BrokenPipeError:  # whoever read the output has seen enough
+    except (BrokenPipeError, SystemExit):  # whoever read the output has seen enough; typer exits for that
         _drop_output()
         return 0
     except OSError as error:

@@ -137,7 +137,7 @@ def draw(rig: Rig) -> str:
 def _fin_lines(rig: Rig) -> list[str]:
     sizes = ", ".join(f"{name.replace('_', ' ')} {_shown(size)}" for name, size in rig.geometry.items())
     edges = ", edges guarded" if rig.guarded_edges else ""
-    tip = "not stated: candidates are compared" if rig.tip is None else rig.tip
+    tip: str = rig.tip or "not stated: candidates are compared"
     if rig.tip == "fixed":
         tip += " at " + (
             "an unknown temperature" if rig.tip_temperature is None else _shown(rig.tip_temperature)
