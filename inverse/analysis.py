@@ -14,7 +14,6 @@ from finback import readings as readings_file
 from finback import rig as rig_file
 from finback.candidates import Outcome
 from finback.estimate import (
-    CandidateScore,
     Draws,
     Estimate,
     FitQuality,
@@ -165,11 +164,16 @@ def _set_aside(best: Outcome) -> tuple[ReadingFit, ...]:
         if measured is None:
             continue
         solution = problem.solve(values, np.array([sensor.position or 0.0]))
-        predictions = {"fin": solution.temperatures[0, 0], "heat": solution.base_heat[0], "heater": solution.base_heat[0]}
+        predictions = {
+            "fin": solution.temperatures[0, 0],
+            "heat": solution.base_heat[0],
+            "heater": solution.base_heat[0],
+        }
         predicted = float(np.ravel(predictions.get(sensor.place, values.get(sensor.place, np.nan)))[0])
         found.append(
             ReadingFit(
-                name, sensor.place, sensor.position, sensor.position_sd, measured, predicted, measured - predicted,
+                name, sensor.place, sensor.position, sensor.position_sd, measured, predicted,
+                measured - predicted,
                 best.point.sigma, reason,
             )
         )  # fmt: skip
@@ -207,7 +211,7 @@ def _band(outcomes: Sequence[Outcome], mixture: summaries.Mixture) -> ProfileBan
 
 
 def _draws(outcomes: Sequence[Outcome], mixture: summaries.Mixture) -> Draws:
-    """Return the averaged draws in reported units, with the prior of each parameter and the log likelihoods."""
+    """Return the averaged draws in reported units, with each parameter's prior and the log likelihoods."""
     names = tuple(name for name in (*PARAMETERS, *derived.DERIVED) if name in mixture.values)
     random = np.random.default_rng(0)
     prior = np.full((PRIOR_DRAWS, len(names)), np.nan)
@@ -250,5 +254,7 @@ def _provenance(rig: Rig, readings: Readings) -> Provenance:
         for source, digest in ((rig.source, rig.sha256), (readings.source, readings.sha256))
         if source is not None and digest is not None
     }
-    versions = {"python": ".".join(map(str, sys.version_info[:3]))} | {name: version(name) for name in PACKAGES}
+    versions = {"python": ".".join(map(str, sys.version_info[:3]))} | {
+        name: version(name) for name in PACKAGES
+    }
     return Provenance(finback.__version__, versions, inputs)

@@ -95,7 +95,19 @@ def compare(
     for (point, mode, quick, seeds), sampled in zip(prepared, worth, strict=True):
         if not sampled:
             problem = point.problem
-            outcomes.append(Outcome(problem, point, mode, quick.draws[None], quick.evidence, None, None, True, len(quick.draws)))
+            outcomes.append(
+                Outcome(
+                    problem,
+                    point,
+                    mode,
+                    quick.draws[None],
+                    quick.evidence,
+                    None,
+                    None,
+                    True,
+                    len(quick.draws),
+                )
+            )
             continue
         done = sum(o.sampled for o in outcomes)
 
@@ -115,7 +127,9 @@ def _find_mode(point: LeastSquares) -> Mode:
     root[:n, :n] = np.linalg.cholesky(np.linalg.inv(precision))
     if problem.noise.estimated:
         root[n, n] = math.sqrt(0.5 / max(point.degrees_of_freedom, 1))
-    start = np.clip(point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd)
+    start = np.clip(
+        point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd
+    )
     return laplace.find_mode(problem.log_density, start, root)
 
 
@@ -132,7 +146,9 @@ def _sample(
     ensembles, steps, walkers, p = chain.z.shape
     flat = chain.z.reshape(ensembles, steps * walkers, p)
     kept = flat[:, np.linspace(0, steps * walkers - 1, KEPT_DRAWS).astype(int)]
-    return Outcome(problem, point, mode, kept, found, chain.ess_min, chain.rhat_max, chain.converged, chain.n_draws)
+    return Outcome(
+        problem, point, mode, kept, found, chain.ess_min, chain.rhat_max, chain.converged, chain.n_draws
+    )
 
 
 def probabilities(outcomes: Sequence[Outcome]) -> Array:

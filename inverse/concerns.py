@@ -1,10 +1,10 @@
-"""Concerns: what the engineer must know beside the numbers of a fit, as findings and one sentence on the candidates."""
+"""Concerns: what the engineer must know beside the numbers: findings, and a sentence on the candidates."""
 
 from collections.abc import Mapping, Sequence
 
 from finback.candidates import Outcome
 from finback.estimate import CandidateScore, FitQuality, SamplerRecord, Summary
-from finback.findings import Finding
+from finback.findings import Finding, Severity
 from finback.models.validity import TRANSVERSE_BIOT_LIMIT
 from finback.rig import Rig
 
@@ -39,34 +39,39 @@ def _undetermined(rig: Rig, found: Mapping[str, Summary], best: Outcome) -> list
     parted = "heat" in read or rig.conductivity is not None
     ratio, product = found["h_over_k"], found["joint_times_k"]
 
-    def add(name: str, message: str, severity: str = "caution") -> None:
-        findings.append(Finding("not-determined", "note" if severity == "note" else "caution", message))
+    def add(message: str, severity: Severity = "caution") -> None:
+        findings.append(Finding("not-determined", severity, message))
 
     for name in ("h", "k"):
         if found[name].median is None:
             if ratio.median is not None and not parted:
-                text = f"{name} is not determined: temperatures along the fin give only h/k = {ratio.median:.4g} 1/m"
-                add(name, f"{text}; {APART}.")
+                text = f"{name} is not determined: the temperatures give only h/k = {ratio.median:.4g} 1/m"
+                add(f"{text}; {APART}.")
             elif found[name].high95 is not None:
-                add(name, f"{name} is not determined; it is at most {found[name].high95:.3g} {found[name].unit} (95 %).")
+                add(
+                    f"{name} is only limited: at most {found[name].high95:.3g} {found[name].unit} (95 %).",
+                )
             else:
-                add(name, f"{name} is not determined by these readings.")
+                add(f"{name} is not determined by these readings.")
     joint = found["joint"]
     if joint.median is None:
         if not best.problem.candidate.joint_possible:
-            add("joint", "The joint is not determined: that needs a temperature on the plate side of it.", "note")
+            add(
+                "The joint is not determined: that needs a temperature on the plate side of it.",
+                "note",
+            )
         elif product.median is not None and not parted:
-            text = f"The joint is not determined: the readings give only the product R''·k = {product.median:.4g} m"
-            add("joint", f"{text}; {APART}.")
+            text = f"The joint is not determined: the readings give only R''·k = {product.median:.4g} m"
+            add(f"{text}; {APART}.")
         elif joint.high95 is not None:
-            text = f"The joint's resistance is too small for these readings: at most {joint.high95:.2g} m² K/W (95 %)"
-            add("joint", f"{text}.", "note")
+            text = f"The joint is too good for these readings: at most {joint.high95:.2g} m² K/W (95 %)"
+            add(f"{text}.", "note")
         else:
-            add("joint", "The joint is not determined by these readings.")
+            add("The joint is not determined by these readings.")
     if ratio.median is None:
-        add("h_over_k", "h/k is not determined: the temperatures along the fin don't tell how fast they fall.")
+        add("h/k is not determined: the temperatures along the fin don't tell how fast they fall.")
     if found["base_temperature"].median is None:
-        add("base_temperature", "The base temperature is not determined by these readings.")
+        add("The base temperature is not determined by these readings.")
     return findings
 
 
@@ -75,8 +80,9 @@ def _misfit(quality: FitQuality) -> list[Finding]:
         return []
     message = (
         f"No candidate explains the readings within their stated uncertainties (chi-square "
-        f"{quality.chi_square:.3g} for {quality.degrees_of_freedom} degrees of freedom, p = {quality.p_value:.2g}): "
-        "a reading, an uncertainty or the model is wrong, and the intervals are too narrow."
+        f"{quality.chi_square:.3g} for {quality.degrees_of_freedom} degrees of freedom, "
+        f"p = {quality.p_value:.2g}): a reading, an uncertainty or the model is wrong, and the intervals are "
+        "too narrow."
     )
     return [Finding("misfit", "caution", message, evidence={"p_value": quality.p_value})]
 
@@ -86,8 +92,8 @@ def _validity(found: Mapping[str, Summary]) -> list[Finding]:
     if biot is None or biot <= TRANSVERSE_BIOT_LIMIT:
         return []
     message = (
-        f"The transverse Biot number is {biot:.2g}, above {TRANSVERSE_BIOT_LIMIT:g}: the temperature is not uniform "
-        "across the fin, and the one-dimensional model does not hold."
+        f"The transverse Biot number is {biot:.2g}, above {TRANSVERSE_BIOT_LIMIT:g}: the temperature is not "
+        "uniform across the fin, and the one-dimensional model does not hold."
     )
     return [Finding("thick-fin", "caution", message, evidence={"transverse_biot": biot})]
 
@@ -102,8 +108,8 @@ def _heater(found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
     for sensor, power, sd in zip(measured.bounds, measured.bound_values, measured.bound_sds, strict=True):
         if least > power + HEATER_MARGIN * sd:
             message = (
-                f"At least {least:.3g} W must flow into the fin, but {sensor.name} supplies {power:.3g} W: the heat "
-                "balance is impossible."
+                f"At least {least:.3g} W must flow into the fin, but {sensor.name} supplies {power:.3g} W: "
+                "the heat balance is impossible."
             )
             findings.append(Finding("heat-balance", "fault", message, sensor=sensor.name))
     return findings

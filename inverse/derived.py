@@ -35,17 +35,19 @@ DERIVED: Mapping[str, Meaning] = {
 
 
 def evaluate(problem: Problem, z: Array) -> dict[str, Array]:
-    """Return every parameter and derived quantity of a block z (n_sets, p), SI units, each of shape (n_sets,).
+    """Return every parameter and derived quantity of a block z (n_sets, p): SI units, shape (n_sets,) each.
 
     A candidate without a joint has none, and no product with k.
     """
     values = problem.values(z)
-    fin, base, air = problem.build(values)
+    fin, _, air = problem.build(values)
     solution = problem.solve(values, np.zeros(0))
     area = float(fin.profile.area(np.zeros(1))[0])
     perimeter = float(fin.profile.perimeter(np.zeros(1))[0])
     h, k = np.asarray(values["h"]), np.asarray(values["k"])
-    found = {name: np.broadcast_to(np.asarray(value, dtype=np.float64), len(z)) for name, value in values.items()}
+    found = {
+        name: np.broadcast_to(np.asarray(value, dtype=np.float64), len(z)) for name, value in values.items()
+    }
     found |= {
         "h_over_k": h / k,
         "m": np.sqrt(h / k * (perimeter / area)),

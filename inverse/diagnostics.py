@@ -25,7 +25,7 @@ def _arviz() -> ModuleType:
 
 
 def ensemble_rhat(z: Array) -> float:
-    """Return the largest rank-normalised split R-hat [1] over parameters; z (ensembles, steps, walkers, p)."""
+    """Return the largest rank-normalised R-hat [1] over parameters; z (ensembles, steps, walkers, p)."""
     ensembles, steps, walkers, p = z.shape
     flat = z.reshape(ensembles, steps * walkers, p)
     stride = max(1, flat.shape[1] // ENOUGH_FOR_RHAT)
@@ -36,7 +36,7 @@ def ensemble_rhat(z: Array) -> float:
 
 
 def ensemble_ess(z: Array) -> float:
-    """Return the smallest effective number of draws for means and 95 % limits; z (ensembles, steps, walkers, p).
+    """Return the smallest effective sample size, of means and 95 % limits; z (ensembles, steps, walkers, p).
 
     The Monte Carlo error of an ensemble's running average decides, so that walkers count only as far as they
     are independent of each other.

@@ -1,4 +1,4 @@
-"""Errors, one tree:
+"""The errors of Finback, in one tree.
 
     FinbackError
     ├── InputError         what the user gave is wrong: exit status 2

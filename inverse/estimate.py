@@ -22,7 +22,7 @@ DeterminedBy = Literal["readings", "prior", "both"]
 
 @dataclass(frozen=True, slots=True)
 class Summary:
-    """One reported number: posterior median, mean, standard deviation and 95 % interval; least squares beside it.
+    """One reported number: posterior median, mean, sd and 95 % interval; least squares beside it.
 
     All values in `unit` (temperatures in degC). None: not determined, and a finding says why. A quantity
     bounded on one side only has low95 0 or None and a true high95, and no median.
@@ -67,7 +67,7 @@ class CandidateScore:
 class ReadingFit:
     """One reading beside what the best candidate predicts for it (at its posterior median).
 
-    Values in K (absolute) or W. `position` with its standard uncertainty [m], None where it is not on the fin.
+    Values in K (absolute) or W. `position` and its standard uncertainty [m], None off the fin.
     `uncertainty`: standard uncertainty of the reading, random and systematic together. `excluded`: why it was
     set aside, or None.
     """
@@ -99,7 +99,7 @@ class Draws:
 
     `names`; `units`; `values` (n_chains, n_draws, n_names), chains being independent ensembles; `prior`
     (n_prior, n_names), draws from the prior, nan where a quantity has none of its own. nan in `values` where
-    the draw's candidate has no such quantity. `candidate` (n_chains, n_draws): which candidate a draw is from,
+    the draw's candidate has no such quantity. `candidate` (n_chains, n_draws): which one a draw is from,
     0 being the best; `pointwise` (n_chains, n_draws, n_readings): log likelihood of each reading given the
     others; `sensors`, their names.
     """
@@ -152,8 +152,8 @@ class Provenance:
 class Estimate:
     """What a fit found.
 
-    `parameters` and `derived`: summaries by name. `candidates`: best first. `comparison`: one sentence on what
-    the readings say of the candidates. `priors`: one line of text a parameter, for the list of assumptions.
+    `parameters` and `derived`: summaries by name. `candidates`: best first. `comparison`: one sentence on
+    what the readings say of the candidates. `priors`: one line of text a parameter, of what was assumed.
     """
 
     rig: Rig
@@ -213,7 +213,9 @@ class Estimate:
             "run": self.readings.run,
             "seed": str(self.sampler.seed),
             "candidates": "; ".join(score.name for score in self.candidates),
-            "units": "; ".join(f"{name}: {unit}" for name, unit in zip(draws.names, draws.units, strict=True)),
+            "units": "; ".join(
+                f"{name}: {unit}" for name, unit in zip(draws.names, draws.units, strict=True)
+            ),
         }
         return diagnostics.tree(groups, draws.sensors, attributes)
 
@@ -230,7 +232,9 @@ class Estimate:
 
     def _repr_html_(self) -> str:
         """Return the main results as a table, for a notebook."""
-        rows = "".join(f"<tr><td>{escape(s.label)}</td><td>{escape(value)}</td></tr>" for s, value in self._shown())
+        rows = "".join(
+            f"<tr><td>{escape(s.label)}</td><td>{escape(value)}</td></tr>" for s, value in self._shown()
+        )
         head = escape(f"{self.rig.title}, run {self.readings.run}: {self.status}")
         return f"<table><caption>{head}</caption>{rows}</table><p>{escape(self.comparison)}</p>"
 

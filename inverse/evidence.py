@@ -67,7 +67,7 @@ def bridge(log_density: LogDensity, chain: Chain, seed: np.random.SeedSequence) 
 
 @dataclass(frozen=True, slots=True)
 class Weighted:
-    """A quick look at a posterior by importance sampling: its evidence, and draws resampled by weight (n, p)."""
+    """A quick look at a posterior by importance sampling: evidence, and draws resampled by weight (n, p)."""
 
     evidence: Evidence
     draws: Array

@@ -17,7 +17,9 @@ from finback.problem import Problem
 
 Array = NDArray[np.float64]
 
-DETERMINED = 0.2  # of the default prior's variance: below it the prior adds at most a fifth of the information
+DETERMINED = (
+    0.2  # of the default prior's variance: below it the prior adds at most a fifth of the information
+)
 ALONE = 1.25  # a source decides alone when leaving out the other costs at most this factor in variance
 
 
@@ -34,7 +36,7 @@ class Information:
     default: Array
 
     def variance(self, gradient: Array, readings: bool = True, stated: bool = True) -> float:
-        """Return the variance of the combination gradient (p,) from the chosen sources and the wide priors."""
+        """Return the variance of the combination gradient (p,) by the chosen sources and wide priors."""
         precision = np.diag(self.default + stated * self.stated) + readings * self.readings
         return float(gradient @ np.linalg.solve(precision, gradient))
 

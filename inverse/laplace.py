@@ -1,4 +1,4 @@
-"""The mode of a posterior and its curvature there, by Newton's method with differences in one block a step."""
+"""The mode of a posterior and its curvature there, by Newton's method, one block of differences a step."""
 
 from collections.abc import Callable
 from dataclasses import dataclass

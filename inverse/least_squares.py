@@ -24,7 +24,9 @@ SMALLEST_DAMPING = 1e-12
 FIRST_DAMPING = 1e-1  # of the largest squared singular value
 DAMPINGS = 10.0 ** np.array([-3.0, -2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 5.0, 8.0])  # of the last one that was best
 SINGULAR = 1e-14  # of the largest singular value: smaller ones are rounding
-RANK_TOLERANCE = 1e-7  # of the scaled Jacobian's largest singular value; 3-point differences are good to 1e-10
+RANK_TOLERANCE = (
+    1e-7  # of the scaled Jacobian's largest singular value; 3-point differences are good to 1e-10
+)
 STEP = np.finfo(np.float64).eps ** (1 / 3)
 
 
@@ -94,7 +96,7 @@ def fit(residuals: Residuals, start: Array, typical: Array | float = 1.0) -> Poi
 
 
 def _damped_steps(slopes: Array, r: Array, scale: Array, dampings: Array) -> tuple[Array, float]:
-    """Return the steps for all dampings (n_dampings, p), the full one first, and the gain that one promises."""
+    """Return the steps for all dampings (n_dampings, p), and the gain that the undamped one promises."""
     left, singular, right = np.linalg.svd(slopes / scale, full_matrices=False)
     kept = singular > SINGULAR * singular[0]
     along = -(left.T @ r)

@@ -23,7 +23,7 @@ class Noise:
     """Gaussian noise of n readings.
 
     `basis` V (n, n); `floor`, `slope` (n,): variance of part i is floor_i + slope_i sigma²;
-    `log_det` of V'V inverse, so that ln det C = log_det + sum ln(variances). `estimated`: whether sigma is unknown.
+    `log_det` of V'V inverse, so that ln det C = log_det + sum ln(variances). `estimated`: is sigma unknown.
     """
 
     basis: Array

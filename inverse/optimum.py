@@ -55,7 +55,11 @@ def starting_point(problem: Problem) -> Array:
     measured, names = problem.measured, problem.names
     fin = measured.values[: len(measured.positions)]
     first = problem.prior_mean.copy()
-    level: dict[str, float] = {"air": UNMEASURED_AIR.mean, "base_temperature": fin[0], "tip_temperature": fin[-1]}
+    level: dict[str, float] = {
+        "air": UNMEASURED_AIR.mean,
+        "base_temperature": fin[0],
+        "tip_temperature": fin[-1],
+    }
     level.update(problem.fixed)
     level.update({s.place: v for s, v in zip(measured.sensors, measured.values, strict=True)})
     air = level["air"]
@@ -99,7 +103,7 @@ def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
 
 
 def _residuals(problem: Problem, sigma: float) -> least_squares.Residuals:
-    """Return the residuals of the physical parameters at one sigma: readings, heaters, what the rig states."""
+    """Return the residuals of the physical parameters at one sigma: readings, heaters, stated values."""
     physical = problem.n_physical
     chosen = np.flatnonzero(problem.is_stated[:physical])
     mean, sd = problem.prior_mean[chosen], problem.prior_sd[chosen]
@@ -123,7 +127,7 @@ def _scales_with_sigma(problem: Problem) -> bool:
 
 
 def _matching_sigma(problem: Problem, residuals: Array, sigma: float, freedom: int) -> float:
-    """Return the sigma [K] at which chi-square equals the degrees of freedom; the smallest where it never does."""
+    """Return the sigma [K] at which chi-square equals the degrees of freedom, within given limits."""
     from scipy.optimize import brentq
 
     n = len(problem.measured.values)

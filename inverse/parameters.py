@@ -80,7 +80,11 @@ class Parameter:
         label = LABELS[self.name]
         if self.transform == "log":
             centre, factor = math.exp(self.prior.mean), math.exp(self.prior.sd)
-            width = f"± {100 * self.prior.sd:.2g} %" if self.prior.sd < 0.3 else f"within a factor of {factor:.3g}"
+            width = (
+                f"± {100 * self.prior.sd:.2g} %"
+                if self.prior.sd < 0.3
+                else f"within a factor of {factor:.3g}"
+            )
             text = f"{label}: {centre:.4g} {self.unit} {width}"
         else:
             text = f"{label}: {self.prior.mean - ZERO_CELSIUS:.4g} degC ± {self.prior.sd:.3g} K"
@@ -93,7 +97,7 @@ def default(name: str) -> Parameter:
 
 
 def stated(name: str, quantity: Quantity) -> Parameter:
-    """Return the parameter of that name with the prior that the rig states; the quantity's sd must not be 0."""
+    """Return the parameter of that name with the prior that the rig states; its sd must not be 0."""
     if DEFAULT_PRIORS[name][0] == "log":
         return Parameter(name, log_normal(quantity.value, quantity.sd / quantity.value), stated=True)
     return Parameter(name, Normal(quantity.value, quantity.sd), stated=True)

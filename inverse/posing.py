@@ -52,7 +52,7 @@ def needs_linearising(problem: Problem) -> bool:
 
 
 def linearise(problem: Problem, z: Array) -> Problem:
-    """Return the problem with the noise of hole positions and geometry added, at the parameter vector z (p,)."""
+    """Return the problem with the noise of hole positions and geometry added, taken at z (p,)."""
     covariance, estimated = _stated_covariance(problem.measured)
     n = len(estimated)
     for name, sd in _uncertain_lengths(problem.rig):
@@ -84,11 +84,14 @@ def _measure(rig: Rig, readings: Readings) -> tuple[Measured, dict[str, float]]:
     values = np.array([readings.values[s.name] for s in sensors])
     bound_values = np.array([readings.values[s.name] for s in bounds])
     bound_sds = np.array(
-        [np.hypot(*_random_and_shared(s, v)) for s, v in zip(bounds, bound_values, strict=True)], dtype=np.float64
+        [np.hypot(*_random_and_shared(s, v)) for s, v in zip(bounds, bound_values, strict=True)],
+        dtype=np.float64,
     )
     # a place that is exactly known needs no further reading
     kept = [i for i, s in enumerate(sensors) if s.place not in exact]
-    return Measured(tuple(sensors[i] for i in kept), values[kept], tuple(bounds), bound_values, bound_sds), exact
+    return Measured(
+        tuple(sensors[i] for i in kept), values[kept], tuple(bounds), bound_values, bound_sds
+    ), exact
 
 
 def _random_and_shared(sensor: Sensor, value: float) -> tuple[float, float]:

@@ -20,7 +20,9 @@ class Normal:
 
     def __post_init__(self) -> None:
         if not (math.isfinite(self.mean) and math.isfinite(self.sd) and self.sd > 0):
-            raise ValueError(f"a prior needs a finite mean and a positive width, got {self.mean!r}, {self.sd!r}")
+            raise ValueError(
+                f"a prior needs a finite mean and a positive width, got {self.mean!r}, {self.sd!r}"
+            )
 
 
 def log_normal(median: float, relative_sd: float) -> Normal:

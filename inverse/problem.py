@@ -48,7 +48,7 @@ class Measured:
     """What the likelihood compares predictions with.
 
     `sensors`: those with Gaussian noise, fin sensors first, then plate, air, heat; `values` (n,) [K, W] in
-    that order. `bounds`: heaters, whose power only limits the heat from above; `bound_values`, `bound_sds` [W].
+    that order. `bounds`: heaters, whose power only limits the heat; `bound_values`, `bound_sds` [W].
     """
 
     sensors: tuple[Sensor, ...]
@@ -123,8 +123,10 @@ class Problem:
         found.update(zip(self.names, natural.T, strict=True))
         return found
 
-    def build(self, values: Values, changes: Mapping[str, float] | None = None) -> tuple[Fin, Base, float | Array]:
-        """Return fin, base and air temperature for values by name; `changes` replaces lengths of the rig [m]."""
+    def build(
+        self, values: Values, changes: Mapping[str, float] | None = None
+    ) -> tuple[Fin, Base, float | Array]:
+        """Return fin, base and air temperature for values by name; `changes` replaces lengths [m]."""
         return self.rig.build(values, self.candidate.tip, changes)
 
     def solve(self, values: Values, x: Array, changes: Mapping[str, float] | None = None) -> Solution:
@@ -136,7 +138,9 @@ class Problem:
         """Predict all readings: block z (n_sets, p) -> (n_sets, n + n_bounds) [K, W], heaters last."""
         return self.predict_values(self.values(z), len(z), changes)
 
-    def predict_values(self, values: Values, n_sets: int, changes: Mapping[str, float] | None = None) -> Array:
+    def predict_values(
+        self, values: Values, n_sets: int, changes: Mapping[str, float] | None = None
+    ) -> Array:
         """Predict all readings from values by name; see `predict`."""
         measured = self.measured
         n_fin = len(measured.positions)
@@ -193,7 +197,7 @@ class Problem:
         return np.where(np.isfinite(found), found, -np.inf)
 
     def pointwise(self, z: Array) -> Array:
-        """Return ln p(reading i | the other readings, z), (n_sets, n): what leave-one-out needs of correlated noise.
+        """Return ln p(reading i | the other readings, z), (n_sets, n), as leave-one-out needs it.
 
         With C the covariance, P its inverse and e = P r: mean y_i - e_i/P_ii, variance 1/P_ii.
         Source: Bürkner, Gabry, Vehtari, Computational Statistics 36 (2021) 1243, eq. for Gaussian models.

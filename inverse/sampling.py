@@ -34,9 +34,9 @@ class Settings:
     """
 
     ensembles: int = 4
-    walkers: int = 64
-    warm_up: int = 40
-    block: int = 120
+    walkers: int = 128
+    warm_up: int = 30
+    block: int = 100
     max_steps: int = 6000
     pilot: int = 300
     autocorrelation_times: float = 50.0
@@ -96,7 +96,7 @@ def sample(
 
 
 def _judge(z: Array) -> tuple[float, float, float]:
-    """Return smallest ESS, largest R-hat and longest autocorrelation time [steps] of draws (e, steps, w, p)."""
+    """Return smallest ESS, largest R-hat, longest autocorrelation time [steps] of draws (e, steps, w, p)."""
     from emcee.autocorr import integrated_time
 
     from finback import diagnostics
@@ -180,7 +180,9 @@ def _refit(ensembles: Sequence[_Ensemble], settings: Settings) -> list[_Ensemble
     return list(ensembles)
 
 
-def _finite_start(log_density: LogDensity, proposal: Proposal, n: int, random: np.random.RandomState) -> Array:
+def _finite_start(
+    log_density: LogDensity, proposal: Proposal, n: int, random: np.random.RandomState
+) -> Array:
     """Return n starting points of finite density: emcee says nothing when all start at -inf."""
     found = np.empty((0, len(proposal.centre)))
     for _ in range(50):

@@ -1,6 +1,6 @@
-"""Turning the candidates' draws into reported numbers: averages over candidates, intervals, what is determined.
+"""Turning the candidates' draws into reported numbers: averages, intervals, what is determined.
 
-Each candidate adds draws in proportion to its probability, so that an interval carries the candidates' spread.
+Each candidate adds draws in proportion to its probability, so that an interval carries their spread.
 The joint's resistance is averaged over the candidates that have a joint: whether there is one is a
 probability, how large it is a number.
 """
@@ -64,7 +64,7 @@ def mix(outcomes: Sequence[Outcome], weights: Array, evaluated: Sequence[Mapping
 
 @dataclass(frozen=True)
 class Judge:
-    """What one candidate says of how well each quantity is known: information and gradients at its optimum."""
+    """What one candidate says of how well each quantity is known: information and gradients at its mode."""
 
     outcome: Outcome
     information: Information
@@ -117,7 +117,9 @@ class Judge:
         gradient = derived.gradients(point.problem, point.z)[name]
         if np.abs(gradient @ point.point.null_space).max(initial=0.0) > 1e-6 * np.linalg.norm(gradient):
             return None, None
-        return float(to_reported(name, value)[0]), float(np.sqrt(gradient @ point.point.covariance @ gradient))
+        return float(to_reported(name, value)[0]), float(
+            np.sqrt(gradient @ point.point.covariance @ gradient)
+        )
 
     def _upper_limit(self, name: str, draws: Array) -> float | None:
         """Return the one-sided upper limit of a positive parameter, if larger values would have been seen.
