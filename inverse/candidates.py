@@ -154,8 +154,9 @@ def _sample(
 def probabilities(outcomes: Sequence[Outcome]) -> Array:
     """Return the posterior probability of each outcome's candidate, equal before the readings."""
     logs = np.array([o.evidence.log for o in outcomes])
-    weights = np.exp(logs - logs.max())
-    return weights / weights.sum()
+    weights: Array = np.exp(logs - logs.max())
+    shares: Array = weights / weights.sum()
+    return shares
 
 
 def score(outcome: Outcome, probability: float) -> CandidateScore:

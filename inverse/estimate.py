@@ -200,10 +200,10 @@ class Estimate:
         posterior = {name: draws.values[..., i] for i, name in enumerate(draws.names)}
         prior = {name: draws.prior[None, :, i] for i, name in enumerate(draws.names)}
         measured = {row.sensor: row.measured for row in self.table}
-        groups = {
+        groups: dict[str, dict[str, Array]] = {
             "posterior": posterior,
             "prior": {name: values for name, values in prior.items() if np.isfinite(values).all()},
-            "sample_stats": {"candidate": draws.candidate},
+            "sample_stats": {"candidate": draws.candidate.astype(np.float64)},
             "log_likelihood": {"reading": draws.pointwise},
             "observed_data": {"reading": np.array([measured[name] for name in draws.sensors])},
         }

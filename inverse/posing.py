@@ -154,7 +154,8 @@ def _length_sensitivity(problem: Problem, z: Array, name: str) -> Array:
     length = problem.rig.geometry[name].value
     step = LENGTH_STEP * length
     up, down = (problem.predict(z[None], {name: length + sign * step})[0] for sign in (1, -1))
-    return (up - down) / (2 * step)
+    slope: Array = (up - down) / (2 * step)
+    return slope
 
 
 def _temperature_slopes(problem: Problem, z: Array) -> Array:
@@ -164,4 +165,5 @@ def _temperature_slopes(problem: Problem, z: Array) -> Array:
     step = LENGTH_STEP * length
     low, high = np.maximum(x - step, 0.0), np.minimum(x + step, length)
     found = problem.solve(problem.values(z[None]), np.concatenate([low, high])).temperatures[0]
-    return (found[len(x) :] - found[: len(x)]) / (high - low)
+    slopes: Array = (found[len(x) :] - found[: len(x)]) / (high - low)
+    return slopes

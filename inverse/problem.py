@@ -184,12 +184,14 @@ class Problem:
     def log_likelihood(self, z: Array) -> Array:
         """Return ln p(readings | z) of a block (n_sets, p) -> (n_sets,)."""
         whitened, log_variances = self.whitened(z)
-        return self._constant - 0.5 * (np.einsum("ij,ij->i", whitened, whitened) + log_variances)
+        squares: Array = np.einsum("ij,ij->i", whitened, whitened)
+        return self._constant - 0.5 * (squares + log_variances)
 
     def log_prior(self, z: Array) -> Array:
         """Return ln p(z) of a block (n_sets, p) -> (n_sets,)."""
         scaled = (z - self.prior_mean) / self.prior_sd
-        return self._prior_constant - 0.5 * np.einsum("ij,ij->i", scaled, scaled)
+        squares: Array = np.einsum("ij,ij->i", scaled, scaled)
+        return self._prior_constant - 0.5 * squares
 
     def log_density(self, z: Array) -> Array:
         """Return ln p(readings, z) of a block (n_sets, p) -> (n_sets,); -inf where it is not a number."""

@@ -24,7 +24,7 @@ class Proposal:
 
     @cached_property
     def _inverse(self) -> Array:
-        return np.linalg.inv(self.root)
+        return np.asarray(np.linalg.inv(self.root), dtype=np.float64)
 
     @cached_property
     def _constant(self) -> float:
@@ -36,14 +36,16 @@ class Proposal:
         """Draw n vectors, (n, p). The sampler's own kind of generator is asked for, since emcee passes it."""
         normal = random.standard_normal((n, len(self.centre)))
         shrink = np.sqrt(random.chisquare(self.freedom, n) / self.freedom)
-        return self.centre + (normal / shrink[:, None]) @ self.root.T
+        found: Array = self.centre + (normal / shrink[:, None]) @ self.root.T
+        return found
 
     def log_density(self, z: Array) -> Array:
         """Return the log density of a block (n_sets, p) -> (n_sets,)."""
         scaled = (z - self.centre) @ self._inverse.T
         squares = np.einsum("ij,ij->i", scaled, scaled)
         power = (self.freedom + len(self.centre)) / 2
-        return self._constant - power * np.log1p(squares / self.freedom)
+        found: Array = self._constant - power * np.log1p(squares / self.freedom)
+        return found
 
 
 def from_mode(mode: Mode) -> Proposal:
@@ -55,4 +57,5 @@ def from_draws(draws: Array) -> Proposal:
     """Return the proposal with the mean and covariance of draws (n, p)."""
     covariance = np.atleast_2d(np.cov(draws, rowvar=False))
     jitter = 1e-12 * np.diag(np.diag(covariance))
-    return Proposal(draws.mean(axis=0), np.linalg.cholesky(covariance + jitter))
+    root = np.asarray(np.linalg.cholesky(covariance + jitter), dtype=np.float64)
+    return Proposal(draws.mean(axis=0), root)

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from finback import derived, identifiability, parameters
 from finback.candidates import Outcome
 from finback.derived import DERIVED
-from finback.estimate import Summary
+from finback.estimate import DeterminedBy, Summary
 from finback.identifiability import Information
 
 Array = NDArray[np.float64]
@@ -100,7 +100,7 @@ class Judge:
             self._source(name, gradient, exact),
         )
 
-    def _source(self, name: str, gradient: Array | None, exact: bool) -> identifiability.DeterminedBy:
+    def _source(self, name: str, gradient: Array | None, exact: bool) -> DeterminedBy:
         if exact:
             return "prior"
         if name == "noise" or gradient is None:
