@@ -155,7 +155,12 @@ def _draw_fin_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> No
         edge = lay.axis + sign * lay.thickness / 2
         width = LETTER * max(len(text) for text in texts) + 0.05
         upright = width * len(texts) > 1.15 * (lay.right - lay.left)
-        places = spread(x, 1.3 * size / 72 if upright else width, lay.left + 0.02, FIN_END + 0.1)
+        places = spread(
+            x,
+            1.3 * size / 72 if upright else width,
+            lay.left + (0.09 if upright else width / 2),
+            FIN_END + 0.1,
+        )
         for at, place, text in zip(x, places, texts, strict=True):
             bend = edge + sign * np.array([0.02, 0.06, 0.15, 0.19])
             axes.plot([at, at, place, place], bend, color=FAINT, linewidth=0.7)
@@ -301,7 +306,7 @@ def _pairs(quantities: tuple[scenes.Paired, ...]) -> Figure:
                 _draw_marginal(axes, across, legend=row == 0)
             else:
                 _draw_density(axes, across, up)
-            axes.xaxis.set_major_locator(MaxNLocator(3, prune="both"))
+            axes.set_xticks(_inner_ticks(across.window))
             axes.tick_params(labelbottom=row == n - 1, labelleft=column == 0 and row > 0, labelsize=8)
             if row == n - 1:
                 axes.set_xlabel(across.label)
@@ -309,6 +314,14 @@ def _pairs(quantities: tuple[scenes.Paired, ...]) -> Figure:
                 axes.set_ylabel(up.label)
                 axes.yaxis.set_label_coords(-0.62 / (wide * (across_step - gap)), 0.5)
     return figure
+
+
+def _inner_ticks(window: tuple[float, float]) -> list[float]:
+    """Return a few round values so far inside a window that their labels don't reach into the next panel."""
+    low, high = window
+    margin = 0.14 * (high - low)
+    ticks = MaxNLocator(4).tick_values(low, high)
+    return [float(tick) for tick in ticks if low + margin <= tick <= high - margin]
 
 
 def _draw_marginal(axes: Axes, quantity: scenes.Paired, legend: bool) -> None:
@@ -335,4 +348,4 @@ def _draw_density(axes: Axes, across: scenes.Paired, up: scenes.Paired) -> None:
     if cloud.levels:
         axes.contour(cloud.x, cloud.y, cloud.density, levels=cloud.levels, colors=INK, linewidths=(0.7, 1.0))
     axes.set_ylim(*up.window)
-    axes.yaxis.set_major_locator(MaxNLocator(3, prune="both"))
+    axes.set_yticks(_inner_ticks(up.window))

@@ -13,6 +13,8 @@ from finback.report import view
 if TYPE_CHECKING:
     from finback.report.figures import Picture
 
+NBSP = "\N{NO-BREAK SPACE}"
+
 ALT = {
     "drawing": "Drawing of the fin of {title}, side view and section, with its sensors at their places.",
     "profile": "Temperature along the fin of {title}, run {run}: posterior median with its 95 % band, the "
@@ -61,12 +63,8 @@ def _template() -> Any:
 
 
 def whole(text: str) -> str:
-    """Return a value that breaks across lines only before its "±" and its second limit."""
-    return (
-        text.replace(" ", "\N{NO-BREAK SPACE}")
-        .replace("\N{NO-BREAK SPACE}±", " ±")
-        .replace("\N{NO-BREAK SPACE}to", " to")
-    )
+    """Return a value that breaks across lines only before its "±"."""
+    return text.replace(" ", NBSP).replace(f"{NBSP}±", " ±")
 
 
 def subscripts(text: str) -> Any:

@@ -30,9 +30,9 @@ SYMBOLS = {
 """Symbol of a quantity by its name in estimate.json; others go by their name."""
 
 DETERMINED_BY: dict[DeterminedBy, str] = {
-    "readings": "the readings",
-    "prior": "what was known beforehand, not by the readings",
-    "both": "the readings together with what was known beforehand",
+    "readings": "determined by the readings",
+    "prior": "determined by what was known beforehand, not by the readings",
+    "both": "determined by the readings together with what was known beforehand",
 }
 IN_SHORT: dict[DeterminedBy, str] = {"readings": "readings", "prior": "prior", "both": "both"}
 
@@ -51,6 +51,11 @@ def clean(text: str, longest: int = 200) -> str:
     line = " ".join(text.split())
     line = "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in line)
     return line if len(line) <= longest else line[: longest - 1] + "…"
+
+
+def told(sentence: str) -> str:
+    """Return a sentence of ours, which may hold names that the user gave, ready to print."""
+    return clean(sentence, 500).replace("R''", "R″")
 
 
 def symbol(name: str) -> str:
@@ -149,7 +154,7 @@ def determined_by(summary: Summary, short: bool = False) -> str:
     if summary.median is None:
         return ""
     if summary.sd == 0:
-        return "stated" if short else "the rig, as exactly known"
+        return "stated" if short else "exactly known, as the rig states"
     return (IN_SHORT if short else DETERMINED_BY)[summary.determined_by]
 
 
@@ -184,11 +189,11 @@ def least_squares(summary: Summary) -> str:
     return compact(summary.least_squares, summary.standard_error)
 
 
-def probability(p: float) -> str:
-    """Return a probability in per cent, never a rounded 0 or 100."""
-    if p > 0.9995 and p < 1:
+def probability(p: float, alone: bool = False) -> str:
+    """Return a probability in per cent: never a rounded 0, and 100 only for a candidate that is alone."""
+    if p > 0.9995 and not alone:
         return "> 99.9 %"
-    return f"{100 * p:.1f} %" if p >= 0.0005 or p == 0 else "< 0.1 %"
+    return f"{100 * p:.1f} %" if p >= 0.0005 else "< 0.1 %"
 
 
 def _half_width(summary: Summary) -> float:

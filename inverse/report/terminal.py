@@ -28,13 +28,15 @@ def _heading(seen: view.View) -> list[str]:
 
 
 def _answer(answer: view.Answer) -> list[str]:
-    indent = " " * (SYMBOL + 2)
-    lines = wrap(f"= {answer.value} {answer.coverage}", indent, f"{answer.symbol:<{SYMBOL}}")
+    indent = " " * (SYMBOL + 3)
+    lines = wrap(
+        f"{answer.value} {answer.coverage}", indent, f"{answer.symbol:<{SYMBOL}}{answer.relation:>3}"
+    )
     if answer.median != phrases.NOTHING:
         lines += wrap(f"median {answer.median}, 95 % interval {answer.interval}", indent, indent)
     lines += wrap(answer.label, indent, indent)
     if answer.determined_by:
-        lines += wrap(f"determined by {answer.determined_by}", indent, indent)
+        lines += wrap(answer.determined_by, indent, indent)
     if answer.reason:
         lines += wrap(answer.reason, indent, indent)
     return lines
@@ -48,11 +50,13 @@ def _candidates(seen: view.View) -> list[str]:
 
 
 def _findings(seen: view.View) -> list[str]:
-    lines = ["Findings"] if seen.findings else []
-    for finding in seen.findings:
+    told = {answer.reason for answer in seen.answers}
+    findings = [row for row in seen.findings if row.severity != "note" or row.message not in told]
+    lines = ["Findings"] if findings or seen.assumptions else []
+    for finding in findings:
         lines += wrap(f"  {finding.severity:<7} {finding.code}: {finding.message}", " " * 10)
     if seen.assumptions:
-        lines += wrap(f"  {len(seen.assumptions)} defaults were used; the report lists them.", "  ")
+        lines += wrap(f"  Defaults were used ({len(seen.assumptions)}); the report lists them.", "  ")
     return lines
 
 

@@ -12,7 +12,13 @@ from finback.report import method, phrases
 
 ZERO_CELSIUS = 273.15
 SEVERITIES = ("fault", "caution", "note")
-PLACES = {"fin": "fin", "plate": "plate", "air": "air", "heat": "heat into the fin", "heater": "heater power"}
+PLACES = {
+    "fin": "fin",
+    "plate": "plate",
+    "air": "air",
+    "heat": "heat into the fin",
+    "heater": "heater (upper bound)",
+}
 HEADLINES = ("h", "k", "joint")
 STAND_INS = {
     "h_over_k": {"h", "k"},
@@ -25,11 +31,12 @@ SHOWN_FIRST = 3  # findings in the first screen
 class Answer:
     """One headline: `value` with its uncertainty, or a verdict such as "not determined" with its `reason`.
 
-    `coverage` goes with a value stated with ±.
+    `relation` stands between symbol and value; `coverage` goes with a value stated with ±.
     """
 
     symbol: str
     label: str
+    relation: str
     value: str
     coverage: str
     median: str
@@ -130,17 +137,17 @@ def build(estimate: Estimate) -> View:
         status=estimate.status,
         status_text=phrases.STATUS[estimate.status],
         answers=_answers(estimate),
-        verdict=phrases.clean(estimate.comparison, 400),
+        verdict=phrases.told(estimate.comparison),
         worst=worst,
         more_findings=f"{rest} more in the list of findings." if rest > 0 and worst else "",
-        candidates=tuple(_candidate(score) for score in estimate.candidates),
+        candidates=tuple(_candidate(score, len(estimate.candidates) == 1) for score in estimate.candidates),
         loo_note=_loo_note(estimate),
         quantities=tuple(_quantity(s) for s in (*estimate.parameters.values(), *estimate.derived.values())),
         readings=tuple(_reading(row) for row in estimate.table),
         fit=_fit(estimate),
         findings=findings,
-        assumptions=tuple(phrases.clean(f.message, 400) for f in estimate.findings if f.code == "assumed"),
-        priors=tuple(phrases.clean(phrases.pretty(line), 400) for line in estimate.priors),
+        assumptions=tuple(phrases.told(f.message) for f in estimate.findings if f.code == "assumed"),
+        priors=tuple(phrases.told(phrases.pretty(line)) for line in estimate.priors),
         method=method.paragraph(estimate.rig),
         equations=method.equations(estimate),
         provenance=_provenance(estimate),
@@ -164,17 +171,19 @@ def _answers(estimate: Estimate) -> tuple[Answer, ...]:
 
 def _answer(estimate: Estimate, name: str, summary: Summary) -> Answer:
     label = _label(summary)
+    known = summary.median is not None
     if name == "h":
         label = "total coefficient: convection and radiation together"
     return Answer(
         symbol=phrases.symbol(name),
         label=label,
+        relation=" = " if known else " ",
         value=phrases.value(summary),
         coverage=phrases.COVERAGE if phrases.symmetric(summary) else "",
-        median=phrases.median(summary),
+        median=phrases.NOTHING if summary.sd == 0 else phrases.median(summary),
         interval=phrases.interval(summary),
         determined_by=phrases.determined_by(summary),
-        reason=_reason(estimate, summary) if summary.median is None else "",
+        reason="" if known else _reason(estimate, summary),
     )
 
 
@@ -199,7 +208,7 @@ def _absent(estimate: Estimate, name: str) -> Answer:
             phrases.number(stated.value, 0.0, "W/(m K)"),
             "Taken as exactly known, as the rig states.",
         )
-    return Answer(phrases.symbol(name), label, value, "", phrases.NOTHING, phrases.NOTHING, "", reason)
+    return Answer(phrases.symbol(name), label, " ", value, "", phrases.NOTHING, phrases.NOTHING, "", reason)
 
 
 def _reason(estimate: Estimate, summary: Summary) -> str:
@@ -208,20 +217,20 @@ def _reason(estimate: Estimate, summary: Summary) -> str:
     for finding in told:
         named = {str(value) for key, value in finding.evidence.items() if key in ("quantity", "parameter")}
         if summary.name in named or summary.name in finding.evidence:
-            return phrases.clean(finding.message, 400)
+            return phrases.told(finding.message)
     for finding in told:
         words = finding.message.replace(",", " ").replace(":", " ").split()
         if summary.name in words or summary.label in finding.message:
-            return phrases.clean(finding.message, 400)
-    return phrases.clean(told[0].message, 400) if told else ""
+            return phrases.told(finding.message)
+    return phrases.told(told[0].message) if told else ""
 
 
 def _label(summary: Summary) -> str:
     """Return the label without the symbol that stands beside it anyway."""
-    label = phrases.clean(summary.label)
-    for mark in (phrases.symbol(summary.name), "R''"):
+    label = phrases.told(summary.label)
+    for mark in ("h", "k", "m", "R″"):
         label = label.removesuffix(f" {mark}")
-    return label.replace("R''", "R″")
+    return label
 
 
 def _quantity(summary: Summary) -> QuantityRow:
@@ -238,10 +247,10 @@ def _quantity(summary: Summary) -> QuantityRow:
     )
 
 
-def _candidate(score: CandidateScore) -> CandidateRow:
+def _candidate(score: CandidateScore, alone: bool) -> CandidateRow:
     return CandidateRow(
         phrases.clean(score.name),
-        phrases.probability(score.probability),
+        phrases.probability(score.probability, alone),
         f"{phrases.number(score.log_evidence, 0.1)} ± {score.log_evidence_error:.2g}",
         phrases.number(score.loo, 1.0),
         phrases.number(score.aicc, 1.0),
@@ -250,23 +259,29 @@ def _candidate(score: CandidateScore) -> CandidateRow:
 
 
 def _reading(row: ReadingFit) -> ReadingRow:
+    bound = row.place == "heater"  # the model may stay below it, so the difference is no residual
     thermal = row.place not in ("heat", "heater")
     zero, unit, unit_of_difference = (ZERO_CELSIUS, "degC", "K") if thermal else (0.0, "W", "W")
     position = phrases.NOTHING
     if row.position is not None:
-        position = phrases.number(1e3 * row.position, 2e3 * row.position_sd or 1.0, "")
-        position += f" ± {1e3 * row.position_sd:.2g} mm" if row.position_sd else " mm"
+        position = f"{_position(row.position, row.position_sd)} mm"
     return ReadingRow(
         phrases.clean(row.sensor),
         PLACES.get(row.place, row.place),
         position,
         phrases.number(row.measured - zero, row.uncertainty, unit),
         phrases.number(row.predicted - zero, row.uncertainty, unit),
-        phrases.number(row.residual, row.uncertainty, unit_of_difference),
+        phrases.NOTHING if bound else phrases.number(row.residual, row.uncertainty, unit_of_difference),
         phrases.number(row.uncertainty, row.uncertainty, unit_of_difference),
-        phrases.number(row.residual / row.uncertainty, 1.0) if row.uncertainty > 0 else phrases.NOTHING,
+        phrases.NOTHING
+        if bound or not row.uncertainty
+        else phrases.number(row.residual / row.uncertainty, 1.0),
         phrases.clean(row.excluded) if row.excluded else "",
     )
+
+
+def _position(position: float, sd: float) -> str:
+    return phrases.compact(1e3 * position, 1e3 * sd) if sd else phrases.number(1e3 * position, 0.0)
 
 
 def _findings(findings: tuple[Finding, ...]) -> tuple[FindingRow, ...]:
@@ -274,7 +289,7 @@ def _findings(findings: tuple[Finding, ...]) -> tuple[FindingRow, ...]:
     rows: dict[str, FindingRow] = {}
     for finding in sorted(findings, key=lambda finding: SEVERITIES.index(finding.severity)):
         if finding.code != "assumed":
-            message = phrases.clean(finding.message, 400)
+            message = phrases.told(finding.message)
             sensor = phrases.clean(finding.sensor or "")
             rows.setdefault(message, FindingRow(finding.severity, finding.code, sensor, message))
     return tuple(rows.values())
