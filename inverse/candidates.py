@@ -86,7 +86,7 @@ def compare(
         progress("comparing candidates", 0.1 * number / len(chosen))
         seeds = np.random.SeedSequence([seed, run, zlib.crc32(candidate.name.encode())]).spawn(3)
         point = optimum.fit(pose(rig, readings, candidate))
-        mode = _find_mode(point)
+        mode = find_mode(point)
         quick = evidence.importance(point.problem.log_density, proposals.from_mode(mode), seeds[0])
         prepared.append((point, mode, quick, seeds))
     best = max(quick.evidence.log for _, _, quick, _ in prepared)
@@ -118,7 +118,7 @@ def compare(
     return sorted(outcomes, key=lambda o: -o.evidence.log)
 
 
-def _find_mode(point: LeastSquares) -> Mode:
+def find_mode(point: LeastSquares) -> Mode:
     """Find the posterior's mode from the least-squares optimum; the scale is guessed from its information."""
     problem, n = point.problem, point.problem.n_physical
     stated = np.where(problem.is_stated[:n], 0.0, 1.0)  # stated priors are among the residuals already

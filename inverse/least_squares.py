@@ -82,15 +82,21 @@ def fit(residuals: Residuals, start: Array, typical: Array | float = 1.0) -> Poi
             converged = True
             break
         tried = steps if damping <= FULL_STEP_BELOW else steps[1:]
-        trials = residuals(z + tried)
-        costs = np.einsum("ij,ij->i", trials, trials)
+        # the first step is mostly the best one: what follows it is evaluated in the same block
+        offsets, widths = _stencil(z + tried[0], typical)
+        found = residuals(np.concatenate([z + tried[1:], z + tried[0] + offsets]))
+        costs = np.einsum("ij,ij->i", found, found)[: len(tried)]
+        costs = np.concatenate([costs[-1:], costs[:-1]])
         best = int(np.argmin(np.where(np.isfinite(costs), costs, np.inf)))
         if not costs[best] < cost:
             converged = promised <= ROUNDING_GAIN * cost
             break
         z, cost = z + tried[best], float(costs[best])
         damping = max(float(dampings[-len(tried) :][best]), SMALLEST_DAMPING)
-        r, slopes = _linearise(residuals, z, typical)
+        if best == 0:
+            r, slopes = _differences(found[len(tried) - 1 :], widths)
+        else:
+            r, slopes = _linearise(residuals, z, typical)
     covariance, rank, null_space = invert_information(slopes)
     return PointEstimate(z, covariance, rank, null_space, r, slopes, converged)
 
@@ -106,15 +112,26 @@ def _damped_steps(slopes: Array, r: Array, scale: Array, dampings: Array) -> tup
     return ((shares * along) @ right) / scale, float(np.square(along[kept]).sum())
 
 
+def _stencil(values: Array, typical: Array | float) -> tuple[Array, Array]:
+    """Return the offsets of a central difference (2 p + 1, p), the centre first, and their widths (p,)."""
+    p = len(values)
+    widths = STEP * np.maximum(np.abs(values), typical)
+    offsets = np.zeros((2 * p + 1, p))
+    offsets[1 : p + 1] = np.diag(widths)
+    offsets[p + 1 :] = -offsets[1 : p + 1]
+    return offsets, widths
+
+
+def _differences(found: Array, widths: Array) -> tuple[Array, Array]:
+    """Return residuals (n,) and Jacobian (n, p) from the residuals at a stencil (2 p + 1, n)."""
+    p = len(widths)
+    return found[0], (found[1 : p + 1] - found[p + 1 :]).T / (2 * widths)
+
+
 def _linearise(residuals: Residuals, values: Array, typical: Array | float) -> tuple[Array, Array]:
     """Return residuals (n,) and their Jacobian (n, p) from one block evaluation."""
-    p = len(values)
-    steps = STEP * np.maximum(np.abs(values), typical)
-    offsets = np.zeros((2 * p + 1, p))
-    offsets[1 : p + 1] = np.diag(steps)
-    offsets[p + 1 :] = -offsets[1 : p + 1]
-    found = residuals(values + offsets)
-    return found[0], (found[1 : p + 1] - found[p + 1 :]).T / (2 * steps)
+    offsets, widths = _stencil(values, typical)
+    return _differences(residuals(values + offsets), widths)
 
 
 def jacobian(residuals: Residuals, values: Array, typical: Array | float = 1.0) -> Array:

@@ -86,14 +86,16 @@ def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
     sigma = REFERENCE_SIGMA
     point = least_squares.fit(_residuals(problem, sigma), start[:physical])
     freedom = n + int(problem.is_stated[:physical].sum()) - point.rank
-    for _ in range(NOISE_ROUNDS if problem.noise.estimated else 0):
-        before = sigma
-        sigma = _matching_sigma(problem, point.residuals, before, freedom)
-        if abs(sigma - before) <= 1e-10 * before:
-            break
-        if _scales_with_sigma(problem):
-            point = point.rescaled(before / sigma)
-        else:
+    if problem.noise.estimated and _scales_with_sigma(problem):
+        sigma *= math.sqrt(point.chi_square / max(freedom, 1))
+        sigma = min(max(sigma, SMALLEST_SIGMA), LARGEST_SIGMA)
+        point = point.rescaled(REFERENCE_SIGMA / sigma)
+    elif problem.noise.estimated:
+        for _ in range(NOISE_ROUNDS):
+            before = sigma
+            sigma = _matching_sigma(problem, point.residuals, before, freedom)
+            if abs(sigma - before) <= 1e-10 * before:
+                break
             point = least_squares.fit(_residuals(problem, sigma), point.values)
     z = np.concatenate([point.values, [math.log(sigma)] * (len(problem.parameters) - physical)])
     is_reading = np.ones(len(point.residuals), dtype=bool)

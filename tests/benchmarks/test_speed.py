@@ -1,0 +1,112 @@
+"""Speed as ratios to a baseline run beside it, on the aluminium rod. Run with
+
+    pytest -m benchmark tests/benchmarks
+
+Absolute figures are for DEVELOPERS.md; what is asserted are ratios, since machines are shared and noisy.
+"""
+
+import subprocess
+import sys
+import time
+
+import baseline
+import numpy as np
+import pytest
+
+from finback import candidates, diagnostics, optimum, posing, readings, rig, sampling
+from finback.datasets import path
+from finback.parameters import ZERO_CELSIUS
+
+pytestmark = pytest.mark.benchmark
+
+SETS = 64
+
+
+@pytest.fixture(scope="module")
+def problem():
+    described = rig.read(path("aluminium-rod") / "rig.toml")
+    run = readings.read(path("aluminium-rod") / "readings.csv", described).pick(None)
+    (candidate,) = candidates.enumerate_candidates(described, run)
+    return posing.pose(described, run, candidate)
+
+
+def data(problem):
+    n = len(problem.measured.positions)
+    return problem.measured.positions, problem.measured.values[:n] - ZERO_CELSIUS
+
+
+def fastest(function, repeats):
+    """Return the shortest of several times [s]: what the work costs when nobody else is working."""
+    times = []
+    for _ in range(repeats):
+        begin = time.perf_counter()
+        function()
+        times.append(time.perf_counter() - begin)
+    return min(times)
+
+
+def test_point_fit(benchmark, problem):
+    theirs = fastest(lambda: baseline.point_fit(*data(problem)), 20)
+    found = benchmark(optimum.fit, problem)
+    ours = benchmark.stats.stats.min
+    benchmark.extra_info |= {"ms": 1e3 * ours, "times the baseline": theirs / ours}
+    assert np.exp(found.z[0]) == pytest.approx(19.1422, rel=1e-4)
+    assert ours < 1.5 * theirs  # it brings covariance, noise and rank as well
+
+
+def test_forward_evaluation(benchmark, problem):
+    z = np.tile(optimum.fit(problem).z, (SETS, 1))
+    x, _ = data(problem)
+    theirs = fastest(lambda: baseline.temperatures(19.1, 150.0, x), 200)
+    benchmark(problem.predict, z)
+    ours = benchmark.stats.stats.min / SETS
+    benchmark.extra_info |= {"µs a set": 1e6 * ours, "times the baseline": theirs / ours}
+    assert ours < theirs / 5
+
+
+def test_sampling(benchmark, problem):
+    diagnostics.ensemble_rhat(np.random.default_rng(0).normal(size=(4, 100, 2, 1)))  # loads arviz
+    point = optimum.fit(problem)
+    mode = candidates.find_mode(point)
+    seed = np.random.SeedSequence(1)
+
+    def draw():
+        return sampling.sample(problem.log_density, mode, seed, sampling.Settings(), lambda _fraction: None)
+
+    chain = benchmark.pedantic(draw, rounds=3)
+    ours = chain.ess_min / benchmark.stats.stats.min
+    begin = time.perf_counter()
+    theirs = baseline.sample(*data(problem)) / (time.perf_counter() - begin)
+    benchmark.extra_info |= {"effective draws a second": ours, "times the baseline": ours / theirs}
+    assert chain.converged
+    assert ours >= 10 * theirs
+
+
+def run_finback(*arguments):
+    subprocess.run([sys.executable, "-m", "finback", *arguments], check=True, capture_output=True)
+
+
+def test_help(benchmark):
+    theirs = fastest(lambda: subprocess.run([sys.executable, "-c", "import typer.main"], check=True), 5)
+    benchmark.pedantic(run_finback, args=("--help",), rounds=5)
+    ours = benchmark.stats.stats.min
+    benchmark.extra_info |= {"s": ours, "times importing typer alone": ours / theirs}
+    assert ours < 2.5 * theirs
+
+
+def test_cold_fit_with_report(benchmark, tmp_path):
+    imports = "import emcee, arviz, matplotlib.figure, pandas, scipy.stats"
+    theirs = fastest(lambda: subprocess.run([sys.executable, "-W", "ignore", "-c", imports], check=True), 3)
+    where = path("bench-pin")
+    arguments = (
+        "fit",
+        str(where / "rig.toml"),
+        str(where / "readings.csv"),
+        "--out",
+        str(tmp_path / "out"),
+        "--force",
+    )
+    benchmark.pedantic(run_finback, args=arguments, rounds=3)
+    ours = benchmark.stats.stats.min
+    benchmark.extra_info |= {"s": ours, "times importing the libraries alone": ours / theirs}
+    assert ours < 4 * theirs
