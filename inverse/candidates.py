@@ -30,7 +30,7 @@ Array = NDArray[np.float64]
 Progress = Callable[[str, float], None]
 
 COMPARED_TIPS: tuple[TipName, ...] = ("adiabatic", "convective", "fixed")
-WORTH_SAMPLING = 8.0  # nats below the best: a candidate further down has a probability below 0.0003
+WORTH_SAMPLING = 5.0  # nats below the best: a candidate further down has a probability below 0.007
 KEPT_DRAWS = 2500  # an ensemble
 LOO_DRAWS = 500  # an ensemble
 

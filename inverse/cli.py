@@ -182,6 +182,8 @@ def run(arguments: Sequence[str]) -> int:
     try:
         status = command.main(list(arguments) or ["--help"], prog_name="finback", standalone_mode=False)
         sys.stdout.flush()
+        if status == INTERRUPTED:  # how newer typer passes an interrupt on; an older one raises Abort
+            raise KeyboardInterrupt
     except FinbackError as error:
         return _complain(str(error), error.exit_status)
     except (KeyboardInterrupt, typer.Abort):

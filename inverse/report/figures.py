@@ -99,7 +99,7 @@ def draw(estimate: Estimate) -> tuple[Picture, ...]:
 def _picture(name: str, figure: Figure) -> Picture:
     png, svg = io.BytesIO(), io.BytesIO()
     figure.set_dpi(DPI)  # the canvases' own print methods: print_figure would lay everything out twice
-    FigureCanvasAgg(figure).print_png(png, metadata={"Software": None})
+    FigureCanvasAgg(figure).print_png(png, metadata={"Software": None}, pil_kwargs={"compress_level": 2})
     FigureCanvasSVG(figure).print_svg(svg, metadata={"Date": None, "Creator": None})
     return Picture(name, png.getvalue(), svg.getvalue())
 

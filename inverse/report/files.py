@@ -1,14 +1,15 @@
 """Files of a result: estimate.json, report.html, posterior.nc and the figures, in one folder.
 
-Each file is written under a temporary name beside its place and moved there when it is whole; estimate.json
-comes last, so that it stands for a complete result.
+Each file is written under a temporary name beside its place; when all are whole they are moved there,
+estimate.json last, so that it stands for a complete result.
 """
 
 import json
 import os
 import tempfile
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 
 from finback.errors import InputError
@@ -79,15 +80,17 @@ def write(estimate: Estimate, folder: Path, force: bool = False) -> Written:
     drawn = {
         f"{FIGURES}/{p.name}{end}": data for p in pictures for end, data in ((".png", p.png), (".svg", p.svg))
     }
+    fillers: dict[str, Callable[[Path], object]] = {
+        **{name: partial(Path.write_bytes, data=data) for name, data in drawn.items()},
+        POSTERIOR: lambda place: draws.to_netcdf(str(place), engine="h5netcdf"),
+        REPORT: lambda place: place.write_text(page, encoding="utf-8", newline="\n"),
+        ESTIMATE: lambda place: place.write_text(text, encoding="utf-8", newline="\n"),
+    }
     try:
+        _put(folder, fillers)
         for name in OURS:
-            if name.startswith(FIGURES) and name not in drawn:
-                (folder / name).unlink(missing_ok=True)  # of an earlier result, and wrong beside this one
-        for name, data in drawn.items():
-            _put(folder / name, lambda place, data=data: place.write_bytes(data))
-        _put(folder / POSTERIOR, lambda place: draws.to_netcdf(str(place), engine="h5netcdf"))
-        _put(folder / REPORT, lambda place: place.write_text(page, encoding="utf-8", newline="\n"))
-        _put(folder / ESTIMATE, lambda place: place.write_text(text, encoding="utf-8", newline="\n"))
+            if name not in fillers:  # of an earlier result, and wrong beside this one
+                (folder / name).unlink(missing_ok=True)
     except OSError as error:
         raise _unwritable(folder, error) from error
     return Written(
@@ -95,18 +98,24 @@ def write(estimate: Estimate, folder: Path, force: bool = False) -> Written:
     )
 
 
-def _put(place: Path, fill: Callable[[Path], object]) -> None:
-    """Fill a temporary file beside a place, then move it there; on any failure leave nothing behind."""
-    handle, name = tempfile.mkstemp(prefix=f".{place.name}.", dir=place.parent)
-    os.close(handle)
-    temporary = Path(name)
+def _put(folder: Path, fillers: Mapping[str, Callable[[Path], object]]) -> None:
+    """Fill a temporary file beside each place, then move all there; a failure leaves nothing behind."""
+    filled: dict[Path, Path] = {}
     try:
-        fill(temporary)
-        temporary.chmod(0o666 & ~_umask())
-        temporary.replace(place)
-    except BaseException:
-        temporary.unlink(missing_ok=True)
-        raise
+        for name, fill in fillers.items():
+            place = folder / name
+            handle, temporary = tempfile.mkstemp(
+                prefix=f".{place.name}.", suffix=place.suffix, dir=place.parent
+            )
+            os.close(handle)
+            filled[place] = Path(temporary)
+            fill(filled[place])
+            filled[place].chmod(0o666 & ~_umask())  # as any new file, and not as a temporary one
+        for place, temporary in filled.items():
+            os.replace(temporary, place)
+    finally:
+        for temporary in filled.values():
+            temporary.unlink(missing_ok=True)
 
 
 def _umask() -> int:
