@@ -173,6 +173,8 @@ def profile(estimate: Estimate) -> ProfileScene:
 def pairs(estimate: Estimate) -> tuple[Paired, ...]:
     """Return the quantities of the pair plot: the main ones that vary, and aren't one and the same."""
     draws = estimate.draws
+    if not draws.values.size:
+        return ()
     flat = draws.values.reshape(-1, len(draws.names))
     flat = flat[:: max(1, len(flat) // MOST_DRAWS)]
     settled = {name for name, summary in estimate.parameters.items() if summary.median is not None}

@@ -13,7 +13,8 @@ def summary(estimate: Estimate, folder: Path | str | None = None) -> str:
     """Return the summary of an estimate.
 
     Arguments: estimate; folder the result was written to, None when it was not. Lines hold at most 79
-    columns, no colour codes and no character that a terminal would obey.
+    columns, except the report's path, which stays in one piece; no colour codes and no character that a
+    terminal would obey.
     """
     seen = view.build(estimate)
     blocks = [_heading(seen), *(_answer(answer) for answer in seen.answers), _candidates(seen)]
@@ -45,7 +46,7 @@ def _answer(answer: view.Answer) -> list[str]:
 def _candidates(seen: view.View) -> list[str]:
     lines = ["Candidates"] if seen.candidates else []
     for candidate in seen.candidates:
-        lines += wrap(f"{candidate.probability:>8}  {candidate.name}", " " * 10)
+        lines += wrap(candidate.name, " " * 10, f"{candidate.probability:>8}  ")
     return lines + wrap(seen.verdict, "  ", "  ")
 
 
@@ -54,9 +55,9 @@ def _findings(seen: view.View) -> list[str]:
     findings = [row for row in seen.findings if row.severity != "note" or row.message not in told]
     lines = ["Findings"] if findings or seen.assumptions else []
     for finding in findings:
-        lines += wrap(f"  {finding.severity:<7} {finding.code}: {finding.message}", " " * 10)
+        lines += wrap(f"{finding.code}: {finding.message}", " " * 10, f"  {finding.severity:<8}")
     if seen.assumptions:
-        lines += wrap(f"  Defaults were used ({len(seen.assumptions)}); the report lists them.", "  ")
+        lines += wrap(f"Defaults were used ({len(seen.assumptions)}); the report lists them.", "  ", "  ")
     return lines
 
 
@@ -67,8 +68,7 @@ def wrap(text: str, hanging: str = "", first: str = "") -> list[str]:
     """
     from rich.cells import cell_len
 
-    lead = text[: len(text) - len(text.lstrip())]
-    lines, line = [], first + lead
+    lines, line = [], first
     empty = True
     for word in text.split():
         gap = "" if empty else " "

@@ -28,6 +28,7 @@ from finback.models.solve import solve
 from finback.models.surface import UniformCoefficient
 from finback.quantity import Quantity
 from finback.readings import Readings
+from finback.report import figures, html
 from finback.rig import Rig, Sensor
 
 ZERO = 273.15
@@ -55,7 +56,7 @@ def lognormal(rng, median, relative, n):
 
 def make_table(sensors, predicted, skip=()):
     table, values = [], {}
-    for sensor, value, error in zip(sensors, predicted, ERRORS * 2, strict=False):
+    for sensor, value, error in zip(sensors, predicted, ERRORS * 4, strict=False):
         scale = 10.0 if sensor.name in skip else 1.0
         if sensor.place == "heat":
             error = 0.01 * error * value
@@ -178,7 +179,7 @@ def make_pin(names=None, title="Invented pin, bench 2"):
     )
 
 
-def make_rod():
+def make_rod(n_sensors=15):
     """Return a long square bar without plate sensor, heat sensor or conductivity: only h/k is determined."""
     rng = np.random.default_rng(7)
     n = 2000
@@ -189,8 +190,8 @@ def make_rod():
     fin = Fin(rectangular(0.7, 0.0095, 0.0095), 237.0, UniformCoefficient(h), ConvectiveTip())
     solution = solve(fin, BaseTemperature(base), air, x)
     low, median, high = np.quantile(solution.temperatures, [0.025, 0.5, 0.975], axis=0)
-    holes = np.linspace(0.10, 0.66, 15)
-    sensors = [Sensor(f"x{round(100 * at)}", "fin", float(at)) for at in holes]
+    holes = np.linspace(0.10, 0.66, n_sensors)
+    sensors = [Sensor(f"x{round(1000 * at)}", "fin", float(at)) for at in holes]
     table, values = make_table(sensors, np.interp(holes, x, median))
     reason = "The readings along the fin determine h/k only: state the conductivity or measure the heat."
     lengths = {"length": Quantity(0.7), "width": Quantity(0.0095), "thickness": Quantity(0.0095)}
@@ -235,15 +236,38 @@ HOSTILE_NAMES = (
 
 
 @pytest.fixture(scope="session")
-def pin_estimate():
-    return make_pin()
+def crowded_estimate():
+    return make_rod(40)
+
+
+ESTIMATES = {"pin": make_pin, "rod": make_rod, "hostile": lambda: make_pin(HOSTILE_NAMES, HOSTILE)}
 
 
 @pytest.fixture(scope="session")
-def rod_estimate():
-    return make_rod()
+def estimates():
+    return {name: make() for name, make in ESTIMATES.items()}
 
 
 @pytest.fixture(scope="session")
-def hostile_estimate():
-    return make_pin(HOSTILE_NAMES, HOSTILE)
+def pin_estimate(estimates):
+    return estimates["pin"]
+
+
+@pytest.fixture(scope="session")
+def rod_estimate(estimates):
+    return estimates["rod"]
+
+
+@pytest.fixture(scope="session")
+def hostile_estimate(estimates):
+    return estimates["hostile"]
+
+
+@pytest.fixture(scope="session")
+def pictures(estimates):
+    return {name: figures.draw(estimate) for name, estimate in estimates.items()}
+
+
+@pytest.fixture(scope="session")
+def pages(estimates, pictures):
+    return {name: html.render(estimate, pictures[name]) for name, estimate in estimates.items()}

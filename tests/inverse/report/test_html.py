@@ -1,0 +1,169 @@
+import re
+from dataclasses import replace
+from html.parser import HTMLParser
+
+import numpy as np
+import pytest
+
+from finback.estimate import Draws, ProfileBand
+from finback.report import figures, html
+
+VOID = {"meta", "img", "br", "link", "input", "hr"}
+SECTIONS = [
+    "answer", "drawing", "profile", "candidates", "pairs", "quantities", "readings", "findings",
+    "assumptions", "method", "provenance", "cautions",
+]  # fmt: skip
+
+
+class Page(HTMLParser):
+    """What a page says: its elements, and the text of each section. Every element must be closed in order."""
+
+    def __init__(self, text):
+        super().__init__(convert_charrefs=True)
+        self.elements, self.open, self.texts, self.section = [], [], {}, ""
+        self.feed(text)
+        self.close()
+        assert self.open == []
+
+    def handle_starttag(self, tag, attrs):
+        self.elements.append((tag, dict(attrs)))
+        if tag not in VOID:
+            self.open.append(tag)
+        if tag == "section":
+            self.section = dict(attrs)["id"]
+        if tag in ("td", "th", "dt", "p", "li"):
+            self.texts[self.section] = self.texts.get(self.section, "") + "\n"
+
+    def handle_endtag(self, tag):
+        assert self.open.pop() == tag
+
+    def handle_data(self, data):
+        plain = data.replace("\N{NO-BREAK SPACE}", " ")
+        self.texts[self.section] = self.texts.get(self.section, "") + plain
+
+    def named(self, tag):
+        return [attributes for name, attributes in self.elements if name == tag]
+
+
+@pytest.fixture(scope="module")
+def parsed(pages):
+    return {name: Page(text) for name, text in pages.items()}
+
+
+@pytest.mark.parametrize("name", ["pin", "rod", "hostile"])
+def test_it_has_every_section_in_order_and_nothing_that_runs_or_loads(parsed, pages, name):
+    page = parsed[name]
+    assert [section["id"] for section in page.named("section")] == SECTIONS
+    tags = {tag for tag, _ in page.elements}
+    assert not tags & {"script", "link", "iframe", "object", "embed", "form", "base", "audio", "video"}
+    for tag, attributes in page.elements:
+        assert not any(key.startswith("on") for key in attributes), tag
+        for key in ("src", "href", "srcset", "style", "background"):
+            assert attributes.get(key, "data:").startswith("data:")
+    outside = re.sub(r'src="data:[^"]*"', "", pages[name])
+    assert not re.search(r"https?://|@import|url\(", outside)
+
+
+@pytest.mark.parametrize("name", ["pin", "rod", "hostile"])
+def test_every_picture_has_a_text_for_who_cannot_see_it(parsed, name):
+    pictures = parsed[name].named("img")
+    assert len(pictures) == (3 if name == "rod" else 4)
+    for picture in pictures:
+        assert picture["src"].startswith("data:image/svg+xml;base64,")
+        assert len(picture["alt"]) > 40
+
+
+def test_the_answer_comes_first_and_says_how_it_was_determined(parsed):
+    answer = parsed["pin"].texts["answer"]
+    assert "h = 42.0 W/(m² K) ± 1.9 W/(m² K) (k = 2, 95 %)" in answer
+    assert "median 42.0 W/(m² K)95 % interval 40.1 to 43.9 W/(m² K)" in answer
+    assert "determined by the readings" in answer
+    assert "total coefficient: convection and radiation together" in answer
+    assert "R″ = 5.2 × 10⁻⁵ m² K/W ± 1.7 × 10⁻⁵ m² K/W (k = 2, 95 %)" in answer
+    assert "The readings favour a convective tip with a joint" in answer
+    assert "T6 lies 1.5 K below what the others say." in answer
+
+
+def test_what_is_not_determined_says_why(parsed):
+    answer, quantities = parsed["rod"].texts["answer"], parsed["rod"].texts["quantities"]
+    reason = "The readings along the fin determine h/k only: state the conductivity or measure the heat."
+    assert answer.count(reason) == 3  # below h, below k, and as the finding
+    assert "h not determined" in answer
+    assert "k not determined" in answer
+    assert "R″ not looked at" in answer
+    assert "h/k = 0.0801 1/m ± 0.0011 1/m" in answer
+    assert "at most 23.4" in quantities
+    assert not re.search(r"\b(nan|None|inf)\b", answer + quantities)
+
+
+def test_tables_hold_every_candidate_quantity_and_reading(parsed, pin_estimate):
+    texts = parsed["pin"].texts
+    for score in pin_estimate.candidates:
+        assert score.name in texts["candidates"]
+    assert "Few readings make LOO indicative only" in texts["candidates"]
+    for row in pin_estimate.table:
+        assert f"\n{row.sensor}\n" in texts["readings"]
+    assert "set aside: judged faulty by the operator" in texts["readings"]
+    assert "5.00 ± 0.50 mm\n72.99 °C\n72.87 °C\n0.12 K\n0.36 K\n0.3" in texts["readings"]
+    for summary in (*pin_estimate.parameters.values(), *pin_estimate.derived.values()):
+        assert summary.label.replace("R''", "")[:10] in texts["quantities"]
+
+
+def test_assumptions_method_provenance_and_cautions_are_told(parsed, pin_estimate):
+    texts = parsed["pin"].texts
+    for line in pin_estimate.priors:
+        assert line in texts["assumptions"]
+    assert "The tip was left out of the rig" in texts["assumptions"]
+    for equation in (
+        "d²θ/dx² = m² θ",
+        "m² = h P / (k A)",
+        "−k θ′(0) = (Tplate − Tb) / R″",
+        "Pᵢ = Zᵢ / Σⱼ Zⱼ",
+    ):
+        assert equation in texts["method"]
+    for name, digest in pin_estimate.provenance.inputs.items():
+        assert f"SHA-256 of {name}" in texts["provenance"]
+        assert digest in texts["provenance"]
+    for word in ("seed", "R-hat 1.004", "effective sample size 2412", "numpy 2.0.0"):
+        assert word in texts["provenance"]
+    for word in ("hot", "Mains-powered", "fans", "pressure", "Local codes", "no certificate"):
+        assert word in texts["cautions"]
+
+
+def test_what_the_user_named_is_shown_and_never_obeyed(parsed, pages, hostile_estimate):
+    page = parsed["hostile"]
+    assert "<script>alert(1)</script>" in page.texts[""]  # as text: title and heading
+    assert "<script>alert(1)</script>" in page.named("img")[0]["alt"]
+    assert "<script" not in pages["hostile"]
+    names = re.findall(r"\n(.+)\n(?:fin|plate|air|heat into the fin)\n", page.texts["readings"])
+    assert names == [
+        row.sensor.replace("\x1b", "\N{REPLACEMENT CHARACTER}") for row in hostile_estimate.table
+    ]
+    assert {tag for tag, _ in page.elements} == {tag for tag, _ in parsed["pin"].elements}
+
+
+def test_the_same_estimate_gives_the_same_bytes(pages, pin_estimate, pictures):
+    assert html.render(pin_estimate, pictures["pin"]) == pages["pin"]
+
+
+def test_no_path_of_the_machine_is_told(pin_estimate, pictures):
+    inputs = {"/home/somebody/secret/rig.toml": "9f" * 32}
+    told = replace(pin_estimate, provenance=replace(pin_estimate.provenance, inputs=inputs))
+    page = html.render(told, pictures["pin"])
+    assert "SHA-256 of rig.toml" in page
+    assert "secret" not in page
+
+
+def test_a_failed_estimate_without_draws_still_gives_a_page(rod_estimate):
+    none = np.zeros(0)
+    draws = Draws(
+        (), (), np.zeros((0, 0, 0)), np.zeros((0, 0)), np.zeros((0, 0), int), np.zeros((0, 0, 0)), ()
+    )
+    empty = replace(
+        rod_estimate, status="failed", band=ProfileBand(none, none, none, none), draws=draws, candidates=()
+    )
+    pictures = figures.draw(empty)
+    assert [picture.name for picture in pictures] == ["drawing"]
+    page = Page(html.render(empty, pictures))
+    assert "Failed" in page.texts[""]
+    assert "No draws to show." in page.texts["pairs"]
