@@ -3,6 +3,7 @@
 import datetime
 import hashlib
 import io
+import zipfile
 
 import openpyxl
 import pytest
@@ -139,6 +140,46 @@ def test_cells_of_a_workbook_are_named_as_they_look():
     found = read(workbook(header, row))
     assert found.run == "7"
     assert found.extra == {"day": "2026-03-01T00:00:00", "ok": "TRUE"}
+
+
+def test_a_workbook_that_states_a_wrong_size_is_read_to_its_end():
+    # some programs that write workbooks state "A1" as the size of every sheet
+    content = workbook(["run", *SENSORS], ["a", 70.5, 60, 55.25, 80, 21, 5.25])
+    changed = io.BytesIO()
+    with zipfile.ZipFile(io.BytesIO(content)) as old, zipfile.ZipFile(changed, "w") as new:
+        for name in old.namelist():
+            part = old.read(name)
+            assert ("sheet1.xml" in name) == (b'<dimension ref="A1:G2"' in part)
+            new.writestr(name, part.replace(b'<dimension ref="A1:G2"', b'<dimension ref="A1"'))
+    assert read(changed.getvalue()).values == pytest.approx(EXPECTED)
+
+
+@pytest.mark.parametrize(
+    ("name", "column", "alike"),
+    [
+        ("outer", "Outer", True),
+        ("outer", "out er", True),
+        ("outer", "outre", True),
+        ("outer", "oter", True),
+        ("outer", "outter", True),
+        ("outer", "oufer", True),
+        ("outer", "other", False),
+        ("outer", "outside", False),
+        ("T_1", "t-1", True),
+        ("TX", "TY", False),  # of two letters one alike is chance
+        ("TX", "T12", True),
+        ("TX", "speed [degC]", True),
+        ("TX", "speed [m/s]", False),
+    ],
+)
+def test_a_column_that_looks_like_a_sensors_is_no_remark(name, column, alike):
+    content = COMMA.replace("note", f"{name},{column}").replace("calm", "50,51")
+    the_rig = rig(**{name: {"at": "20 mm"}})
+    if alike:
+        with pytest.raises(InputError, match="the rig has no sensor of this name"):
+            read(content, the_rig)
+    else:
+        assert read(content, the_rig).extra == {column: "51"}
 
 
 def test_a_wrong_cell_matters_only_in_the_run_that_is_asked_for():
