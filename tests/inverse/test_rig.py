@@ -147,7 +147,7 @@ def test_each_default_that_was_used_is_one_finding():
     assert messages == [
         "It is not stated whether the two narrow side faces lose heat: they are taken to; state it with "
         'edges = "exposed" or "guarded" in [fin].',
-        'No conductivity is stated: k is left free within a wide prior; state it with '
+        "No conductivity is stated: k is left free within a wide prior; state it with "
         'conductivity = "167 W/(m K) +/- 5 %" in [material].',
         'No calibration uncertainty is stated for "T1", "TA", "Q": it is taken as zero; state it with '
         'calibration = "0.3 K" in [sensors.defaults], for heat with calibration = "2 %".',
