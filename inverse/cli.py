@@ -182,12 +182,10 @@ def run(arguments: Sequence[str]) -> int:
     try:
         status = command.main(list(arguments) or ["--help"], prog_name="finback", standalone_mode=False)
         sys.stdout.flush()
-        if status == INTERRUPTED:  # how newer typer passes an interrupt on; an older one raises Abort
-            raise KeyboardInterrupt
     except FinbackError as error:
         return _complain(str(error), error.exit_status)
     except (KeyboardInterrupt, typer.Abort):
-        return _complain("interrupted before the result was complete.", INTERRUPTED)
+        status = INTERRUPTED
     except USAGE_ERROR as error:
         return _complain(_usage_sentence(error), InputError.exit_status)
     except (BrokenPipeError, SystemExit):  # whoever read the output has seen enough; typer exits for that
@@ -202,6 +200,8 @@ def run(arguments: Sequence[str]) -> int:
             "Finback, please report it with the command and the input files.",
             1,
         )
+    if status == INTERRUPTED:  # newer typer returns it, an older one raises Abort
+        return _complain("interrupted before the result was complete.", INTERRUPTED)
     return int(status or 0)
 
 
