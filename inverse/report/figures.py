@@ -293,11 +293,11 @@ def _bars(bars: tuple[scenes.Bar, ...]) -> Figure:
 def _pairs(quantities: tuple[scenes.Paired, ...]) -> Figure:
     """Draw marginals on the diagonal with the prior dashed, densities with 50 and 95 % contours below it."""
     n = len(quantities)
-    wide = WIDTH if n > 2 else 4.6
-    high = wide * (0.9 if n > 1 else 0.6)
-    figure = Figure(figsize=(wide, high))
-    left, bottom, gap = 0.85 / wide, 0.5 / high, 0.025
-    across_step, up_step = (0.97 - left + gap) / n, (0.99 - bottom + gap) / n
+    used = 0.97 if n > 2 else 0.72  # of the width, for panels
+    high = WIDTH * used * (0.9 if n > 1 else 0.6)
+    figure = Figure(figsize=(WIDTH, high))
+    left, bottom, gap = 0.85 / WIDTH, 0.5 / high, 0.025
+    across_step, up_step = (used - left + gap) / n, (0.99 - bottom + gap) / n
     for row, up in enumerate(quantities):
         for column, across in enumerate(quantities[: row + 1]):
             corner = left + column * across_step, bottom + (n - 1 - row) * up_step
@@ -306,22 +306,31 @@ def _pairs(quantities: tuple[scenes.Paired, ...]) -> Figure:
                 _draw_marginal(axes, across, legend=row == 0)
             else:
                 _draw_density(axes, across, up)
-            axes.set_xticks(_inner_ticks(across.window))
+            axes.set_xticks(_inner_ticks(across.window, WIDTH * (across_step - gap)))
             axes.tick_params(labelbottom=row == n - 1, labelleft=column == 0 and row > 0, labelsize=8)
             if row == n - 1:
                 axes.set_xlabel(across.label)
             if column == 0 and row > 0:
                 axes.set_ylabel(up.label)
-                axes.yaxis.set_label_coords(-0.62 / (wide * (across_step - gap)), 0.5)
+                axes.yaxis.set_label_coords(-0.62 / (WIDTH * (across_step - gap)), 0.5)
     return figure
 
 
-def _inner_ticks(window: tuple[float, float]) -> list[float]:
-    """Return a few round values so far inside a window that their labels don't reach into the next panel."""
+def _inner_ticks(window: tuple[float, float], room: float) -> list[float]:
+    """Return a few round values whose labels keep clear of each other and of the next panel.
+
+    Arguments: window of the axis; room, its length [in].
+    """
     low, high = window
     margin = 0.14 * (high - low)
-    ticks = MaxNLocator(4).tick_values(low, high)
-    return [float(tick) for tick in ticks if low + margin <= tick <= high - margin]
+    ticks: list[float] = []
+    for most in (4, 3, 2):
+        values = MaxNLocator(most).tick_values(low, high)
+        ticks = [float(tick) for tick in values if low + margin <= tick <= high - margin]
+        longest = max((len(f"{tick:.6g}") for tick in ticks), default=1)
+        if len(ticks) < 2 or (ticks[1] - ticks[0]) / (high - low) * room > LETTER * longest:
+            break
+    return ticks
 
 
 def _draw_marginal(axes: Axes, quantity: scenes.Paired, legend: bool) -> None:
@@ -348,4 +357,4 @@ def _draw_density(axes: Axes, across: scenes.Paired, up: scenes.Paired) -> None:
     if cloud.levels:
         axes.contour(cloud.x, cloud.y, cloud.density, levels=cloud.levels, colors=INK, linewidths=(0.7, 1.0))
     axes.set_ylim(*up.window)
-    axes.set_yticks(_inner_ticks(up.window))
+    axes.set_yticks(_inner_ticks(up.window, WIDTH))
