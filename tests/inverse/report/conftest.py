@@ -1,7 +1,7 @@
-"""Estimates made up for the report: an invented pin with plate, air and heat sensors, and a bare rod.
+"""Estimates for the report: an invented pin with plate, air and heat sensors, a bare rod, and one real fit.
 
-Nothing here is a measurement. The "posterior" is a lognormal cloud around an invented truth, and the readings
-are what the forward model gives there plus fixed errors: enough to look like a fit, without running one.
+But for `fit_bench` nothing here is measured or fitted. The "posterior" is a lognormal cloud around an invented
+truth, and the readings are what the forward model gives there plus fixed errors: enough to look like a fit.
 """
 
 from dataclasses import replace
@@ -9,6 +9,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from finback import analysis, datasets
 from finback.estimate import (
     CandidateScore,
     Draws,
@@ -240,7 +241,18 @@ def crowded_estimate():
     return make_rod(40)
 
 
-ESTIMATES = {"pin": make_pin, "rod": make_rod, "hostile": lambda: make_pin(HOSTILE_NAMES, HOSTILE)}
+def fit_bench():
+    """Return the estimate of a bundled rig, by the whole package: what a user's report is made of."""
+    folder = datasets.path("bench-pin")
+    return analysis.fit(folder / "rig.toml", folder / "readings.csv", seed=1)
+
+
+ESTIMATES = {
+    "pin": make_pin,
+    "rod": make_rod,
+    "hostile": lambda: make_pin(HOSTILE_NAMES, HOSTILE),
+    "bench": fit_bench,
+}
 
 
 @pytest.fixture(scope="session")

@@ -50,7 +50,7 @@ def parsed(pages):
     return {name: Page(text) for name, text in pages.items()}
 
 
-@pytest.mark.parametrize("name", ["pin", "rod", "hostile"])
+@pytest.mark.parametrize("name", ["pin", "rod", "hostile", "bench"])
 def test_it_has_every_section_in_order_and_nothing_that_runs_or_loads(parsed, pages, name):
     page = parsed[name]
     assert [section["id"] for section in page.named("section")] == SECTIONS
@@ -64,7 +64,7 @@ def test_it_has_every_section_in_order_and_nothing_that_runs_or_loads(parsed, pa
     assert not re.search(r"https?://|@import|url\(", outside)
 
 
-@pytest.mark.parametrize("name", ["pin", "rod", "hostile"])
+@pytest.mark.parametrize("name", ["pin", "rod", "hostile", "bench"])
 def test_every_picture_has_a_text_for_who_cannot_see_it(parsed, name):
     pictures = parsed[name].named("img")
     assert len(pictures) == (3 if name == "rod" else 4)
@@ -107,6 +107,17 @@ def test_tables_hold_every_candidate_quantity_and_reading(parsed, pin_estimate):
     assert "5.00 ± 0.50 mm\n72.99 °C\n72.87 °C\n0.12 K\n0.36 K\n0.3" in texts["readings"]
     for summary in (*pin_estimate.parameters.values(), *pin_estimate.derived.values()):
         assert summary.label.replace("R''", "")[:10] in texts["quantities"]
+
+
+def test_the_page_of_a_real_fit_tells_what_the_estimate_holds(parsed, estimates):
+    estimate, texts = estimates["bench"], parsed["bench"].texts
+    for symbol in ("h = ", "k = ", "R″ = "):
+        assert symbol in texts["answer"]
+    assert estimate.comparison in texts["answer"]
+    for row in estimate.table:
+        assert f"\n{row.sensor}\n" in texts["readings"]
+    assert f"R-hat {estimate.sampler.rhat_max:.3f}" in texts["provenance"]
+    assert not re.search(r"\b(nan|None|inf)\b", "".join(texts.values()))
 
 
 def test_assumptions_method_provenance_and_cautions_are_told(parsed, pin_estimate):

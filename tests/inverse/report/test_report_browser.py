@@ -123,7 +123,7 @@ def browser(tmp_path_factory):
     found.close()
 
 
-@pytest.fixture(scope="module", params=["pin", "rod", "hostile"])
+@pytest.fixture(scope="module", params=["pin", "rod", "hostile", "bench"])
 def report(request, pages, tmp_path_factory):
     file = tmp_path_factory.mktemp(request.param) / "report.html"
     file.write_text(pages[request.param], encoding="utf-8")
