@@ -1,7 +1,7 @@
 """Estimates for the report: an invented pin with plate, air and heat sensors, a bare rod, and one real fit.
 
-But for `fit_bench` nothing here is measured or fitted. The "posterior" is a lognormal cloud around an invented
-truth, and the readings are what the forward model gives there plus fixed errors: enough to look like a fit.
+But for `fit_bench` nothing here is measured or fitted. The "posterior" is a lognormal cloud around an
+invented truth, and the readings are what the forward model gives there plus fixed errors.
 """
 
 from dataclasses import replace
