@@ -12,7 +12,22 @@ from finback.models.ends import (
 )
 from finback.models.fin import Fin
 from finback.models.performance import effectiveness, efficiency
-from finback.models.profiles import Profile, Uniform, pin, rectangular
+from finback.models.profiles import (
+    Annular,
+    ConcaveParabolic,
+    ConcavePin,
+    Cone,
+    ConvexParabolic,
+    ConvexPin,
+    HyperbolicAnnular,
+    Profile,
+    Table,
+    Trapezoidal,
+    Triangular,
+    Uniform,
+    pin,
+    rectangular,
+)
 from finback.models.solution import Solution
 from finback.models.solve import solve
 from finback.models.surface import SurfaceLaw, UniformCoefficient
@@ -20,17 +35,27 @@ from finback.models.validity import is_one_dimensional, transverse_biot
 
 __all__ = [
     "AdiabaticTip",
+    "Annular",
     "Base",
     "BaseTemperature",
+    "ConcaveParabolic",
+    "ConcavePin",
+    "Cone",
     "ConvectiveTip",
+    "ConvexParabolic",
+    "ConvexPin",
     "Fin",
     "FixedTip",
+    "HyperbolicAnnular",
     "InfiniteTip",
     "Joint",
     "Profile",
     "Solution",
     "SurfaceLaw",
+    "Table",
     "Tip",
+    "Trapezoidal",
+    "Triangular",
     "Uniform",
     "UniformCoefficient",
     "effectiveness",
