@@ -4,15 +4,14 @@ What such a rig can tell in principle is counted here from its sensors and from 
 readings are good enough is for a fit to say.
 """
 
-import textwrap
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
 from finback.quantity import Quantity
 from finback.report.phrases import clean
+from finback.report.terminal import wrap
 from finback.rig import Rig, Sensor
 
-WIDTH = 80
 DRAWING = 64  # characters that stand for the length of the fin
 PLACES = {
     "fin": "fin",
@@ -88,85 +87,80 @@ def describe(rig: Rig, runs: Sequence[str] | None, candidates: Iterable[str]) ->
     Arguments: rig; runs, the names of the runs in the readings, None where no readings were given;
     candidates, the names of those that a fit would compare.
     """
-    parts = [
-        clean(rig.title),
-        "\n".join(_fin_lines(rig)),
-        draw(rig),
-        "\n".join(_sensor_table(rig)),
-        "\n".join(
-            f"{telling.name:<7}{_wrapped(telling.reason, indent=7).lstrip()}" for telling in tellings(rig)
-        ),
-        "\n".join(["Candidates", *(f"  {name}" for name in candidates)]),
+    blocks = [
+        wrap(clean(rig.title)),
+        _labelled(_fin_texts(rig)),
+        [draw(rig)],
+        _sensor_table(rig),
+        _labelled((telling.name, telling.reason) for telling in tellings(rig)),
+        ["Candidates", *(f"  {name}" for name in candidates)],
     ]
     if rig.assumed:
-        parts.append(
-            "\n".join(["Assumed", *(_wrapped(clean(each.message), indent=2) for each in rig.assumed)])
-        )
+        blocks.append(["Assumed"])
+        for each in rig.assumed:
+            blocks[-1] += wrap(clean(each.message), "  ", "  ")
     if runs is not None:
-        names = ", ".join(clean(run) for run in runs)
-        parts.append(_wrapped(f"{len(runs)} {'run' if len(runs) == 1 else 'runs'}: {names}"))
-    return "\n\n".join(parts)
+        count = f"{len(runs)} run{'' if len(runs) == 1 else 's'}"
+        blocks.append(wrap(f"{count}: {', '.join(clean(run) for run in runs)}"))
+    return "\n\n".join("\n".join(block) for block in blocks)
 
 
 def draw(rig: Rig) -> str:
-    """Return the fin from base to tip with its sensors, to scale, in two or more lines of text.
+    """Return the fin from base to tip with its sensors, to scale, in three lines of text.
 
     Names stand above their sensor where there is room for them.
     """
+    from rich.cells import cell_len
+
     length = rig.geometry["length"].value
-    fin_sensors = sorted(
-        (sensor for sensor in rig.sensors.values() if sensor.position is not None),
-        key=lambda s: s.position or 0,
-    )
     names, marks, free = [" "] * (DRAWING + 8), ["═"] * DRAWING, 0
-    for sensor in fin_sensors:
+    for sensor in rig.fin_sensors():
         column = round((sensor.position or 0.0) / length * (DRAWING - 1))
         marks[column] = "●"
         label = clean(sensor.name)
-        if column >= free and column + len(label) <= len(names):
-            names[column : column + len(label)] = label
-            free = column + len(label) + 1
-    has_plate = any(sensor.place == "plate" for sensor in rig.sensors.values())
-    base = "plate ▌" if has_plate else " base │"
+        width = cell_len(label)
+        if column >= free and column + width <= len(names):
+            names[column : column + width] = [label, *[""] * (width - 1)]
+            free = column + width + 1
+    base = "plate ▌" if rig.sensors_on("plate") else " base │"
     scale = f"0{f'{1000 * length:g} mm':>{DRAWING - 1}}"
-    return "\n".join(
-        [" " * 7 + "".join(names).rstrip(), f"{base}{''.join(marks)}│ tip", " " * 7 + scale],
-    )
+    lines = [" " * 7 + "".join(names).rstrip(), f"{base}{''.join(marks)}│ tip", " " * 7 + scale]
+    return "\n".join(lines)
 
 
-def _fin_lines(rig: Rig) -> list[str]:
-    sizes = ", ".join(f"{name.replace('_', ' ')} {_shown(size)}" for name, size in rig.geometry.items())
-    edges = ", edges guarded" if rig.guarded_edges else ""
-    tip: str = rig.tip or "not stated: candidates are compared"
+def _labelled(texts: Iterable[tuple[str, str]]) -> list[str]:
+    indent = 7
+    return [line for name, text in texts for line in wrap(text, " " * indent, f"{name:<{indent}}")]
+
+
+def _fin_texts(rig: Rig) -> Iterator[tuple[str, str]]:
+    sizes = ", ".join(f"{name} {_shown(size)}" for name, size in rig.geometry.items())
+    yield "fin", f"{rig.profile_name}, {sizes}{', edges guarded' if rig.guarded_edges else ''}"
+    held = ""
     if rig.tip == "fixed":
-        tip += " at " + (
-            "an unknown temperature" if rig.tip_temperature is None else _shown(rig.tip_temperature)
-        )
-    lines = [
-        ("fin", f"{rig.profile_name}, {sizes}{edges}"),
-        ("tip", tip),
-        (
-            "k",
-            "not stated: a wide prior" if rig.conductivity is None else f"{_shown(rig.conductivity)}, stated",
-        ),
-    ]
+        held = f" at {_shown(rig.tip_temperature) if rig.tip_temperature else 'an unknown temperature'}"
+    yield "tip", f"{rig.tip}{held}" if rig.tip else "not stated: candidates are compared"
+    yield "k", f"{_shown(rig.conductivity)}, stated" if rig.conductivity else "not stated: a wide prior"
     if rig.expected_joint is not None:
-        lines.append(("joint", f"{_shown(rig.expected_joint)} when healthy"))
+        yield "joint", f"{_shown(rig.expected_joint)} when healthy"
     if rig.expected_coefficient is not None:
-        lines.append(("air", f"h {_shown(rig.expected_coefficient)} when healthy"))
-    return [f"{name:<7}{_wrapped(text, indent=7).lstrip()}" for name, text in lines]
+        yield "air", f"h {_shown(rig.expected_coefficient)} when healthy"
 
 
 def _sensor_table(rig: Rig) -> list[str]:
+    from rich.cells import cell_len
+
     rows = [("sensor", "reads", "at", "noise", "calibration")]
     for sensor in rig.sensors.values():
         place = "" if sensor.position is None else f"{1000 * sensor.position:g} mm"
         if sensor.position_sd:
             place += f" ± {1000 * sensor.position_sd:g} mm"
         rows.append((clean(sensor.name, 20), PLACES[sensor.place], place, *_uncertainties(sensor)))
-    widths = [max(len(row[column]) for row in rows) for column in range(len(rows[0]))]
+    widths = [max(map(cell_len, column)) for column in zip(*rows, strict=True)]
     return [
-        "  ".join(f"{cell:<{width}}" for cell, width in zip(row, widths, strict=True)).rstrip()
+        "  ".join(
+            cell + " " * (width - cell_len(cell)) for cell, width in zip(row, widths, strict=True)
+        ).rstrip()
         for row in rows
     ]
 
@@ -187,8 +181,3 @@ def _uncertainties(sensor: Sensor) -> tuple[str, str]:
 
 def _shown(quantity: Quantity) -> str:
     return clean(quantity.text, 40)
-
-
-def _wrapped(text: str, indent: int = 0) -> str:
-    space = " " * indent
-    return textwrap.fill(text, WIDTH, initial_indent=space, subsequent_indent=space, break_on_hyphens=False)
