@@ -113,7 +113,7 @@ JOINTS = (
         1e-4,
         "1 to 10 MPa, room temperature; differential expansion can open it",
         f"read from {_LIENHARD} and {_HOLMAN} at the pressures of press fits",
-        _RECALLED,
+        _COMPUTED,
     ),
 )
 """The kinds of joint that `find` knows."""

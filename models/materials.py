@@ -27,7 +27,7 @@ class Evidence(Enum):
 
     CHECKED = "checked against a second source"
     RECALLED = "recalled from the table it names, not seen again"
-    COMPUTED = "computed from thickness and conductivity"
+    COMPUTED = "computed or inferred from other values"
 
 
 @dataclass(frozen=True, slots=True)
