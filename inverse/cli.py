@@ -17,12 +17,14 @@ import typer
 
 from finback import __version__
 from finback.errors import FinbackError, InputError
+from finback.wording import plain, quoted
 
 if TYPE_CHECKING:
     from finback.readings import Readings
     from finback.rig import Rig
 
 INTERRUPTED = 130
+LONGEST = 5000  # characters of a complaint, which may name a long path
 DEMO_FOLDER = Path("finback-demo")
 DEMO_RIG = "bench-pin"
 
@@ -121,7 +123,7 @@ def demo(
         return 0
     if name not in datasets.names():
         known = ", ".join(datasets.names())
-        raise InputError(None, "--rig", f"there is no bundled rig {name!r}", f"choose one of {known}")
+        raise InputError(None, "--rig", f"there is no bundled rig {quoted(name)}", f"choose one of {known}")
 
     from finback import readings as readings_reader
     from finback import rig as rig_reader
@@ -232,5 +234,5 @@ def _one_line(text: object) -> str:
 
 
 def _complain(sentence: str, status: int) -> int:
-    print(f"finback: {sentence}", file=sys.stderr)
+    print(f"finback: {plain(sentence, LONGEST)}", file=sys.stderr)  # paths may hold what a terminal obeys
     return status

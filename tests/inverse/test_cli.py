@@ -202,7 +202,7 @@ def test_a_command_line_that_cannot_be_read_is_one_sentence(
 def test_an_unknown_bundled_rig(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     folder = tmp_path / "out"
     assert refused(capsys, "demo", folder, "--rig", "bench") == (
-        "--rig: there is no bundled rig 'bench'; choose one of aluminium-rod, bench-pin, "
+        '--rig: there is no bundled rig "bench"; choose one of aluminium-rod, bench-pin, '
         "bench-pin-loose-joint, copper-pin."
     )
     assert not folder.exists()
@@ -220,6 +220,13 @@ def test_a_missing_rig_file(capsys: pytest.CaptureFixture[str], rod: Path) -> No
 def test_a_missing_table_of_readings(capsys: pytest.CaptureFixture[str], rod: Path) -> None:
     sentence = refused(capsys, "check", rod / "rig.toml", rod / "reading.csv")
     assert sentence == f"{rod / 'reading.csv'}: there is no such file; check its name and folder."
+
+
+def test_a_path_cannot_write_to_the_terminal(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
+    name = tmp_path / "rig\x1b]0;mine\x07\n.toml"
+    assert refused(capsys, "check", name) == (
+        f"{tmp_path}/rig?]0;mine??.toml: there is no such file; check its name and folder."
+    )
 
 
 def test_an_unknown_run(capsys: pytest.CaptureFixture[str], rod: Path) -> None:
