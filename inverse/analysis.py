@@ -112,13 +112,16 @@ def _summaries(
     evaluated: Sequence[Mapping[str, Array]],
     mixture: summaries.Mixture,
 ) -> dict[str, Summary]:
-    """Return the summaries by name; those of the joint from the candidates that have one."""
+    """Return the summaries by name; what not all candidates have comes from those that have it."""
     best = summaries.judge(outcomes[0])
-    found = {
-        name: best.summarise(name, mixture.values[name])
-        for name in evaluated[0]
-        if name not in summaries.OF_THE_JOINT
-    }
+    found = {}
+    for name in evaluated[0]:
+        if name in summaries.OF_THE_JOINT:
+            continue
+        draws = mixture.values[name]
+        if not all(name in each for each in evaluated):  # the temperature of a tip that is held
+            draws = draws[np.isfinite(draws)]
+        found[name] = best.summarise(name, draws)
     with_joint = [i for i, o in enumerate(outcomes) if o.problem.candidate.joint]
     if not with_joint:
         for name in summaries.OF_THE_JOINT:
