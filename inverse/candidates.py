@@ -24,7 +24,7 @@ from finback.posing import is_read, pose
 from finback.problem import Candidate, Problem
 from finback.readings import Readings
 from finback.rig import Rig, TipName
-from finback.sampling import Settings
+from finback.sampling import Chain, Settings
 
 Array = NDArray[np.float64]
 Progress = Callable[[str, float], None]
@@ -33,6 +33,7 @@ COMPARED_TIPS: tuple[TipName, ...] = ("adiabatic", "convective", "fixed")
 WORTH_SAMPLING = 5.0  # nats below the best: a candidate further down has a probability below 0.007
 KEPT_DRAWS = 2500  # an ensemble
 LOO_DRAWS = 500  # an ensemble
+SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
 
 
 @dataclass(frozen=True)
@@ -87,12 +88,14 @@ def compare(
         seeds = np.random.SeedSequence([seed, run, zlib.crc32(candidate.name.encode())]).spawn(3)
         point = optimum.fit(pose(rig, readings, candidate))
         mode = find_mode(point)
-        quick = evidence.importance(point.problem.log_density, proposals.from_mode(mode), seeds[0])
-        prepared.append((point, mode, quick, seeds))
-    best = max(quick.evidence.log for _, _, quick, _ in prepared)
-    worth = [quick.evidence.log > best - WORTH_SAMPLING for _, _, quick, _ in prepared]
+        random = np.random.RandomState(np.random.MT19937(seeds[0]))
+        fitted = proposals.adapt(point.problem.log_density, proposals.from_mode(mode), random)
+        quick = evidence.importance(point.problem.log_density, fitted[0], random)
+        prepared.append((point, mode, fitted, quick, seeds))
+    best = max(quick.evidence.log for *_, quick, _ in prepared)
+    worth = [quick.evidence.log > best - WORTH_SAMPLING for *_, quick, _ in prepared]
     outcomes = []
-    for (point, mode, quick, seeds), sampled in zip(prepared, worth, strict=True):
+    for (point, mode, fitted, quick, seeds), sampled in zip(prepared, worth, strict=True):
         if not sampled:
             problem = point.problem
             outcomes.append(
@@ -114,7 +117,8 @@ def compare(
         def report(fraction: float, done: int = done) -> None:
             progress("sampling", 0.1 + 0.8 * (done + fraction) / sum(worth))
 
-        outcomes.append(_sample(point, mode, seeds, settings, report))
+        chain = sampling.sample(point.problem.log_density, *fitted, seeds[1], settings, report)
+        outcomes.append(_outcome(point, mode, chain, seeds[2]))
     return sorted(outcomes, key=lambda o: -o.evidence.log)
 
 
@@ -123,8 +127,10 @@ def find_mode(point: LeastSquares) -> Mode:
     problem, n = point.problem, point.problem.n_physical
     stated = np.where(problem.is_stated[:n], 0.0, 1.0)  # stated priors are among the residuals already
     precision = point.point.jacobian.T @ point.point.jacobian + np.diag(stated / problem.prior_sd[:n] ** 2)
+    scale = 1 / np.sqrt(np.diag(precision))
+    weights, axes = np.linalg.eigh(precision * np.outer(scale, scale))
     root = np.zeros((len(point.z), len(point.z)))
-    root[:n, :n] = np.linalg.cholesky(np.linalg.inv(precision))
+    root[:n, :n] = scale[:, None] * (axes / np.sqrt(np.maximum(weights, SMALLEST_WEIGHT)))
     if problem.noise.estimated:
         root[n, n] = math.sqrt(0.5 / max(point.degrees_of_freedom, 1))
     start = np.clip(
@@ -133,16 +139,10 @@ def find_mode(point: LeastSquares) -> Mode:
     return laplace.find_mode(problem.log_density, start, root)
 
 
-def _sample(
-    point: LeastSquares,
-    mode: Mode,
-    seeds: Sequence[np.random.SeedSequence],
-    settings: Settings,
-    progress: Callable[[float], None],
-) -> Outcome:
+def _outcome(point: LeastSquares, mode: Mode, chain: Chain, seed: np.random.SeedSequence) -> Outcome:
+    """Return the outcome of a sampled candidate, with draws enough for its quantiles."""
     problem = point.problem
-    chain = sampling.sample(problem.log_density, mode, seeds[1], settings, progress)
-    found = evidence.bridge(problem.log_density, chain, seeds[2])
+    found = evidence.bridge(problem.log_density, chain, seed)
     ensembles, steps, walkers, p = chain.z.shape
     flat = chain.z.reshape(ensembles, steps * walkers, p)
     kept = flat[:, np.linspace(0, steps * walkers - 1, KEPT_DRAWS).astype(int)]

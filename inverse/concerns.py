@@ -6,13 +6,16 @@ from finback.candidates import Outcome
 from finback.estimate import CandidateScore, FitQuality, SamplerRecord, Summary
 from finback.findings import Finding, Severity
 from finback.models.validity import TRANSVERSE_BIOT_LIMIT
+from finback.quantity import format_number, pretty_unit
 from finback.rig import Rig
+from finback.summaries import OF_THE_JOINT
 
 MISFIT_P = 0.01
 CLEAR = 0.9  # probability from which the readings are said to support a candidate
 MENTIONED = 0.05  # and below which one is not named among those that cannot be told apart
 HEATER_MARGIN = 2.0  # standard uncertainties of its power
 
+SAID_WITH = {"joint_times_k": "joint", "base_heat_flux": "heat"}  # null for the reason given for the other
 APART = "state the conductivity or measure the heat into the fin"
 
 
@@ -34,45 +37,35 @@ def collect(
 
 def _undetermined(rig: Rig, found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
     """Return a finding for each quantity that is null, in the engineer's terms."""
-    findings = []
     read = {s.place for s in best.problem.measured.sensors}
     parted = "heat" in read or rig.conductivity is not None
-    ratio, product = found["h_over_k"], found["joint_times_k"]
-
-    def add(message: str, severity: Severity = "caution") -> None:
-        findings.append(Finding("not-determined", severity, message))
-
-    for name in ("h", "k"):
-        if found[name].median is None:
-            if ratio.median is not None and not parted:
-                text = f"{name} is not determined: the temperatures give only h/k = {ratio.median:.4g} 1/m"
-                add(f"{text}; {APART}.")
-            elif found[name].high95 is not None:
-                add(
-                    f"{name} is only limited: at most {found[name].high95:.3g} {found[name].unit} (95 %).",
-                )
-            else:
-                add(f"{name} is not determined by these readings.")
-    joint = found["joint"]
-    if joint.median is None:
-        if not best.problem.candidate.joint_possible:
-            add(
-                "The joint is not determined: that needs a temperature on the plate side of it.",
-                "note",
-            )
-        elif product.median is not None and not parted:
-            text = f"The joint is not determined: the readings give only R''·k = {product.median:.4g} m"
-            add(f"{text}; {APART}.")
-        elif joint.high95 is not None:
-            text = f"The joint is too good for these readings: at most {joint.high95:.2g} m² K/W (95 %)"
-            add(f"{text}.", "note")
-        else:
-            add("The joint is not determined by these readings.")
-    if ratio.median is None:
-        add("h/k is not determined: the temperatures along the fin don't tell how fast they fall.")
-    if found["base_temperature"].median is None:
-        add("The base temperature is not determined by these readings.")
+    findings = []
+    for name, summary in found.items():
+        said = name in SAID_WITH and found[SAID_WITH[name]].median is None
+        if summary.median is None and not said:
+            severity, reason = _reason(name, found, parted, best.problem.candidate.joint_possible)
+            message = f"{summary.label[0].upper()}{summary.label[1:]} {reason}."
+            findings.append(Finding("not-determined", severity, message, evidence={"quantity": name}))
     return findings
+
+
+def _reason(
+    name: str, found: Mapping[str, Summary], parted: bool, joint_possible: bool
+) -> tuple[Severity, str]:
+    """Return how grave it is that a quantity is null, and the rest of the sentence that says why."""
+    ratio, product, limit = found["h_over_k"].median, found["joint_times_k"].median, found[name].high95
+    if name in OF_THE_JOINT and not joint_possible:
+        return "note", "is not determined: that needs a temperature on the plate side of the joint"
+    if limit is not None:
+        unit = pretty_unit(found[name].unit)
+        return "note", f"is too small for these readings: at most {format_number(limit)} {unit} (95 %)"
+    if not parted and name == "joint" and product is not None:
+        return "caution", f"is not determined: the readings give only R''·k = {product:.4g} m; {APART}"
+    if not parted and name in ("h", "k") and ratio is not None:
+        return "caution", f"is not determined: the temperatures give only h/k = {ratio:.4g} 1/m; {APART}"
+    if not parted and name in ("heat", "base_heat_flux"):
+        return "caution", f"is not determined without a conductivity; {APART}"
+    return "caution", "is not determined by these readings"
 
 
 def _misfit(quality: FitQuality) -> list[Finding]:
@@ -99,16 +92,16 @@ def _validity(found: Mapping[str, Summary]) -> list[Finding]:
 
 
 def _heater(found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
-    """Return a finding where even the least heat that the readings allow is more than a heater supplies."""
-    least = found["heat"].low95
+    """Return a finding where the heat that the temperatures ask for is more than a heater supplies."""
+    heat = found["heat"].median
     measured = best.problem.measured
-    if least is None:
+    if heat is None:
         return []
     findings = []
     for sensor, power, sd in zip(measured.bounds, measured.bound_values, measured.bound_sds, strict=True):
-        if least > power + HEATER_MARGIN * sd:
+        if heat > power + HEATER_MARGIN * sd:
             message = (
-                f"At least {least:.3g} W must flow into the fin, but {sensor.name} supplies {power:.3g} W: "
+                f"{heat:.3g} W would have to flow into the fin, but {sensor.name} supplies {power:.3g} W: "
                 "the heat balance is impossible."
             )
             findings.append(Finding("heat-balance", "fault", message, sensor=sensor.name))

@@ -73,9 +73,8 @@ class Weighted:
     draws: Array
 
 
-def importance(log_density: LogDensity, proposal: Proposal, seed: np.random.SeedSequence) -> Weighted:
+def importance(log_density: LogDensity, proposal: Proposal, random: np.random.RandomState) -> Weighted:
     """Return the log evidence by importance sampling from a proposal, and draws resampled from it."""
-    random = np.random.RandomState(np.random.MT19937(seed))
     z = proposal.draw(DRAWS, random)
     ratio = log_density(z) - proposal.log_density(z)
     highest = float(ratio.max())

@@ -1,9 +1,9 @@
 """What the readings determine, what is taken from a statement, and what nothing determines.
 
-All in the coordinates of a problem and linear at one point. The wide default priors set the yardstick: a
-combination counts as determined when readings and stated values shrink its variance to a small part of what
-the default priors alone leave. No tolerance on a rank is needed, and weakly determined is a number, not a
-switch.
+All in the coordinates of a problem and linear at one point. The wide default priors set the yardstick: with
+S the covariance from all sources and W the precision of the wide priors, the share g'S W S g / g'S g of what
+is known of a combination g comes from the wide priors, that is from nowhere. No tolerance on a rank is
+needed, and weakly determined is a number, not a switch.
 """
 
 from dataclasses import dataclass
@@ -37,12 +37,18 @@ class Information:
 
     def variance(self, gradient: Array, readings: bool = True, stated: bool = True) -> float:
         """Return the variance of the combination gradient (p,) by the chosen sources and wide priors."""
-        precision = np.diag(self.default + stated * self.stated) + readings * self.readings
-        return float(gradient @ np.linalg.solve(precision, gradient))
+        return float(gradient @ self._response(gradient, readings, stated))
 
     def determines(self, gradient: Array) -> bool:
         """Tell whether readings and stated values determine the combination."""
-        return self.variance(gradient) <= DETERMINED * self.variance(gradient, readings=False, stated=False)
+        response = self._response(gradient, readings=True, stated=True)
+        return float(np.square(response) @ self.default) <= DETERMINED * float(gradient @ response)
+
+    def _response(self, gradient: Array, readings: bool, stated: bool) -> Array:
+        precision = np.diag(self.default + stated * self.stated) + readings * self.readings
+        scale = 1 / np.sqrt(np.diag(precision))
+        found: Array = scale * np.linalg.solve(precision * np.outer(scale, scale), scale * gradient)
+        return found
 
     def source(self, gradient: Array) -> DeterminedBy:
         """Tell what determines the combination."""

@@ -18,7 +18,7 @@ from finback.problem import Problem
 
 Array = NDArray[np.float64]
 
-SMALLEST_SIGMA, LARGEST_SIGMA = 1e-9, 1e6  # K; readings that a model meets exactly leave no noise to estimate
+SMALLEST_SIGMA, LARGEST_SIGMA = 1e-7, 1e6  # K; readings that a model meets exactly leave no noise to estimate
 NOISE_ROUNDS = 20
 LINEARISING_ROUNDS = 2
 

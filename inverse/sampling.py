@@ -3,25 +3,26 @@
 Several ensembles run independently, each from its own seed, and count as the chains of the diagnostics
 (walkers of one ensemble help each other, so R-hat and ESS over walkers mislead). Two moves alternate at
 random: independent draws from a Student t fitted to the posterior, which forget their past at once, and
-differential evolution, which needs no fit and finds what the fit misses. Where independent draws are seldom
-accepted the t is fitted again to what the ensembles have found. emcee's snooker move is not used: it is
-biased in the released version.
+differential evolution, which needs no fit and finds what the fit misses. emcee's snooker move is not used: it
+is biased in the released version.
 """
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import proposal as proposals
-from finback.laplace import LogDensity, Mode
+from finback.laplace import LogDensity
 from finback.proposal import Proposal
 
 Array = NDArray[np.float64]
 Progress = Callable[[float], None]
 
 SHARE_OF_INDEPENDENT = 0.8
+SHARE_WHERE_UNFIT = 0.4  # where the proposal fits badly and walkers in its tails would wait for it
+FIT = 0.3  # efficiency of a proposal that fits
+GROWTH = 1.1  # of the steps that the autocorrelation time asks for: it is still growing when it is judged
 WALKERS_FOR_AUTOCORRELATION = 16  # an ensemble: its average needs no more
 
 
@@ -29,21 +30,19 @@ WALKERS_FOR_AUTOCORRELATION = 16  # an ensemble: its average needs no more
 class Settings:
     """How long to sample.
 
-    `ensembles` and their `walkers`; `warm_up` steps thrown away; `block` steps between checks; `max_steps` a
-    stated end. Sampling stops when every ensemble is 50 autocorrelation times long, R-hat <= 1.01 and the
-    effective sample size of means and 95 % limits reaches 1000.
+    `ensembles` and their `walkers`; `warm_up` steps thrown away; `block` steps before the first check and at
+    least between checks; `max_steps` a stated end. Sampling stops when every ensemble is 50 autocorrelation
+    times long, R-hat <= 1.01 and the effective sample size of means and 95 % limits reaches 1000.
     """
 
     ensembles: int = 4
     walkers: int = 128
     warm_up: int = 30
     block: int = 100
-    max_steps: int = 6000
-    pilot: int = 300
+    max_steps: int = 4000
     autocorrelation_times: float = 50.0
     rhat: float = 1.01
     ess: float = 1000.0
-    acceptance: float = 0.15
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,33 +66,39 @@ class Chain:
 
 
 def sample(
-    log_density: LogDensity, mode: Mode, seed: np.random.SeedSequence, settings: Settings, progress: Progress
+    log_density: LogDensity,
+    proposal: Proposal,
+    efficiency: float,
+    seed: np.random.SeedSequence,
+    settings: Settings,
+    progress: Progress,
 ) -> Chain:
-    """Sample a posterior from its mode until it has converged or the stated end is reached.
+    """Sample a posterior until it has converged or the stated end is reached.
 
-    Arguments: log_density, from a block (n_sets, p) to (n_sets,); mode; seed; settings; progress, called with
-    the fraction done. Never raises for a chain that does not converge: `Chain.converged` says so.
+    Arguments: log_density, from a block (n_sets, p) to (n_sets,); proposal, fitted to it, and its efficiency
+    [1]; seed; settings; progress, called with the fraction done. Never raises for a chain that does not
+    converge: `Chain.converged` says so.
     """
     randoms = [np.random.RandomState(np.random.MT19937(child)) for child in seed.spawn(settings.ensembles)]
-    proposal = proposals.from_mode(mode)
-    ensembles = [_Ensemble(log_density, proposal, random, settings) for random in randoms]
+    share = SHARE_OF_INDEPENDENT if efficiency >= FIT else SHARE_WHERE_UNFIT
+    ensembles = [_Ensemble(log_density, proposal, share, random, settings) for random in randoms]
     for ensemble in ensembles:
         ensemble.run(settings.warm_up)
-    if np.mean([e.acceptance for e in ensembles]) < settings.acceptance:
-        ensembles = _refit(ensembles, settings)
-    steps = 0
+        ensemble.forget()
+    steps, target = 0, settings.block
     while True:
         for ensemble in ensembles:
-            ensemble.run(settings.block)
-        steps += settings.block
+            ensemble.run(target - steps)
+        steps = target
         z = np.stack([e.chain for e in ensembles])
         ess, rhat, autocorrelation = _judge(z)
-        long_enough = steps >= settings.autocorrelation_times * autocorrelation
-        converged = bool(long_enough and rhat <= settings.rhat and ess >= settings.ess)
-        progress(min(steps / (settings.autocorrelation_times * max(autocorrelation, 1.0)), 1.0))
+        wanted = settings.autocorrelation_times * autocorrelation
+        converged = bool(steps >= wanted and rhat <= settings.rhat and ess >= settings.ess)
+        progress(min(steps / max(wanted, 1.0), 1.0))
         if converged or steps >= settings.max_steps:
             heights = np.stack([e.log_density for e in ensembles])
             return Chain(z, heights, ess, rhat, autocorrelation, converged)
+        target = int(min(max(GROWTH * wanted, steps + settings.block), 2 * steps, settings.max_steps))
 
 
 def _judge(z: Array) -> tuple[float, float, float]:
@@ -111,55 +116,36 @@ class _Ensemble:
     """One emcee ensemble with its own random stream, started from draws of the proposal."""
 
     def __init__(
-        self, log_density: LogDensity, proposal: Proposal, random: np.random.RandomState, settings: Settings
+        self,
+        log_density: LogDensity,
+        proposal: Proposal,
+        share: float,
+        random: np.random.RandomState,
+        settings: Settings,
     ) -> None:
-        p = len(proposal.centre)
-        self._target, self._random, self._settings = log_density, random, settings
-        self.walkers = max(settings.walkers, 4 * p)
-        self._start = _finite_start(log_density, proposal, self.walkers, random)
-        self._set_proposal(proposal)
-
-    def _set_proposal(self, proposal: Proposal) -> None:
-        from emcee import EnsembleSampler
+        from emcee import EnsembleSampler, State
         from emcee.moves import DEMove
         from emcee.moves.mh import MHMove
 
-        def propose(coordinates: Array, random: np.random.RandomState) -> tuple[Array, Array]:
-            proposed = proposal.draw(len(coordinates), random)
+        def propose(coordinates: Array, generator: np.random.RandomState) -> tuple[Array, Array]:
+            proposed = proposal.draw(len(coordinates), generator)
             return proposed, proposal.log_density(coordinates) - proposal.log_density(proposed)
 
-        moves = [(MHMove(propose), SHARE_OF_INDEPENDENT), (DEMove(), 1 - SHARE_OF_INDEPENDENT)]
-        p = self._start.shape[1]
-        self._sampler = EnsembleSampler(self.walkers, p, self._target, moves=moves, vectorize=True)
-        self._state: object = None
+        p = proposal.centres.shape[1]
+        walkers = max(settings.walkers, 4 * p)
+        start = _finite_start(log_density, proposal, walkers, random)
+        moves = [(MHMove(propose), share), (DEMove(), 1 - share)]
+        self._sampler = EnsembleSampler(walkers, p, log_density, moves=moves, vectorize=True)
+        self._state = State(start, random_state=random.get_state())
 
     def run(self, steps: int) -> None:
-        """Take steps; the first call is the warm-up, whose draws are forgotten."""
-        from emcee import State
+        """Take steps."""
+        # emcee's own check of the start refuses posteriors that are narrow in one direction
+        self._state = self._sampler.run_mcmc(self._state, steps, skip_initial_state_check=True)
 
-        if self._state is None:
-            begin = State(self._start, random_state=self._random.get_state())
-            self._state = self._sampler.run_mcmc(begin, steps)
-            self.acceptance = float(np.mean(self._sampler.acceptance_fraction))
-            self._sampler.reset()
-        else:
-            self._state = self._sampler.run_mcmc(self._state, steps)
-
-    def explore(self, steps: int) -> Array:
-        """Take steps by differential evolution alone and return the second half's draws, flat (n, p)."""
-        from emcee import EnsembleSampler, State
-        from emcee.moves import DEMove
-
-        p = self._start.shape[1]
-        sampler = EnsembleSampler(self.walkers, p, self._target, moves=DEMove(), vectorize=True)
-        state = sampler.run_mcmc(State(self._start, random_state=self._random.get_state()), steps)
-        self._random.set_state(state.random_state)
-        self._start = np.array(state.coords)
-        return np.asarray(sampler.get_chain(flat=True, discard=steps // 2))
-
-    def continue_with(self, proposal: Proposal) -> None:
-        """Go on from the present walkers with another proposal."""
-        self._set_proposal(proposal)
+    def forget(self) -> None:
+        """Throw the draws so far away."""
+        self._sampler.reset()
 
     @property
     def chain(self) -> Array:
@@ -172,21 +158,11 @@ class _Ensemble:
         return np.asarray(self._sampler.get_log_prob())
 
 
-def _refit(ensembles: Sequence[_Ensemble], settings: Settings) -> list[_Ensemble]:
-    """Explore by differential evolution, fit the proposal to what was found, and warm up again."""
-    found = np.concatenate([e.explore(settings.pilot) for e in ensembles])
-    proposal = proposals.from_draws(found)
-    for ensemble in ensembles:
-        ensemble.continue_with(proposal)
-        ensemble.run(settings.warm_up)
-    return list(ensembles)
-
-
 def _finite_start(
     log_density: LogDensity, proposal: Proposal, n: int, random: np.random.RandomState
 ) -> Array:
     """Return n starting points of finite density: emcee says nothing when all start at -inf."""
-    found = np.empty((0, len(proposal.centre)))
+    found = np.empty((0, proposal.centres.shape[1]))
     for _ in range(50):
         trial = proposal.draw(2 * n, random)
         found = np.concatenate([found, trial[np.isfinite(log_density(trial))]])
