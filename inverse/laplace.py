@@ -37,7 +37,7 @@ def find_mode(log_density: LogDensity, start: Array, root: Array) -> Mode:
     """
     z, p = start, len(start)
     height = float(log_density(z[None])[0])
-    lengths = 0.5 ** np.arange(12)
+    lengths = 2.0 ** np.arange(4, -10, -1)  # long ones for where the curvature is not positive
     for _ in range(MAX_STEPS):
         gradient, curvature = _derivatives(log_density, z, root)
         weights, axes = np.linalg.eigh(curvature)
