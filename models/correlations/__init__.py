@@ -9,6 +9,7 @@ from finback.models.correlations.channels import Walls, bar_cohen_rohsenow, elen
 from finback.models.correlations.ducts import dittus_boelter, gnielinski, hausen_laminar, petukhov_friction
 from finback.models.correlations.forced_cylinder import churchill_bernstein, hilpert, zukauskas_cylinder
 from finback.models.correlations.forced_plate import (
+    TRANSITION,
     churchill_ozoe,
     flat_plate_laminar,
     flat_plate_mixed,
@@ -31,6 +32,7 @@ from finback.models.correlations.free_plate import (
 from finback.models.correlations.nusselt import Nusselt
 
 __all__ = [
+    "TRANSITION",
     "Layout",
     "Nusselt",
     "Walls",

@@ -110,7 +110,8 @@ def popiel_vertical_cylinder(
     prandtl [1], 0.01 to 100; slenderness L/D [1]. Length: height. Film temperature. Below
     L/D = Gr^(1/4)/35 the correction is small, and books leave it out.
     Source: C. O. Popiel, J. Wojtkowiak, K. Bober, Experimental Thermal and Fluid Science 32 (2007) 607-613,
-    fitted to the laminar boundary-layer solution of Cebeci (1974). Usual scatter 15 %.
+    fitted to the laminar boundary-layer solution of Cebeci (1974), whose tables end at 5 for the term in
+    brackets (recalled, not seen again). Usual scatter 15 %.
 
     Examples:
     A pin of 8 mm diameter and 120 mm height loses half as much again as a plate of its height:
@@ -127,7 +128,7 @@ def popiel_vertical_cylinder(
     flags = (
         Range("Ra", 0.0, 1e9, open_low=True).check(rayleigh, name)
         + Range("Pr", 0.01, 100.0).check(prandtl, name)
-        + Range("sqrt(32) Gr^(-1/4) L/D", 0.0, 20.0).check(curvature, name)
+        + Range("sqrt(32) Gr^(-1/4) L/D", 0.0, 5.0).check(curvature, name)
     )
     return Nusselt(
         name=name,
