@@ -48,7 +48,7 @@ BLACK, ORANGE, SKY, GREEN, BLUE, VERMILION, PURPLE = (
 METAL, INK, FAINT = "#e3e6ea", "#222222", "#8a9099"
 MARKERS = {"fin": ("o", BLUE), "plate": ("s", VERMILION), "air": ("D", GREEN)}
 DENSITY = LinearSegmentedColormap.from_list("density", ["#ffffff", SKY, BLUE])
-STYLE = {
+STYLE: dict[Any, Any] = {
     "font.family": "DejaVu Sans",
     "font.size": 9,
     "axes.edgecolor": FAINT,
@@ -99,8 +99,10 @@ def draw(estimate: Estimate) -> tuple[Picture, ...]:
 def _picture(name: str, figure: Figure) -> Picture:
     png, svg = io.BytesIO(), io.BytesIO()
     figure.set_dpi(DPI)  # the canvases' own print methods: print_figure would lay everything out twice
-    FigureCanvasAgg(figure).print_png(png, metadata={"Software": None}, pil_kwargs={"compress_level": 2})
-    FigureCanvasSVG(figure).print_svg(svg, metadata={"Date": None, "Creator": None})
+    raster: Any = FigureCanvasAgg(figure)  # matplotlib does not say what the print methods take
+    vector: Any = FigureCanvasSVG(figure)
+    raster.print_png(png, metadata={"Software": None}, pil_kwargs={"compress_level": 2})
+    vector.print_svg(svg, metadata={"Date": None, "Creator": None})
     return Picture(name, png.getvalue(), svg.getvalue())
 
 
@@ -127,7 +129,7 @@ def _drawing(scene: scenes.DrawingScene) -> Figure:
 def _draw_fin_and_plate(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
     gap = JOINT if scene.joint else 0.0
     low, half = lay.axis - lay.thickness / 2, lay.plate_half
-    edge = {"edgecolor": INK, "linewidth": 0.8}
+    edge: dict[str, Any] = {"edgecolor": INK, "linewidth": 0.8}
     plate = Rectangle((lay.left - gap - PLATE, lay.axis - half), PLATE, 2 * half, hatch="////")
     plate.set(facecolor="white", edgecolor=FAINT)
     axes.add_patch(plate)
@@ -198,7 +200,7 @@ def _draw_section(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
     else:
         scale = SECTION / max(scene.width, scene.thickness)
         wide, high = scene.width * scale, max(scene.thickness * scale, 0.02)
-        edges = {"edgecolor": INK, "linewidth": 0.8}
+        edges: dict[str, Any] = {"edgecolor": INK, "linewidth": 0.8}
         axes.add_patch(Rectangle((x - wide / 2, y - high / 2), wide, high, facecolor=METAL, **edges))
         for left in (x - wide / 2 - 0.08, x + wide / 2) if scene.guarded else ():
             axes.add_patch(
@@ -227,7 +229,7 @@ def _profile(scene: scenes.ProfileScene) -> Figure:
     axes.fill_between(scene.x, scene.low, scene.high, color=SKY, alpha=0.45, linewidth=0, label="95 % band")
     axes.plot(scene.x, scene.median, color=BLUE, linewidth=1.4, label="posterior median")
     if scene.air is not None:
-        dashes = {"linestyle": (0, (5, 3)), "linewidth": 1}
+        dashes: dict[str, Any] = {"linestyle": (0, (5, 3)), "linewidth": 1}
         axes.axhline(scene.air, color=GREEN, label="air, posterior median", **dashes)
     below.axhline(0, color=FAINT, linewidth=0.8)
     for excluded in (False, True):
@@ -279,7 +281,7 @@ def _bars(bars: tuple[scenes.Bar, ...]) -> Figure:
     axes = figure.add_axes((0.34, 0.48 / height, 0.63, 1 - 0.52 / height))
     rows = np.arange(len(bars))
     axes.barh(rows, [bar.percent for bar in bars], height=0.62, color=[BLUE] + [SKY] * (len(bars) - 1))
-    for row, bar in zip(rows, bars, strict=True):
+    for row, bar in enumerate(bars):
         axes.text(bar.percent + 1, row, bar.text, va="center", color=INK)
     axes.set_yticks(rows, [bar.name for bar in bars], **PLAIN)
     axes.set_xlim(0, 115)
@@ -337,7 +339,7 @@ def _draw_marginal(axes: Axes, quantity: scenes.Paired, legend: bool) -> None:
     axes.fill_between(quantity.grid, quantity.posterior, color=SKY, alpha=0.45, linewidth=0)
     axes.plot(quantity.grid, quantity.posterior, color=BLUE, linewidth=1.2, label="posterior")
     if quantity.prior is not None:
-        dashes = {"linestyle": (0, (4, 2)), "linewidth": 1.2}
+        dashes: dict[str, Any] = {"linestyle": (0, (4, 2)), "linewidth": 1.2}
         axes.plot(quantity.grid, quantity.prior, color=VERMILION, label="prior", **dashes)
     axes.set_ylim(0, 1.08 * float(quantity.posterior.max()))
     axes.set_yticks([])

@@ -104,11 +104,9 @@ def _put(folder: Path, fillers: Mapping[str, Callable[[Path], object]]) -> None:
     try:
         for name, fill in fillers.items():
             place = folder / name
-            handle, temporary = tempfile.mkstemp(
-                prefix=f".{place.name}.", suffix=place.suffix, dir=place.parent
-            )
+            handle, path = tempfile.mkstemp(prefix=f".{place.name}.", suffix=place.suffix, dir=place.parent)
             os.close(handle)
-            filled[place] = Path(temporary)
+            filled[place] = Path(path)
             fill(filled[place])
             filled[place].chmod(0o666 & ~_umask())  # as any new file, and not as a temporary one
         for place, temporary in filled.items():

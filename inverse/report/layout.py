@@ -76,7 +76,7 @@ def spread(wanted: Array, apart: float, low: float, high: float) -> Array:
     """Return places as near the wanted ones (ascending) as can be with `apart` between neighbours."""
     apart = min(apart, (high - low) / max(1, len(wanted) - 1))
     steps = apart * np.arange(len(wanted))
-    from_left = np.maximum.accumulate(wanted - steps) + steps
-    from_right = np.minimum.accumulate((wanted - steps)[::-1])[::-1] + steps
+    from_left: Array = np.maximum.accumulate(wanted - steps) + steps
+    from_right: Array = np.minimum.accumulate((wanted - steps)[::-1])[::-1] + steps
     places = (from_left + from_right) / 2  # each keeps the distance, so their mean does
-    return np.minimum(np.maximum(places, low + steps), high - steps[::-1])
+    return np.clip(places, low + steps, high - steps[::-1])

@@ -164,10 +164,10 @@ def profile(estimate: Estimate) -> ProfileScene:
         for row in estimate.table
         if row.place in ("fin", "plate", "air")
     )
-    lines = (values - ZERO_CELSIUS for values in (band.median, band.low95, band.high95))
+    median, low, high = (values - ZERO_CELSIUS for values in (band.median, band.low95, band.high95))
     air = estimate.parameters.get("air")
     length = 1e3 * estimate.rig.geometry["length"].value
-    return ProfileScene(length, air.median if air else None, 1e3 * band.x, *lines, points)
+    return ProfileScene(length, air.median if air else None, 1e3 * band.x, median, low, high, points)
 
 
 def pairs(estimate: Estimate) -> tuple[Paired, ...]:

@@ -9,6 +9,7 @@ from pathlib import PurePath
 from finback.estimate import CandidateScore, Estimate, ReadingFit, Summary
 from finback.findings import Finding
 from finback.report import method, phrases
+from finback.report.method import Equation
 
 ZERO_CELSIUS = 273.15
 SEVERITIES = ("fault", "caution", "note")
@@ -117,7 +118,7 @@ class View:
     assumptions: tuple[str, ...]
     priors: tuple[str, ...]
     method: str
-    equations: tuple[method.Equation, ...]
+    equations: tuple[Equation, ...]
     provenance: tuple[tuple[str, str], ...]
     cautions: tuple[str, ...]
     version: str
