@@ -81,7 +81,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         f"{best.draws.shape[0]} independent ensembles",
         draws=sum(o.n_draws for o in sampled),
         ess_min=min(o.ess_min for o in sampled if o.ess_min is not None),
-        rhat_max=max(o.rhat_max for o in sampled if o.rhat_max is not None),
+        rhat_max=_finite(max(o.rhat_max for o in sampled if o.rhat_max is not None)),
         seed=seed,
         converged=all(o.converged for o in sampled),
     )
@@ -104,6 +104,11 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         priors=_priors(best),
         provenance=_provenance(rig, readings),
     )
+
+
+def _finite(value: float) -> float | None:
+    """Return a number, or None for what is none: R-hat of ensembles that never moved."""
+    return value if np.isfinite(value) else None
 
 
 def _summaries(

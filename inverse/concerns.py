@@ -111,8 +111,9 @@ def _heater(found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
 def _convergence(sampler: SamplerRecord) -> list[Finding]:
     if sampler.converged:
         return []
+    rhat = "unknown" if sampler.rhat_max is None else f"{sampler.rhat_max:.3g}"
     message = (
-        f"The sampler has not converged (largest R-hat {sampler.rhat_max:.3g}, smallest effective sample "
+        f"The sampler has not converged (largest R-hat {rhat}, smallest effective sample "
         f"{sampler.ess_min:.0f}): treat every interval as provisional."
     )
     return [Finding("not-converged", "caution", message)]

@@ -47,7 +47,7 @@ def bridge(log_density: LogDensity, chain: Chain, seed: np.random.SeedSequence) 
     l_theirs = log_density(theirs) - proposal.log_density(theirs)
 
     # draws of one step are independent, those of one walker only after the autocorrelation time
-    n_ours = min(len(ours), ensembles * walkers * (steps - half) / chain.autocorrelation)
+    n_ours = max(1.0, min(len(ours), ensembles * walkers * (steps - half) / chain.autocorrelation))
     share = n_ours / (n_ours + DRAWS)
     centre = float(np.median(l_ours))
     a, b = np.exp(l_ours - centre), np.exp(l_theirs - centre)

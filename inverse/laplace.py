@@ -11,6 +11,7 @@ LogDensity = Callable[[Array], Array]
 
 MAX_STEPS = 60
 STEP = 1e-2  # of a standard deviation: differences of a curvature of about one
+SMALLEST_CURVATURE = 1e-3  # of the guess's, that is taken for positive
 TOLERANCE = 1e-5  # Newton decrement, in nats
 
 
@@ -35,13 +36,15 @@ def find_mode(log_density: LogDensity, start: Array, root: Array) -> Mode:
     Arguments: log_density, from a block (n_sets, p) to (n_sets,); start (p,), at finite density; root (p, p),
     a guess of the scale, covariance root @ root.T. Where the curvature is not positive the guess's is kept.
     """
-    z, p = start, len(start)
+    z = start
     height = float(log_density(z[None])[0])
-    lengths = 2.0 ** np.arange(4, -10, -1)  # long ones for where the curvature is not positive
+    shrinking = 0.5 ** np.arange(12)
+    growing = 2.0 ** np.arange(4, -10, -1)  # for where the curvature is not positive and bounds no step
     for _ in range(MAX_STEPS):
         gradient, curvature = _derivatives(log_density, z, root)
         weights, axes = np.linalg.eigh(curvature)
-        weights = np.where(weights > 1e-3, weights, np.maximum(np.abs(weights), 1.0))
+        lengths = shrinking if weights.min() > SMALLEST_CURVATURE else growing
+        weights = np.where(weights > SMALLEST_CURVATURE, weights, np.maximum(np.abs(weights), 1.0))
         step = axes @ ((axes.T @ gradient) / weights)
         decrement = float(gradient @ step)
         refined = root @ (axes / np.sqrt(weights))
@@ -53,7 +56,7 @@ def find_mode(log_density: LogDensity, start: Array, root: Array) -> Mode:
         if not heights[best] > height:
             return Mode(z, height, refined)
         z, height, root = trials[best], float(heights[best]), refined
-    return Mode(z, height, root) if p else Mode(z, height, np.eye(0))
+    return Mode(z, height, root)
 
 
 def _derivatives(log_density: LogDensity, z: Array, root: Array) -> tuple[Array, Array]:
