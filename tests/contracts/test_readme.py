@@ -75,12 +75,12 @@ def test_the_ci_script_runs_the_readmes_test_command_word_for_word(readme: str, 
 
 def test_the_rig_and_the_readings_shown_can_be_read(readme: str, tmp_path: Path) -> None:
     (shown_rig,), (shown_readings,) = blocks(readme, "toml"), blocks(readme, "csv")
-    assert tomllib.loads(shown_rig)["sensors"]["T1"] == {"at": "5 mm"}
+    assert tomllib.loads(shown_rig)["sensors"]["F1"] == {"at": "8 mm"}
     (tmp_path / "rig.toml").write_text(shown_rig, encoding="utf-8")
     (tmp_path / "readings.csv").write_text(shown_readings, encoding="utf-8")
     table = readings_reader.read(tmp_path / "readings.csv", rig.read(tmp_path / "rig.toml"))
-    assert table.runs == ("fan at 60 %", "fan at 80 %")
-    assert table.pick("fan at 60 %").values["TA"] == pytest.approx(273.15 + 22.0, abs=1e-9)
+    assert table.runs == ("morning", "after cleaning")
+    assert table.pick("morning").values["AI"] == pytest.approx(273.15 + 22.0, abs=1e-9)
 
 
 def test_the_python_example_runs(readme: str, capsys: pytest.CaptureFixture[str]) -> None:
