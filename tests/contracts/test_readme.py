@@ -70,7 +70,7 @@ def test_the_first_lines_are_the_job_and_two_commands(readme: str) -> None:
 
 def test_the_ci_script_runs_the_readmes_test_command_word_for_word(readme: str, root: Path) -> None:
     script = (root / ".ci" / "run").read_text(encoding="utf-8")
-    assert blocks(readme, "sh")[1].strip() in script.splitlines()
+    assert blocks(readme, "sh")[1].strip() in map(str.strip, script.splitlines())
 
 
 def test_the_rig_and_the_readings_shown_can_be_read(readme: str, tmp_path: Path) -> None:

@@ -1,5 +1,6 @@
 """The bundled rigs: complete, readable, right beside their source, and answering what their truth says."""
 
+import functools
 import json
 import runpy
 from pathlib import Path
@@ -16,6 +17,7 @@ INVENTED = ("bench-pin", "bench-pin-loose-joint")
 QUANTITIES = ("h", "k", "joint", "plate", "air", "base_temperature", "heat")
 
 
+@functools.cache
 def estimate_of(name: str) -> finback.Estimate:
     return finback.fit(datasets.path(name) / "rig.toml", datasets.path(name) / "readings.csv", seed=1)
 
