@@ -138,8 +138,9 @@ def _summaries(
     joint_mixture = summaries.mix(
         [outcomes[i] for i in with_joint], weights / weights.sum(), [evaluated[i] for i in with_joint]
     )
+    absent = float(probabilities[with_joint].sum()) < 0.5
     for name in summaries.OF_THE_JOINT:
-        found[name] = joint_judge.summarise(name, joint_mixture.values[name])
+        found[name] = joint_judge.summarise(name, joint_mixture.values[name], absent)
     return found
 
 

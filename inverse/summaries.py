@@ -2,7 +2,7 @@
 
 Each candidate adds draws in proportion to its probability, so that an interval carries their spread.
 The joint's resistance is averaged over the candidates that have a joint: whether there is one is a
-probability, how large it is a number.
+probability, how large it is a number. Where there is rather none, the number is an upper limit.
 """
 
 from collections.abc import Mapping, Sequence
@@ -20,7 +20,10 @@ from finback.identifiability import Information
 Array = NDArray[np.float64]
 
 OF_THE_JOINT = ("joint", "joint_times_k")
+LIMITED = {"h": ("h",), "k": ("k",), "joint": ("joint",), "joint_times_k": ("k", "joint")}
+"""Positive quantities that may have an upper limit only, and the parameters whose product each is."""
 ONE_SIDED = 0.95  # probability of a limit where only a limit exists
+BEYOND = 3.0  # times its limit: where a quantity would have been seen, if the limit is the readings'
 
 
 @dataclass(frozen=True)
@@ -70,8 +73,11 @@ class Judge:
     information: Information
     gradients: Mapping[str, Array]
 
-    def summarise(self, name: str, draws: Array) -> Summary:
-        """Return the summary of one quantity from its draws (any shape, SI units)."""
+    def summarise(self, name: str, draws: Array, absent: bool = False) -> Summary:
+        """Return the summary of one quantity from its draws (any shape, SI units).
+
+        `absent`: whether it is more probable than not that there is no such thing: then only a limit is given.
+        """
         label, unit = describe(name)
         exact = name in self.outcome.problem.fixed
         gradient = self.gradients.get(name)
@@ -80,7 +86,7 @@ class Judge:
         else:
             determined = self.information.determines(gradient)
         least_squares, standard_error = self._least_squares(name)
-        if not determined:
+        if absent or not determined:
             limit = self._upper_limit(name, draws)
             low = None if limit is None else 0.0
             return Summary(name, label, unit, None, None, None, low, limit, None, None, "prior")
@@ -122,21 +128,25 @@ class Judge:
         )
 
     def _upper_limit(self, name: str, draws: Array) -> float | None:
-        """Return the one-sided upper limit of a positive parameter, if larger values would have been seen.
+        """Return the one-sided upper limit of a positive quantity, if larger values would have been seen.
 
-        Were the parameter at its limit, the readings would determine it: then they exclude what lies beyond,
+        Were it a few times its limit, the readings would determine it: then they exclude what lies beyond,
         and the limit is theirs and not the prior's.
         """
         problem = self.outcome.problem
-        if name not in ("h", "k", "joint") or name not in problem.names:
+        if name not in LIMITED or name not in self.gradients:
             return None
         limit = float(np.quantile(draws, ONE_SIDED))
-        column = problem.names.index(name)
+        columns = [i for i, parameter in enumerate(problem.names) if parameter in LIMITED[name]]
         flat = self.outcome.draws.reshape(-1, self.outcome.draws.shape[-1])
-        at = flat[int(np.argmin(np.abs(np.exp(flat[:, column]) - limit)))]
+        known = sum(float(np.log(problem.fixed[part])) for part in LIMITED[name] if part in problem.fixed)
+        at = flat[int(np.argmin(np.abs(flat[:, columns].sum(axis=1) + known - np.log(limit))))].copy()
+        at[columns[-1]] += np.log(BEYOND)
         sigma = float(np.exp(at[-1])) if problem.noise.estimated else self.outcome.point.sigma
         there = identifiability.information(problem, at, sigma)
-        return limit if there.determines(np.eye(problem.n_physical)[column]) else None
+        gradient = np.zeros(problem.n_physical)
+        gradient[columns] = 1.0
+        return limit if there.determines(gradient) else None
 
 
 def judge(outcome: Outcome) -> Judge:
