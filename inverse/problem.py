@@ -22,6 +22,7 @@ Array = NDArray[np.float64]
 Values = Mapping[str, float | Array]
 
 LOG_TWO_PI = math.log(2 * math.pi)
+FINEST_NOISE = 1e-6  # K; finer than any reading, and what readings without errors are left with
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,6 +122,8 @@ class Problem:
         found: dict[str, float | Array] = dict(self.fixed)
         natural = np.where(self._logs, np.exp(np.clip(z, -LARGEST_LOG, LARGEST_LOG)), z)
         found.update(zip(self.names, natural.T, strict=True))
+        if self.noise.estimated:
+            found["noise"] = np.hypot(natural[:, -1], FINEST_NOISE)
         return found
 
     def build(
