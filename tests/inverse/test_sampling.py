@@ -57,7 +57,7 @@ def test_six_normal_unknowns(name: str, seed: int) -> None:
     assert_moments(draw(gaussian(mean, covariance), mode, seed), mean, np.sqrt(np.diag(covariance)))
 
 
-@pytest.mark.parametrize("name", SIX)
+@pytest.mark.parametrize("name", [pytest.param("independent", marks=pytest.mark.slow), "correlated"])
 def test_six_normal_unknowns_by_differential_evolution_alone(
     name: str, monkeypatch: pytest.MonkeyPatch
 ) -> None:
@@ -119,11 +119,13 @@ def test_two_far_modes_are_not_called_converged() -> None:
         near = [-0.5 * np.square((z - side * far) / 0.05).sum(axis=1) for side in (-1, 1)]
         return np.maximum(np.logaddexp(*near), -1e4)  # finite everywhere, so that walkers can start
 
-    chain = draw(two, Mode(np.zeros(3), 0.0, 60 * np.eye(3)), settings=Settings(max_steps=800))
+    chain = draw(two, Mode(np.zeros(3), 0.0, 60 * np.eye(3)), settings=Settings(max_steps=400))
     assert not chain.converged
 
 
-@pytest.mark.parametrize("width", [0.05, 0.3, 1.0])
+@pytest.mark.parametrize(
+    "width", [0.3, pytest.param(0.05, marks=pytest.mark.slow), pytest.param(1.0, marks=pytest.mark.slow)]
+)
 def test_two_modes_are_weighed_rightly_or_not_called_converged(width: float) -> None:
     def two(z: np.ndarray) -> np.ndarray:  # the right one has three quarters of the probability
         left, right = (-0.5 * np.square((z - centre) / width).sum(axis=1) for centre in (-8.0, 8.0))
