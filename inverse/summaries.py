@@ -76,7 +76,7 @@ class Judge:
     def summarise(self, name: str, draws: Array, absent: bool = False) -> Summary:
         """Return the summary of one quantity from its draws (any shape, SI units).
 
-        `absent`: whether it is more probable than not that there is no such thing: then only a limit is given.
+        `absent`: whether there is rather no such thing, more probably than not: then only a limit is given.
         """
         label, unit = describe(name)
         exact = name in self.outcome.problem.fixed
