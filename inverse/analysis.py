@@ -206,7 +206,7 @@ def _quality(best: Outcome, table: Sequence[ReadingFit]) -> FitQuality:
 
 def _band(outcomes: Sequence[Outcome], mixture: summaries.Mixture) -> ProfileBand:
     """Return the temperature along the fin with its 95 % band, averaged over candidates."""
-    x = np.linspace(0.0, outcomes[0].problem.rig.geometry["length"].value, BAND_POINTS)
+    x = np.linspace(0.0, outcomes[0].problem.rig.profile().length, BAND_POINTS)
     which, index = mixture.which.ravel(), mixture.index.ravel()
     picked = np.linspace(0, len(which) - 1, min(BAND_DRAWS, len(which))).astype(int)
     profiles = []

@@ -161,7 +161,7 @@ def _length_sensitivity(problem: Problem, z: Array, name: str) -> Array:
 def _temperature_slopes(problem: Problem, z: Array) -> Array:
     """Return dT/dx [K/m] at the fin sensors, by a difference that stays inside the fin."""
     x = problem.measured.positions
-    length = problem.rig.geometry["length"].value
+    length = problem.rig.profile().length
     step = LENGTH_STEP * length
     low, high = np.maximum(x - step, 0.0), np.minimum(x + step, length)
     found = problem.solve(problem.values(z[None]), np.concatenate([low, high])).temperatures[0]
