@@ -221,8 +221,9 @@ class Estimate:
 
     def __str__(self) -> str:
         """Return the main results as text that fits 80 columns."""
-        lines = [f"{self.rig.title}, run {self.readings.run}: {self.status}"]
-        lines += [f"  {summary.label:<26} {value}" for summary, value in self._shown()]
+        lines = textwrap.wrap(f"{self.rig.title}, run {self.readings.run}: {self.status}", 80)
+        for summary, value in self._shown():
+            lines += textwrap.wrap(f"  {summary.label:<26} {value}", 80, subsequent_indent=29 * " ")
         lines += textwrap.wrap(self.comparison, 78, initial_indent="  ", subsequent_indent="  ")
         for finding in self.findings:
             if finding.severity != "note":
