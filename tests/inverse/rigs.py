@@ -7,7 +7,7 @@ each hole, the fin's lengths, and the conductivity where the rig states one.
 """
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -46,10 +46,11 @@ class Truth:
     air: float = ZERO + 22.0
     tip: TipName = "convective"
     tip_temperature: float = ZERO + 30.0
+    lengths: Mapping[str, float] = field(default_factory=dict)  # those that differ from what the rig states
 
-    def solve(self, rig: Rig, x: np.ndarray, lengths: Mapping[str, float] | None = None) -> Solution:
-        """Solve the true fin at positions x [m]; lengths replaces those that the rig states."""
-        sizes = {name: q.value for name, q in rig.geometry.items()} | dict(lengths or {})
+    def solve(self, rig: Rig, x: np.ndarray) -> Solution:
+        """Solve the true fin at positions x [m]."""
+        sizes = {name: q.value for name, q in rig.geometry.items()} | dict(self.lengths)
         tips = {
             "adiabatic": AdiabaticTip(),
             "convective": ConvectiveTip(),
@@ -93,7 +94,7 @@ def pin_rig(
 
 def exact_readings(rig: Rig, truth: Truth = TRUTH, power: float | None = None) -> Readings:
     """Return what error-free sensors would read; power [W] is a heater's, the heat if left out."""
-    return _read(rig, truth, {}, {}, power)
+    return _read(rig, truth, {}, power)
 
 
 def draw(
@@ -104,12 +105,12 @@ def draw(
     A stated conductivity scatters about the truth, so the truth that belongs to it scatters about the
     statement; a noise that the rig leaves out is 0.15 K.
     """
-    lengths = {name: rng.normal(q.value, q.sd) for name, q in rig.geometry.items()}
+    truth = replace(truth, lengths={name: rng.normal(q.value, q.sd) for name, q in rig.geometry.items()})
     if rig.conductivity is not None and rig.conductivity.sd > 0:
         width = np.sqrt(np.log1p((rig.conductivity.sd / rig.conductivity.value) ** 2))
         truth = replace(truth, k=float(rig.conductivity.value * np.exp(width * rng.standard_normal())))
     holes = {s.name: s.position + rng.normal(0.0, s.position_sd) for s in rig.fin_sensors()}
-    exact = _read(rig, truth, lengths, holes, power)
+    exact = _read(rig, truth, holes, power)
     shared = {place: rng.standard_normal() for place in ("fin", "plate", "air", "heat", "heater")}
     values = {}
     for name, value in exact.values.items():
@@ -122,12 +123,10 @@ def draw(
     return Readings("drawn", values), truth
 
 
-def _read(
-    rig: Rig, truth: Truth, lengths: Mapping[str, float], holes: Mapping[str, float], power: float | None
-) -> Readings:
+def _read(rig: Rig, truth: Truth, holes: Mapping[str, float], power: float | None) -> Readings:
     fin = rig.fin_sensors()
     x = np.array([holes.get(s.name, s.position) for s in fin])
-    solution = truth.solve(rig, x, lengths)
+    solution = truth.solve(rig, x)
     values = dict(zip((s.name for s in fin), solution.temperatures[0].tolist(), strict=True))
     heat = float(solution.base_heat[0])
     others = {"plate": truth.plate, "air": truth.air, "heat": heat, "heater": power or heat}

@@ -7,11 +7,10 @@ Everything else here is invented: the truth is what the readings were computed f
 
 from collections.abc import Callable
 from dataclasses import replace
-from functools import cache
-from importlib.resources import files
 
 import numpy as np
 import pytest
+from fits import DATASETS, dataset
 from rigs import HOLES, ZERO, Truth, draw, exact_readings, pin_rig
 
 import finback
@@ -25,16 +24,9 @@ from finback.readings import Readings
 from finback.rig import Rig, Sensor
 from finback.sampling import Settings
 
-DATASETS = files("finback.datasets")
 STATED_K = Quantity(167.0, 8.35)
 TRUTH = Truth()
 NUMBERS = ("median", "mean", "sd", "low95", "high95", "least_squares", "standard_error")
-
-
-@cache
-def dataset(name: str) -> Estimate:
-    folder = DATASETS / name
-    return finback.fit(str(folder / "rig.toml"), str(folder / "readings.csv"), seed=1)
 
 
 def summary(estimate: Estimate, name: str) -> Summary:

@@ -110,7 +110,7 @@ def test_positions_and_lengths_enter_through_their_slopes(noise: float | None) -
         return TRUTH.solve(rig, problem.measured.positions + move).temperatures[0]
 
     def thicker(diameter: float) -> np.ndarray:
-        solution = TRUTH.solve(rig, problem.measured.positions, {"diameter": diameter})
+        solution = Truth(lengths={"diameter": diameter}).solve(rig, problem.measured.positions)
         return np.array([*solution.temperatures[0], TRUTH.plate, TRUTH.air, solution.base_heat[0]])
 
     covariance = stated_covariance(problem, 0.25)
