@@ -56,23 +56,24 @@ class Proposal:
         """Draw n vectors, (n, p). The sampler's own kind of generator is asked for, since emcee passes it."""
         c, p = self.centres.shape
         normal = random.standard_normal((n, p)) / np.sqrt(random.chisquare(FREEDOM, n) / FREEDOM)[:, None]
+        drawn: Array
         if c == 1:
-            return self.centres + normal @ self.roots[0].T
-        which = random.randint(c, size=n)
-        return self.centres[which] + np.einsum("nij,nj->ni", self.roots[which], normal)
+            drawn = self.centres + normal @ self.roots[0].T
+        else:
+            which = random.randint(c, size=n)
+            drawn = self.centres[which] + np.einsum("nij,nj->ni", self.roots[which], normal)
+        return drawn
 
     def log_density(self, z: Array) -> Array:
         """Return the log density of a block (n_sets, p) -> (n_sets,)."""
         c, p = self.centres.shape
         power = (FREEDOM + p) / 2
-        logs = np.empty((c, len(z)))
+        logs: Array = np.empty((c, len(z)))
         for i in range(c):
             scaled = (z - self.centres[i]) @ self._inverses[i].T
             logs[i] = self._constants[i] - power * np.log1p(np.einsum("ij,ij->i", scaled, scaled) / FREEDOM)
-        if c == 1:
-            return logs[0]
         highest = logs.max(axis=0)
-        found: Array = highest + np.log(np.exp(logs - highest).sum(axis=0))
+        found: Array = logs[0] if c == 1 else highest + np.log(np.exp(logs - highest).sum(axis=0))
         return found
 
 
