@@ -1,4 +1,4 @@
-"""Densities whose moments and evidence are known exactly, as the samplers take them: of a block (n_sets, p)."""
+"""Densities whose moments and evidence are known exactly, taking a block (n_sets, p) as the samplers want."""
 
 import math
 from collections.abc import Callable

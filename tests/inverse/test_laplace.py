@@ -16,7 +16,9 @@ def gaussian(mean: np.ndarray, covariance: np.ndarray) -> object:
 
 @pytest.mark.parametrize("p", range(1, 9))
 @pytest.mark.parametrize("start_at", [0.0, 30.0])
-def test_a_gaussian_gives_back_its_mean_and_covariance_and_holds_all_its_evidence(p: int, start_at: float) -> None:
+def test_a_gaussian_gives_back_its_mean_and_covariance_and_holds_all_its_evidence(
+    p: int, start_at: float
+) -> None:
     rng = np.random.default_rng(p)
     mean = rng.normal(size=p)
     root = rng.normal(size=(p, p)) * 10.0 ** rng.uniform(-3, 1, size=(p, 1))
@@ -25,7 +27,9 @@ def test_a_gaussian_gives_back_its_mean_and_covariance_and_holds_all_its_evidenc
     guess = np.diag(sds * 10.0 ** rng.uniform(-0.7, 0.7, size=p))
     found = find_mode(gaussian(mean, covariance), mean + start_at * sds * rng.choice([-1, 1], size=p), guess)
     assert np.abs((found.z - mean) / sds).max() < 0.01
-    np.testing.assert_allclose(found.root @ found.root.T / np.outer(sds, sds), covariance / np.outer(sds, sds), atol=1e-3)
+    np.testing.assert_allclose(
+        found.root @ found.root.T / np.outer(sds, sds), covariance / np.outer(sds, sds), atol=1e-3
+    )
     assert found.log_evidence == pytest.approx(0.0, abs=1e-3)
 
 
@@ -53,7 +57,9 @@ def test_the_mode_is_found_from_where_the_curvature_is_not_positive() -> None:
 
 def test_one_of_two_modes_is_found_from_the_saddle_between_them() -> None:
     def two(z: np.ndarray) -> np.ndarray:
-        return np.logaddexp(-0.5 * np.square(z[:, 0] - 3), -0.5 * np.square(z[:, 0] + 3)) - 0.5 * np.square(z[:, 1])
+        return np.logaddexp(-0.5 * np.square(z[:, 0] - 3), -0.5 * np.square(z[:, 0] + 3)) - 0.5 * np.square(
+            z[:, 1]
+        )
 
     found = find_mode(two, np.array([0.05, 1.0]), np.eye(2))
     np.testing.assert_allclose(np.abs(found.z), [3.0, 0.0], atol=0.02)
