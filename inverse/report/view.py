@@ -299,7 +299,7 @@ def _findings(findings: tuple[Finding, ...]) -> tuple[FindingRow, ...]:
 def _loo_note(estimate: Estimate) -> str:
     if all(score.loo is None for score in estimate.candidates):
         return ""
-    n = sum(row.excluded is None for row in estimate.table)
+    n = len(estimate.draws.sensors)  # a heater only bounds the heat and is not left out
     return (
         "LOO: log density expected for each reading when it is left out, summed. "
         f"Few readings make LOO indicative only; here there are {n}."
