@@ -31,6 +31,9 @@ class Profile(Protocol):
     def side_area(self) -> float:
         """Surface of the sides, tip face excluded [m²]."""
 
+    def __hash__(self) -> int:
+        """Return the same number for the same shape."""
+
 
 def require_positive(**lengths: float) -> None:
     """Refuse a length [m] or an area [m²] that is not positive and finite, by its giver's name for it."""

@@ -8,6 +8,7 @@ import pytest
 from finback.models import (
     AdiabaticTip,
     BaseTemperature,
+    Cone,
     ConvectiveTip,
     Fin,
     FixedTip,
@@ -335,8 +336,8 @@ def test_solving_changes_nothing_it_was_given():
 # --- what is added later --------------------------------------------------------------------------
 
 
-class Cone:
-    """A pin that ends in a point: a profile without a solver so far."""
+class Spike:
+    """A pin that ends in a point: a profile of one's own."""
 
     length = 0.1
 
@@ -360,13 +361,29 @@ class FreeConvection:
 
 
 def test_a_new_shape_needs_no_base_class():
-    assert isinstance(Cone(), Profile)
+    assert isinstance(Spike(), Profile)
     assert isinstance(FreeConvection(), SurfaceLaw)
+
+
+@every_base
+@pytest.mark.parametrize("kind", ["adiabatic", "side", "own"])
+def test_a_shape_of_ones_own_is_solved_as_ours_is(kind, base):
+    own, ours = (run(TIPS[kind], base, profile=shape) for shape in (Spike(), Cone(0.1, 0.008)))
+    assert own.temperatures - AIR == pytest.approx(ours.temperatures - AIR, rel=1e-9)
+    for name in ("base_heat", "tip_heat"):
+        assert getattr(own, name) == pytest.approx(getattr(ours, name), rel=1e-9)
+
+
+def test_what_is_no_profile_is_refused_by_name():
+    class Sketch:
+        length = 0.1
+
+    with pytest.raises(TypeError, match=r"^Sketch is no profile: it needs length, area, perimeter, "):
+        run(AdiabaticTip(), BaseTemperature(PLATE), profile=Sketch())
 
 
 def test_a_fin_without_a_solver_is_refused_by_name():
     base = BaseTemperature(PLATE)
-    with pytest.raises(TypeError, match=r"^no solver for Cone with UniformCoefficient$"):
-        solve(Fin(Cone(), K, UniformCoefficient(H), AdiabaticTip()), base, AIR, X)
-    with pytest.raises(TypeError, match=r"^no solver for Uniform with FreeConvection$"):
-        solve(Fin(PROFILE, K, FreeConvection(), AdiabaticTip()), base, AIR, X)
+    for profile, name in ((Spike(), "Spike"), (PROFILE, "Uniform")):
+        with pytest.raises(TypeError, match=rf"^no solver for {name} with FreeConvection$"):
+            solve(Fin(profile, K, FreeConvection(), AdiabaticTip()), base, AIR, X)
