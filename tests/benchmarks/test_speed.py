@@ -13,7 +13,7 @@ import baseline
 import numpy as np
 import pytest
 
-from finback import candidates, diagnostics, optimum, posing, readings, rig, sampling
+from finback import candidates, diagnostics, optimum, posing, proposal, readings, rig, sampling
 from finback.datasets import path
 from finback.parameters import ZERO_CELSIUS
 
@@ -67,11 +67,14 @@ def test_forward_evaluation(benchmark, problem):
 def test_sampling(benchmark, problem):
     diagnostics.ensemble_rhat(np.random.default_rng(0).normal(size=(4, 100, 2, 1)))  # loads arviz
     point = optimum.fit(problem)
-    mode = candidates.find_mode(point)
+    start = proposal.from_mode(candidates.find_mode(point))
     seed = np.random.SeedSequence(1)
 
     def draw():
-        return sampling.sample(problem.log_density, mode, seed, sampling.Settings(), lambda _fraction: None)
+        fitted = proposal.adapt(problem.log_density, start, np.random.RandomState(1))
+        return sampling.sample(
+            problem.log_density, *fitted, seed, sampling.Settings(), lambda _fraction: None
+        )
 
     chain = benchmark.pedantic(draw, rounds=3)
     ours = chain.ess_min / benchmark.stats.stats.min
