@@ -1,9 +1,9 @@
 """Fit synthetic repeats of an invented rig and print, as JSON, what each estimate says of the truth.
 
-Run `python tests/quality/coverage_study.py bench 0 100` for the first hundred repeats of the bench rig. A script of its own, so that
-repeats can go over several processes. Every error that the rig states is drawn anew for each repeat: noise,
-a calibration error for each place, hole positions, the diameter, the heat; and the conductivity from what the
-rig states of it.
+Run `python tests/quality/coverage_study.py bench 0 100` for the first hundred repeats of the bench rig. It is
+a script of its own so that repeats can go over several processes. Every error that the rig states is drawn anew
+for each repeat: noise, a calibration error for each place, hole positions, the diameter, the heat; and the
+conductivity from what the rig states of it.
 """
 
 import json
@@ -14,10 +14,10 @@ import numpy as np
 
 sys.path.insert(0, str(Path(__file__).parents[1] / "inverse"))
 
-from rigs import ZERO, Truth, draw, pin_rig  # noqa: E402  found by the line above
+from rigs import ZERO, Truth, draw, pin_rig
 
-import finback  # noqa: E402
-from finback.quantity import Quantity  # noqa: E402
+import finback
+from finback.quantity import Quantity
 
 K = Quantity(167.0, 8.35)
 RIGS = {
