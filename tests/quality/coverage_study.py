@@ -1,9 +1,9 @@
 """Fit synthetic repeats of an invented rig and print, as JSON, what each estimate says of the truth.
 
-Run `python tests/quality/coverage_study.py bench 0 100` for the first hundred repeats of the bench rig. It is a
-script of its own so that repeats can go over several processes. Every error that the rig states is drawn anew
-for each repeat: noise, a calibration error for each place, hole positions, the diameter, the heat; and the
-conductivity from what the rig states of it.
+Run `python tests/quality/coverage_study.py bench 0 100` for the first hundred repeats of the bench rig. It is
+a script of its own so that repeats can go over several processes. Every error that the rig states is drawn
+anew for each repeat: noise, a calibration error for each place, hole positions, the diameter, the heat; and
+the conductivity from what the rig states of it.
 """
 
 import json
