@@ -258,11 +258,10 @@ def _priors(best: Outcome) -> tuple[str, ...]:
 
 
 def _provenance(rig: Rig, readings: Readings) -> Provenance:
-    inputs = {
-        source.name: digest
-        for source, digest in ((rig.source, rig.sha256), (readings.source, readings.sha256))
-        if source is not None and digest is not None
-    }
+    files = [(rig.source, rig.sha256), (readings.source, readings.sha256)]
+    if rig.shape_file is not None:
+        files.append((rig.shape_file.source, rig.shape_file.sha256))
+    inputs = {source.name: digest for source, digest in files if source is not None and digest is not None}
     versions = {"python": ".".join(map(str, sys.version_info[:3]))} | {
         name: version(name) for name in PACKAGES
     }

@@ -6,11 +6,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from finback.models import effectiveness, efficiency, transverse_biot
+from finback.models import Profile, effectiveness, efficiency, transverse_biot
 from finback.parameters import ZERO_CELSIUS
 from finback.problem import Problem
 
 Array = NDArray[np.float64]
+
+PLACES_LOOKED_AT = 65  # along a fin, for where it is thickest
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,11 +58,19 @@ def evaluate(problem: Problem, z: Array) -> dict[str, Array]:
         "base_heat_flux": solution.base_heat / area,
         "efficiency": efficiency(fin, solution, air),
         "effectiveness": effectiveness(fin, solution, air),
-        "transverse_biot": np.asarray(transverse_biot(h, area, perimeter, k)),
+        "transverse_biot": np.asarray(transverse_biot(h, *_thickest(fin.profile), k)),
     }
     if "joint" in values:
         found["joint_times_k"] = np.asarray(values["joint"]) * k
     return found
+
+
+def _thickest(profile: Profile) -> tuple[float, float]:
+    """Return section [m²] and perimeter [m] where the one is largest for the other, and so a fin thickest."""
+    x = np.linspace(0.0, profile.length, PLACES_LOOKED_AT)
+    area, perimeter = profile.area(x), profile.perimeter(x)
+    at = int(np.argmax(np.divide(area, perimeter, out=np.zeros_like(area), where=perimeter > 0)))
+    return float(area[at]), float(perimeter[at])
 
 
 def gradients(problem: Problem, z: Array) -> dict[str, Array]:

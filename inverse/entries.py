@@ -34,19 +34,17 @@ def quantity(dimension: Dimension) -> Callable[[object], Quantity]:
     return lambda text: _parsed(text, dimension)
 
 
-def choice(what: str, known: tuple[str, ...], later: tuple[str, ...] = ()) -> Callable[[object], str]:
-    """Return the function that takes one of the known words and says which ones come later."""
+def choice(what: str, known: tuple[str, ...]) -> Callable[[object], str]:
+    """Return the function that takes one of the known words."""
 
     def choose(word: object) -> str:
+        every = f"write one of {listed(known, len(known))}"
         if not isinstance(word, str):
-            raise EntryError(f"this is no {what}", f"write one of {listed(known)}")
+            raise EntryError(f"this is no {what}", every)
         if word in known:
             return word
-        if word in later:
-            problem = f"this version does not have the {what} {quoted(word)} yet"
-            raise EntryError(problem, f"write one of {listed(known)}")
         near = nearest(word, known)
-        remedy = f"the nearest known one is {quoted(near)}" if near else f"write one of {listed(known)}"
+        remedy = f"the nearest known one is {quoted(near)}" if near else every
         raise EntryError(f"{quoted(word)} is no {what}", remedy)
 
     return choose
@@ -61,12 +59,17 @@ def later(problem: str, instead: str) -> Callable[[object], NoReturn]:
     return refuse
 
 
-def title(text: object) -> str:
-    """Read a title: one printable line."""
-    if not isinstance(text, str) or not text.strip() or len(text) > LONGEST_TITLE or not text.isprintable():
-        remedy = f"write one line of 1 to {LONGEST_TITLE} printable characters in quotes"
-        raise EntryError("this is no title", remedy)
-    return text.strip()
+def line(what: str, longest: int = LONGEST_TITLE) -> Callable[[object], str]:
+    """Return the function that takes one printable line: a title, a name."""
+
+    def take(text: object) -> str:
+        fits = isinstance(text, str) and bool(text.strip()) and len(text) <= longest and text.isprintable()
+        if not isinstance(text, str) or not fits:
+            remedy = f"write one line of 1 to {longest} printable characters in quotes"
+            raise EntryError(f"this is no {what}", remedy)
+        return text.strip()
+
+    return take
 
 
 def positive(value: Quantity) -> Quantity:
@@ -77,10 +80,17 @@ def positive(value: Quantity) -> Quantity:
 
 
 def narrow(value: Quantity) -> Quantity:
-    """Check that a positive quantity is known better than to its own size."""
-    if value.sd >= value.value:
+    """Check that a quantity is known better than to its own size; zero is known exactly."""
+    if value.sd > 0 and value.sd >= value.value:
         problem = f"the uncertainty in {quoted(value.text)} is as large as the value"
         raise EntryError(problem, "write a standard uncertainty smaller than the value")
+    return value
+
+
+def not_negative(value: Quantity) -> Quantity:
+    """Check that a quantity is zero or above."""
+    if value.value < 0:
+        raise EntryError(f"{quoted(value.text)} is negative", "write zero or a positive value")
     return value
 
 
@@ -90,6 +100,14 @@ def from_base(value: Quantity) -> Quantity:
         raise EntryError(
             f"{quoted(value.text)} is negative", "write the distance from the base towards the tip"
         )
+    return value
+
+
+def up_to_saturation(value: Quantity) -> Quantity:
+    """Check a relative humidity."""
+    if not 0 <= value.value <= 1:
+        problem = f"{quoted(value.text)} is no relative humidity"
+        raise EntryError(problem, 'write one from 0 % to 100 %, such as "45 %"')
     return value
 
 

@@ -112,7 +112,7 @@ def draw(rig: Rig) -> str:
     """
     from rich.cells import cell_len
 
-    length = rig.geometry["length"].value
+    length = rig.length
     names, marks, free = [" "] * (DRAWING + 8), ["═"] * DRAWING, 0
     for sensor in rig.fin_sensors():
         column = round((sensor.position or 0.0) / length * (DRAWING - 1))

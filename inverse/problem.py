@@ -133,8 +133,13 @@ class Problem:
         return self.rig.build(values, self.candidate.tip, changes)
 
     def solve(self, values: Values, x: Array, changes: Mapping[str, float] | None = None) -> Solution:
-        """Solve the fin for values by name at positions x [m]."""
+        """Solve the fin for values by name at positions x [m]; `changes` replaces lengths [m].
+
+        A sensor that a shorter fin would leave outside reads its tip.
+        """
         fin, base, air = self.build(values, changes)
+        if changes is not None:
+            x = np.minimum(x, fin.profile.length)
         return solve(fin, base, air, x)
 
     def predict(self, z: Array, changes: Mapping[str, float] | None = None) -> Array:

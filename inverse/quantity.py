@@ -44,6 +44,10 @@ Dimension = Literal[
     "conductivity",
     "coefficient",
     "resistance",
+    "area",
+    "speed",
+    "pressure",
+    "humidity",
     "relative",
 ]
 
@@ -64,8 +68,14 @@ KINDS: Mapping[Dimension, _Kind] = {
     "conductivity": _Kind({"W": 1, "m": -1, "K": -1}, "a conductivity", "167 W/(m K)"),
     "coefficient": _Kind({"W": 1, "m": -2, "K": -1}, "a heat transfer coefficient", "45 W/(m^2 K)"),
     "resistance": _Kind({"m": 2, "K": 1, "W": -1}, "an area resistance", "5e-5 m^2 K/W"),
+    "area": _Kind({"m": 2}, "an area", "50 mm^2"),
+    "speed": _Kind({"m": 1, "s": -1}, "a speed", "2.5 m/s"),
+    "pressure": _Kind({"kg": 1, "m": -1, "s": -2}, "a pressure", "98 kPa"),
+    "humidity": _Kind({}, "a relative humidity", "45 %"),
     "relative": _Kind({}, "a share of the value", "3 %"),
 }
+PER_CENT = ("humidity", "relative")
+"""Dimensions whose unit is %; an uncertainty in per cent of such a value is an amount, no share of it."""
 
 SCALES: Mapping[str, tuple[float, float]] = {
     "K": (1.0, 0.0),
@@ -183,7 +193,7 @@ def _uncertainty(part: str, value: float, dimension: Dimension, text: str) -> fl
     if unit == "%" and dimension == "temperature difference":
         problem = f"{quoted(text)} has an uncertainty in per cent, which means nothing for a temperature"
         raise InputError(None, None, problem, 'write a difference, such as "+/- 0.5 K"')
-    if unit == "%" and dimension != "relative":
+    if unit == "%" and dimension not in PER_CENT:
         return abs(value) * number / 100
     return number * scale(unit, dimension)[0]
 
@@ -205,8 +215,8 @@ def scale(unit: str, dimension: Dimension) -> tuple[float, float]:
         if plain not in _SCALE_NAMES:
             raise unfit
         return SCALES[_SCALE_NAMES[plain]]
-    if dimension == "relative" or plain == "%":
-        if dimension != "relative" or plain != "%":
+    if dimension in PER_CENT or plain == "%":
+        if dimension not in PER_CENT or plain != "%":
             raise unfit
         return 0.01, 0.0
     # "W/m K" is W K/m by the rules and W/(m K) by habit, and "W/mK" is meant so too. Only one reading has

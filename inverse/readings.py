@@ -7,7 +7,6 @@ not measured. Other columns are kept as text.
 
 import hashlib
 import math
-import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -17,7 +16,7 @@ from finback.columns import Column, Columns, assign, is_empty
 from finback.errors import InputError
 from finback.rig import Rig, read_file
 from finback.sensors import RUN_COLUMN
-from finback.table import WORKBOOK_START, Row, parse_text, parse_workbook
+from finback.table import WORKBOOK_START, Row, parse_text, parse_workbook, to_number
 from finback.wording import listed, nearest, plain, quoted
 
 LONGEST_RUN = 120
@@ -26,8 +25,6 @@ LARGEST_FILE = 200_000_000
 
 HOTTEST = 3000.0 + 273.15
 """No fin is hotter [K]: tungsten melts at 3422 °C, and a thermometer that says more is broken."""
-
-_NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,4})?")
 
 
 @dataclass(frozen=True)
@@ -114,14 +111,12 @@ class Table:
         if is_empty(cell):
             return None
         place = f"row {row[0]}, column {plain(column.sensor.name)}"
-        text = cell.replace("−", "-")
-        if self.decimal_comma:
-            text = text.replace(",", ".")
-        if not _NUMBER.fullmatch(text):
+        number = to_number(cell, self.decimal_comma)
+        if number is None:
             raise InputError(
                 self.source, place, f"{quoted(cell)} is no number", "write a number or leave it empty"
             )
-        value = float(text) * column.factor + column.offset
+        value = number * column.factor + column.offset
         if not math.isfinite(value):
             raise InputError(
                 self.source, place, f"{quoted(cell)} is too large", "write a number or leave it empty"

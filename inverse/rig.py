@@ -6,8 +6,8 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from pathlib import Path
 from types import MappingProxyType
@@ -16,6 +16,7 @@ from typing import TYPE_CHECKING, Any, Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from finback import handbook, sensors, shapes, surroundings
 from finback.errors import InputError
 from finback.findings import Finding
 from finback.models import (
@@ -27,14 +28,17 @@ from finback.models import (
     FixedTip,
     InfiniteTip,
     Joint,
+    Profile,
     Tip,
-    Uniform,
     UniformCoefficient,
-    pin,
-    rectangular,
 )
+from finback.models.materials import Material
 from finback.quantity import Quantity
-from finback.sensors import Sensor, SensorPlace, assumed, place_sensors
+from finback.sensors import Sensor, SensorPlace
+from finback.shape_table import ShapeFile, parse
+from finback.shapes import SHAPES
+from finback.surroundings import Surroundings
+from finback.wording import plain
 
 if TYPE_CHECKING:
     from finback.rig_file import RigSection
@@ -47,20 +51,15 @@ Values = float | NDArray[np.float64]
 LARGEST_FILE = 1_000_000
 """Bytes of the largest rig.toml that is read."""
 
-LENGTHS: Mapping[str, tuple[str, ...]] = {
-    "pin": ("length", "diameter"),
-    "rectangular": ("length", "width", "thickness"),
-}
-"""The lengths that describe each profile, named as in [fin]."""
-
 
 @dataclass(frozen=True)
 class Rig:
     """A rig as described in rig.toml, every number in SI units.
 
-    `geometry`: the keys of [fin] that are lengths (length, diameter, width, thickness), as quantities in m.
-    `tip` None: candidates are compared. `conductivity` None: a wide prior. `assumed`: defaults that were
-    used, each an `assumed` finding.
+    `geometry`: the keys of [fin] that are lengths (length, diameter, width, thickness and the like), as
+    quantities in m; `shape_file`, the table of a profile that is given by one. `tip` None: candidates are
+    compared. `conductivity` None: a wide prior; `material`, its name; `handbook`, where that name, and no
+    number, is what tells the conductivity. `assumed`: defaults that were used, each an `assumed` finding.
     """
 
     title: str
@@ -76,6 +75,11 @@ class Rig:
     assumed: tuple[Finding, ...] = ()
     source: Path | None = None
     sha256: str | None = None
+    slant_surface: bool = False
+    shape_file: ShapeFile | None = None
+    material: str | None = None
+    handbook: Material | None = None
+    surroundings: Surroundings = field(default_factory=Surroundings)
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "geometry", MappingProxyType(dict(self.geometry)))
@@ -98,15 +102,34 @@ class Rig:
         """Return the sensors along the fin, from base to tip."""
         return self.sensors_on("fin")
 
-    def profile(self, changes: Mapping[str, float] | None = None) -> Uniform:
+    def profile(self, changes: Mapping[str, float] | None = None) -> Profile:
         """Return the fin's profile.
 
         Argument: changes, lengths [m] that replace those of the rig, by their key in [fin].
         """
-        lengths = {name: quantity.value for name, quantity in self.geometry.items()} | dict(changes or {})
-        if self.profile_name == "pin":
-            return pin(**lengths)
-        return rectangular(**lengths, guarded_edges=self.guarded_edges)
+        if changes is None:
+            return self._as_drawn
+        return self._made(changes)
+
+    @property
+    def length(self) -> float:
+        """Length of the fin from base to tip [m]."""
+        return self._as_drawn.length
+
+    @property
+    def has_tip_face(self) -> bool:
+        """Whether the fin ends in a face that may lose heat; a sharp one does not."""
+        return shapes.has_tip_face(self._as_drawn)
+
+    def warmed(self, temperature: float) -> Rig:
+        """Return the rig with its conductivity as at a temperature [K], if it is a handbook's."""
+        if self.handbook is None:
+            return self
+        return replace(
+            self,
+            conductivity=handbook.conductivity(self.handbook, temperature),
+            assumed=(*handbook.without(self.assumed), *handbook.findings(self.handbook, temperature)),
+        )
 
     def build(
         self, values: Mapping[str, Values], tip: TipName, changes: Mapping[str, float] | None = None
@@ -126,13 +149,18 @@ class Rig:
             base = BaseTemperature(values["plate"])
         else:
             base = BaseTemperature(values["base_temperature"])
-        profile = self._as_drawn if changes is None else self.profile(changes)
-        fin = Fin(profile, values["k"], UniformCoefficient(values["h"]), _tip(tip, values))
+        fin = Fin(self.profile(changes), values["k"], UniformCoefficient(values["h"]), _tip(tip, values))
         return fin, base, values["air"]
 
     @cached_property
-    def _as_drawn(self) -> Uniform:
-        return self.profile()
+    def _as_drawn(self) -> Profile:
+        return self._made({})
+
+    def _made(self, changes: Mapping[str, float]) -> Profile:
+        if self.shape_file is not None:
+            return self.shape_file.table
+        lengths = {name: quantity.value for name, quantity in self.geometry.items()} | dict(changes)
+        return SHAPES[self.profile_name].profile(lengths, self.guarded_edges, self.slant_surface)
 
 
 _TIPS: Mapping[str, Tip] = {
@@ -186,80 +214,75 @@ def _rig(document: Mapping[str, Any], source: Path | None, sha256: str | None) -
     from finback.rig_file import check
 
     section = check(document, source)
-    geometry = _geometry(section, source)
-    sensors = place_sensors(section.sensors, geometry["length"], source)
-    _check_together(section, sensors, source)
-    return Rig(
+    fin, stated = section.fin, section.material.conductivity
+    name = section.material.name
+    material = handbook.look_up(name, source) if name is not None and stated is None else None
+    rig = Rig(
         title=section.title,
-        profile_name=section.fin.profile,
-        geometry=geometry,
-        sensors=sensors,
-        guarded_edges=section.fin.edges == "guarded",
-        tip=section.fin.tip,
-        tip_temperature=section.fin.tip_temperature,
-        conductivity=section.material.conductivity,
+        profile_name=fin.profile,
+        geometry=shapes.measure(fin, source),
+        sensors={},
+        guarded_edges=fin.edges == "guarded",
+        tip=fin.tip,
+        tip_temperature=fin.tip_temperature,
+        conductivity=stated,
         expected_joint=section.joint.expected if section.joint else None,
         expected_coefficient=section.air.expected_h,
-        assumed=(*_assumed(section), *assumed(section.sensors, sensors)),
         source=source,
         sha256=sha256,
+        slant_surface=fin.surface == "slant",
+        shape_file=_shape_file(fin.file, source),
+        material=name,
+        handbook=material,
     )
+    profile = _drawn(rig)
+    shapes.check_options(fin, profile, source)
+    placed = sensors.place_sensors(section.sensors, _length(rig), source)
+    _check_together(section, placed, source)
+    around = surroundings.read(section, rig.geometry, profile, source)
+    return replace(
+        rig,
+        sensors=placed,
+        surroundings=around,
+        assumed=(
+            *shapes.assumed(fin),
+            *handbook.assumed(section.material),
+            *surroundings.assumed(around, section.air.expected_h),
+            *sensors.assumed(section.sensors, placed),
+        ),
+    ).warmed(handbook.ROOM)
 
 
-def _geometry(section: RigSection, source: Path | None) -> dict[str, Quantity]:
-    """Return the lengths of the profile; a missing one is refused, and so is one of another profile."""
-    fin = section.fin
-    wanted = LENGTHS[fin.profile]
-    given: dict[str, Quantity | None] = {
-        "length": fin.length,
-        "diameter": fin.diameter,
-        "width": fin.width,
-        "thickness": fin.thickness,
-    }
-    geometry = {}
-    for name, quantity in given.items():
-        if quantity is None and name in wanted:
-            problem = f'a {fin.profile} fin needs the key "{name}"'
-            raise InputError(source, "[fin]", problem, f'add a line such as {name} = "8 mm"')
-        if quantity is not None and name not in wanted:
-            problem = f"a {fin.profile} fin has no {name}"
-            raise InputError(source, f"[fin] {name}", problem, f"it is described by {', '.join(wanted)}")
-        if quantity is not None:
-            geometry[name] = quantity
-    return geometry
+def _shape_file(name: str | None, source: Path | None) -> ShapeFile | None:
+    """Return the table of a shape, whose file lies beside the rig's."""
+    if name is None:
+        return None
+    path = Path(name) if source is None else source.parent / name
+    return parse(read_file(path, LARGEST_FILE), path)
 
 
-def _check_together(section: RigSection, sensors: Mapping[str, Sensor], source: Path | None) -> None:
+def _drawn(rig: Rig) -> Profile:
+    try:
+        return rig.profile()
+    except ValueError as error:  # lengths that are far too small or large for numbers
+        raise InputError(
+            rig.source, "[fin]", plain(error, 200), "check the lengths and their units"
+        ) from None
+
+
+def _length(rig: Rig) -> Quantity:
+    """Return the length of the fin [m], with the text that a sentence shows."""
+    return rig.geometry.get("length", Quantity(rig.length, text=f"{1e3 * rig.length:g} mm"))
+
+
+def _check_together(section: RigSection, placed: Mapping[str, Sensor], source: Path | None) -> None:
     """Check what no table can tell alone."""
     fin = section.fin
-    if fin.edges is not None and fin.profile != "rectangular":
-        problem = f"a {fin.profile} fin has no edges"
-        raise InputError(source, "[fin] edges", problem, "leave edges out")
     if fin.tip_temperature is not None and fin.tip != "fixed":
         problem = 'only a tip = "fixed" has a temperature of its own'
         raise InputError(source, "[fin] tip_temperature", problem, 'leave it out, or write tip = "fixed"')
-    if section.joint is not None and not any(sensor.place == "plate" for sensor in sensors.values()):
+    if section.joint is not None and not any(sensor.place == "plate" for sensor in placed.values()):
         problem = "no sensor reads the plate, so the readings cannot tell of a joint"
         raise InputError(
             source, "[joint]", problem, 'leave it out, or add a sensor such as TP = { on = "plate" }'
-        )
-
-
-def _assumed(section: RigSection) -> Iterator[Finding]:
-    """Yield a finding for each default of fin and material that was used."""
-    if section.fin.profile == "rectangular" and section.fin.edges is None:
-        yield Finding(
-            "assumed",
-            "note",
-            "It is not stated whether the two narrow side faces lose heat: they are taken to; state it with "
-            'edges = "exposed" or "guarded" in [fin].',
-            evidence={"key": "edges", "value": "exposed"},
-        )
-    if section.material.conductivity is None:
-        yield Finding(
-            "assumed",
-            "note",
-            "No conductivity is stated: k is left free within a wide prior; state it with "
-            'conductivity = "167 W/(m K) +/- 5 %" in [material].',
-            evidence={"key": "conductivity"},
         )

@@ -28,25 +28,15 @@ from finback.errors import InputError
 from finback.quantity import Quantity
 from finback.wording import nearest, plain, quoted
 
-PROFILES = ("pin", "rectangular")
-LATER_PROFILES = (
-    "trapezoidal",
-    "triangular",
-    "concave-parabolic",
-    "convex-parabolic",
-    "cone",
-    "concave-pin",
-    "convex-pin",
-    "annular",
-    "hyperbolic-annular",
-    "table",
+PROFILES = (
+    *("pin", "rectangular", "trapezoidal", "triangular", "concave-parabolic", "convex-parabolic"),
+    *("cone", "concave-pin", "convex-pin", "annular", "hyperbolic-annular", "table"),
 )
 TIPS = ("adiabatic", "convective", "fixed", "infinite")
 EDGES = ("exposed", "guarded")
+SURFACES = ("projected", "slant")
+ORIENTATIONS = ("vertical", "horizontal")
 PLACES = ("plate", "air", "heat", "heater")
-
-_SHAPES = "leave it out, and describe a pin or a rectangular fin"
-_EXPECTED_H = 'write expected_h instead, such as "45 W/(m^2 K) +/- 20 %"'
 
 # The validators before a value run from right to left, those after it from left to right.
 _KNOWN_BETTER = (AfterValidator(entries.positive), AfterValidator(entries.narrow))
@@ -65,21 +55,35 @@ Resistance = Annotated[
 Coefficient = Annotated[
     Quantity, AfterValidator(entries.positive), BeforeValidator(entries.quantity("coefficient"))
 ]
-ProfileName = Annotated[
-    Literal["pin", "rectangular"], BeforeValidator(entries.choice("profile", PROFILES, LATER_PROFILES))
+ThinEnd = Annotated[
+    Quantity,
+    AfterValidator(entries.not_negative),
+    AfterValidator(entries.narrow),
+    BeforeValidator(entries.quantity("length")),
 ]
+Speed = Annotated[
+    Quantity,
+    AfterValidator(entries.not_negative),
+    AfterValidator(entries.narrow),
+    BeforeValidator(entries.quantity("speed")),
+]
+Pressure = Annotated[Quantity, *_KNOWN_BETTER, BeforeValidator(entries.quantity("pressure"))]
+Humidity = Annotated[
+    Quantity, AfterValidator(entries.up_to_saturation), BeforeValidator(entries.quantity("humidity"))
+]
+ProfileName = Annotated[str, BeforeValidator(entries.choice("profile", PROFILES))]
 TipName = Annotated[
     Literal["adiabatic", "convective", "fixed", "infinite"], BeforeValidator(entries.choice("tip", TIPS))
 ]
 Edges = Annotated[Literal["exposed", "guarded"], BeforeValidator(entries.choice("kind of edges", EDGES))]
+Surface = Annotated[
+    Literal["projected", "slant"], BeforeValidator(entries.choice("kind of surface", SURFACES))
+]
+Orientation = Annotated[
+    Literal["vertical", "horizontal"], BeforeValidator(entries.choice("orientation", ORIENTATIONS))
+]
 Place = Annotated[
     Literal["plate", "air", "heat", "heater"], BeforeValidator(entries.choice("place of a sensor", PLACES))
-]
-LaterShape = Annotated[
-    None, BeforeValidator(entries.later("no profile of this version has this key yet", _SHAPES))
-]
-LaterAir = Annotated[
-    None, BeforeValidator(entries.later("this version has no correlations yet", _EXPECTED_H))
 ]
 
 
@@ -90,37 +94,30 @@ class Section(BaseModel):
 
 
 class FinSection(Section):
-    """[fin]: its shape and its tip."""
+    """[fin]: its shape, its tip, and how it stands."""
 
     profile: ProfileName
-    length: Length
-    diameter: Length | None = None
+    length: Length | None = None
     width: Length | None = None
     thickness: Length | None = None
+    tip_thickness: ThinEnd | None = None
+    diameter: Length | None = None
+    tip_diameter: ThinEnd | None = None
+    inner_diameter: Length | None = None
+    outer_diameter: Length | None = None
+    file: Annotated[str, BeforeValidator(entries.line("name of a file"))] | None = None
     edges: Edges | None = None
+    surface: Surface | None = None
+    orientation: Orientation | None = None
     tip: TipName | None = None
     tip_temperature: Temperature | None = None
-    tip_thickness: LaterShape = None
-    tip_diameter: LaterShape = None
-    inner_diameter: LaterShape = None
-    outer_diameter: LaterShape = None
-    file: LaterShape = None
-    surface: LaterShape = None
 
 
 class MaterialSection(Section):
     """[material]: what conducts."""
 
     conductivity: Conductivity | None = None
-    name: Annotated[
-        None,
-        BeforeValidator(
-            entries.later(
-                "this version knows no materials by name yet",
-                'write conductivity instead, such as "167 W/(m K) +/- 5 %"',
-            )
-        ),
-    ] = None
+    name: Annotated[str, BeforeValidator(entries.line("name of a material", 80))] | None = None
     emissivity: Annotated[
         None,
         BeforeValidator(
@@ -139,11 +136,13 @@ class JointSection(Section):
 
 
 class AirSection(Section):
-    """[air]: what a healthy fin should see."""
+    """[air]: what a healthy fin should see, and what tells it."""
 
     expected_h: Coefficient | None = None
-    speed: LaterAir = None
-    correlation: LaterAir = None
+    speed: Speed | None = None
+    correlation: Annotated[str, BeforeValidator(entries.line("name of a correlation", 80))] | None = None
+    pressure: Pressure | None = None
+    humidity: Humidity | None = None
 
 
 class DefaultsSection(Section):
@@ -185,7 +184,7 @@ class SensorsSection(BaseModel):
 class RigSection(Section):
     """The whole of rig.toml."""
 
-    title: Annotated[str, BeforeValidator(entries.title)] = "untitled rig"
+    title: Annotated[str, BeforeValidator(entries.line("title"))] = "untitled rig"
     fin: FinSection
     material: MaterialSection = MaterialSection()
     joint: JointSection | None = None
@@ -244,10 +243,9 @@ _SECTIONS: Mapping[str, type[BaseModel]] = {
     "air": AirSection,
 }
 _EXAMPLES = {
-    "fin": "add it with profile, length and what else the profile needs",
+    "fin": "add it with profile and the sizes that the profile needs",
     "sensors": 'add it with a line for each sensor, such as T1 = { at = "5 mm" }',
     "profile": 'add a line such as profile = "pin"',
-    "length": 'add a line such as length = "120 mm"',
 }
 
 

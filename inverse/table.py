@@ -13,6 +13,7 @@ import warnings
 from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
+from typing import NamedTuple
 
 from finback.errors import InputError
 from finback.wording import quoted
@@ -24,8 +25,20 @@ WORKBOOK_START = b"PK\x03\x04"
 _BINARY = re.compile(r"[\x00-\x08\x0e-\x1f]")
 _EXCEL_SEPARATOR = re.compile(r"sep=([,;\t])\s*", re.IGNORECASE)
 
+_NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,4})?")
+
 Row = tuple[int, tuple[str, ...]]
 """The number of a row and its cells."""
+
+
+class Contents(NamedTuple):
+    """What a table holds, for sentences: what one row is, and how the whole is to be written."""
+
+    row: str
+    layout: str
+
+
+RUNS = Contents("run", "write a header with one column a sensor and below it one row a run")
 
 
 @dataclass(frozen=True)
@@ -49,11 +62,24 @@ def split_header(cell: str) -> tuple[str, str | None]:
     return cell, None
 
 
-def parse_text(content: bytes, names: Collection[str], source: Path | None) -> Sheet:
+def to_number(cell: str, decimal_comma: bool) -> float | None:
+    """Return the number in a cell, inf for one beyond all bounds, None where there is none.
+
+    Arguments: cell; decimal_comma, whether a comma is the decimal sign.
+    """
+    text = cell.replace("−", "-")
+    if decimal_comma:
+        text = text.replace(",", ".")
+    return float(text) if _NUMBER.fullmatch(text) else None
+
+
+def parse_text(
+    content: bytes, names: Collection[str], source: Path | None, contents: Contents = RUNS
+) -> Sheet:
     """Return the table in the content of a CSV file.
 
-    Arguments: content; names, the columns that are expected, by which the separator is told; source, for
-    errors. Raises InputError for what is no text, is empty, or cannot be split into cells.
+    Arguments: content; names, the columns that are expected, by which the separator is told; source and
+    contents, for errors. Raises InputError for what is no text, is empty, or cannot be split into cells.
     """
     text = _decode(content, source)
     lines = (line for line in text.splitlines() if line.strip())
@@ -76,18 +102,19 @@ def parse_text(content: bytes, names: Collection[str], source: Path | None) -> S
         if str(error).startswith("field larger"):
             problem, remedy = "this row has a cell of more than 131072 characters", "shorten it"
         raise InputError(source, f"row {number + 1}", problem, remedy) from None
-    return _sheet(rows, separator != ",", source)
+    return _sheet(rows, separator != ",", source, contents)
 
 
-def parse_workbook(content: bytes, source: Path | None) -> Sheet:
+def parse_workbook(content: bytes, source: Path | None, contents: Contents = RUNS) -> Sheet:
     """Return the table in the first sheet of a .xlsx file.
 
+    Arguments: content; source and contents, for errors.
     Raises InputError for what is no such workbook, is empty, or holds a formula whose value was not stored.
     """
     rows = _workbook_rows(content, True, source)
     if not rows or any("" in cells for _, cells in rows):
         _check_formulas(_workbook_rows(content, False, source), dict(rows), source)
-    return _sheet(rows, True, source)
+    return _sheet(rows, True, source, contents)
 
 
 def _check_formulas(typed: list[Row], stored: Mapping[int, tuple[str, ...]], source: Path | None) -> None:
@@ -104,14 +131,13 @@ def _check_formulas(typed: list[Row], stored: Mapping[int, tuple[str, ...]], sou
         raise InputError(source, first[0], problem, "open the workbook in a spreadsheet and save it")
 
 
-def _sheet(rows: list[Row], decimal_comma: bool, source: Path | None) -> Sheet:
+def _sheet(rows: list[Row], decimal_comma: bool, source: Path | None, contents: Contents) -> Sheet:
     """Return the sheet of these rows, once each is known to fit under the header."""
-    remedy = "write a header with one column a sensor and below it one row a run"
     if not rows:
-        raise InputError(source, None, "this file is empty", remedy)
+        raise InputError(source, None, "this file is empty", contents.layout)
     (_, header), *body = rows
     if not body:
-        raise InputError(source, None, "there is no run below the header", remedy)
+        raise InputError(source, None, f"there is no {contents.row} below the header", contents.layout)
     for number, cells in body:
         if any(cells[len(header) :]):
             problem = f"this row has {len(cells)} cells and the header {len(header)}"

@@ -166,7 +166,7 @@ def profile(estimate: Estimate) -> ProfileScene:
     )
     median, low, high = (values - ZERO_CELSIUS for values in (band.median, band.low95, band.high95))
     air = estimate.parameters.get("air")
-    length = 1e3 * estimate.rig.geometry["length"].value
+    length = 1e3 * estimate.rig.length
     return ProfileScene(length, air.median if air else None, 1e3 * band.x, median, low, high, points)
 
 
