@@ -23,7 +23,6 @@ from finback.laplace import Mode
 from finback.optimum import LeastSquares
 from finback.posing import is_read, pose
 from finback.problem import Candidate, Problem
-from finback.proposal import Proposal
 from finback.readings import Readings
 from finback.rig import Rig, TipName
 from finback.sampling import Chain, Settings
@@ -38,7 +37,6 @@ hold it at a temperature."""
 WORTH_SAMPLING = 5.0  # nats below the best: a candidate further down has a probability below 0.007
 KEPT_DRAWS = 2500  # an ensemble
 LOO_DRAWS = 500  # an ensemble
-LADDER_FITS = 0.1  # efficiency below which a ladder has missed its posterior: readings without any error
 SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
 
 
@@ -95,7 +93,7 @@ def compare(
         point = optimum.fit(pose(rig, readings, candidate))
         mode = find_mode(point)
         random = np.random.RandomState(np.random.MT19937(seeds[0]))
-        fitted = _fit_proposal(point.problem, mode, random)
+        fitted = proposals.adapt(point.problem.log_density, proposals.from_mode(mode), random)
         quick = evidence.importance(point.problem.log_density, fitted[0], random)
         prepared.append((point, mode, fitted, quick, seeds))
     best = max(quick.evidence.log for *_, quick, _ in prepared)
@@ -143,20 +141,6 @@ def find_mode(point: LeastSquares) -> Mode:
         point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd
     )
     return laplace.find_mode(problem.log_density, start, root)
-
-
-def _fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) -> tuple[Proposal, float]:
-    """Return a proposal fitted to the posterior, and its efficiency [1].
-
-    An estimated noise makes the posterior a funnel, and its mode may be a spike far down in it, where plate and
-    air fit their readings without any noise: a ladder starts from the whole of it.
-    """
-    if problem.noise.estimated:
-        ladder = proposals.ladder(problem.log_density, mode)
-        found = proposals.adapt(problem.log_density, ladder, random)
-        if found[1] >= LADDER_FITS:
-            return found
-    return proposals.adapt(problem.log_density, proposals.from_mode(mode), random)
 
 
 def _outcome(point: LeastSquares, mode: Mode, chain: Chain, seed: np.random.SeedSequence) -> Outcome:
