@@ -2,9 +2,8 @@
 
 A rig that states its tip asks for that tip alone; one that leaves it out asks which of the three that a
 finite fin can have the readings support (infinite is only taken when stated: on a long fin it is the
-limit of the others, on a short one it is nothing that can be built). A sharp tip can be adiabatic only. With
-a sensor on the plate each comes with and without a joint. All candidates have the same probability before
-the readings.
+limit of the others, on a short one it is nothing that can be built). With a sensor on the plate each comes
+with and without a joint. All candidates have the same probability before the readings.
 """
 
 import math
@@ -23,6 +22,7 @@ from finback.laplace import Mode
 from finback.optimum import LeastSquares
 from finback.posing import is_read, pose
 from finback.problem import Candidate, Problem
+from finback.proposal import Proposal
 from finback.readings import Readings
 from finback.rig import Rig, TipName
 from finback.sampling import Chain, Settings
@@ -31,12 +31,10 @@ Array = NDArray[np.float64]
 Progress = Callable[[str, float], None]
 
 COMPARED_TIPS: tuple[TipName, ...] = ("adiabatic", "convective", "fixed")
-SHARP_TIPS: tuple[TipName, ...] = ("adiabatic",)
-"""What is left of them for a tip without a face: it loses no heat, whatever its coefficient, and nothing can
-hold it at a temperature."""
 WORTH_SAMPLING = 5.0  # nats below the best: a candidate further down has a probability below 0.007
 KEPT_DRAWS = 2500  # an ensemble
 LOO_DRAWS = 500  # an ensemble
+LADDER_FITS = 0.1  # efficiency below which a ladder has missed its posterior: readings without any error
 SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
 
 
@@ -67,7 +65,7 @@ class Outcome:
 
 def enumerate_candidates(rig: Rig, readings: Readings | None = None) -> tuple[Candidate, ...]:
     """Return the candidates that a fit compares, for one run or for any run that reads every sensor."""
-    tips = (COMPARED_TIPS if rig.has_tip_face else SHARP_TIPS) if rig.tip is None else (rig.tip,)
+    tips = COMPARED_TIPS if rig.tip is None else (rig.tip,)
     reads_plate = any(
         s.place == "plate" and (readings is None or is_read(s, readings)) for s in rig.sensors.values()
     )
@@ -93,7 +91,7 @@ def compare(
         point = optimum.fit(pose(rig, readings, candidate))
         mode = find_mode(point)
         random = np.random.RandomState(np.random.MT19937(seeds[0]))
-        fitted = proposals.adapt(point.problem.log_density, proposals.from_mode(mode), random)
+        fitted = _fit_proposal(point.problem, mode, random)
         quick = evidence.importance(point.problem.log_density, fitted[0], random)
         prepared.append((point, mode, fitted, quick, seeds))
     best = max(quick.evidence.log for *_, quick, _ in prepared)
@@ -141,6 +139,20 @@ def find_mode(point: LeastSquares) -> Mode:
         point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd
     )
     return laplace.find_mode(problem.log_density, start, root)
+
+
+def _fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) -> tuple[Proposal, float]:
+    """Return a proposal fitted to the posterior, and its efficiency [1].
+
+    An estimated noise makes the posterior a funnel, and its mode may be a spike far down in it, where plate
+    and air fit their readings without any noise: a ladder starts from the whole of it.
+    """
+    if problem.noise.estimated:
+        ladder = proposals.ladder(problem.log_density, mode)
+        found = proposals.adapt(problem.log_density, ladder, random)
+        if found[1] >= LADDER_FITS:
+            return found
+    return proposals.adapt(problem.log_density, proposals.from_mode(mode), random)
 
 
 def _outcome(point: LeastSquares, mode: Mode, chain: Chain, seed: np.random.SeedSequence) -> Outcome:

@@ -2,7 +2,8 @@
 
 It starts at the posterior's mode and is fitted again to its own weighted draws where that helps: a posterior
 with an estimated noise, or one that a prior cuts off, is not shaped like its mode. One that is bent, such as
-that of h and an air temperature nobody read, needs several components side by side.
+that of h and an air temperature nobody read, needs several components side by side. One that is a funnel, as
+wide in the others as an estimated noise is large, gets a component for each step of the noise.
 Source of the refitting: Cappé, Guillin, Marin, Robert, J. Comp. Graph. Stat. 13 (2004) 907, population Monte
 Carlo; the largest weights are cut, so that no single draw decides.
 """
@@ -14,6 +15,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
+from finback import laplace
 from finback.laplace import LogDensity, Mode
 
 Array = NDArray[np.float64]
@@ -27,17 +29,22 @@ WIDER = 1.1  # of the fitted variances: a proposal had better be too wide
 TAILS = 2.0  # width of one more component over all of them, for what lies beyond their ends
 OVERLAP = 0.5  # of its neighbours' shares that a component is fitted to as well
 SMALLEST_SPREAD = 1e-12  # of a correlation matrix: draws in a plane still give a proposal
+RUNG = 0.5  # step of a ladder, in the logarithm of the noise
+RUNGS = 60  # at most, up or down
+FAINT = 12.0  # nats below the best rung, where a ladder ends
 
 
 @dataclass(frozen=True)
 class Proposal:
-    """Equally weighted multivariate Student t's.
+    """Multivariate Student t's side by side.
 
-    Arguments: centres (c, p); roots (c, p, p), with scale matrices root @ root.T.
+    Arguments: centres (c, p); roots (c, p, p), with scale matrices root @ root.T; shares (c,), their
+    probabilities, all the same if left out.
     """
 
     centres: Array
     roots: Array
+    shares: Array | None = None
 
     @cached_property
     def _inverses(self) -> Array:
@@ -49,7 +56,8 @@ class Proposal:
         one = (
             math.lgamma((FREEDOM + p) / 2) - math.lgamma(FREEDOM / 2) - 0.5 * p * math.log(FREEDOM * math.pi)
         )
-        found: Array = one - math.log(c) - np.linalg.slogdet(self.roots)[1]
+        logs = np.full(c, -math.log(c)) if self.shares is None else np.log(self.shares)
+        found: Array = one + logs - np.linalg.slogdet(self.roots)[1]
         return found
 
     def draw(self, n: int, random: np.random.RandomState) -> Array:
@@ -60,7 +68,7 @@ class Proposal:
         if c == 1:
             drawn = self.centres + normal @ self.roots[0].T
         else:
-            which = random.randint(c, size=n)
+            which = random.choice(c, size=n, p=self.shares)
             drawn = self.centres[which] + np.einsum("nij,nj->ni", self.roots[which], normal)
         return drawn
 
@@ -85,6 +93,40 @@ def from_mode(mode: Mode) -> Proposal:
 def from_draws(draws: Array) -> Proposal:
     """Return the one-component proposal with the mean and covariance of draws (n, p)."""
     return _fit(draws, np.full(len(draws), 1 / len(draws)), 1)
+
+
+def ladder(log_density: LogDensity, mode: Mode) -> Proposal:
+    """Return components along the last unknown, each with the mode and curvature of the others given it.
+
+    Arguments: log_density, from a block (n_sets, p) to (n_sets,); mode, with its curvature.
+    """
+    best, top = _rung(log_density, mode.z[-1], mode.z[:-1], mode.root[:-1]), float(mode.z[-1])
+    rungs = {top: best}
+    for step in (RUNG, -RUNG):
+        at, last = top, best
+        for _ in range(RUNGS):
+            at += step
+            last = rungs[at] = _rung(log_density, at, last.z, last.root)
+            best = max(best, last, key=lambda rung: rung.log_evidence)
+            if last.log_evidence < best.log_evidence - FAINT:
+                break
+    heights = np.array([rung.log_evidence for rung in rungs.values()])
+    roots = np.zeros((len(rungs), len(mode.z), len(mode.z)))
+    roots[:, :-1, :-1] = [rung.root for rung in rungs.values()]
+    roots[:, -1, -1] = RUNG
+    centres = np.array([np.append(rung.z, at) for at, rung in rungs.items()])
+    shares = np.exp(heights - heights.max())
+    return Proposal(centres, roots, shares / shares.sum())
+
+
+def _rung(log_density: LogDensity, last: float, others: Array, root: Array) -> Mode:
+    """Return the mode of the other unknowns, given the last."""
+
+    def given(block: Array) -> Array:
+        return log_density(np.column_stack([block, np.full(len(block), last)]))
+
+    spread, axes = np.linalg.eigh(root @ root.T)
+    return laplace.find_mode(given, others, axes * np.sqrt(np.maximum(spread, spread[-1] * SMALLEST_SPREAD)))
 
 
 def adapt(

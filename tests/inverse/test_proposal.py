@@ -96,3 +96,43 @@ def test_efficiency_is_one_for_the_proposal_itself() -> None:
     found, efficiency = proposals.adapt(SINGLE.log_density, SINGLE, np.random.RandomState(7))
     assert efficiency == pytest.approx(1.0)
     assert found is SINGLE
+
+
+WIDTHS = np.array([1.0, 5.0, 0.1])
+DEPTH = 1.5  # standard deviation of the last unknown
+
+
+def funnel(z: np.ndarray) -> np.ndarray:
+    """A normal last unknown, and others that are normal given it, as wide as its exponential; normalised."""
+    last, others = z[:, -1], z[:, :-1] / WIDTHS
+    constant = -0.5 * 4 * np.log(2 * np.pi) - np.log(DEPTH) - np.log(WIDTHS).sum()
+    given = -0.5 * np.square(others).sum(axis=1) * np.exp(-2 * last) - 3 * last
+    return constant + given - 0.5 * np.square(last / DEPTH)
+
+
+FUNNEL_MODE = np.array([0.0, 0.0, 0.0, -3 * DEPTH**2])
+
+
+def test_a_ladder_follows_a_funnel_that_its_mode_hides() -> None:
+    # the mode is a spike, four and a half standard deviations down
+    mode = Mode(FUNNEL_MODE, 0.0, np.diag([*(WIDTHS * np.exp(FUNNEL_MODE[-1])), DEPTH]))
+    rungs = proposals.ladder(funnel, mode)
+    z = rungs.draw(100_000, np.random.RandomState(1))
+    weights = np.exp(funnel(z) - rungs.log_density(z))
+    assert weights.mean() == pytest.approx(1.0, abs=0.02)
+    assert weights.mean() ** 2 / np.square(weights).mean() > 0.4
+    last = z[:, -1]
+    mean = (weights * last).mean()
+    assert mean == pytest.approx(0.0, abs=0.03)
+    assert np.sqrt((weights * np.square(last)).mean()) == pytest.approx(DEPTH, rel=0.02)
+    _, without = proposals.adapt(funnel, proposals.from_mode(mode), np.random.RandomState(2))
+    assert without < 0.4
+
+
+def test_shares_weigh_components() -> None:
+    centres, roots = np.array([[-10.0], [10.0]]), np.ones((2, 1, 1))
+    uneven = Proposal(centres, roots, np.array([0.2, 0.8]))
+    z = uneven.draw(20_000, np.random.RandomState(1))
+    assert (z > 0).mean() == pytest.approx(0.8, abs=0.01)
+    expected = 0.8 * multivariate_t.pdf(10.0, 10.0, 1.0, df=FREEDOM)
+    assert np.exp(uneven.log_density(np.array([[10.0]])))[0] == pytest.approx(expected, rel=1e-6)
