@@ -2,8 +2,9 @@
 
 A rig that states its tip asks for that tip alone; one that leaves it out asks which of the three that a
 finite fin can have the readings support (infinite is only taken when stated: on a long fin it is the
-limit of the others, on a short one it is nothing that can be built). With a sensor on the plate each comes
-with and without a joint. All candidates have the same probability before the readings.
+limit of the others, on a short one it is nothing that can be built). A sharp tip can be adiabatic only. With
+a sensor on the plate each comes with and without a joint. All candidates have the same probability before
+the readings.
 """
 
 import math
@@ -31,6 +32,9 @@ Array = NDArray[np.float64]
 Progress = Callable[[str, float], None]
 
 COMPARED_TIPS: tuple[TipName, ...] = ("adiabatic", "convective", "fixed")
+SHARP_TIPS: tuple[TipName, ...] = ("adiabatic",)
+"""What is left of them for a tip without a face: it loses no heat, whatever its coefficient, and nothing can
+hold it at a temperature."""
 WORTH_SAMPLING = 5.0  # nats below the best: a candidate further down has a probability below 0.007
 KEPT_DRAWS = 2500  # an ensemble
 LOO_DRAWS = 500  # an ensemble
@@ -65,7 +69,7 @@ class Outcome:
 
 def enumerate_candidates(rig: Rig, readings: Readings | None = None) -> tuple[Candidate, ...]:
     """Return the candidates that a fit compares, for one run or for any run that reads every sensor."""
-    tips = COMPARED_TIPS if rig.tip is None else (rig.tip,)
+    tips = (COMPARED_TIPS if rig.has_tip_face else SHARP_TIPS) if rig.tip is None else (rig.tip,)
     reads_plate = any(
         s.place == "plate" and (readings is None or is_read(s, readings)) for s in rig.sensors.values()
     )
