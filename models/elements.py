@@ -19,7 +19,7 @@ from functools import cached_property, lru_cache
 import numpy as np
 from numpy.polynomial import legendre
 from numpy.typing import NDArray
-from scipy.linalg import solveh_banded
+from scipy.linalg.lapack import dpbsv
 
 from finback.models.profiles import Profile
 
@@ -84,14 +84,14 @@ class Elements:
 
     edges [m] (n_elements + 1,); conduction and loss, quadrature weights times A/(dx/dxi) [m] and P dx/dxi
     [m²], each (n_elements, q); tip_loss [m²], the area at the tip's end that loses heat as the side does;
-    sharp, whether the tip has no face.
+    cold, whether the tip has the air's temperature because it is too sharp to be reached by heat.
     """
 
     edges: Array
     conduction: Array
     loss: Array
     tip_loss: float
-    sharp: bool
+    cold: bool
     degree: int
 
     @property
@@ -140,9 +140,9 @@ class Elements:
         """Solve (K + ratio M) w = loads with the base held at zero; ratio h/k [1/m], loads (n, n_loads)."""
         stiffness, mass = self.bands
         found = np.zeros_like(loads)
-        found[1:] = solveh_banded(
-            (stiffness + ratio * mass)[:, 1:], loads[1:], lower=True, overwrite_ab=True, check_finite=False
-        )
+        _, found[1:], failed = dpbsv((stiffness + ratio * mass)[:, 1:], loads[1:], lower=1, overwrite_ab=1)
+        if failed:
+            raise ArithmeticError(f"the equations of a fin could not be solved at h/k = {ratio} 1/m")
         return found
 
     def slopes(self, vectors: Array) -> Array:
@@ -180,7 +180,8 @@ def discretise(
     polynomials = basis(degree)
     length, side = profile.length, profile.side_area()
     sharp = float(profile.area(np.array([length]))[0]) <= 0
-    edges = _first_edges(profile, base_layer, None if sharp else tip_layer)
+    near_tip = np.empty(0) if tip_layer is None else _halves(length, tip_layer)
+    edges = _first_edges(profile, _halves(length, base_layer), _to_sharp_tip(profile) if sharp else near_tip)
     while True:
         half = np.diff(edges) / 2
         x = edges[:-1, None] + half[:, None] * (1 + polynomials.points)
@@ -198,40 +199,46 @@ def discretise(
         conduction=area * polynomials.weights / half[:, None],
         loss=loss,
         tip_loss=_missed(profile, edges[-2], float(loss[-1].sum())) if sharp else tip_loss,
-        sharp=sharp,
+        cold=sharp and _is_cold(profile),
         degree=degree,
     )
 
 
-def _first_edges(profile: Profile, base_layer: float, tip_layer: float | None) -> Array:
+def _first_edges(profile: Profile, from_base: Array, from_tip: Array) -> Array:
     length = profile.length
     breaks = np.asarray(getattr(profile, "breaks", ()), dtype=np.float64).ravel()
     breaks = breaks[(breaks > 0) & (breaks < length)]
-    from_base = _halves(length, base_layer)
-    from_tip = _to_sharp_tip(profile) if tip_layer is None else _halves(length, tip_layer)
     from_base = from_base[_apart(from_base, breaks)]
     from_tip = from_tip[_apart(from_tip, length - breaks)]
     return np.unique(np.concatenate([[0.0, length], breaks, from_base, length - from_tip]))
 
 
 def _to_sharp_tip(profile: Profile) -> Array:
-    """Return distances from a sharp tip [m] at which elements end, none for a blunt one.
+    """Return distances from a sharp tip [m] at which elements end.
 
     What lies beyond s loses a share P s of the side's heat, and is colder by about m² s² than at s: the
-    product is what a polynomial there could get wrong.
+    product is what a polynomial there could get wrong. At a cold tip it gets all wrong, however small s is.
     """
     length = profile.length
-    area, perimeter = (
-        float(value[0]) for value in (profile.area(np.zeros(1)), profile.perimeter(np.zeros(1)))
-    )
-    if float(profile.area(np.array([length]))[0]) > 0:
-        return np.empty(0)
+    (base_area,), (base_perimeter,) = profile.area(np.zeros(1)), profile.perimeter(np.zeros(1))
     s = _halves(length, NARROWEST * length)
-    loss = profile.perimeter(length - s)
-    lost = loss * s / profile.side_area()
-    colder = loss * s**2 / profile.area(length - s) / (perimeter * length**2 / area)
+    if _is_cold(profile):
+        return s
+    perimeter = profile.perimeter(length - s)
+    lost = perimeter * s / profile.side_area()
+    colder = (
+        perimeter * s**2 / _checked(profile, "area", length - s) / (base_perimeter * length**2 / base_area)
+    )
     last = np.flatnonzero(lost * colder < NEGLIGIBLE)
     return s[: last[0] + 1] if last.size else s
+
+
+def _is_cold(profile: Profile) -> bool:
+    """Tell whether a sharp tip has the air's temperature: m² s² does not vanish with s = L - x."""
+    s = profile.length * np.array([1e-4, 1e-6])
+    x = profile.length - s
+    far, near = s**2 * profile.perimeter(x) / _checked(profile, "area", x)
+    return bool(near > 0.9 * far)
 
 
 def _missed(profile: Profile, edge: float, counted: float) -> float:

@@ -193,7 +193,7 @@ def _terms(profile: object, kind: str, level: int, accuracy: float, positions: b
         tip_perimeter=float(tip_perimeter),
         n_x=len(x),
         at_tip=x >= profile.length,
-        cold_tip=bool(sharp) and _falls_to_nothing(profile),
+        cold_tip=elements.cold,
         driven=driven,
     )
 
@@ -214,14 +214,6 @@ def _modes(profile: Profile, kind: str, level: int, accuracy: float) -> tuple[El
         degree=DEGREE,
     )
     return elements, find(elements, largest, accuracy, driven), largest
-
-
-def _falls_to_nothing(profile: Profile) -> bool:
-    """Tell whether a sharp tip has the air's temperature: s² P/A does not vanish with s = L - x."""
-    s = profile.length * np.array([1e-4, 1e-6])
-    x = profile.length - s
-    far, near = s**2 * profile.perimeter(x) / profile.area(x)
-    return bool(near > 0.9 * far)
 
 
 def _free(fin: Fin, air: Values, terms: Terms, drive: Driving, found: Sums) -> Solution:

@@ -27,8 +27,8 @@ Array = NDArray[np.float64]
 
 MOST = 80
 """Most values of h/k that are chosen [1]."""
-NEAR_SHARP_TIP = 1e-3
-"""Share of the length [1] at a sharp tip where no error is measured: temperatures may vanish there."""
+NEAR_COLD_TIP = 1e-3
+"""Share of the length [1] at a tip that is too sharp to be warm where no error is measured."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,15 +59,17 @@ def find(elements: Elements, largest: float, accuracy: float, tip_driven: bool) 
         loads.append(np.eye(1, elements.n, elements.n - 1)[0])
     stacked = np.stack(loads, axis=1)
     lowest = _lowest_eigenvalue(elements)
+    guess = 1.7 if elements.cold else 0.7 if tip_driven else 1.05  # from what shapes of every kind take
     span = np.log(16 * (1 + largest / lowest)) / np.pi**2
-    n = max(3, int(np.ceil(span * np.log(0.3 / accuracy) * (0.6 if tip_driven else 1.0))))
-    found: Modes | None = None
-    while True:
-        modes = _project(elements, stacked, lowest, largest, n)
-        if modes.error <= accuracy or n >= MOST or (found is not None and modes.error > found.error / 2):
-            return modes if found is None or modes.error < found.error else found
-        found = modes
-        n = min(MOST, n + max(2, int(np.ceil(span * np.log(modes.error / accuracy) / 2))))
+    n = max(3, int(np.ceil(span * np.log(0.3 / accuracy) * guess)))
+    found = _project(elements, stacked, lowest, largest, n)
+    while found.error > accuracy and n < MOST:
+        n = min(MOST, n + 1 + int(np.ceil(1.2 * span * np.log(found.error / accuracy))))
+        finer = _project(elements, stacked, lowest, largest, n)
+        if finer.error > 0.7 * found.error:  # rounding is reached
+            break
+        found = finer
+    return found
 
 
 def _lowest_eigenvalue(elements: Elements) -> float:
@@ -112,7 +114,7 @@ def _error(elements: Elements, loads: Array, vectors: Array, square: Array, rati
     scale = np.full(loads.shape[1], 1 / ratio)
     scale[1:] = exact[-1, 1:]
     last = elements.n
-    if elements.sharp:
+    if elements.cold:
         length = elements.edges[-1]
-        last = int(np.searchsorted(elements.edges, (1 - NEAR_SHARP_TIP) * length)) * elements.degree
+        last = int(np.searchsorted(elements.edges, (1 - NEAR_COLD_TIP) * length)) * elements.degree
     return float(np.abs((exact - summed)[:last] / scale).max())
