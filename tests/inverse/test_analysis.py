@@ -253,7 +253,14 @@ def test_a_held_tip_beside_others_of_weight_still_has_a_temperature() -> None:
 
 
 @pytest.mark.parametrize(
-    ("plate", "air"), [(5.0, -30.0), (-10.0, 30.0), (-150.0, -196.0), (300.0, 20.0)], ids=str
+    ("plate", "air"),
+    [
+        (5.0, -30.0),
+        (-10.0, 30.0),
+        pytest.param(-150.0, -196.0, marks=pytest.mark.slow),
+        pytest.param(300.0, 20.0, marks=pytest.mark.slow),
+    ],
+    ids=str,
 )
 def test_heated_and_cooled_fins_in_cold_and_warm_air(plate: float, air: float) -> None:
     rig = pin_rig(conductivity=STATED_K, tip="convective")
@@ -264,14 +271,16 @@ def test_heated_and_cooled_fins_in_cold_and_warm_air(plate: float, air: float) -
 
 
 def test_sensors_may_be_listed_in_any_order() -> None:
-    rig = pin_rig(conductivity=STATED_K, tip="convective")
-    readings = exact_readings(rig)
+    rig = pin_rig(places=("heat",), conductivity=STATED_K, tip="convective")
+    truth = Truth(joint=None)
+    readings, _ = draw(rig, truth, np.random.default_rng(1))
     turned = replace(rig, sensors=dict(reversed(rig.sensors.items())))
-    estimates = [finback.fit(r, readings, seed=1) for r in (rig, turned)]
-    for name in ("h", "k", "joint"):
-        first, second = (e.parameters[name] for e in estimates)
-        assert first.least_squares == pytest.approx(second.least_squares, rel=1e-6)
-        assert first.median == pytest.approx(second.median, abs=0.1 * first.sd)
+    fits = []
+    for each in (rig, turned):
+        (candidate,) = enumerate_candidates(each, readings)
+        fits.append(optimum.fit(posing.pose(each, readings, candidate)))
+    np.testing.assert_allclose(fits[0].z, fits[1].z, rtol=1e-6)
+    assert fits[0].chi_square == pytest.approx(fits[1].chi_square, rel=1e-6)
 
 
 def test_error_free_readings_give_the_truth_back() -> None:
@@ -286,7 +295,8 @@ def test_error_free_readings_give_the_truth_back() -> None:
 
 def test_error_free_readings_without_a_stated_noise() -> None:
     rig = pin_rig(noise=None, calibration=0.0, position_sd=0.0, conductivity=STATED_K, tip="convective")
-    estimate = finback.fit(rig, exact_readings(rig), seed=1)
+    # a posterior as narrow as this takes long to sample; that it is found and said is the matter here
+    estimate = finback.fit(rig, exact_readings(rig), seed=1, settings=Settings(max_steps=100))
     assert summary(estimate, "h_over_k").least_squares == pytest.approx(45 / 167, rel=1e-5)
     assert summary(estimate, "noise").median < 1e-3
     estimate.to_dict()
@@ -382,9 +392,8 @@ def test_a_sampler_without_time_says_so_and_still_answers() -> None:
     estimate.to_dict()
 
 
-@pytest.mark.parametrize(
-    "noise", [0.15, pytest.param(None, marks=pytest.mark.slow)], ids=["stated noise", "estimated noise"]
-)
+@pytest.mark.slow
+@pytest.mark.parametrize("noise", [0.15, None], ids=["stated noise", "estimated noise"])
 def test_an_average_over_candidates_carries_their_spread(noise: float | None) -> None:
     rig = pin_rig(noise=noise, conductivity=STATED_K)
     together = finback.fit(rig, exact_readings(rig), seed=1)

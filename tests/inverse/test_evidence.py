@@ -65,5 +65,6 @@ def test_resampled_draws_follow_the_density() -> None:
 
 def test_the_seed_alone_decides() -> None:
     log_density, mode, _ = linear_gaussian(3)
-    assert both(log_density, mode, 4) == both(log_density, mode, 4)
-    assert both(log_density, mode, 4) != both(log_density, mode, 5)
+    first = both(log_density, mode, 4)
+    assert first == both(log_density, mode, 4)
+    assert first != both(log_density, mode, 5)

@@ -1,6 +1,5 @@
 """What is determined, by what: on linear information made by hand, and on rigs that can tell this or that."""
 
-
 import numpy as np
 import pytest
 from rigs import Truth, exact_readings, pin_rig
@@ -102,7 +101,8 @@ def test_information_is_the_inverse_covariance_of_least_squares() -> None:
     rig = pin_rig()
     point = optimum.fit(posing.pose(rig, exact_readings(rig), Candidate("convective", True, True)))
     found = information(point.problem, point.z, point.sigma)
-    np.testing.assert_allclose(
-        np.linalg.inv(found.readings), point.point.covariance, rtol=1e-4
-    )
+    scale = np.sqrt(np.diag(point.point.covariance))
+    expected = point.point.covariance / np.outer(scale, scale)
+    inverse = np.linalg.inv(found.readings * np.outer(scale, scale))
+    np.testing.assert_allclose(inverse, expected, rtol=1e-4, atol=1e-9)
     assert not found.stated.any()
