@@ -20,7 +20,7 @@ from finback.problem import Problem
 Array = NDArray[np.float64]
 
 SMALLEST_SIGMA, LARGEST_SIGMA = 1e-7, 1e6  # K; readings that a model meets exactly leave no noise to estimate
-FALLS = np.array([0.0, 0.3, 1.0, 4.0])  # times the fin's own fall, that air nobody reads may lie beyond its end
+FALLS = np.array([0.0, 0.3, 1.0, 4.0])  # times the fin's own fall: how far below its end unread air may be
 NOISE_ROUNDS = 20
 LINEARISING_ROUNDS = 2
 
