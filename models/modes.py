@@ -59,7 +59,7 @@ def find(elements: Elements, largest: float, accuracy: float, tip_driven: bool) 
         loads.append(np.eye(1, elements.n, elements.n - 1)[0])
     stacked = np.stack(loads, axis=1)
     lowest = _lowest_eigenvalue(elements)
-    guess = 1.7 if elements.cold else 0.7 if tip_driven else 1.05  # from what shapes of every kind take
+    guess = 1.3 if elements.cold else 0.7 if tip_driven else 1.05  # from what shapes of every kind take
     span = np.log(16 * (1 + largest / lowest)) / np.pi**2
     n = max(3, int(np.ceil(span * np.log(0.3 / accuracy) * guess)))
     found = _project(elements, stacked, lowest, largest, n)

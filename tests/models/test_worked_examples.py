@@ -13,12 +13,14 @@ from scipy.optimize import brentq
 
 from finback.models import (
     AdiabaticTip,
+    Annular,
     BaseTemperature,
     ConvectiveTip,
     Fin,
     FixedTip,
     InfiniteTip,
     Joint,
+    Triangular,
     Uniform,
     UniformCoefficient,
     effectiveness,
@@ -350,6 +352,96 @@ def finned_wall_between_oil_and_air(i):
     }
 
 
+# --- annular and triangular fins, and arrays of them ----------------------------------------------
+
+
+def ring(i, outer):
+    return Annular(2 * i["r1_m"], 2 * outer, i["t_m"])
+
+
+def corrected_ring(i):
+    """Return the fin whose insulated rim, half a thickness further out, stands for the convecting one."""
+    outer = i["r2_m"] if "r2_m" in i else i["r1_m"] + i["L_m"]
+    return ring(i, outer + i["t_m"] / 2)
+
+
+@example("HOL-2.9", "THE-17.10", "KRE-2.7", "GEA-4.13-2", "THE-17.15")
+def one_annular_fin(i):
+    fin = corrected_ring(i)
+    return {
+        "eta": adiabatic_efficiency(fin, i["k"], i["h"]),
+        "q_fin_W": base_heat(fin, i["k"], i["h"], AdiabaticTip(), i["theta_b_K"], 0.0),
+        "q_fin_exact_convective_tip_W": base_heat(
+            ring(i, i["r2_m"]), i["k"], i["h"], ConvectiveTip(), i["theta_b_K"], 0.0
+        ),
+        "q_without_fin_W": i["h"] * 2 * np.pi * i["r1_m"] * i["t_m"] * i["theta_b_K"],
+        "q_max_W": i["h"] * fin.side_area() * i["theta_b_K"],
+    }
+
+
+@example("INC-3.10")
+def five_rings_on_a_cylinder(i):
+    fin, excess = corrected_ring(i), i["T_base_K"] - i["T_inf_K"]
+    per_length = i["h"] * 2 * np.pi * i["r1_m"] * excess
+    fins = i["N"] * base_heat(fin, i["k"], i["h"], AdiabaticTip(), excess, 0.0)
+    total, bare = fins + per_length * (i["H_m"] - i["N"] * i["t_m"]), per_length * i["H_m"]
+    eta = adiabatic_efficiency(fin, i["k"], i["h"])
+    return {"eta": eta, "q_total_W": total, "q_bare_W": bare, "increase_W": total - bare}
+
+
+@example("CEN-3.12")
+def rings_on_a_steam_pipe(i):
+    excess = i["T_base_C"] - i["T_inf_C"]
+    fin = Annular(i["D_tube_m"], i["D_fin_m"] + i["t_m"], i["t_m"])
+    one = base_heat(fin, i["k"], i["h"], AdiabaticTip(), excess, 0.0)
+    per_length = i["h"] * np.pi * i["D_tube_m"] * excess
+    total = i["N_per_m"] * (one + per_length * i["gap_m"])
+    return {
+        "q_bare_W": per_length,
+        "eta": adiabatic_efficiency(fin, i["k"], i["h"]),
+        "q_fin_W": one,
+        "q_total_W": total,
+        "increase_factor": total / per_length,
+    }
+
+
+@example("LIE-4.11")
+def rings_on_a_hot_water_pipe(i):
+    excess = i["T_water_C"] - i["T_inf_C"]
+    fin = Annular(i["D1_m"], i["D2_m"], i["t_m"])
+    fins = base_heat(fin, i["k"], i["h_fins"], AdiabaticTip(), excess, 0.0) / i["spacing_m"]
+    between = i["h_fins"] * np.pi * i["D1_m"] * (1 - i["t_m"] / i["spacing_m"]) * excess
+    bare = i["h_bare"] * np.pi * i["D1_m"] * excess
+    return {
+        "eta": adiabatic_efficiency(fin, i["k"], i["h_fins"]),
+        "q_bare_W_m": bare,
+        "q_fins_W_m": fins + between,
+        "ratio": (fins + between) / bare,
+    }
+
+
+@example("JAN-2.11")
+def rings_on_an_engine_cylinder(i):
+    fin, excess = corrected_ring(i), i["T_base_C"] - i["T_inf_C"]
+    per_length = i["h"] * 2 * np.pi * i["r1_m"] * excess
+    fins = i["N"] * base_heat(fin, i["k"], i["h"], AdiabaticTip(), excess, 0.0)
+    total, bare = fins + per_length * i["N"] * i["gap_m"], per_length * i["N"] * (i["gap_m"] + i["t_m"])
+    eta = adiabatic_efficiency(fin, i["k"], i["h"])
+    return {"eta": eta, "q_total_W": total, "q_bare_W": bare, "effectiveness": total / bare}
+
+
+@example("THE-17.13")
+def triangular_fin(i):
+    fin = Triangular(i["L_m"], i["w_m"], i["t_base_m"], guarded_edges=True)
+    excess = i["T_base_C"] - i["T_inf_C"]
+    _, solution = run(fin, i["k"], i["h"], AdiabaticTip(), excess, 0.0)
+    return {
+        "eta": adiabatic_efficiency(fin, i["k"], i["h"]),
+        "q_fin_W_m": solution.base_heat[0],
+        "effectiveness": solution.base_heat[0] / (i["h"] * i["t_base_m"] * i["w_m"] * excess),
+    }
+
+
 # --- contact resistance ---------------------------------------------------------------------------
 
 
@@ -386,6 +478,27 @@ def two_plates_in_contact(i):
     _, solution = run(plate, i["k"], 0.0, FixedTip(cold), joint, cold)
     flux = solution.base_heat[0]
     return {"q_W_m2": flux, "dT_contact_K": hot - flux * first - solution.base_temperature[0]}
+
+
+@example("DUT-3.11")
+def two_shells_in_contact(i):
+    """Take the outer shell as an annular fin without side loss, the inner one as part of its joint."""
+    shell = Annular(2 * i["r_joint_m"], 2 * i["r_o_m"], thickness=1.0)
+    area = 2 * np.pi * i["r_joint_m"]
+    inner = np.log(i["r_joint_m"] / i["r_i_m"]) * i["r_joint_m"] / i["k"]
+
+    def heat(contact):
+        joint = Joint(i["T_i_C"], inner + contact)
+        return base_heat(shell, i["k"], 0.0, FixedTip(i["T_o_C"]), joint, i["T_o_C"])
+
+    contact = brentq(lambda contact: heat(contact) - i["Q_W_m"], 0.0, 1.0, xtol=1e-15)
+    return {
+        "Q_no_contact_W": heat(0.0),
+        "R_contact_K_W": contact / area,
+        "h_contact": 1 / contact,
+        "dT_K": i["Q_W_m"] * contact / area,
+        "R_contact_m2K_W": contact,
+    }
 
 
 @example("CEN-3.5")
