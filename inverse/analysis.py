@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 import finback
-from finback import candidates, checks, concerns, derived, summaries
+from finback import candidates, checks, concerns, derived, expectation, summaries
 from finback import readings as readings_file
 from finback import rig as rig_file
 from finback.candidates import Outcome
@@ -23,6 +23,9 @@ from finback.estimate import (
     SamplerRecord,
     Summary,
 )
+from finback.expectation import Expected, ImpliedSpeed
+from finback.findings import Finding
+from finback.models.constants import ZERO_CELSIUS
 from finback.readings import Readings
 from finback.rig import Rig
 from finback.sampling import Settings
@@ -60,6 +63,7 @@ def fit(
     if not isinstance(readings, Readings):
         readings = readings_file.read(Path(readings), rig).pick(run)
     checks.check_run(rig, readings)
+    rig = rig.warmed(expectation.mean_temperature(rig, readings))
     progress = progress or (lambda _stage, _fraction: None)
     outcomes = candidates.compare(rig, readings, seed, progress, settings)
     progress("summing up", 0.95)
@@ -85,7 +89,8 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         seed=seed,
         converged=all(o.converged for o in sampled),
     )
-    found_concerns = concerns.collect(rig, found, quality, sampler, best)
+    healthy, implied, beyond = _expectation(rig, readings, found)
+    found_concerns = concerns.collect(rig, found, quality, sampler, best) + beyond
     worst = {f.severity for f in found_concerns}
     return Estimate(
         rig=rig,
@@ -103,7 +108,27 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         findings=found_concerns,
         priors=_priors(best),
         provenance=_provenance(rig, readings),
+        expected=healthy,
+        implied_speed=implied,
     )
+
+
+def _expectation(
+    rig: Rig, readings: Readings, found: Mapping[str, Summary]
+) -> tuple[Expected | None, ImpliedSpeed | None, tuple[Finding, ...]]:
+    """Return what a healthy fin would show, the air speed that h implies, and what to beware of in both."""
+    h, air = found["h"], found["air"].median
+    if air is not None:
+        air += ZERO_CELSIUS
+    try:
+        expected = expectation.expect(rig, readings, air)
+        implied = None
+        if h.median is not None:
+            implied = expectation.imply(rig, readings, h.median, h.sd or 0.0, air)
+    except ValueError as error:
+        message = f"What a healthy fin would show cannot be worked out: {error}."
+        return None, None, (Finding("out-of-range", "note", message, evidence={"key": "expected"}),)
+    return expected, implied, tuple(expectation.findings(expected, implied))
 
 
 def _finite(value: float) -> float | None:

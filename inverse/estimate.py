@@ -10,7 +10,9 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from finback.expectation import Expected, ImpliedSpeed
 from finback.findings import Finding
+from finback.models.constants import ZERO_CELSIUS
 from finback.quantity import format_number, format_value, pretty_unit
 from finback.readings import Readings
 from finback.rig import Rig
@@ -154,6 +156,8 @@ class Estimate:
 
     `parameters` and `derived`: summaries by name. `candidates`: best first. `comparison`: one sentence on
     what the readings say of the candidates. `priors`: one line of text a parameter, of what was assumed.
+    `expected`: the coefficient that a healthy fin should have, where the rig tells; `implied_speed`: the air
+    speed that the estimated one implies, where the rig speaks of moving air.
     """
 
     rig: Rig
@@ -171,6 +175,8 @@ class Estimate:
     findings: tuple[Finding, ...]
     priors: tuple[str, ...]
     provenance: Provenance
+    expected: Expected | None = None
+    implied_speed: ImpliedSpeed | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """Return the contents of estimate.json, in its key order; a number that is not determined is None."""
@@ -189,8 +195,20 @@ class Estimate:
                 {"code": f.code, "severity": f.severity, "sensor": f.sensor, "message": f.message}
                 for f in self.findings
             ],
+            **self._expectations(),
             "provenance": asdict(self.provenance),
         }
+
+    def _expectations(self) -> dict[str, Any]:
+        """Return what estimate.json says of a healthy fin, nothing where nothing is known of one."""
+        found: dict[str, Any] = {}
+        if self.expected is not None:
+            found["expected"] = _rounded(_of_expected(self.expected))
+        if self.implied_speed is not None:
+            implied = asdict(self.implied_speed)
+            shown = {"value": implied.pop("speed"), "sd": implied.pop("sd"), "unit": "m/s", **implied}
+            found["implied_speed"] = _rounded(shown)
+        return found
 
     def to_tree(self) -> Any:
         """Return arviz's container of the posterior; its `to_netcdf(path, engine="h5netcdf")` writes it."""
@@ -253,6 +271,26 @@ DIGITS = 10  # significant ones in estimate.json: more than any number here has,
 def _numbers(summary: Summary) -> dict[str, Any]:
     found = _rounded(asdict(summary))
     return {name: value for name, value in found.items() if name not in ("name", "label")}
+
+
+def _of_expected(expected: Expected) -> dict[str, Any]:
+    film, speed = expected.film_temperature, expected.speed
+    return {
+        "h": {"value": expected.coefficient, "sd": expected.sd, "unit": "W/(m^2 K)"},
+        "correlation": expected.correlation,
+        "name": expected.name,
+        "film_temperature": None if film is None else {"value": film - ZERO_CELSIUS, "unit": "degC"},
+        "speed": None if speed is None else {"value": speed, "unit": "m/s"},
+        "nusselt": expected.nusselt,
+        "reynolds": expected.reynolds,
+        "rayleigh": expected.rayleigh,
+        "prandtl": expected.prandtl,
+        "length": None
+        if expected.length is None
+        else {"value": expected.length, "unit": "m", "of": expected.length_name},
+        "flags": list(expected.flags),
+        "notes": list(expected.notes),
+    }
 
 
 def _rounded(value: Any) -> Any:

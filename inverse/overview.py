@@ -4,15 +4,24 @@ What such a rig can tell in principle is counted here from its sensors and from 
 readings are good enough is for a fit to say.
 """
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import outline
 from finback.quantity import Quantity
 from finback.report.phrases import clean
 from finback.report.terminal import wrap
 from finback.rig import Rig, Sensor
+from finback.surroundings import Surroundings
 
 DRAWING = 64  # characters that stand for the length of the fin
+SHORTEST, TALLEST = 24, 9.0  # characters of the length of a stout one; half of its thickness in characters
+TAPER_SEEN = 3.0  # half of a thickness, in characters, from which its taper is seen
+FULL, THIN = 0.75, 0.3  # half of a thickness, in characters, drawn as a full line and as a double one
+STRETCHES = (2, 3, 4, 5, 8, 10, 15, 20, 30, 50, 100)
 PLACES = {
     "fin": "fin",
     "plate": "plate",
@@ -106,26 +115,65 @@ def describe(rig: Rig, runs: Sequence[str] | None, candidates: Iterable[str]) ->
 
 
 def draw(rig: Rig) -> str:
-    """Return the fin from base to tip with its sensors, to scale, in three lines of text.
+    """Return the fin from base to tip with its sensors, to scale, as text.
 
-    Names stand above their sensor where there is room for them.
+    Names stand above their sensor where there is room for them. The fin's thickness is drawn in half lines,
+    twice as high as a character is wide.
     """
     from rich.cells import cell_len
 
-    length = rig.length
-    names, marks, free = [" "] * (DRAWING + 8), ["═"] * DRAWING, 0
+    seen = outline.trace(rig)
+    columns, stretch = _scale(seen, rig.length)
+    names, marks, free = [" "] * (DRAWING + 8), {}, 0
     for sensor in rig.fin_sensors():
-        column = round((sensor.position or 0.0) / length * (DRAWING - 1))
+        column = round((sensor.position or 0.0) / rig.length * (columns - 1))
         marks[column] = "●"
         label = clean(sensor.name)
         width = cell_len(label)
         if column >= free and column + width <= len(names):
             names[column : column + width] = [label, *[""] * (width - 1)]
             free = column + width + 1
-    base = "plate ▌" if rig.sensors_on("plate") else " base │"
-    scale = f"0{f'{1000 * length:g} mm':>{DRAWING - 1}}"
-    lines = [" " * 7 + "".join(names).rstrip(), f"{base}{''.join(marks)}│ tip", " " * 7 + scale]
-    return "\n".join(lines)
+    foot = "tube" if "inner_diameter" in rig.geometry else "plate" if rig.sensors_on("plate") else "base"
+    x = (np.arange(columns) + 0.5) / columns * rig.length
+    heights = seen.at(x) / rig.length * columns * stretch
+    lines = [" " * 7 + "".join(names).rstrip(), *_rows(heights, marks, foot)]
+    scale = f"{1e3 * rig.length:g} mm"
+    times = f"thickness drawn {stretch} times larger"
+    lines.append(" " * 7 + f"0{scale:>{columns - 1}}")
+    return "\n".join([*lines, *([" " * 7 + times] if stretch > 1 else [])])
+
+
+def _scale(seen: outline.Outline, length: float) -> tuple[int, int]:
+    """Return how many characters the length takes, and how many times larger the thickness is drawn."""
+    columns = min(DRAWING, max(SHORTEST, int(TALLEST * length / seen.largest)))
+    half = seen.largest / length * columns
+    if np.ptp(seen.half) <= 1e-9 * seen.largest or half >= TAPER_SEEN:
+        return columns, 1
+    return columns, next((n for n in STRETCHES if n * half >= TAPER_SEEN), STRETCHES[-1])
+
+
+def _rows(heights: NDArray[np.float64], marks: Mapping[int, str], foot: str) -> list[str]:
+    """Return the lines of the fin: its middle with the sensors, and above and below it as many as it needs.
+
+    Argument: heights (n,), half the fin's height at each character, in widths of a character.
+    """
+    levels = np.round(heights - 1).astype(int)  # half lines beyond the middle one
+    count = -(-int(levels.max(initial=0)) // 2)
+    above = []
+    for row in range(count):
+        line = "".join("█" if n >= 2 * row + 2 else "▄" if n == 2 * row + 1 else " " for n in levels)
+        above.append(line)
+    wall = "▌" if foot != "base" else "│"
+    middle = "".join(marks.get(at, _axis(float(height))) for at, height in enumerate(heights))
+    edge = f"{'':>5} {wall}"
+    below = [line.replace("▄", "▀") for line in above]
+    rows = [*(edge + line for line in reversed(above)), f"{foot:>5} {wall}{middle}│ tip"]
+    return [line.rstrip() for line in (*rows, *(edge + line for line in below))]
+
+
+def _axis(height: float) -> str:
+    """Return the character of the fin's middle line where half its height is so many widths of it."""
+    return "█" if height >= FULL else "═" if height >= THIN else "─"
 
 
 def _labelled(texts: Iterable[tuple[str, str]]) -> list[str]:
@@ -135,16 +183,44 @@ def _labelled(texts: Iterable[tuple[str, str]]) -> list[str]:
 
 def _fin_texts(rig: Rig) -> Iterator[tuple[str, str]]:
     sizes = ", ".join(f"{name} {_shown(size)}" for name, size in rig.geometry.items())
-    yield "fin", f"{rig.profile_name}, {sizes}{', edges guarded' if rig.guarded_edges else ''}"
+    if rig.shape_file is not None:
+        sizes = f"{clean(rig.shape_file.source.name, 40)}, length {1e3 * rig.length:g} mm"
+    options = ", edges guarded" * rig.guarded_edges + ", slant surface" * rig.slant_surface
+    yield "fin", f"{rig.profile_name}, {sizes}{options}"
     held = ""
     if rig.tip == "fixed":
         held = f" at {_shown(rig.tip_temperature) if rig.tip_temperature else 'an unknown temperature'}"
-    yield "tip", f"{rig.tip}{held}" if rig.tip else "not stated: candidates are compared"
-    yield "k", f"{_shown(rig.conductivity)}, stated" if rig.conductivity else "not stated: a wide prior"
+    compared = "not stated: candidates are compared" if rig.has_tip_face else "sharp: adiabatic"
+    yield "tip", f"{rig.tip}{held}" if rig.tip else compared
+    name = "" if rig.material is None else clean(rig.material, 40)
+    if rig.conductivity is None:
+        yield "k", "not stated: a wide prior"
+    elif rig.handbook is not None:
+        yield "k", f"{_shown(rig.conductivity)}, of {rig.handbook.name} by the handbook"
+    else:
+        yield "k", f"{_shown(rig.conductivity)}, stated{f' ({name})' if name else ''}"
     if rig.expected_joint is not None:
         yield "joint", f"{_shown(rig.expected_joint)} when healthy"
     if rig.expected_coefficient is not None:
         yield "air", f"h {_shown(rig.expected_coefficient)} when healthy"
+    yield from _air_texts(rig.surroundings)
+
+
+def _air_texts(around: Surroundings) -> Iterator[tuple[str, str]]:
+    """Yield what is known of the air, and of how the fin stands in it."""
+    if around.driven is not None:
+        stated = "" if around.speed is None else f", {_shown(around.speed)}"
+        law = f", by {around.correlation}" if around.correlation else ""
+        yield "air", f"driven{stated}{law}" if around.driven else f"still{law}"
+    state = [
+        f"{name} {_shown(each)}"
+        for name, each in (("pressure", around.pressure), ("humidity", around.humidity))
+        if each is not None
+    ]
+    if state:
+        yield "air", ", ".join(state)
+    if around.orientation is not None:
+        yield "axis", around.orientation
 
 
 def _sensor_table(rig: Rig) -> list[str]:

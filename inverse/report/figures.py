@@ -17,7 +17,7 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.backends.backend_svg import FigureCanvasSVG
 from matplotlib.colors import LinearSegmentedColormap
 from matplotlib.figure import Figure
-from matplotlib.patches import Circle, Rectangle
+from matplotlib.patches import Circle, Polygon, Rectangle
 from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
@@ -29,7 +29,6 @@ from finback.report.layout import (
     JOINT,
     LETTER,
     LINE,
-    PLATE,
     SECTION,
     WIDTH,
     Layout,
@@ -46,6 +45,10 @@ BLACK, ORANGE, SKY, GREEN, BLUE, VERMILION, PURPLE = (
     "#000000", "#E69F00", "#56B4E9", "#009E73", "#0072B2", "#D55E00", "#CC79A7"
 )  # fmt: skip
 METAL, INK, FAINT = "#e3e6ea", "#222222", "#8a9099"
+EDGE: dict[str, Any] = {"edgecolor": INK, "linewidth": 0.8}
+INNER: dict[str, Any] = {"edgecolor": INK, "linewidth": 0.6, "linestyle": (0, (4, 2))}
+LEAST_SEEN = 0.05  # inches between two lines that are to be told apart
+SMALL: dict[str, Any] = {"color": INK, "fontsize": 8}
 MARKERS = {"fin": ("o", BLUE), "plate": ("s", VERMILION), "air": ("D", GREEN)}
 DENSITY = LinearSegmentedColormap.from_list("density", ["#ffffff", SKY, BLUE])
 STYLE: dict[Any, Any] = {
@@ -122,25 +125,32 @@ def _drawing(scene: scenes.DrawingScene) -> Figure:
     to_scale = (
         "to scale" if lay.stretch == 1 else f"length to scale, thickness drawn {lay.stretch} times larger"
     )
-    axes.text(lay.left, 0.1, f"Side view, {to_scale}; {scene.tip}", color=INK, fontsize=8)
+    seen = "Side view" if scene.tube is None else "Cut along the axis of the tube"
+    axes.text(lay.left if scene.tube is None else 0.12, 0.1, f"{seen}, {to_scale}; {scene.tip}", **SMALL)
     return figure
 
 
 def _draw_fin_and_plate(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
     gap = JOINT if scene.joint else 0.0
-    low, half = lay.axis - lay.thickness / 2, lay.plate_half
-    edge: dict[str, Any] = {"edgecolor": INK, "linewidth": 0.8}
-    plate = Rectangle((lay.left - gap - PLATE, lay.axis - half), PLATE, 2 * half, hatch="////")
+    half = lay.plate_half
+    plate = Rectangle((lay.left - gap - lay.plate, lay.axis - half), lay.plate, 2 * half, hatch="////")
     plate.set(facecolor="white", edgecolor=FAINT)
     axes.add_patch(plate)
-    axes.add_patch(Rectangle((lay.left, low), lay.right - lay.left, lay.thickness, facecolor=METAL, **edge))
-    bottom, middle = lay.axis - half - 0.06, lay.left - gap - PLATE / 2
-    axes.text(middle, bottom, "plate" if scene.joint else "base", ha="center", va="top", color=INK)
+    x, height = lay.left + scene.x * lay.scale, scene.half * (lay.thickness / scene.thickness)
+    above, below = np.stack([x, lay.axis + height], axis=1), np.stack([x, lay.axis - height], axis=1)
+    axes.add_patch(Polygon(np.concatenate([above, below[::-1]]), closed=True, facecolor=METAL, **EDGE))
+    bottom, middle = lay.axis - half - 0.06, lay.left - gap - lay.plate / 2
+    name = "tube" if scene.tube is not None else "plate" if scene.joint else "base"
+    axes.text(middle, bottom, name, ha="center", va="top", color=INK)
+    if lay.tube_axis is not None:
+        style: dict[str, Any] = {"color": FAINT, "linewidth": 0.8, "linestyle": (0, (9, 3, 1.5, 3))}
+        axes.plot([lay.tube_axis] * 2, [lay.axis - half - 0.1, lay.axis + half + 0.1], **style)
     if scene.joint:
-        axes.add_patch(Rectangle((lay.left - gap, low), gap, lay.thickness, facecolor=ORANGE, **edge))
-        x = lay.left - gap / 2
-        axes.plot([x, x], [low, bottom - 0.2], color=FAINT, linewidth=0.7)
-        axes.text(x + 0.05, bottom - 0.22, "joint R″", ha="right", va="top", color=INK)
+        low, high = lay.axis - height[0], 2 * height[0]
+        axes.add_patch(Rectangle((lay.left - gap, low), gap, high, facecolor=ORANGE, **EDGE))
+        x_joint = lay.left - gap / 2
+        axes.plot([x_joint, x_joint], [low, bottom - 0.2], color=FAINT, linewidth=0.7)
+        axes.text(x_joint + 0.05, bottom - 0.22, "joint R″", ha="right", va="top", color=INK)
 
 
 def _draw_fin_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
@@ -152,6 +162,7 @@ def _draw_fin_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> No
     shape, colour = MARKERS["fin"]
     axes.plot(x, np.full_like(x, lay.axis), shape, color=colour, markersize=5, markeredgecolor="white")
     size = 9.0 if len(marks) <= CROWDED else max(3.5, 9.0 * CROWDED / len(marks))
+    heights = lay.half(scene, np.array([position for position, _ in marks]))
     sides = (([name for _, name in marks], 1), ([f"{position:.4g}" for position, _ in marks], -1))
     for texts, sign in sides:
         edge = lay.axis + sign * lay.thickness / 2
@@ -163,8 +174,9 @@ def _draw_fin_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> No
             lay.left + (0.09 if upright else width / 2),
             FIN_END + 0.1,
         )
-        for at, place, text in zip(x, places, texts, strict=True):
+        for at, place, text, height in zip(x, places, texts, heights, strict=True):
             bend = edge + sign * np.array([0.02, 0.06, 0.15, 0.19])
+            bend[0] = lay.axis + sign * max(height + 0.02, 0.06)  # clear of the marker
             axes.plot([at, at, place, place], bend, color=FAINT, linewidth=0.7)
             label = axes.text(place, edge + sign * 0.21, text, ha="center", fontsize=size, color=INK, **PLAIN)
             label.set(va="bottom" if sign > 0 else "top", rotation=90 if upright else 0)
@@ -173,7 +185,7 @@ def _draw_fin_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> No
 def _draw_other_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
     """Draw the plate's and the air's sensors, and the heat as an arrow into plate or base."""
     gap = JOINT if scene.joint else 0.0
-    middle, top = lay.left - gap - PLATE / 2, lay.axis + lay.plate_half + 0.06
+    middle, top = lay.left - gap - lay.plate / 2, lay.axis + lay.plate_half + 0.06
     plate, air, heat = names(scene, "plate"), names(scene, "air"), names(scene, "heat", "heater")
     if plate:
         shape, colour = MARKERS["plate"]
@@ -187,30 +199,40 @@ def _draw_other_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> 
         axes.text(lay.right + 0.4, y, name, va="center", color=INK, **PLAIN)
     if heat:
         arrow = {"arrowstyle": "-|>", "color": PURPLE, "linewidth": 2.2, "shrinkA": 0, "shrinkB": 0}
-        axes.annotate("", (middle - PLATE / 2 - 0.03, lay.axis), (0.12, lay.axis), arrowprops=arrow)
+        axes.annotate("", (middle - lay.plate / 2 - 0.03, lay.axis), (0.12, lay.axis), arrowprops=arrow)
         axes.text(0.12, lay.axis + 0.1, "\n".join(heat), va="bottom", color=INK, **PLAIN)
 
 
 def _draw_section(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
-    """Draw the cross-section at the right, at a scale of its own."""
+    """Draw the cross-section at the right, at a scale of its own: the base's, and the tip's inside it."""
+    section = scene.section
     x, y = WIDTH - 0.65, lay.axis
-    if scene.round:
-        axes.add_patch(Circle((x, y), SECTION / 2, facecolor=METAL, edgecolor=INK, linewidth=0.8))
-        text, half = f"⌀ {scene.thickness:.4g} mm", SECTION / 2
+    largest = max(section.base, section.tip)
+    if section.kind == "flat":
+        half = _draw_flat_section(axes, section, x, y)
     else:
-        scale = SECTION / max(scene.width, scene.thickness)
-        wide, high = scene.width * scale, max(scene.thickness * scale, 0.02)
-        edges: dict[str, Any] = {"edgecolor": INK, "linewidth": 0.8}
-        axes.add_patch(Rectangle((x - wide / 2, y - high / 2), wide, high, facecolor=METAL, **edges))
-        for left in (x - wide / 2 - 0.08, x + wide / 2) if scene.guarded else ():
-            axes.add_patch(
-                Rectangle((left, y - high / 2), 0.08, high, facecolor="white", hatch="xxxx", **edges)
-            )
-        text, half = f"{scene.width:.4g} × {scene.thickness:.4g} mm", high / 2
-    axes.text(x, y - half - 0.08, text, ha="center", va="top", color=INK)
-    axes.text(
-        x, 0.1, "Section, edges guarded" if scene.guarded else "Section", ha="center", color=INK, fontsize=8
-    )
+        half = SECTION / 2
+        for diameter in sorted((section.base, section.tip), reverse=True):
+            radius = half * diameter / largest
+            hole = section.kind == "ring" and diameter < largest
+            style = EDGE if hole or diameter == largest else INNER
+            axes.add_patch(Circle((x, y), radius, facecolor="white" if hole else METAL, **style))
+    axes.text(x, y - half - 0.08, section.text, ha="center", va="top", color=INK)
+    axes.text(x, 0.1, section.caption, ha="center", **SMALL)
+
+
+def _draw_flat_section(axes: Axes, section: scenes.Section, x: float, y: float) -> float:
+    """Draw a rectangular section about a point and return half its height."""
+    largest = max(section.base, section.tip)
+    scale = SECTION / max(section.width, largest)
+    wide, high = section.width * scale, max(largest * scale, 0.02)
+    axes.add_patch(Rectangle((x - wide / 2, y - high / 2), wide, high, facecolor=METAL, **EDGE))
+    inner = min(section.base, section.tip) * scale
+    if LEAST_SEEN < inner < high - LEAST_SEEN:
+        axes.add_patch(Rectangle((x - wide / 2, y - inner / 2), wide, inner, facecolor=METAL, **INNER))
+    for left in (x - wide / 2 - 0.08, x + wide / 2) if section.guarded else ():
+        axes.add_patch(Rectangle((left, y - high / 2), 0.08, high, facecolor="white", hatch="xxxx", **EDGE))
+    return high / 2
 
 
 def _draw_dimension(axes: Axes, lay: Layout, text: str) -> None:

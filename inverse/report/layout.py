@@ -11,6 +11,8 @@ Array = NDArray[np.float64]
 
 WIDTH = 6.4  # of every figure
 LEAST_THICKNESS, MOST_THICKNESS = 0.12, 0.9
+LEAST_TAPER = 0.25  # thickness from which a taper is seen
+MOST_TUBE = 3.0  # radius of a tube over the fin's length up to which its axis is drawn
 PLATE, JOINT, PLATE_BEYOND = 0.34, 0.08, 0.33  # width of plate and joint; how far the plate stands out
 FIN_END, SECTION = 4.6, 0.72  # right end of the longest fin; size of the section
 LETTER, LINE = 0.08, 0.16  # width and height of text
@@ -23,7 +25,8 @@ class Layout:
     """Where the parts of the drawing lie [in].
 
     `axis`: height of the fin's centre line; `left`, `right`: its ends; `scale` [in/mm]; `stretch`: how many
-    times larger than its length the thickness is drawn; `dimension`: height of the dimension line.
+    times larger than its length the thickness is drawn; `dimension`: height of the dimension line;
+    `tube_axis`: where the axis of an annular fin's tube lies, None where it is not drawn.
     """
 
     height: float
@@ -34,11 +37,22 @@ class Layout:
     stretch: int
     thickness: float
     dimension: float
+    tube_axis: float | None
 
     @property
     def plate_half(self) -> float:
         """Half the height of the plate."""
         return self.thickness / 2 + PLATE_BEYOND
+
+    @property
+    def plate(self) -> float:
+        """Width of the plate; of a tube's wall, which stays clear of its axis."""
+        return PLATE if self.tube_axis is None else min(PLATE, 0.6 * (self.left - self.tube_axis))
+
+    def half(self, scene: DrawingScene, x: Array) -> Array:
+        """Half the height of the fin as it is drawn at x [mm] -> [in]."""
+        found = np.interp(x, scene.x, scene.half) * (self.thickness / scene.thickness)
+        return np.asarray(found, dtype=np.float64)
 
 
 def names(scene: DrawingScene, *places: str) -> list[str]:
@@ -57,9 +71,13 @@ def lay_out(scene: DrawingScene) -> Layout:
     plate = max((LETTER * len(name) for name in names(scene, "plate")), default=0.0)
     left = max(0.15 + max(heat, 0.35) + 0.1 + PLATE + JOINT, plate + 0.15)
     scale = min((FIN_END - left) / scene.length, MOST_THICKNESS / scene.thickness)
-    stretch = 1
-    if scene.thickness * scale < LEAST_THICKNESS:
-        enough = (s for s in STRETCHES if s * scene.thickness * scale >= 1.5 * LEAST_THICKNESS)
+    drawn_tube = scene.tube if scene.tube is not None and scene.tube <= MOST_TUBE * scene.length else None
+    if drawn_tube is not None:
+        scale = min(scale, (FIN_END - 0.2 - JOINT) / (scene.length + drawn_tube))
+        left = max(left, 0.2 + JOINT + drawn_tube * scale)
+    stretch, least = 1, LEAST_TAPER if scene.tapered else LEAST_THICKNESS
+    if scene.thickness * scale < least:
+        enough = (s for s in STRETCHES if s * scene.thickness * scale >= 1.5 * least)
         stretch = next(enough, STRETCHES[-1])
     thickness = max(scene.thickness * scale * stretch, 0.02)
     above = (
@@ -69,7 +87,17 @@ def lay_out(scene: DrawingScene) -> Layout:
     room = max(thickness / 2 + PLATE_BEYOND + 0.1 + others, thickness / 2 + 0.25 + above, SECTION / 2) + 0.1
     dimension = 0.36
     axis = dimension + 0.81 + max(thickness / 2, SECTION / 2 - 0.3)
-    return Layout(axis + room, axis, left, left + scene.length * scale, scale, stretch, thickness, dimension)
+    return Layout(
+        height=axis + room,
+        axis=axis,
+        left=left,
+        right=left + scene.length * scale,
+        scale=scale,
+        stretch=stretch,
+        thickness=thickness,
+        dimension=dimension,
+        tube_axis=None if drawn_tube is None else left - drawn_tube * scale,
+    )
 
 
 def spread(wanted: Array, apart: float, low: float, high: float) -> Array:

@@ -4,6 +4,7 @@ from dataclasses import dataclass
 
 from finback.estimate import Estimate
 from finback.rig import Rig
+from finback.shapes import SHAPES
 
 
 @dataclass(frozen=True, slots=True)
@@ -21,6 +22,19 @@ TIPS = {
     "infinite": Equation("θ → 0 for x → ∞", "infinite tip: the fin goes on far beyond its last sensor"),
 }
 
+UNIFORM = (
+    Equation("d²θ/dx² = m² θ,   θ = T − T_air", "steady conduction along the fin, heat lost from its side"),
+    Equation("m² = h P / (k A)", "P perimeter that loses heat, A cross-section: temperatures alone give h/k"),
+)
+TAPERED = (
+    Equation(
+        "d/dx(k A dθ/dx) = h P θ,   θ = T − T_air",
+        "steady conduction along a fin whose cross-section A and perimeter P change with x, heat lost from "
+        "its side",
+    ),
+    Equation("m² = h P / (k A)", "with P and A at the base: temperatures alone give h/k"),
+)
+
 CAUTIONS = (
     "An estimate is no certificate. It holds for this rig, this run and the assumptions listed above; it "
     "does not replace a test to a standard, nor the judgement of a competent engineer.",
@@ -35,14 +49,7 @@ def equations(estimate: Estimate) -> tuple[Equation, ...]:
     """Return the equations behind a report: fin, the candidates' tips, joint, likelihood, evidence."""
     joint = any(sensor.place == "plate" for sensor in estimate.rig.sensors.values())
     names = " ".join(score.name for score in estimate.candidates)
-    lines = [
-        Equation(
-            "d²θ/dx² = m² θ,   θ = T − T_air", "steady conduction along the fin, heat lost from its side"
-        ),
-        Equation(
-            "m² = h P / (k A)", "P perimeter that loses heat, A cross-section: temperatures alone give h/k"
-        ),
-    ]
+    lines = list(UNIFORM if SHAPES[estimate.rig.profile_name].even else TAPERED)
     lines += [equation for tip, equation in TIPS.items() if tip in names]
     if joint:
         lines.append(Equation("−k θ′(0) = (T_plate − T_b) / R″", "joint at the base, of area resistance R″"))
@@ -63,11 +70,12 @@ def equations(estimate: Estimate) -> tuple[Equation, ...]:
 
 def paragraph(rig: Rig) -> str:
     """Return the method in a paragraph."""
-    profile = {"pin": "pin", "rectangular": "straight fin"}.get(
-        rig.profile_name, rig.profile_name.replace("-", " ")
+    shape = SHAPES[rig.profile_name]
+    what = (
+        shape.words if shape.make is not None else "given by a table, with straight lines between its rows,"
     )
     return (
-        f"The fin is a {profile} in steady, one-dimensional conduction. Every measured value, the air's "
+        f"The fin is {what} in steady, one-dimensional conduction. Every measured value, the air's "
         "and the plate's included, is a reading with an uncertainty; every unknown is a parameter with a "
         "prior. The posterior of the unknowns is sampled, and medians and 95 % intervals are read from its "
         "draws, which come from the candidates in proportion to their probabilities. Values with ± are the "

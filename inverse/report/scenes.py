@@ -1,12 +1,15 @@
 """Scenes: what each figure shows, chosen and converted for drawing (mm, °C, %); nothing is drawn here."""
 
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
+from finback import outline
 from finback.estimate import Estimate
 from finback.report import phrases
+from finback.rig import Rig
 
 Array = NDArray[np.float64]
 
@@ -48,17 +51,49 @@ class Mark:
 
 
 @dataclass(frozen=True, slots=True)
+class Section:
+    """The fin across its axis [mm], at its base and at its tip.
+
+    `kind`: "round", "flat", or "ring" for the face of an annular fin, whose sizes are its outer and its inner
+    diameter. `width` and `base`, `tip`: of a flat one its thickness, else diameters. `text`: its sizes;
+    `caption`: what is drawn.
+    """
+
+    kind: Literal["round", "flat", "ring"]
+    width: float
+    base: float
+    tip: float
+    guarded: bool
+    text: str
+    caption: str
+
+
+@dataclass(frozen=True, slots=True)
 class DrawingScene:
-    """The fin to scale: length, thickness (height of the side view) and width [mm]; round: a pin."""
+    """The fin to scale [mm]: its length, the outline of its side view, and its section.
+
+    `x` (n,) from base to tip and `half` (n,), half the height there; `tube`: radius of the tube below an
+    annular fin, None for others.
+    """
 
     length: float
-    thickness: float
-    width: float
-    round: bool
-    guarded: bool
+    x: Array
+    half: Array
+    section: Section
+    tube: float | None
     joint: bool
     tip: str
     marks: tuple[Mark, ...]
+
+    @property
+    def thickness(self) -> float:
+        """Height of the side view where it is largest [mm]."""
+        return 2 * float(self.half.max())
+
+    @property
+    def tapered(self) -> bool:
+        """Whether the height changes along the fin."""
+        return bool(np.ptp(self.half) > 1e-9 * self.half.max())
 
 
 @dataclass(frozen=True, slots=True)
@@ -129,22 +164,41 @@ class Bar:
 def drawing(estimate: Estimate) -> DrawingScene:
     """Return the fin with its sensors."""
     rig = estimate.rig
-    sizes = {name: 1e3 * quantity.value for name, quantity in rig.geometry.items()}
-    round_ = "diameter" in sizes
     marks = tuple(
         Mark(phrases.clean(s.name, 16), s.place, None if s.position is None else 1e3 * s.position)
         for s in rig.sensors.values()
     )
+    seen = outline.trace(rig)
+    inner = rig.geometry.get("inner_diameter")
     return DrawingScene(
-        length=sizes["length"],
-        thickness=sizes["diameter"] if round_ else sizes["thickness"],
-        width=sizes["diameter"] if round_ else sizes["width"],
-        round=round_,
-        guarded=rig.guarded_edges,
+        length=1e3 * rig.length,
+        x=1e3 * seen.x,
+        half=1e3 * seen.half,
+        section=_section(rig, seen),
+        tube=None if inner is None else 1e3 * inner.value / 2,
         joint=any(mark.place == "plate" for mark in marks),
-        tip=f"{rig.tip} tip" if rig.tip else "tip left open",
+        tip=f"{rig.tip} tip" if rig.tip else "tip left open" if rig.has_tip_face else "sharp tip",
         marks=marks,
     )
+
+
+def _section(rig: Rig, seen: outline.Outline) -> Section:
+    sizes = {name: 1e3 * quantity.value for name, quantity in rig.geometry.items()}
+    if "outer_diameter" in sizes:
+        outer, inner = sizes["outer_diameter"], sizes["inner_diameter"]
+        return Section("ring", outer, outer, inner, False, f"⌀ {outer:.4g} on ⌀ {inner:.4g} mm", "Face")
+    base, tip = 2e3 * float(seen.half[0]), 2e3 * float(seen.half[-1])
+    changes = abs(base - tip) > 1e-9 * base
+    across = f"{base:.4g} to {tip:.4g}" if changes else f"{base:.4g}"
+    if "width" in sizes:
+        width = sizes["width"]
+        caption = "Section, edges guarded" if rig.guarded_edges else "Section"
+        return Section("flat", width, base, tip, rig.guarded_edges, f"{width:.4g} × {across} mm", caption)
+    if rig.shape_file is not None:
+        areas = 1e6 * rig.shape_file.table.areas
+        ends = dict.fromkeys((f"{areas[0]:.4g}", f"{areas[-1]:.4g}"))
+        return Section("round", base, base, tip, False, f"{' to '.join(ends)} mm²", "Section, drawn round")
+    return Section("round", base, base, tip, False, f"⌀ {across} mm", "Section")
 
 
 def profile(estimate: Estimate) -> ProfileScene:

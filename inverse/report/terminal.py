@@ -18,6 +18,8 @@ def summary(estimate: Estimate, folder: Path | str | None = None) -> str:
     """
     seen = view.build(estimate)
     blocks = [_heading(seen), *(_answer(answer) for answer in seen.answers), _candidates(seen)]
+    if seen.healthy is not None:
+        blocks.append(["Healthy fin", *wrap(seen.healthy.verdict, "  ", "  ")])
     blocks.append(_findings(seen))
     if folder is not None:
         blocks.append([f"Report  {phrases.clean(str(Path(folder) / 'report.html'), 1000)}"])

@@ -8,7 +8,8 @@ from pathlib import PurePath
 
 from finback.estimate import CandidateScore, Estimate, ReadingFit, Summary
 from finback.findings import Finding
-from finback.report import method, phrases
+from finback.report import comparison, method, phrases
+from finback.report.comparison import Comparison
 from finback.report.method import Equation
 
 ZERO_CELSIUS = 273.15
@@ -107,6 +108,7 @@ class View:
     status_text: str
     answers: tuple[Answer, ...]
     verdict: str
+    healthy: Comparison | None
     worst: tuple[FindingRow, ...]
     more_findings: str
     candidates: tuple[CandidateRow, ...]
@@ -139,6 +141,7 @@ def build(estimate: Estimate) -> View:
         status_text=phrases.STATUS[estimate.status],
         answers=_answers(estimate),
         verdict=phrases.told(estimate.comparison),
+        healthy=comparison.compare(estimate),
         worst=worst,
         more_findings=f"{rest} more in the list of findings." if rest > 0 and worst else "",
         candidates=tuple(_candidate(score, len(estimate.candidates) == 1) for score in estimate.candidates),

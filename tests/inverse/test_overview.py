@@ -1,5 +1,6 @@
 """The overview: what a rig can tell in principle, and the fin drawn to scale."""
 
+from pathlib import Path
 from typing import Any
 
 import pytest
@@ -68,8 +69,15 @@ def test_what_cannot_be_told_apart_says_what_would_help() -> None:
     assert bounded.reason.endswith("(the heater's power is only an upper bound on it)")
 
 
+def sensor_line(drawing: str) -> str:
+    (line,) = [line for line in drawing.splitlines() if "●" in line]
+    return line
+
+
 def test_the_drawing_is_to_scale() -> None:
-    names, fin, scale = overview.draw(rig_with("0", "50", "100", "air")).splitlines()
+    drawing = overview.draw(rig_with("0", "50", "100", "air"))
+    names, *_, scale = drawing.splitlines()
+    fin = sensor_line(drawing)
     marks = [column for column, character in enumerate(fin) if character == "●"]
     assert fin[marks[0] - 1] == "│"
     assert fin[marks[2] + 1] == "│"
@@ -81,10 +89,78 @@ def test_the_drawing_is_to_scale() -> None:
 
 
 def test_names_without_room_are_left_out_of_the_drawing_and_their_sensors_are_not() -> None:
-    rig = rig_with("10", "11", "90", "air")
-    names, fin, _ = overview.draw(rig).splitlines()
-    assert names.split() == ["S0", "S2"]
-    assert fin.count("●") == 3
+    drawing = overview.draw(rig_with("10", "11", "90", "air"))
+    assert drawing.splitlines()[0].split() == ["S0", "S2"]
+    assert sensor_line(drawing).count("●") == 3
+
+
+def thicknesses(drawing: str) -> list[int]:
+    """The half lines that stand above the sensors' line at each character."""
+    lines = drawing.splitlines()
+    middle = next(number for number, line in enumerate(lines) if "●" in line)
+    above = [line[7:71].ljust(64) for line in lines[1:middle]]
+    below = [line[7:71].ljust(64) for line in lines[middle + 1 : 2 * middle]]
+    counts = [[{"█": 2, "▄": 1, "▀": 1, " ": 0}[mark] for mark in line] for line in above + below[::-1]]
+    upper, lower = counts[: len(above)], counts[len(above) :]
+    assert upper == lower  # the fin is symmetric
+    return [sum(column) for column in zip(*upper, strict=True)]
+
+
+def shaped(profile: str, **fin: str) -> Rig:
+    return Rig.from_dict({"fin": {"profile": profile, **fin}, "sensors": {"S": {"at": "5 mm"}}})
+
+
+def test_a_taper_is_drawn_to_scale() -> None:
+    drawing = overview.draw(shaped("cone", length="64 mm", diameter="16.2 mm", tip_diameter="7.8 mm"))
+    # a millimetre a character, twice that a line: 8.1 and 3.9 mm at the ends, one of them in the middle line
+    assert thicknesses(drawing)[0] == 7
+    assert thicknesses(drawing)[-1] == 3
+    assert thicknesses(drawing)[32] == 5
+    assert "times larger" not in drawing
+
+
+def test_a_thin_taper_is_drawn_larger_and_says_so() -> None:
+    drawing = overview.draw(shaped("triangular", length="64 mm", width="90 mm", thickness="2 mm"))
+    assert drawing.splitlines()[-1].strip() == "thickness drawn 3 times larger"
+    assert thicknesses(drawing)[0] == 2
+    assert thicknesses(drawing)[-1] == 0
+    assert sensor_line(drawing).endswith("─│ tip")  # it ends sharp
+
+
+def test_a_stout_fin_is_drawn_shorter() -> None:
+    drawing = overview.draw(shaped("pin", length="20 mm", diameter="10 mm"))
+    assert max(map(len, drawing.splitlines())) < 50
+    assert len(drawing.splitlines()) < 12
+
+
+def test_an_annular_fin_stands_on_a_tube() -> None:
+    sizes = {"inner_diameter": "25 mm", "outer_diameter": "55 mm", "thickness": "1 mm"}
+    assert " tube ▌" in overview.draw(shaped("annular", **sizes))
+
+
+def test_a_step_of_a_table_is_drawn_as_one(tmp_path: Path) -> None:
+    rows = "0,78.54,31.416\n32,78.54,31.416\n32,28.27,18.85\n64,28.27,18.85\n"
+    (tmp_path / "shape.csv").write_text("x [mm],area [mm^2],perimeter [mm]\n" + rows, encoding="utf-8")
+    drawing = overview.draw(shaped("table", file=str(tmp_path / "shape.csv")))
+    assert set(thicknesses(drawing)[:32]) == {4}  # 5 mm, one of them in the middle line
+    assert set(thicknesses(drawing)[32:]) == {2}  # 3 mm, one of them in the middle line
+
+
+def test_the_air_and_the_material_are_told() -> None:
+    document = {
+        "fin": {"profile": "pin", "length": "90 mm", "diameter": "8 mm", "orientation": "vertical"},
+        "material": {"name": "copper"},
+        "air": {"speed": "0 m/s", "humidity": "45 %", "pressure": "98 kPa"},
+        "sensors": {"S": {"at": "5 mm"}},
+    }
+    text = overview.describe(Rig.from_dict(document), None, [])
+    assert "k      401 W/(m K) +/- 3 %, of copper, pure by the handbook" in text
+    assert "air    still\nair    pressure 98 kPa, humidity 45 %\naxis   vertical" in text
+    document["material"] = {"name": "EN AW-6060, heat 4711", "conductivity": "201 W/(m K) +/- 2 %"}
+    document["air"] = {"speed": "2.5 m/s", "correlation": "Hilpert"}
+    text = overview.describe(Rig.from_dict(document), None, [])
+    assert "201 W/(m K) +/- 2 %, stated (EN AW-6060, heat 4711)" in text
+    assert "air    driven, 2.5 m/s, by hilpert" in text
 
 
 def test_a_plate_is_drawn_where_one_is_read() -> None:

@@ -3,11 +3,12 @@ import xml.etree.ElementTree as ElementTree
 from dataclasses import replace
 
 import matplotlib
+import pytest
 
 from finback.estimate import CandidateScore
 from finback.quantity import Quantity
-from finback.report import figures
-from finback.rig import Sensor
+from finback.report import figures, scenes
+from finback.rig import Rig, Sensor
 
 SVG = "{http://www.w3.org/2000/svg}"
 XLINK = "{http://www.w3.org/1999/xlink}href"
@@ -65,6 +66,49 @@ def test_unusual_rigs_can_be_drawn(pin_estimate, rod_estimate):
         replace(pin_estimate, candidates=scores),
     ):
         assert len(figures.draw(estimate)) >= 3
+
+
+PIN = {"length": "60 mm", "diameter": "6 mm"}
+FLAT = {"length": "60 mm", "width": "30 mm", "thickness": "2 mm"}
+RING = {"inner_diameter": "25 mm", "outer_diameter": "55 mm", "thickness": "1 mm"}
+SIZES = {
+    "pin": PIN,
+    "cone": PIN,
+    "concave-pin": PIN,
+    "convex-pin": PIN,
+    "rectangular": FLAT,
+    "trapezoidal": FLAT | {"tip_thickness": "3 mm"},
+    "triangular": FLAT,
+    "concave-parabolic": FLAT,
+    "convex-parabolic": FLAT,
+    "annular": RING,
+    "hyperbolic-annular": RING,
+    "table": {"file": "shape.csv"},
+}
+STEPPED = "0,78.54,31.416\n30,78.54,31.416\n30,28.27,18.85\n60,28.27,18.85\n"
+
+
+@pytest.mark.parametrize("profile", SIZES)
+def test_every_profile_can_be_drawn(pin_estimate, tmp_path, profile):
+    (tmp_path / "shape.csv").write_text(f"x [mm],area [mm^2],perimeter [mm]\n{STEPPED}", encoding="utf-8")
+    sensors = {"T1": {"at": "2 mm"}, "T2": {"at": "14 mm"}, "TP": {"on": "plate"}, "Q": {"on": "heat"}}
+    fin = {"profile": profile} | SIZES[profile]
+    if "file" in fin:
+        fin["file"] = str(tmp_path / "shape.csv")
+    rig = Rig.from_dict({"fin": fin, "sensors": sensors})
+    drawing = figures.draw(replace(pin_estimate, rig=rig))[0]
+    assert len(drawing.svg) > 5000
+    words = drawing.svg.decode()
+    assert ("tube" in words) == ("annular" in profile)  # the comment beside the glyphs
+
+
+def test_a_step_is_drawn_upright(pin_estimate, tmp_path):
+    (tmp_path / "shape.csv").write_text(f"x [mm],area [mm^2],perimeter [mm]\n{STEPPED}", encoding="utf-8")
+    fin = {"profile": "table", "file": str(tmp_path / "shape.csv")}
+    rig = Rig.from_dict({"fin": fin, "sensors": {"T1": {"at": "2 mm"}}})
+    scene = scenes.drawing(replace(pin_estimate, rig=rig))
+    assert scene.x.tolist() == pytest.approx([0, 30, 30, 60])
+    assert scene.half.tolist() == pytest.approx([5, 5, 3, 3], rel=1e-3)
 
 
 def test_nothing_is_kept_and_pyplot_is_not_needed(pin_estimate, monkeypatch):

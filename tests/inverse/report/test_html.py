@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from finback.estimate import Draws, ProfileBand
+from finback.expectation import Expected
 from finback.report import figures, html
 
 VOID = {"meta", "img", "br", "link", "input", "hr"}
@@ -62,6 +63,25 @@ def test_it_has_every_section_in_order_and_nothing_that_runs_or_loads(parsed, pa
             assert attributes.get(key, "data:").startswith("data:")
     outside = re.sub(r'src="data:[^"]*"', "", pages[name])
     assert not re.search(r"https?://|@import|url\(", outside)
+
+
+def test_what_a_healthy_fin_would_show_has_a_section_where_a_correlation_tells_it(pin_estimate, pictures):
+    expected = Expected(
+        48.0, 7.0, "hilpert", "Hilpert, <cylinder>", 320.0, speed=1.5, nusselt=14.0, reynolds=680.0,
+        prandtl=0.705, length=0.008, length_name="diameter", notes=("the air is dry",),
+    )  # fmt: skip
+    shown = Page(html.render(replace(pin_estimate, expected=expected), pictures["pin"]))
+    at = SECTIONS.index("candidates")
+    assert [s["id"] for s in shown.named("section")] == [*SECTIONS[:at], "healthy", *SECTIONS[at:]]
+    section = shown.texts["healthy"]
+    for told in ("Hilpert, <cylinder> (hilpert)", "46.9 °C", "diameter, 8 mm", "680", "0.705", "14.0"):
+        assert told in section
+    assert "Assumed: the air is dry." in section
+    assert "A healthy fin would show h = 48 W/(m² K) ± 14 W/(m² K)" in shown.texts["answer"]
+    stated = replace(pin_estimate, expected=Expected(48.0, 7.0, "stated", "as the rig states"))
+    of_stated = Page(html.render(stated, pictures["pin"]))
+    assert [s["id"] for s in of_stated.named("section")] == SECTIONS
+    assert "as the rig states" in of_stated.texts["answer"]
 
 
 @pytest.mark.parametrize("name", ["pin", "rod", "hostile", "bench"])

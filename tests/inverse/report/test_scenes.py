@@ -1,9 +1,16 @@
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
 from finback.report import layout, scenes
+from finback.rig import Rig
+
+PIN = {"length": "60 mm", "diameter": "6 mm"}
+FLAT = {"length": "60 mm", "width": "30 mm", "thickness": "2 mm"}
+RING = {"inner_diameter": "25 mm", "outer_diameter": "55 mm", "thickness": "1 mm"}
 
 
 def test_a_density_is_that_of_the_draws(pin_estimate):
@@ -73,10 +80,61 @@ def test_names_with_room_stay_where_they_belong():
     np.testing.assert_allclose(layout.spread(wanted, 0.4, 0.0, 4.0), wanted)
 
 
+def make_drawing(length, base, tip, tube=None):
+    marks = (scenes.Mark("T1", "fin", 0.5 * length),)
+    section = scenes.Section("round", base, base, tip, False, "", "Section")
+    ends = np.array([0.0, length]), np.array([base, tip]) / 2
+    return scenes.DrawingScene(length, *ends, section, tube, False, "convective tip", marks)
+
+
+def test_a_thin_taper_is_drawn_larger_than_a_thin_plate():
+    plate, taper = (layout.lay_out(make_drawing(60.0, 3.0, tip)) for tip in (3.0, 1.0))
+    assert (plate.stretch, taper.stretch) == (1, 3)
+    scene = make_drawing(60.0, 3.0, 1.0)
+    half = taper.half(scene, np.array([0.0, 30.0, 60.0]))
+    np.testing.assert_allclose(half / taper.scale / taper.stretch, [1.5, 1.0, 0.5], rtol=1e-12)
+
+
+@pytest.mark.parametrize(("length", "tube"), [(15.0, 12.5), (25.0, 12.5), (50.0, 5.0), (10.0, 29.0)])
+def test_an_annular_fin_is_drawn_with_the_axis_of_its_tube_to_scale(length, tube):
+    lay = layout.lay_out(make_drawing(length, 1.0, 1.0, tube))
+    assert lay.tube_axis > 0.1
+    assert lay.right <= layout.FIN_END + 1e-9
+    assert (lay.left - lay.tube_axis) / (lay.right - lay.left) == pytest.approx(tube / length)
+    assert lay.left - lay.plate > lay.tube_axis  # the wall of the tube stays clear of its axis
+
+
+def test_a_tube_far_larger_than_its_fin_is_drawn_without_its_axis():
+    lay = layout.lay_out(make_drawing(10.0, 1.0, 1.0, 200.0))
+    assert lay.tube_axis is None
+    assert lay.right - lay.left > 3.0
+
+
+@pytest.mark.parametrize(
+    ("profile", "fin", "kind", "text", "caption"),
+    [
+        ("pin", PIN, "round", "⌀ 6 mm", "Section"),
+        ("cone", PIN | {"tip_diameter": "2 mm"}, "round", "⌀ 6 to 2 mm", "Section"),
+        ("rectangular", FLAT | {"edges": "guarded"}, "flat", "30 × 2 mm", "Section, edges guarded"),
+        ("triangular", FLAT, "flat", "30 × 2 to 0 mm", "Section"),
+        ("annular", RING, "ring", "⌀ 55 on ⌀ 25 mm", "Face"),
+        ("hyperbolic-annular", RING, "ring", "⌀ 55 on ⌀ 25 mm", "Face"),
+    ],
+)
+def test_the_section_is_that_of_the_profile(pin_estimate, profile, fin, kind, text, caption):
+    rig = Rig.from_dict({"fin": {"profile": profile, **fin}, "sensors": {"T1": {"at": "5 mm"}}})
+    scene = scenes.drawing(replace(pin_estimate, rig=rig))
+    assert (scene.section.kind, scene.section.text, scene.section.caption) == (kind, text, caption)
+    assert scene.tube == (12.5 if kind == "ring" else None)
+    assert scene.x[0] == 0
+    assert scene.x[-1] == pytest.approx(scene.length)
+    thickness = 1e3 * (rig.geometry.get("diameter") or rig.geometry["thickness"]).value
+    assert scene.thickness == pytest.approx(thickness)
+
+
 @pytest.mark.parametrize(("length", "thickness"), [(700.0, 9.5), (120.0, 8.0), (10.0, 50.0), (2000.0, 0.5)])
 def test_the_drawing_fits_its_page_and_says_when_it_is_not_to_scale(length, thickness):
-    marks = (scenes.Mark("T1", "fin", 0.5 * length),)
-    scene = scenes.DrawingScene(length, thickness, thickness, True, False, False, "convective tip", marks)
+    scene = make_drawing(length, thickness, thickness)
     lay = layout.lay_out(scene)
     assert lay.right <= layout.FIN_END + 1e-9
     assert lay.axis + lay.plate_half < lay.height
