@@ -1,5 +1,11 @@
 """Forward physics of fins: profiles, ends, surface laws and their solutions, in SI units. Knows no data."""
 
+from finback.models.conductivity import (
+    Conductivity,
+    ConstantConductivity,
+    LinearConductivity,
+    TabulatedConductivity,
+)
 from finback.models.ends import (
     AdiabaticTip,
     Base,
@@ -30,7 +36,14 @@ from finback.models.profiles import (
 )
 from finback.models.solution import Solution
 from finback.models.solve import solve
-from finback.models.surface import SurfaceLaw, UniformCoefficient
+from finback.models.surface import (
+    PowerCoefficient,
+    Radiating,
+    SurfaceLaw,
+    TabledCoefficient,
+    UniformCoefficient,
+    VaryingCoefficient,
+)
 from finback.models.validity import is_one_dimensional, transverse_biot
 
 __all__ = [
@@ -40,7 +53,9 @@ __all__ = [
     "BaseTemperature",
     "ConcaveParabolic",
     "ConcavePin",
+    "Conductivity",
     "Cone",
+    "ConstantConductivity",
     "ConvectiveTip",
     "ConvexParabolic",
     "ConvexPin",
@@ -49,15 +64,21 @@ __all__ = [
     "HyperbolicAnnular",
     "InfiniteTip",
     "Joint",
+    "LinearConductivity",
+    "PowerCoefficient",
     "Profile",
+    "Radiating",
     "Solution",
     "SurfaceLaw",
     "Table",
+    "TabledCoefficient",
+    "TabulatedConductivity",
     "Tip",
     "Trapezoidal",
     "Triangular",
     "Uniform",
     "UniformCoefficient",
+    "VaryingCoefficient",
     "effectiveness",
     "efficiency",
     "is_one_dimensional",

@@ -40,12 +40,12 @@ SMALLEST_ML, LARGEST_ML = 1e-6, 1e5
 
 def applies(fin: Fin) -> bool:
     """Tell whether this module can solve the fin: a shape with a closed form, and m L from 1e-6 to 1e5."""
-    if not isinstance(fin.surface, UniformCoefficient):
+    if not isinstance(fin.surface, UniformCoefficient) or not fin.is_linear:
         return False
     form = form_of(fin.profile)
     if form is None:
         return False
-    square = np.asarray(fin.surface.coefficient / fin.conductivity) * (
+    square = np.asarray(fin.surface.coefficient / fin.constant_conductivity) * (
         form.perimeter_over_area(fin.profile) * fin.profile.length**2
     )
     return bool(square.min() >= SMALLEST_ML**2 and square.max() <= LARGEST_ML**2)
@@ -58,7 +58,7 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
     0 at the base. Returns a `Solution` of n_sets rows, right to ten digits. Raises TypeError for a fin
     without closed form, ValueError for a tip that its shape cannot have or a position outside the fin.
     """
-    profile, surface, k = fin.profile, fin.surface, fin.conductivity
+    profile, surface, k = fin.profile, fin.surface, fin.constant_conductivity
     form = form_of(profile)
     if form is None or not isinstance(surface, UniformCoefficient):
         raise TypeError(f"no closed form for {type(profile).__name__} with {type(surface).__name__}")

@@ -33,7 +33,7 @@ SMALLEST_ML = 1e-150
 
 def applies(fin: Fin) -> bool:
     """Tell whether this module can solve the fin: uniform profile, uniform coefficient."""
-    return isinstance(fin.profile, Uniform) and isinstance(fin.surface, UniformCoefficient)
+    return isinstance(fin.profile, Uniform) and fin.is_linear
 
 
 def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
@@ -43,7 +43,7 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
     0 at the base. Returns a `Solution` of n_sets rows. Right to rounding for m L from 0 to 1e4 and beyond.
     Raises TypeError for a surface law that has no closed form.
     """
-    profile, surface, k = fin.profile, fin.surface, fin.conductivity
+    profile, surface, k = fin.profile, fin.surface, fin.constant_conductivity
     if not isinstance(profile, Uniform) or not isinstance(surface, UniformCoefficient):
         raise TypeError(f"no closed form for {type(profile).__name__} with {type(surface).__name__}")
     h, L, A = surface.coefficient, profile.length, profile.section_area

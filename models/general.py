@@ -59,7 +59,7 @@ BLOCK = 1024
 
 def applies(fin: Fin) -> bool:
     """Tell whether this module can solve the fin: a uniform coefficient on any profile."""
-    return isinstance(fin.surface, UniformCoefficient)
+    return fin.is_linear
 
 
 def solve(fin: Fin, base: Base, air: Values, x: Array, accuracy: float = ACCURACY) -> Solution:
@@ -75,7 +75,7 @@ def solve(fin: Fin, base: Base, air: Values, x: Array, accuracy: float = ACCURAC
     surface, tip = fin.surface, fin.tip
     if not isinstance(surface, UniformCoefficient):
         raise TypeError(f"no general solution with {type(surface).__name__}")
-    ratio = np.asarray(surface.coefficient / fin.conductivity, dtype=np.float64).reshape(-1)
+    ratio = np.asarray(surface.coefficient / fin.constant_conductivity, dtype=np.float64).reshape(-1)
     own = isinstance(tip, ConvectiveTip) and tip.coefficient is not None
     kind = DRIVEN if own or isinstance(tip, FixedTip) else type(tip).__name__
     top = float(np.fmax.reduce(ratio))
@@ -86,7 +86,7 @@ def solve(fin: Fin, base: Base, air: Values, x: Array, accuracy: float = ACCURAC
     fall = held * terms.rest + sums[:, -1]
     if top > terms.largest:
         fall += terms.beyond(ratio, terms.base_area, terms.base_perimeter)
-    drive = driving(base, air, fin.conductivity, terms.base_area)
+    drive = driving(base, air, fin.constant_conductivity, terms.base_area)
     if isinstance(tip, FixedTip):
         return _held(fin, tip.temperature - air, air, terms, drive, Sums(ratio, held, fall, sums))
     return _free(fin, air, terms, drive, Sums(ratio, held, fall, sums))
@@ -218,7 +218,7 @@ def _modes(profile: Profile, kind: str, level: int, accuracy: float) -> tuple[El
 
 def _free(fin: Fin, air: Values, terms: Terms, drive: Driving, found: Sums) -> Solution:
     """Solve fins whose tip is adiabatic, sharp or convective."""
-    k, fall, drop = fin.conductivity, found.fall, found.sums[:, : terms.n_x]
+    k, fall, drop = fin.constant_conductivity, found.fall, found.sums[:, : terms.n_x]
     strength = tip_strength(fin.tip, found.ratio * k, k, terms.tip_area)
     if terms.driven:
         at_tip, tip_fall = terms.tip(found)
@@ -254,11 +254,11 @@ def _held(fin: Fin, tip_excess: Values, air: Values, terms: Terms, drive: Drivin
     temperatures = found.sums[:, : terms.n_x] * -base_excess[:, None]
     temperatures = temperatures + (tip_excess - at_tip * base_excess)[:, None] * terms.reach(found)
     temperatures += (base_excess + air)[:, None]
-    base_heat = np.asarray(fin.conductivity * settled.base_fall)
+    base_heat = np.asarray(fin.constant_conductivity * settled.base_fall)
     return Solution(
         temperatures=temperatures,
         base_temperature=rows(base_excess + air, base_heat),
         base_heat=base_heat,
         tip_temperature=rows(tip_excess + air, base_heat),
-        tip_heat=rows(fin.conductivity * settled.tip_fall, base_heat),
+        tip_heat=rows(fin.constant_conductivity * settled.tip_fall, base_heat),
     )

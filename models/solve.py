@@ -3,7 +3,7 @@
 import numpy as np
 from numpy.typing import NDArray
 
-from finback.models import bessel_forms, closed_form, general
+from finback.models import bessel_forms, closed_form, general, nonlinear
 from finback.models.ends import Base
 from finback.models.fin import Fin
 from finback.models.solution import Solution
@@ -23,11 +23,14 @@ def solve(fin: Fin, base: Base, air: float | Array, x: Array) -> Solution:
 
     A uniform fin is solved by its closed form; any other shape by the closed form in Bessel functions, if it
     has one and the sets are few, or by the general solution, whose modes are found once for a shape. Both
-    agree to 1e-9 of the base's excess temperature.
+    agree to 1e-9 of the base's excess temperature. Where the conductivity follows a law, or the surface
+    another law than one coefficient for all of it, the fin is solved step by step, and says of each set
+    whether the steps have ended.
 
-    Returns a `Solution` of n_sets rows. Raises TypeError for a fin that no solver here can take, ValueError
-    for a tip that the shape cannot have, for a position outside a fin that is not uniform, and for a shape
-    whose section is nowhere or whose side is negative.
+    Returns a `Solution` of n_sets rows. Raises TypeError for what is no profile or no surface law, ValueError
+    for a tip that the shape cannot have, for a position outside a fin that is not uniform, for a shape
+    whose section is nowhere or whose side is negative, and for a conductivity law that is not positive where
+    the fin may be.
 
     Examples:
     Very long rods of 5 mm diameter, base at 100 degC, air at 25 degC, of copper and of stainless steel
@@ -48,9 +51,11 @@ def solve(fin: Fin, base: Base, air: float | Array, x: Array) -> Solution:
         return bessel_forms.solve(fin, base, air, x)
     if general.applies(fin):
         return general.solve(fin, base, air, x)
-    raise TypeError(f"no solver for {type(fin.profile).__name__} with {type(fin.surface).__name__}")
+    return nonlinear.solve(fin, base, air, x)
 
 
 def _are_few(fin: Fin) -> bool:
+    if not fin.is_linear:
+        return False
     coefficient = getattr(fin.surface, "coefficient", 0.0)
-    return max(np.size(coefficient), np.size(fin.conductivity)) <= FEW_SETS
+    return max(np.size(coefficient), np.size(fin.constant_conductivity)) <= FEW_SETS

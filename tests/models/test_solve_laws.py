@@ -14,6 +14,7 @@ from finback.models import (
     FixedTip,
     InfiniteTip,
     Joint,
+    PowerCoefficient,
     Profile,
     SurfaceLaw,
     Uniform,
@@ -352,17 +353,36 @@ class Spike:
 
 
 class FreeConvection:
-    """A surface law that is not proportional to the excess temperature."""
+    """A surface law of one's own, not proportional to the excess temperature."""
 
     linear = False
+    uniform = True
 
-    def flux(self, surface, air):
-        return 2.0 * (surface - air) ** 1.25
+    def flux(self, surface, air, _place=0.0, /):
+        return self.response(surface, air)[0]
+
+    def response(self, surface, air, _place=0.0, /):
+        theta = surface - air
+        h = 12.0 * (np.abs(theta) / 40.0) ** 0.25
+        return h * theta, 1.25 * h
+
+    def sinks(self, air, /):
+        return (air,)
 
 
 def test_a_new_shape_needs_no_base_class():
     assert isinstance(Spike(), Profile)
     assert isinstance(FreeConvection(), SurfaceLaw)
+
+
+@every_base
+@every_tip
+def test_a_law_of_ones_own_is_solved_as_ours_is(tip, base):
+    own, ours = (
+        solve(Fin(PROFILE, K, law, tip), base, AIR, X)
+        for law in (FreeConvection(), PowerCoefficient(12.0, 0.25, 40.0))
+    )
+    assert_same(own, ours, rel=1e-12)
 
 
 @every_base
@@ -382,8 +402,11 @@ def test_what_is_no_profile_is_refused_by_name():
         run(AdiabaticTip(), BaseTemperature(PLATE), profile=Sketch())
 
 
-def test_a_fin_without_a_solver_is_refused_by_name():
+def test_what_is_no_law_is_refused_by_name():
+    class Guess:
+        linear = False
+
     base = BaseTemperature(PLATE)
     for profile, name in ((Spike(), "Spike"), (PROFILE, "Uniform")):
-        with pytest.raises(TypeError, match=rf"^no solver for {name} with FreeConvection$"):
-            solve(Fin(profile, K, FreeConvection(), AdiabaticTip()), base, AIR, X)
+        with pytest.raises(TypeError, match=rf"^no solver for {name} with Guess$"):
+            solve(Fin(profile, K, Guess(), AdiabaticTip()), base, AIR, X)

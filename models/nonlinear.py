@@ -1,0 +1,260 @@
+"""Non-linear fins: k(T), free convection, radiation, h by the place; any profile, any tip.
+
+Kirchhoff's potential makes conduction linear, `nodes` makes of it a few equations, and `iteration` solves
+those of a whole block of parameter sets by Newton's method. Here a fin is put into that form. Its nodes are
+chosen by how steep its potential can be; the solution is then carried over to finer nodes, and goes on from
+there in those sets that would change. A power law whose excess temperature changes sign along the fin, or a
+conductivity table with a point among the fin's temperatures, is a kink in the flux: it needs many nodes, and
+milliseconds a set.
+"""
+
+from dataclasses import dataclass, fields, is_dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback.models import iteration
+from finback.models.conductivity import Conductivity, ConstantConductivity
+from finback.models.coupling import require_tip, within
+from finback.models.endless import EndlessFin, settled
+from finback.models.ends import Base, ConvectiveTip, FixedTip, InfiniteTip, Joint
+from finback.models.fin import Fin
+from finback.models.iteration import TINY, Cases, EndLaw, State, held_potential, take
+from finback.models.nodes import PLANS, Nodes, Plan, nodes, responses
+from finback.models.profiles import Profile, Uniform
+from finback.models.sides import Shape
+from finback.models.solution import Solution
+from finback.models.surface import SurfaceLaw, UniformCoefficient
+
+Array = NDArray[np.float64]
+Rows = NDArray[np.intp]
+Values = float | Array
+
+STEPS = 60
+"""Most steps of Newton's method [1] on one set of nodes unless another is asked for; three are usual."""
+BLOCK = 512
+"""Sets solved at a time [1]: their equations stay in the processor's cache."""
+POTENTIAL_ACCURACY, HEAT_ACCURACY = 1e-7, 1e-8
+"""Changes of a potential, over its range, and of a heat [1] by finer nodes up to which a set is done."""
+SLACK = 100.0
+"""Times these accuracies [1] that the finest nodes may change a set that counts as converged."""
+
+
+def applies(fin: Fin) -> bool:
+    """Tell whether this module can solve the fin: any profile with any surface law."""
+    return isinstance(fin.profile, Profile) and isinstance(fin.surface, SurfaceLaw)
+
+
+def solve(fin: Fin, base: Base, air: Values, x: Array, steps: int = STEPS) -> Solution:
+    """Solve a block of fins of any one shape, surface law and conductivity law.
+
+    Arguments: fin; base, its temperature or a joint; air temperature [K]; x, positions [m] of shape (n_x,), 0
+    at the base; steps, most steps of Newton's method. Temperatures are absolute where something radiates.
+    Returns a `Solution` of n_sets rows. Where `converged`, temperatures are right to 1e-6 of their range and
+    heats to 1e-6, usually to 1e-8 and 1e-10; any other row holds the last step. Raises TypeError for what is
+    no profile or no surface law, ValueError for a tip that the shape cannot have, a position outside the fin,
+    a temperature that is not absolute, and a conductivity that is not positive where the fin may be.
+    """
+    if not applies(fin):
+        raise TypeError(f"no solver for {type(fin.profile).__name__} with {type(fin.surface).__name__}")
+    if not isinstance(fin.profile, Uniform):
+        require_tip(fin.profile, fin.tip)
+    shape = _shape(fin)
+    cases = _cases(fin, base, air, shape)
+    positions = np.append(within(fin.profile, np.asarray(x, dtype=np.float64)), fin.profile.length)
+    answer = _Answer.empty(len(cases.lowest), positions)
+    steep = _steepest(cases)
+    waiting = np.arange(len(steep))
+    for plan in PLANS:
+        fits = ~(steep[waiting] > nodes(shape, plan).largest) | (plan is PLANS[-1])
+        ready, waiting = waiting[fits], waiting[~fits]
+        for start in range(0, len(ready), BLOCK):
+            rows = ready[start : start + BLOCK]
+            with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+                _solve_block(_Block(shape, take(cases, rows), rows), plan, steps, answer)
+        if not waiting.size:
+            break
+    return answer.solution()
+
+
+def _shape(fin: Fin) -> Shape:
+    shape = Shape(fin.profile, tuple(getattr(fin.surface, "breaks", ())), "free")
+    if isinstance(fin.tip, FixedTip):
+        return replace(shape, tip="held")
+    loses = isinstance(fin.tip, ConvectiveTip | InfiniteTip) and shape.tip_area > 0
+    return replace(shape, tip="face") if loses else shape
+
+
+def _cases(fin: Fin, base: Base, air: Values, shape: Shape) -> Cases:
+    """Return what differs from set to set; refuse temperatures and conductivities that make no sense."""
+    k, tip = fin.conductivity, fin.tip
+    law = k if isinstance(k, Conductivity) else ConstantConductivity(k)
+    driving = base.plate_temperature if isinstance(base, Joint) else base.temperature
+    held = tip.temperature if isinstance(tip, FixedTip) else air
+    n_sets = max(_count(part) for part in (fin, base, air))
+    ends = [np.broadcast_to(value, n_sets) for value in (driving, held, air, *fin.surface.sinks(air))]
+    low, high = np.min(ends, axis=0), np.max(ends, axis=0)
+    if hasattr(fin.surface, "radiation") and bool(np.any(low <= 0)):
+        raise ValueError(f"temperatures must be absolute where a fin radiates, got {float(low.min())} K")
+    for temperature in (low, high):
+        _require_conducting(law, temperature)
+    return Cases(
+        conductivity=law,
+        surface=fin.surface,
+        tip=_tip_law(fin, law, air, n_sets) if shape.tip == "face" else None,
+        air=air,
+        driving=driving,
+        held=held,
+        resistance=base.resistance / float(shape.area(np.zeros(1))[0]) if isinstance(base, Joint) else None,
+        lowest=np.broadcast_to(law.potential(low, air), n_sets),
+        highest=np.broadcast_to(law.potential(high, air), n_sets),
+    )
+
+
+def _count(value: object) -> int:
+    """Return the number of sets of a value, or of the values of a frozen dataclass."""
+    if isinstance(value, np.ndarray):
+        return value.size if value.ndim == 1 else 1
+    if isinstance(value, Profile) or not is_dataclass(value) or isinstance(value, type):
+        return 1
+    return max((_count(getattr(value, field.name)) for field in fields(value)), default=1)
+
+
+def _require_conducting(law: Conductivity, temperature: Array) -> None:
+    k = np.broadcast_to(law.at(temperature), temperature.shape)
+    wrong = k <= 0
+    if bool(wrong.any()):
+        place = f"{float(k[wrong][0])} W/(m K) at {float(temperature[wrong][0])} K"
+        raise ValueError(f"the conductivity must be positive wherever the fin may be, got {place}")
+
+
+def _tip_law(fin: Fin, conductivity: Conductivity, air: Values, n_sets: int) -> EndLaw | None:
+    """Return the law of a tip's face where it is not the side's."""
+    if isinstance(fin.tip, ConvectiveTip):
+        return None if fin.tip.coefficient is None else UniformCoefficient(fin.tip.coefficient)
+    end = np.array([fin.profile.length])
+    ratio = float(fin.profile.perimeter(end)[0] / fin.profile.area(end)[0])
+    return EndlessFin(fin.surface, conductivity, settled(fin.surface, air, n_sets), ratio)
+
+
+def _steepest(cases: Cases) -> Array:
+    """Return the largest slope of flux over potential [1/m] that each set may have."""
+    places = np.unique([0.0, 0.5, 1.0, *getattr(cases.surface, "breaks", ())])[:, None]
+    found = np.zeros_like(cases.lowest)
+    for potential in (cases.lowest, cases.highest):
+        temperature, k = cases.temperatures(potential)
+        _, slope = cases.surface.response(temperature + 0 * places, cases.air, places)
+        found = np.fmax(found, (slope / k).max(axis=0))
+    return found
+
+
+@dataclass(frozen=True, slots=True)
+class _Block:
+    """Some sets of one shape, and their rows in the answer."""
+
+    shape: Shape
+    cases: Cases
+    rows: Rows
+
+
+def _solve_block(block: _Block, plan: Plan, steps: int, answer: "_Answer") -> None:
+    """Solve a block on the nodes of a plan, and its sets that finer nodes would change on those."""
+    start, change = None, np.zeros(len(block.rows))
+    while True:
+        system = nodes(block.shape, plan)
+        state, converged = iteration.solve(system, block.cases, steps, start)
+        answer.fill(block, plan, state)
+        finer = plan.finer()
+        if finer is None:
+            answer.converged[block.rows] = converged & (change <= SLACK)
+            return
+        answer.converged[block.rows] = converged
+        carried = _carried(block, plan, finer, state)
+        change = _change(nodes(block.shape, finer), block.cases, carried, state)
+        rough = np.flatnonzero(converged & ~(change <= 1))
+        if not rough.size:
+            return
+        block = replace(block, cases=take(block.cases, rough), rows=block.rows[rough])
+        plan, start, change = finer, carried.take(rough), change[rough]
+
+
+def _carried(block: _Block, plan: Plan, finer: Plan, state: State) -> State:
+    """Return a state on finer nodes, its potential that of a state on the nodes of a plan."""
+    there = nodes(block.shape, finer)
+    potential = _potential(block, plan, state, there.places * block.shape.length)
+    return iteration.evaluate(there, block.cases, there.roots[:, None] * potential, state.base)
+
+
+def _potential(block: _Block, plan: Plan, state: State, positions: Array) -> Array:
+    """Return the potential [W/m] at positions [m], shape (n_x, n_sets)."""
+    response, share = responses(block.shape, plan, positions.tobytes())
+    across = state.base - held_potential(nodes(block.shape, plan), block.cases)
+    found: Array = state.base - share[:, None] * across - response @ state.loads
+    return found
+
+
+def _change(finer: Nodes, cases: Cases, carried: State, state: State) -> Array:
+    """Return what a step on finer nodes would change, over what it may change [1], shape (n_sets,)."""
+    potential = np.abs(carried.residual / finer.roots[:, None])[finer.counted].max(axis=0) / cases.span
+    most = finer.roots @ np.abs(carried.loads) + finer.conductance * cases.span
+    heat = np.abs(carried.heat - state.heat) / np.maximum(most, TINY)
+    return np.asarray(np.maximum(potential / POTENTIAL_ACCURACY, heat / HEAT_ACCURACY))
+
+
+@dataclass(frozen=True, slots=True)
+class _Answer:
+    """A solution that is filled block by block; the last of its positions is the tip's."""
+
+    positions: Array
+    temperatures: Array
+    base_temperature: Array
+    base_heat: Array
+    tip_heat: Array
+    radiated_heat: Array
+    converged: NDArray[np.bool_]
+
+    @classmethod
+    def empty(cls, n_sets: int, positions: Array) -> "_Answer":
+        base, heat, tip, radiated = np.zeros((4, n_sets))
+        found = np.zeros((n_sets, len(positions)))
+        return cls(positions, found, base, heat, tip, radiated, np.zeros(n_sets, dtype=np.bool_))
+
+    def fill(self, block: _Block, plan: Plan, state: State) -> None:
+        """Write the sets of a block."""
+        rows, cases, system = block.rows, block.cases, nodes(block.shape, plan)
+        self.temperatures[rows] = cases.temperatures(_potential(block, plan, state, self.positions))[0].T
+        if system.grid.cold_tip:
+            very_tip = np.flatnonzero(self.positions >= block.shape.length)
+            losing = np.abs(state.loads).max(axis=0) > 0
+            fallen = settled(cases.surface, cases.air, len(rows))[losing, None]
+            self.temperatures[np.ix_(rows[losing], very_tip)] = fallen
+        self.base_temperature[rows] = cases.temperatures(state.base)[0]
+        self.base_heat[rows] = state.heat
+        if block.shape.tip == "held":
+            across = state.base - held_potential(system, cases)
+            self.tip_heat[rows] = system.conductance * across - system.tip_lift @ state.loads
+        elif block.shape.tip == "face":
+            self.tip_heat[rows] = system.roots[-1] * state.loads[-1]
+        self.radiated_heat[rows] = _radiated(system, cases, state)
+
+    def solution(self) -> Solution:
+        return Solution(
+            temperatures=self.temperatures[:, :-1],
+            base_temperature=self.base_temperature,
+            base_heat=self.base_heat,
+            tip_temperature=self.temperatures[:, -1],
+            tip_heat=self.tip_heat,
+            converged=self.converged,
+            radiated_heat=self.radiated_heat,
+        )
+
+
+def _radiated(system: Nodes, cases: Cases, state: State) -> Values:
+    """Return what the side radiates [W], and the tip's face where it follows the law of the side."""
+    radiation = getattr(cases.surface, "radiation", None)
+    if radiation is None:
+        return 0.0
+    flux = radiation(state.temperatures, cases.air)
+    if cases.tip is not None:
+        flux[-1] = 0.0
+    return np.asarray(np.square(system.roots) @ flux)
