@@ -6,20 +6,30 @@ drawn as it would happen on a bench: noise for each reading, one offset for each
 each hole, the fin's lengths, and the conductivity where the rig states one.
 """
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from finback.models import (
     AdiabaticTip,
+    Annular,
     BaseTemperature,
+    ConcaveParabolic,
+    ConcavePin,
+    Cone,
     ConvectiveTip,
+    ConvexParabolic,
+    ConvexPin,
     Fin,
     FixedTip,
+    HyperbolicAnnular,
     InfiniteTip,
     Joint,
     Solution,
+    Table,
+    Trapezoidal,
+    Triangular,
     UniformCoefficient,
     pin,
     rectangular,
@@ -32,7 +42,19 @@ from finback.rig import Rig, Sensor, TipName
 ZERO = 273.15
 HOLES = tuple(1e-3 * x for x in (5, 20, 35, 50, 65, 80, 95, 112))  # m
 UNSTATED_NOISE = 0.15  # K
-SHAPES = {"pin": pin, "rectangular": rectangular}
+SHAPES = {
+    "pin": pin,
+    "rectangular": rectangular,
+    "trapezoidal": Trapezoidal,
+    "triangular": Triangular,
+    "concave-parabolic": ConcaveParabolic,
+    "convex-parabolic": ConvexParabolic,
+    "cone": Cone,
+    "concave-pin": ConcavePin,
+    "convex-pin": ConvexPin,
+    "annular": Annular,
+    "hyperbolic-annular": HyperbolicAnnular,
+}
 
 
 @dataclass(frozen=True)
@@ -47,6 +69,7 @@ class Truth:
     tip: TipName = "convective"
     tip_temperature: float = ZERO + 30.0
     lengths: Mapping[str, float] = field(default_factory=dict)  # those that differ from what the rig states
+    table: tuple[Sequence[float], ...] = ()  # positions [m], areas [m²], perimeters [m] of such a profile
 
     def solve(self, rig: Rig, x: np.ndarray) -> Solution:
         """Solve the true fin at positions x [m]."""
@@ -57,7 +80,8 @@ class Truth:
             "infinite": InfiniteTip(),
             "fixed": FixedTip(self.tip_temperature),
         }
-        fin = Fin(SHAPES[rig.profile_name](**sizes), self.k, UniformCoefficient(self.h), tips[self.tip])
+        shape = Table(*self.table) if self.table else SHAPES[rig.profile_name](**sizes)
+        fin = Fin(shape, self.k, UniformCoefficient(self.h), tips[self.tip])
         base = BaseTemperature(self.plate) if self.joint is None else Joint(self.plate, self.joint)
         return solve(fin, base, self.air, x)
 
