@@ -8,7 +8,7 @@ from typing import Any
 import pytest
 import typer
 
-from finback import cli, rig
+from finback import cli, rig, rig_file
 from finback import readings as readings_reader
 from finback.findings import Finding
 
@@ -81,6 +81,21 @@ def test_the_rig_and_the_readings_shown_can_be_read(readme: str, tmp_path: Path)
     table = readings_reader.read(tmp_path / "readings.csv", rig.read(tmp_path / "rig.toml"))
     assert table.runs == ("morning", "after cleaning")
     assert table.pick("morning").values["AI"] == pytest.approx(273.15 + 22.0, abs=1e-9)
+
+
+def told_keys() -> set[str]:
+    """Return what a rig file may hold in its tables: profiles, and the keys that are not refused."""
+    sections = (rig_file.FinSection, rig_file.MaterialSection, rig_file.AirSection, rig_file.JointSection)
+    fields = {name: field for section in sections for name, field in section.model_fields.items()}
+    taken = {name for name, field in fields.items() if field.annotation is not type(None)}
+    return taken | set(rig_file.PROFILES)
+
+
+def test_every_profile_and_every_key_of_a_rig_stands_in_the_readme(readme: str) -> None:
+    _, _, section = readme.partition("### rig.toml")
+    section = section.partition("\n### ")[0]
+    assert {name for name in told_keys() if not re.search(rf"(?<![\w-]){name}(?![\w-])", section)} == set()
+    assert {"convex-pin", "tip_thickness", "humidity"} <= told_keys()  # or the line above compares nothing
 
 
 def test_the_python_example_runs(readme: str, capsys: pytest.CaptureFixture[str]) -> None:
