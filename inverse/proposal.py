@@ -125,8 +125,7 @@ def _rung(log_density: LogDensity, last: float, others: Array, root: Array) -> M
     def given(block: Array) -> Array:
         return log_density(np.column_stack([block, np.full(len(block), last)]))
 
-    spread, axes = np.linalg.eigh(root @ root.T)
-    return laplace.find_mode(given, others, axes * np.sqrt(np.maximum(spread, spread[-1] * SMALLEST_SPREAD)))
+    return laplace.find_mode(given, others, _root(root @ root.T))
 
 
 def adapt(
@@ -173,7 +172,12 @@ def _moments(draws: Array, weights: Array) -> tuple[Array, Array]:
     """Return mean (p,) and a root (p, p) of the widened covariance of weighted draws."""
     centre = weights @ draws
     away = draws - centre
-    covariance = WIDER * (away.T @ (away * weights[:, None]))
+    return centre, _root(WIDER * (away.T @ (away * weights[:, None])))
+
+
+def _root(covariance: Array) -> Array:
+    """Return a root of a covariance (p, p), be it flat in some direction or of very different scales."""
     scale = np.sqrt(np.maximum(np.diag(covariance), np.finfo(np.float64).tiny))
     spread, axes = np.linalg.eigh(covariance / np.outer(scale, scale))
-    return centre, scale[:, None] * (axes * np.sqrt(np.maximum(spread, SMALLEST_SPREAD)))
+    found: Array = scale[:, None] * (axes * np.sqrt(np.maximum(spread, SMALLEST_SPREAD)))
+    return found
