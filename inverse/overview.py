@@ -11,14 +11,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from finback import outline
+from finback.handbook import ROOM
+from finback.models.constants import ZERO_CELSIUS
 from finback.quantity import Quantity
-from finback.report.phrases import clean
+from finback.report.phrases import clean, told
 from finback.report.terminal import wrap
 from finback.rig import Rig, Sensor
 from finback.surroundings import Surroundings
 
 DRAWING = 64  # characters that stand for the length of the fin
-SHORTEST, TALLEST = 24, 9.0  # characters of the length of a stout one; half of its thickness in characters
+SHORTEST, TALLEST = 24, 9.0  # characters of the length of a stout one, and of half its thickness
+STOUTEST = 12.0  # half of a thickness, in characters, beyond which it is drawn smaller
 TAPER_SEEN = 3.0  # half of a thickness, in characters, from which its taper is seen
 FULL, THIN = 0.75, 0.3  # half of a thickness, in characters, drawn as a full line and as a double one
 STRETCHES = (2, 3, 4, 5, 8, 10, 15, 20, 30, 50, 100)
@@ -107,7 +110,7 @@ def describe(rig: Rig, runs: Sequence[str] | None, candidates: Iterable[str]) ->
     if rig.assumed:
         blocks.append(["Assumed"])
         for each in rig.assumed:
-            blocks[-1] += wrap(clean(each.message), "  ", "  ")
+            blocks[-1] += wrap(told(each.message), "  ", "  ")
     if runs is not None:
         count = f"{len(runs)} run{'' if len(runs) == 1 else 's'}"
         blocks.append(wrap(f"{count}: {', '.join(clean(run) for run in runs)}"))
@@ -123,7 +126,7 @@ def draw(rig: Rig) -> str:
     from rich.cells import cell_len
 
     seen = outline.trace(rig)
-    columns, stretch = _scale(seen, rig.length)
+    columns, stretch, times = _scale(seen, rig.length)
     names, marks, free = [" "] * (DRAWING + 8), {}, 0
     for sensor in rig.fin_sensors():
         column = round((sensor.position or 0.0) / rig.length * (columns - 1))
@@ -138,18 +141,24 @@ def draw(rig: Rig) -> str:
     heights = seen.at(x) / rig.length * columns * stretch
     lines = [" " * 7 + "".join(names).rstrip(), *_rows(heights, marks, foot)]
     scale = f"{1e3 * rig.length:g} mm"
-    times = f"thickness drawn {stretch} times larger"
     lines.append(" " * 7 + f"0{scale:>{columns - 1}}")
-    return "\n".join([*lines, *([" " * 7 + times] if stretch > 1 else [])])
+    return "\n".join([*lines, *([" " * 7 + times] if times else [])])
 
 
-def _scale(seen: outline.Outline, length: float) -> tuple[int, int]:
-    """Return how many characters the length takes, and how many times larger the thickness is drawn."""
+def _scale(seen: outline.Outline, length: float) -> tuple[int, float, str]:
+    """Return how many characters the length takes, and the factor that the thickness is drawn larger by.
+
+    The factor comes as words, too, where it is not 1.
+    """
     columns = min(DRAWING, max(SHORTEST, int(TALLEST * length / seen.largest)))
     half = seen.largest / length * columns
+    if half > STOUTEST:
+        times = next((n for n in STRETCHES if half <= n * STOUTEST), STRETCHES[-1])
+        return columns, 1 / times, f"thickness drawn {times} times smaller"
     if np.ptp(seen.half) <= 1e-9 * seen.largest or half >= TAPER_SEEN:
-        return columns, 1
-    return columns, next((n for n in STRETCHES if n * half >= TAPER_SEEN), STRETCHES[-1])
+        return columns, 1.0, ""
+    times = next((n for n in STRETCHES if n * half >= TAPER_SEEN), STRETCHES[-1])
+    return columns, float(times), f"thickness drawn {times} times larger"
 
 
 def _rows(heights: NDArray[np.float64], marks: Mapping[int, str], foot: str) -> list[str]:
@@ -182,7 +191,7 @@ def _labelled(texts: Iterable[tuple[str, str]]) -> list[str]:
 
 
 def _fin_texts(rig: Rig) -> Iterator[tuple[str, str]]:
-    sizes = ", ".join(f"{name} {_shown(size)}" for name, size in rig.geometry.items())
+    sizes = ", ".join(f"{name.replace('_', ' ')} {_shown(size)}" for name, size in rig.geometry.items())
     if rig.shape_file is not None:
         sizes = f"{clean(rig.shape_file.source.name, 40)}, length {1e3 * rig.length:g} mm"
     options = ", edges guarded" * rig.guarded_edges + ", slant surface" * rig.slant_surface
@@ -196,7 +205,8 @@ def _fin_texts(rig: Rig) -> Iterator[tuple[str, str]]:
     if rig.conductivity is None:
         yield "k", "not stated: a wide prior"
     elif rig.handbook is not None:
-        yield "k", f"{_shown(rig.conductivity)}, of {rig.handbook.name} by the handbook"
+        whose = f"of {rig.handbook.name} by the handbook at {ROOM - ZERO_CELSIUS:.0f} °C"
+        yield "k", f"{_shown(rig.conductivity)}, {whose}"
     else:
         yield "k", f"{_shown(rig.conductivity)}, stated{f' ({name})' if name else ''}"
     if rig.expected_joint is not None:

@@ -112,7 +112,7 @@ def measure(fin: FinSection, source: Path | None) -> dict[str, Quantity]:
         if given[key] is None:
             problem = f"{shape.words} needs the key {quoted(key)}"
             raise InputError(source, "[fin]", problem, f'add a line such as {key} = "{EXAMPLES[key]}"')
-    found = {key: value for key, value in given.items() if isinstance(value, Quantity)}
+    found = {key: value for key in known if isinstance(value := given[key], Quantity)}
     if "outer_diameter" in found and found["outer_diameter"].value <= found["inner_diameter"].value:
         inner, outer = (quoted(found[key].text) for key in ("inner_diameter", "outer_diameter"))
         problem = f"{outer} is not above the inner diameter, {inner}"

@@ -30,6 +30,8 @@ from finback.report.layout import (
     LETTER,
     LINE,
     SECTION,
+    SECTION_FROM_RIGHT,
+    SMALL_LETTER,
     WIDTH,
     Layout,
     lay_out,
@@ -126,7 +128,9 @@ def _drawing(scene: scenes.DrawingScene) -> Figure:
         "to scale" if lay.stretch == 1 else f"length to scale, thickness drawn {lay.stretch} times larger"
     )
     seen = "Side view" if scene.tube is None else "Cut along the axis of the tube"
-    axes.text(lay.left if scene.tube is None else 0.12, 0.1, f"{seen}, {to_scale}; {scene.tip}", **SMALL)
+    caption = f"{seen}, {to_scale}; {scene.tip}"
+    room = WIDTH - SECTION_FROM_RIGHT - SMALL_LETTER * (len(caption) + len(scene.section.caption) / 2 + 3)
+    axes.text(max(0.12, min(lay.left, room)), 0.1, caption, **SMALL)
     return figure
 
 
@@ -206,7 +210,7 @@ def _draw_other_sensors(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> 
 def _draw_section(axes: Axes, scene: scenes.DrawingScene, lay: Layout) -> None:
     """Draw the cross-section at the right, at a scale of its own: the base's, and the tip's inside it."""
     section = scene.section
-    x, y = WIDTH - 0.65, lay.axis
+    x, y = WIDTH - SECTION_FROM_RIGHT, lay.axis
     largest = max(section.base, section.tip)
     if section.kind == "flat":
         half = _draw_flat_section(axes, section, x, y)

@@ -131,6 +131,9 @@ def test_a_stout_fin_is_drawn_shorter() -> None:
     drawing = overview.draw(shaped("pin", length="20 mm", diameter="10 mm"))
     assert max(map(len, drawing.splitlines())) < 50
     assert len(drawing.splitlines()) < 12
+    stouter = overview.draw(shaped("pin", length="20 mm", diameter="90 mm"))
+    assert stouter.splitlines()[-1].strip() == "thickness drawn 5 times smaller"
+    assert len(stouter.splitlines()) < 20
 
 
 def test_an_annular_fin_stands_on_a_tube() -> None:
@@ -154,7 +157,7 @@ def test_the_air_and_the_material_are_told() -> None:
         "sensors": {"S": {"at": "5 mm"}},
     }
     text = overview.describe(Rig.from_dict(document), None, [])
-    assert "k      401 W/(m K) +/- 3 %, of copper, pure by the handbook" in text
+    assert "k      401 W/(m K) +/- 3 %, of copper, pure by the handbook at 27 °C" in text
     assert "air    still\nair    pressure 98 kPa, humidity 45 %\naxis   vertical" in text
     document["material"] = {"name": "EN AW-6060, heat 4711", "conductivity": "201 W/(m K) +/- 2 %"}
     document["air"] = {"speed": "2.5 m/s", "correlation": "Hilpert"}
