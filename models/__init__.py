@@ -17,7 +17,8 @@ from finback.models.ends import (
     Tip,
 )
 from finback.models.fin import Fin
-from finback.models.performance import effectiveness, efficiency
+from finback.models.performance import HeatParts, effectiveness, efficiency, heat_parts
+from finback.models.plate import Plate, PlateHeat, heat_of_one_fin, plate_heat
 from finback.models.profiles import (
     Annular,
     ConcaveParabolic,
@@ -61,10 +62,13 @@ __all__ = [
     "ConvexPin",
     "Fin",
     "FixedTip",
+    "HeatParts",
     "HyperbolicAnnular",
     "InfiniteTip",
     "Joint",
     "LinearConductivity",
+    "Plate",
+    "PlateHeat",
     "PowerCoefficient",
     "Profile",
     "Radiating",
@@ -81,8 +85,11 @@ __all__ = [
     "VaryingCoefficient",
     "effectiveness",
     "efficiency",
+    "heat_of_one_fin",
+    "heat_parts",
     "is_one_dimensional",
     "pin",
+    "plate_heat",
     "rectangular",
     "solve",
     "transverse_biot",

@@ -19,6 +19,8 @@ from finback.models.validity import Range
 Array = NDArray[np.float64]
 Values = float | Array
 
+NUMBERS = (float, np.ndarray, int, np.number)
+
 
 @runtime_checkable
 class Conductivity(Protocol):
@@ -70,9 +72,9 @@ class ConstantConductivity:
 
 def constant(conductivity: Values | Conductivity) -> Values | None:
     """Return a conductivity [W/(m K)] that is the same at every temperature, None of one that is not."""
-    if isinstance(conductivity, ConstantConductivity):
-        return conductivity.value
-    return conductivity if isinstance(conductivity, float | int | np.ndarray) else None
+    if isinstance(conductivity, NUMBERS):
+        return conductivity
+    return conductivity.value if isinstance(conductivity, ConstantConductivity) else None
 
 
 @dataclass(frozen=True, slots=True)
@@ -123,7 +125,7 @@ class TabulatedConductivity:
 
     Examples:
     >>> law = TabulatedConductivity(((300.0, 200.0), (400.0, 180.0)), factor=1.1)
-    >>> round(law.potential(400.0, 300.0), 6), round(law.temperature(20900.0, 300.0), 6)
+    >>> float(law.potential(400.0, 300.0)), round(float(law.temperature(20900.0, 300.0)), 6)
     (20900.0, 400.0)
 
     """

@@ -223,7 +223,7 @@ def _on_line(nodes: Nodes, cases: Cases, state: State, slope: Array) -> State:
 
 
 def _step(nodes: Nodes, cases: Cases, state: State) -> tuple[State, Array, Flags]:
-    """Take one step; return the new state, the step over the potential's range, whether it was whole."""
+    """Take one step; return the new state, how much it changed [1], and whether the step was whole."""
     n, n_sets = state.u.shape
     matrices = np.empty((n_sets, n, n))
     matrices[:] = nodes.stiffness
@@ -243,6 +243,8 @@ def _step(nodes: Nodes, cases: Cases, state: State) -> tuple[State, Array, Flags
     changes = np.abs(du / nodes.roots[:, None])[nodes.counted]
     size = np.maximum(changes.max(axis=0), np.abs(d_base)) / cases.span
     new = evaluate(nodes, cases, state.u + du, state.base + d_base)
+    most = nodes.roots @ np.abs(new.loads) + nodes.conductance * cases.span
+    size = np.maximum(size, np.abs(new.heat - state.heat) / np.maximum(most, TINY))
     worse = ~(new.error <= state.error) & (size > TOLERANCE)
     if worse.any():
         new = _halved(nodes, cases, state, (du, d_base), worse)

@@ -78,7 +78,8 @@ class Nodes:
     rates [1/m] (n,) and modes (n, n), eigenvalues and eigenvectors of the stiffness; counted (n,), whether a
     node lies where the error is measured; tails (n_tails, n): times the loads, the error of the potential as
     the last coefficients of the flux show it; largest [1/m], the slope of flux over potential that they
-    resolve; fluxes (n_elements, q, n), F of each load on the grid.
+    resolve; fluxes (n_elements, q, n), F of each load on the grid, and functions (n_elements, q, n), the
+    polynomials of the nodes.
     """
 
     places: Array
@@ -95,6 +96,20 @@ class Nodes:
     largest: float
     grid: Grid
     fluxes: Array
+    functions: Array
+
+
+@dataclass(frozen=True, slots=True)
+class Responses:
+    """What makes the potential at some places: Phi_b - share (Phi_b - Phi_tip) - fall . p + values . f.
+
+    fall [m] and values [1/m], both (n_x, n); share [1] (n_x,). f is what is left of the equations: it is
+    nothing when they hold, and keeps a small error of p from becoming a large one of Phi where m L is large.
+    """
+
+    fall: Array
+    values: Array
+    share: Array
 
 
 @lru_cache(maxsize=256)
@@ -104,18 +119,16 @@ def nodes(shape: Shape, plan: Plan) -> Nodes:
 
 
 @lru_cache(maxsize=256)
-def responses(shape: Shape, plan: Plan, positions: bytes) -> tuple[Array, Array]:
-    """Return what a potential at positions x [m] (n_x,), as bytes, is made of.
-
-    Phi(x) = Phi_b - share (Phi_b - Phi_tip) - response . p: response [m] (n_x, n), share [1] (n_x,).
-    """
+def responses(shape: Shape, plan: Plan, positions: bytes) -> Responses:
+    """Return what the potential at positions x [m] (n_x,), as bytes, is made of."""
     found = nodes(shape, plan)
     places = np.frombuffer(positions) / shape.length
-    response = found.grid.fall(found.fluxes, places)
+    values = found.grid.at(found.functions, places)
+    fall = found.grid.fall(found.fluxes, places)
     if shape.tip != "held":
-        return response, np.zeros(len(places))
-    fall = found.grid.fall(found.grid.even, places)
-    return response - fall * found.tip_lift, fall[:, 0] * found.conductance
+        return Responses(fall, values, np.zeros(len(places)))
+    straight = found.grid.fall(found.grid.even, places)
+    return Responses(fall - straight * found.tip_lift, values, straight[:, 0] * found.conductance)
 
 
 @lru_cache(maxsize=64)
@@ -154,7 +167,9 @@ def _build(shape: Shape, plan: Plan, power: float) -> Nodes:
         root = float(np.sqrt(shape.tip_area))
         places, roots, tails = np.append(places, 1.0), np.append(roots, root), np.pad(tails, ((0, 0), (0, 1)))
         fluxes = np.concatenate([fluxes, root * fine.even], axis=2)
-    return _equations(shape, fine, fluxes, places, roots, tails)
+        functions = np.concatenate([functions, 0 * fine.even], axis=2)
+    found = _equations(shape, fine, fluxes, places, roots, tails)
+    return replace(found, functions=functions)
 
 
 def _pieces(shape: Shape, fine: Grid, plan: Plan) -> NDArray[np.intp]:
@@ -212,6 +227,7 @@ def _equations(shape: Shape, fine: Grid, fluxes: Array, places: Array, roots: Ar
         largest=0.0,
         grid=fine,
         fluxes=fluxes,
+        functions=fluxes,
     )
     driven = [found.lift] if shape.tip != "held" else [found.lift, tip_lift]
     return replace(found, largest=_largest(found, np.stack(driven, axis=1)))

@@ -14,17 +14,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from finback.models import iteration
-from finback.models.conductivity import Conductivity, ConstantConductivity
+from finback.models.conductivity import Conductivity, ConstantConductivity, constant
 from finback.models.coupling import require_tip, within
 from finback.models.endless import EndlessFin, settled
 from finback.models.ends import Base, ConvectiveTip, FixedTip, InfiniteTip, Joint
 from finback.models.fin import Fin
 from finback.models.iteration import TINY, Cases, EndLaw, State, held_potential, take
 from finback.models.nodes import PLANS, Nodes, Plan, nodes, responses
-from finback.models.profiles import Profile, Uniform
+from finback.models.profiles import Uniform
 from finback.models.sides import Shape
 from finback.models.solution import Solution
-from finback.models.surface import SurfaceLaw, UniformCoefficient
+from finback.models.surface import UniformCoefficient
 
 Array = NDArray[np.float64]
 Rows = NDArray[np.intp]
@@ -40,9 +40,15 @@ SLACK = 100.0
 """Times these accuracies [1] that the finest nodes may change a set that counts as converged."""
 
 
+PROFILE = ("length", "area", "perimeter", "side_area")
+LAW = ("linear", "uniform", "flux", "response", "sinks")
+"""What a `Profile` and a `SurfaceLaw` have, asked for by name: asking a protocol takes 30 times as long."""
+
+
 def applies(fin: Fin) -> bool:
     """Tell whether this module can solve the fin: any profile with any surface law."""
-    return isinstance(fin.profile, Profile) and isinstance(fin.surface, SurfaceLaw)
+    members = ((fin.profile, PROFILE), (fin.surface, LAW))
+    return all(hasattr(part, name) for part, names in members for name in names)
 
 
 def solve(fin: Fin, base: Base, air: Values, x: Array, steps: int = STEPS) -> Solution:
@@ -88,10 +94,16 @@ def _shape(fin: Fin) -> Shape:
 def _cases(fin: Fin, base: Base, air: Values, shape: Shape) -> Cases:
     """Return what differs from set to set; refuse temperatures and conductivities that make no sense."""
     k, tip = fin.conductivity, fin.tip
-    law = k if isinstance(k, Conductivity) else ConstantConductivity(k)
+    number = constant(k)
+    if number is not None:
+        law: Conductivity = ConstantConductivity(number)
+    elif isinstance(k, Conductivity):
+        law = k
+    else:
+        raise TypeError(f"{type(k).__name__} is no conductivity: it needs at, potential and temperature")
     driving = base.plate_temperature if isinstance(base, Joint) else base.temperature
     held = tip.temperature if isinstance(tip, FixedTip) else air
-    n_sets = max(_count(part) for part in (fin, base, air))
+    n_sets = max(_count(part) for part in (law, fin.surface, tip, base, air))
     ends = [np.broadcast_to(value, n_sets) for value in (driving, held, air, *fin.surface.sinks(air))]
     low, high = np.min(ends, axis=0), np.max(ends, axis=0)
     if hasattr(fin.surface, "radiation") and bool(np.any(low <= 0)):
@@ -115,7 +127,7 @@ def _count(value: object) -> int:
     """Return the number of sets of a value, or of the values of a frozen dataclass."""
     if isinstance(value, np.ndarray):
         return value.size if value.ndim == 1 else 1
-    if isinstance(value, Profile) or not is_dataclass(value) or isinstance(value, type):
+    if not is_dataclass(value) or isinstance(value, type):
         return 1
     return max((_count(getattr(value, field.name)) for field in fields(value)), default=1)
 
@@ -159,23 +171,33 @@ class _Block:
 
 def _solve_block(block: _Block, plan: Plan, steps: int, answer: "_Answer") -> None:
     """Solve a block on the nodes of a plan, and its sets that finer nodes would change on those."""
-    start, change = None, np.zeros(len(block.rows))
+    carried: State | None = None
     while True:
-        system = nodes(block.shape, plan)
-        state, converged = iteration.solve(system, block.cases, steps, start)
+        system, finer = nodes(block.shape, plan), plan.finer()
+        earlier = answer.base_heat[block.rows]
+        state, converged = iteration.solve(system, block.cases, steps, carried)
         answer.fill(block, plan, state)
-        finer = plan.finer()
-        if finer is None:
-            answer.converged[block.rows] = converged & (change <= SLACK)
+        change = np.full(len(block.rows), np.inf)
+        if carried is not None:
+            change = _measure(system, block.cases, state.u - carried.u, state.heat - earlier, state)
+        answer.converged[block.rows] = converged & ((change <= SLACK) | (finer is not None))
+        block, state = _part(block, state, converged & ~(change <= 1))
+        if finer is None or not block.rows.size:
             return
-        answer.converged[block.rows] = converged
         carried = _carried(block, plan, finer, state)
-        change = _change(nodes(block.shape, finer), block.cases, carried, state)
-        rough = np.flatnonzero(converged & ~(change <= 1))
-        if not rough.size:
+        # What finer nodes would change is less than the residual there, and much less where m L is large.
+        misfit = carried.residual, carried.heat - state.heat
+        bound = _measure(nodes(block.shape, finer), block.cases, *misfit, carried)
+        block, carried = _part(block, carried, ~(bound <= 1))
+        if not block.rows.size:
             return
-        block = replace(block, cases=take(block.cases, rough), rows=block.rows[rough])
-        plan, start, change = finer, carried.take(rough), change[rough]
+        plan = finer
+
+
+def _part(block: _Block, state: State, chosen: NDArray[np.bool_]) -> tuple[_Block, State]:
+    """Return the chosen sets of a block and their state."""
+    rows = np.flatnonzero(chosen)
+    return replace(block, cases=take(block.cases, rows), rows=block.rows[rows]), state.take(rows)
 
 
 def _carried(block: _Block, plan: Plan, finer: Plan, state: State) -> State:
@@ -187,18 +209,21 @@ def _carried(block: _Block, plan: Plan, finer: Plan, state: State) -> State:
 
 def _potential(block: _Block, plan: Plan, state: State, positions: Array) -> Array:
     """Return the potential [W/m] at positions [m], shape (n_x, n_sets)."""
-    response, share = responses(block.shape, plan, positions.tobytes())
+    at = responses(block.shape, plan, positions.tobytes())
     across = state.base - held_potential(nodes(block.shape, plan), block.cases)
-    found: Array = state.base - share[:, None] * across - response @ state.loads
+    found: Array = (
+        state.base - at.share[:, None] * across - at.fall @ state.loads + at.values @ state.residual
+    )
     return found
 
 
-def _change(finer: Nodes, cases: Cases, carried: State, state: State) -> Array:
-    """Return what a step on finer nodes would change, over what it may change [1], shape (n_sets,)."""
-    potential = np.abs(carried.residual / finer.roots[:, None])[finer.counted].max(axis=0) / cases.span
-    most = finer.roots @ np.abs(carried.loads) + finer.conductance * cases.span
-    heat = np.abs(carried.heat - state.heat) / np.maximum(most, TINY)
-    return np.asarray(np.maximum(potential / POTENTIAL_ACCURACY, heat / HEAT_ACCURACY))
+def _measure(system: Nodes, cases: Cases, u: Array, heat: Array, state: State) -> Array:
+    """Return how large differences of u [W] and of the base's heat [W] are [1], over what is accurate."""
+    potential = np.abs(u / system.roots[:, None])[system.counted].max(axis=0) / cases.span
+    most = system.roots @ np.abs(state.loads) + system.conductance * cases.span
+    return np.asarray(
+        np.maximum(potential / POTENTIAL_ACCURACY, np.abs(heat) / np.maximum(most, TINY) / HEAT_ACCURACY)
+    )
 
 
 @dataclass(frozen=True, slots=True)

@@ -92,13 +92,25 @@ class Grid:
         """Integrate fluxes/A from the base to places x/L [1]: (n_elements, q, n), (n_x,) -> (n_x, n)."""
         parts = fluxes * self.resistance[:, :, None]
         whole = parts.sum(axis=1)
-        element = np.clip(np.searchsorted(self.edges, places, side="right") - 1, 0, len(self.edges) - 2)
-        start, end = self.edges[element], self.edges[element + 1]
-        xi = 2 * (places - start) / (end - start) - 1
+        element, xi = self._located(places)
         shares = legendre.legvander(xi, len(self.reference)) @ self.integrals / self.weights
         found: Array = (np.cumsum(whole, axis=0) - whole)[element]
         found += np.einsum("xj,xjk->xk", shares, parts[element])
         return found
+
+    def at(self, functions: Array, places: Array) -> Array:
+        """Return functions at places x/L [1]: (n_elements, q, n), (n_x,) -> (n_x, n)."""
+        element, xi = self._located(places)
+        degree = len(self.reference) - 1
+        shares = legendre.legvander(xi, degree) @ np.linalg.inv(legendre.legvander(self.reference, degree))
+        found: Array = np.einsum("xj,xjk->xk", shares, functions[element])
+        return found
+
+    def _located(self, places: Array) -> tuple[NDArray[np.intp], Array]:
+        """Return the elements that places x/L [1] lie in, and where, from -1 to 1."""
+        element = np.clip(np.searchsorted(self.edges, places, side="right") - 1, 0, len(self.edges) - 2)
+        start, end = self.edges[element], self.edges[element + 1]
+        return element, 2 * (places - start) / (end - start) - 1
 
     @property
     def even(self) -> Array:

@@ -27,7 +27,7 @@ LAYERS = (
     "models.fin models.solution models.coupling models.elements models.waves",
     "models.closed_form models.bessel_forms models.modes models.sides models.gauss models.endless",
     "models.general models.nodes",
-    "models.performance models.iteration",
+    "models.performance models.plate models.iteration",
     "models.nonlinear",
     "models.solve",
     "models",
