@@ -64,7 +64,7 @@ def basis(degree: int) -> Basis:
     """Return the polynomials of a degree by their values at the Legendre-Gauss-Lobatto nodes."""
     last = np.zeros(degree + 1)
     last[-1] = 1
-    inner = np.sort(legendre.legroots(legendre.legder(last)))
+    inner = np.sort(np.real(legendre.legroots(legendre.legder(last))))  # complex in newer numpy, all real
     nodes = np.concatenate([[-1.0], inner, [1.0]])
     points, weights = legendre.leggauss(degree + 3)
     coefficients = np.linalg.inv(legendre.legvander(nodes, degree))
