@@ -94,8 +94,8 @@ class Grid:
         whole = parts.sum(axis=1)
         element, xi = self._located(places)
         shares = legendre.legvander(xi, len(self.reference)) @ self.integrals / self.weights
-        found: Array = (np.cumsum(whole, axis=0) - whole)[element]
-        found += np.einsum("xj,xjk->xk", shares, parts[element])
+        before = np.cumsum(whole, axis=0) - whole
+        found: Array = before[element] + _mixed(shares, parts, element)
         return found
 
     def at(self, functions: Array, places: Array) -> Array:
@@ -103,8 +103,7 @@ class Grid:
         element, xi = self._located(places)
         degree = len(self.reference) - 1
         shares = legendre.legvander(xi, degree) @ np.linalg.inv(legendre.legvander(self.reference, degree))
-        found: Array = np.einsum("xj,xjk->xk", shares, functions[element])
-        return found
+        return _mixed(shares, functions, element)
 
     def _located(self, places: Array) -> tuple[NDArray[np.intp], Array]:
         """Return the elements that places x/L [1] lie in, and where, from -1 to 1."""
@@ -116,6 +115,15 @@ class Grid:
     def even(self) -> Array:
         """One at every point [1], shape (n_elements, q, 1): a flux that crosses every section alike."""
         return np.ones((*self.side.shape, 1))
+
+
+def _mixed(shares: Array, parts: Array, element: NDArray[np.intp]) -> Array:
+    """Add up each place's shares (n_x, q) of the parts of its element: (n_elements, q, n) -> (n_x, n)."""
+    found = np.empty((len(element), parts.shape[2]))
+    for each in np.unique(element):
+        there = element == each
+        found[there] = shares[there] @ parts[each]
+    return found
 
 
 @lru_cache(maxsize=64)

@@ -174,9 +174,9 @@ def quadrature(fin):
     halves = length * 0.5 ** np.arange(1, 25)
     breaks = length * np.array(getattr(fin.surface, "breaks", ()))
     edges = np.unique(
-        np.concatenate([[0.0, length], halves, length - halves, breaks, np.linspace(0, length, 9)])
+        np.concatenate([[0.0, length], halves, length - halves, breaks, np.linspace(0, length, 101)])
     )
-    nodes, weights = np.polynomial.legendre.leggauss(20)
+    nodes, weights = np.polynomial.legendre.leggauss(12)
     half = np.diff(edges)[:, None] / 2
     x = (edges[:-1, None] + half * (1 + nodes)).ravel()
     return x, (half * weights).ravel() * fin.profile.perimeter(x)
