@@ -36,6 +36,8 @@ BLOCK = 512
 """Sets solved at a time [1]: their equations stay in the processor's cache."""
 POTENTIAL_ACCURACY, HEAT_ACCURACY = 1e-7, 1e-8
 """Changes of a potential, over its range, and of a heat [1] by finer nodes up to which a set is done."""
+NO_HEAT = 1e-6
+"""Share [1] of what a fin between held ends could conduct that counts as no heat."""
 SLACK = 100.0
 """Times these accuracies [1] that the finest nodes may change a set that counts as converged."""
 
@@ -171,33 +173,28 @@ class _Block:
 
 def _solve_block(block: _Block, plan: Plan, steps: int, answer: "_Answer") -> None:
     """Solve a block on the nodes of a plan, and its sets that finer nodes would change on those."""
-    carried: State | None = None
+    carried, coarser = None, np.empty(0)
     while True:
         system, finer = nodes(block.shape, plan), plan.finer()
-        earlier = answer.base_heat[block.rows]
         state, converged = iteration.solve(system, block.cases, steps, carried)
         answer.fill(block, plan, state)
-        change = np.full(len(block.rows), np.inf)
-        if carried is not None:
-            change = _measure(system, block.cases, state.u - carried.u, state.heat - earlier, state)
-        answer.converged[block.rows] = converged & ((change <= SLACK) | (finer is not None))
-        block, state = _part(block, state, converged & ~(change <= 1))
-        if finer is None or not block.rows.size:
+        heats = _heats(system, state)
+        if finer is None:
+            change = np.zeros(len(block.rows))
+            if carried is not None:
+                change = _measure(system, block.cases, state.u - carried.u, heats - coarser, state)
+            answer.converged[block.rows] = converged & (change <= SLACK)
             return
+        answer.converged[block.rows] = converged
         carried = _carried(block, plan, finer, state)
+        there = nodes(block.shape, finer)
         # What finer nodes would change is less than the residual there, and much less where m L is large.
-        misfit = carried.residual, carried.heat - state.heat
-        bound = _measure(nodes(block.shape, finer), block.cases, *misfit, carried)
-        block, carried = _part(block, carried, ~(bound <= 1))
-        if not block.rows.size:
+        misfit = _measure(there, block.cases, carried.residual, _heats(there, carried) - heats, carried)
+        rough = np.flatnonzero(converged & ~(misfit <= 1))
+        if not rough.size:
             return
-        plan = finer
-
-
-def _part(block: _Block, state: State, chosen: NDArray[np.bool_]) -> tuple[_Block, State]:
-    """Return the chosen sets of a block and their state."""
-    rows = np.flatnonzero(chosen)
-    return replace(block, cases=take(block.cases, rows), rows=block.rows[rows]), state.take(rows)
+        block = replace(block, cases=take(block.cases, rough), rows=block.rows[rough])
+        plan, carried, coarser = finer, carried.take(rough), heats[:, rough]
 
 
 def _carried(block: _Block, plan: Plan, finer: Plan, state: State) -> State:
@@ -217,13 +214,18 @@ def _potential(block: _Block, plan: Plan, state: State, positions: Array) -> Arr
     return found
 
 
-def _measure(system: Nodes, cases: Cases, u: Array, heat: Array, state: State) -> Array:
-    """Return how large differences of u [W] and of the base's heat [W] are [1], over what is accurate."""
+def _heats(system: Nodes, state: State) -> Array:
+    """Return what enters the base and what the side and a tip's face lose [W], shape (2, n_sets)."""
+    return np.stack([state.heat, system.roots @ state.loads])
+
+
+def _measure(system: Nodes, cases: Cases, u: Array, heats: Array, state: State) -> Array:
+    """Return how large differences of u [W] and of heats [W] are [1], over what is accurate."""
     potential = np.abs(u / system.roots[:, None])[system.counted].max(axis=0) / cases.span
-    most = system.roots @ np.abs(state.loads) + system.conductance * cases.span
-    return np.asarray(
-        np.maximum(potential / POTENTIAL_ACCURACY, np.abs(heat) / np.maximum(most, TINY) / HEAT_ACCURACY)
-    )
+    most = np.maximum(system.roots @ np.abs(state.loads), np.abs(state.heat))
+    least = np.maximum(NO_HEAT * system.conductance * cases.span, TINY)  # of a fin held at one temperature
+    heat = np.abs(heats).max(axis=0) / np.maximum(most, least)
+    return np.asarray(np.maximum(potential / POTENTIAL_ACCURACY, heat / HEAT_ACCURACY))
 
 
 @dataclass(frozen=True, slots=True)

@@ -197,7 +197,8 @@ def has_kink(case):
     fin, _, air = case
     low, high = extremes(*case)
     convection = getattr(fin.surface, "convection", fin.surface)
-    signs = isinstance(convection, PowerCoefficient) and low < air < high
+    at_tip = isinstance(fin.tip, FixedTip) and fin.tip.temperature == air
+    signs = isinstance(convection, PowerCoefficient) and (low < air < high or at_tip)
     points = fin.conductivity.points if isinstance(fin.conductivity, TabulatedConductivity) else ()
     return signs or any(low < temperature < high for temperature, _ in points)
 
