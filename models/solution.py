@@ -17,9 +17,9 @@ class Solution:
     out through the tip face, or through the section at x = length of a fin that goes on; the last four of
     shape (n_sets,).
 
-    Of a fin that was solved step by step: converged (n_sets,), True where the steps ended and finer nodes would
-    change little, while a row with False holds the last step; radiated_heat (n_sets,) [W], from the side, and
-    from a tip face that follows the law of the side. Of all others True and 0.
+    Of a fin that was solved step by step: converged (n_sets,), True where the steps ended and finer nodes
+    would change little, while a row with False holds the last step; radiated_heat (n_sets,) [W], from the
+    side, and from a tip face that follows the law of the side. Of all others True and 0.
     """
 
     temperatures: Array
