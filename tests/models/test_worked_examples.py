@@ -274,8 +274,17 @@ def ten_fins_on_a_cylinder(i):
 def transverse_fins_as_straight_ones(i):
     length = (i["d_fin_m"] - i["d_tube_m"]) / 2
     width = np.pi * (i["d_fin_m"] + i["d_tube_m"]) / 2
-    fin = rectangular(length, width, i["w_m"], guarded_edges=True)
-    return {"q_W_m": i["N_per_m"] * base_heat(fin, i["k"], i["h"], AdiabaticTip(), i["T_s_K"], i["T_inf_K"])}
+    straight = rectangular(length, width, i["w_m"], guarded_edges=True)
+    round_one = Annular(i["d_tube_m"], i["d_fin_m"], i["w_m"])
+
+    def heat(fin, tip):
+        return i["N_per_m"] * base_heat(fin, i["k"], i["h"], tip, i["T_s_K"], i["T_inf_K"])
+
+    return {
+        "q_W_m": heat(straight, AdiabaticTip()),
+        "q_annular_adiabatic_tip_W_m": heat(round_one, AdiabaticTip()),
+        "q_annular_convective_tip_W_m": heat(round_one, ConvectiveTip()),
+    }
 
 
 @example("DUT-3.10")
@@ -575,33 +584,44 @@ def rod_length_with_linearised_radiation(i):
 @example("SMI-Al")
 def coefficient_and_heat_flux_of_a_measured_rod(i):
     """Fit h and the flux at x = 0 by least squares; the flux is counted against x, hence negative."""
-    rod = rectangular(i["L_m"], i["side_m"], i["side_m"])
-    x, measured = np.array(i["x_m"]), np.array(i["T_C"])
-
-    def excess_for_unit_flux(h):
-        _, solution = run(rod, i["k"], h, ConvectiveTip(), 1.0, 0.0, x)
-        return solution.temperatures[0] * rod.section_area / solution.base_heat[0]
-
     flux, h = 1.5e5, 15.0
-    for _ in range(20):  # Gauss-Newton; the flux enters linearly, h through a five-point difference
-        shape, step = excess_for_unit_flux(h), 1e-3 * h
-        near, far = (excess_for_unit_flux(h + n * step) - excess_for_unit_flux(h - n * step) for n in (1, 2))
-        jacobian = np.stack([shape, flux * (8 * near - far) / (12 * step)], axis=1)
-        residuals = measured - i["T_inf_C"] - flux * shape
+    for _ in range(20):  # Gauss-Newton
+        residuals, jacobian = misfit_of_a_measured_rod(i, flux, h)
         flux, h = np.array([flux, h]) + np.linalg.lstsq(jacobian, residuals)[0]
-    variance = residuals @ residuals / (len(x) - 2)
-    covariance = variance * np.linalg.inv(jacobian.T @ jacobian)
-    flux_error, h_error = np.sqrt(np.diag(covariance))
+    scatter, errors, correlation = errors_of_a_measured_rod(i, flux, h)
     return {
         "Phi_W_cm2": -flux / 1e4,
         "h_W_cm2C": h / 1e4,
-        "s_C": np.sqrt(variance),
-        "se_Phi_W_cm2": flux_error / 1e4,
-        "se_h_W_cm2C": h_error / 1e4,
-        "correlation": -covariance[0, 1] / (flux_error * h_error),
+        "s_C": scatter,
+        "se_Phi_W_cm2": errors[0] / 1e4,
+        "se_h_W_cm2C": errors[1] / 1e4,
+        "correlation": -correlation,
         "h_W_m2K": h,
         "Phi_W_m2": flux,
     }
+
+
+def misfit_of_a_measured_rod(i, flux, h):
+    """Return residuals [K] and their sensitivity to flux and h, the latter by a five-point difference."""
+    rod = rectangular(i["L_m"], i["side_m"], i["side_m"])
+
+    def excess_for_unit_flux(h):
+        _, solution = run(rod, i["k"], h, ConvectiveTip(), 1.0, 0.0, i["x_m"])
+        return solution.temperatures[0] * rod.section_area / solution.base_heat[0]
+
+    shape, step = excess_for_unit_flux(h), 1e-3 * h
+    near, far = (excess_for_unit_flux(h + n * step) - excess_for_unit_flux(h - n * step) for n in (1, 2))
+    jacobian = np.stack([shape, flux * (8 * near - far) / (12 * step)], axis=1)
+    return np.array(i["T_C"]) - i["T_inf_C"] - flux * shape, jacobian
+
+
+def errors_of_a_measured_rod(i, flux, h):
+    """Return the scatter [K], the standard errors of flux and h, and their correlation."""
+    residuals, jacobian = misfit_of_a_measured_rod(i, flux, h)
+    variance = residuals @ residuals / (len(residuals) - 2)
+    covariance = variance * np.linalg.inv(jacobian.T @ jacobian)
+    errors = np.sqrt(np.diag(covariance))
+    return np.sqrt(variance), errors, covariance[0, 1] / (errors[0] * errors[1])
 
 
 # --- the checks -----------------------------------------------------------------------------------
@@ -632,6 +652,18 @@ def test_printed_answer(example_id):
     given = EXAMPLES[example_id]
     answers = ARITHMETIC[example_id](given["inputs"])
     expected = given["printed"]
-    assert {name: float(answers[name]) for name in expected} == pytest.approx(
-        expected, rel=given["tolerance"], abs=0
-    )
+    for name, value in expected.items():
+        tolerance = given["tolerance"]
+        allowed = tolerance[name] if isinstance(tolerance, dict) else tolerance
+        if allowed is not None:
+            assert float(answers[name]) == pytest.approx(value, rel=allowed, abs=0), name
+
+
+def test_printed_errors_of_the_measured_rod_belong_to_its_estimates_as_printed():
+    """Smith prints scatter and standard errors at the optimum cut to three digits, 4 % above those there."""
+    given = EXAMPLES["SMI-Al"]
+    printed = given["printed"]
+    flux, h = -1e4 * printed["Phi_W_cm2"], 1e4 * printed["h_W_cm2C"]
+    scatter, errors, _ = errors_of_a_measured_rod(given["inputs"], flux, h)
+    found = {"s_C": scatter, "se_Phi_W_cm2": errors[0] / 1e4, "se_h_W_cm2C": errors[1] / 1e4}
+    assert found == pytest.approx({name: printed[name] for name in found}, rel=2e-3)
