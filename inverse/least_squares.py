@@ -3,7 +3,9 @@
 The one entry for every fit without priors. Residuals come as a function of a whole block of parameter
 vectors, and the method makes use of that: a 3-point Jacobian is one evaluation, and so are all the damped
 steps of an iteration of Levenberg and Marquardt's method, of which the best is taken. Columns are scaled by
-the Jacobian's, the iteration ends only when the full step has shrunk to rounding.
+the Jacobian's, the iteration ends only when the full step has shrunk to rounding. In a long bent valley steps
+are tried with a bend as well. The step that gains most may still lead astray there: an iteration that comes
+to no end leaves the problem to a trust region, which takes shorter steps from the start.
 """
 
 from collections.abc import Callable
@@ -15,7 +17,11 @@ from numpy.typing import NDArray
 Array = NDArray[np.float64]
 Residuals = Callable[[Array], Array]
 
-MAX_ITERATIONS = 1000
+STRAIGHT_ITERATIONS = 20  # a fit that takes more is in a bent valley
+MAX_ITERATIONS = 500  # and one that takes more than these, in one that a trust region follows faster
+MAX_TRUST_REGION = 1000  # evaluations
+PROBE = 0.1  # of a step, to measure how the residuals bend along it
+TRUST_REGION_END = 4 * float(np.finfo(np.float64).eps)  # of values, gain and gradient alike
 SMALLEST_STEP = 1e-10  # of the values: looser ends report success on hard problems with no correct digits
 SMALLEST_GAIN = 1e-15  # of the sum of squares, that the full step still promises
 ROUNDING_GAIN = 1e-10  # the same, once no step gains anything any more
@@ -70,18 +76,34 @@ def fit(residuals: Residuals, start: Array, typical: Array | float = 1.0) -> Poi
 
     Returns a `PointEstimate`; `converged` is False when the iteration ended for want of progress or time.
     """
-    z = np.array(start, dtype=np.float64)
+    first = np.array(start, dtype=np.float64)
+    found, ended = _iterate(residuals, first, typical)
+    if ended:
+        return found
+    other, _ = _iterate(residuals, _by_trust_region(residuals, first, typical), typical)
+    return min(found, other, key=lambda each: (not each.converged, each.chi_square))
+
+
+def _iterate(residuals: Residuals, start: Array, typical: Array | float) -> tuple[PointEstimate, bool]:
+    """Minimise by Levenberg and Marquardt's method; return also whether it ended before its time was up."""
+    z = start
     r, slopes = _linearise(residuals, z, typical)
-    cost, scale, damping, converged = float(r @ r), np.zeros(len(z)), FIRST_DAMPING, False
-    for _ in range(MAX_ITERATIONS):
+    cost, scale, damping, converged, ended = float(r @ r), np.zeros(len(z)), FIRST_DAMPING, False, False
+    for iteration in range(MAX_ITERATIONS):
         scale = np.maximum(scale, np.linalg.norm(slopes, axis=0))
+        local = _decompose(slopes, np.where(scale > 0, scale, 1.0))
         dampings = np.concatenate([[0.0], damping * DAMPINGS])
-        steps, promised = _damped_steps(slopes, r, np.where(scale > 0, scale, 1.0), dampings)
-        small = np.abs(steps[0]) <= SMALLEST_STEP * np.maximum(np.abs(z), typical)
+        tried = local.steps(r, dampings)
+        small = np.abs(tried[0]) <= SMALLEST_STEP * np.maximum(np.abs(z), typical)
+        promised = local.gain(r)
         if small.all() or promised <= SMALLEST_GAIN * cost:
-            converged = True
+            converged = ended = True
             break
-        tried = steps if damping <= FULL_STEP_BELOW else steps[1:]
+        if damping > FULL_STEP_BELOW:
+            dampings, tried = dampings[1:], tried[1:]
+        if iteration >= STRAIGHT_ITERATIONS:
+            bends = local.steps(_curvature(residuals, z, r, slopes, tried), dampings)
+            dampings, tried = np.tile(dampings, 2), np.concatenate([tried, tried + bends / 2])
         # the first step is mostly the best one: what follows it is evaluated in the same block
         offsets, widths = _stencil(z + tried[0], typical)
         found = residuals(np.concatenate([z + tried[1:], z + tried[0] + offsets]))
@@ -89,27 +111,83 @@ def fit(residuals: Residuals, start: Array, typical: Array | float = 1.0) -> Poi
         costs = np.concatenate([costs[-1:], costs[:-1]])
         best = int(np.argmin(np.where(np.isfinite(costs), costs, np.inf)))
         if not costs[best] < cost:
-            converged = promised <= ROUNDING_GAIN * cost
+            converged, ended = promised <= ROUNDING_GAIN * cost, True
             break
         z, cost = z + tried[best], float(costs[best])
-        damping = max(float(dampings[-len(tried) :][best]), SMALLEST_DAMPING)
+        damping = max(float(dampings[best]), SMALLEST_DAMPING)
         if best == 0:
             r, slopes = _differences(found[len(tried) - 1 :], widths)
         else:
             r, slopes = _linearise(residuals, z, typical)
     covariance, rank, null_space = invert_information(slopes)
-    return PointEstimate(z, covariance, rank, null_space, r, slopes, converged)
+    return PointEstimate(z, covariance, rank, null_space, r, slopes, converged), ended
 
 
-def _damped_steps(slopes: Array, r: Array, scale: Array, dampings: Array) -> tuple[Array, float]:
-    """Return the steps for all dampings (n_dampings, p), and the gain that the undamped one promises."""
+@dataclass(frozen=True, slots=True)
+class _Local:
+    """The singular values of a scaled Jacobian (n, p), and the vectors to both sides, for damped steps."""
+
+    left: Array
+    singular: Array
+    right: Array
+
+    def steps(self, r: Array, dampings: Array) -> Array:
+        """Return the steps (n_dampings, p) against residuals, (n,) for all or (n_dampings, n)."""
+        largest = self.singular[0] or 1.0
+        relative = self.singular / largest
+        lost = np.where(self._kept, 0.0, np.inf)
+        shares = relative / (np.square(relative) + dampings[:, None] + lost) / largest
+        stepped: Array = (shares * -(r @ self.left)) @ self.right
+        return stepped
+
+    def gain(self, r: Array) -> float:
+        """Return the fall of the sum of squares that the undamped step promises."""
+        return float(np.square((r @ self.left)[self._kept]).sum())
+
+    @property
+    def _kept(self) -> NDArray[np.bool_]:
+        kept: NDArray[np.bool_] = self.singular > SINGULAR * self.singular[0]
+        return kept
+
+
+def _decompose(slopes: Array, scale: Array) -> _Local:
     left, singular, right = np.linalg.svd(slopes / scale, full_matrices=False)
-    kept = singular > SINGULAR * singular[0]
-    along = -(left.T @ r)
-    squares = np.square(singular)
-    lost = np.where(kept, 0.0, np.inf)
-    shares = singular / (squares + dampings[:, None] * squares[0] + lost)
-    return ((shares * along) @ right) / scale, float(np.square(along[kept]).sum())
+    return _Local(left, singular, right / scale)
+
+
+def _curvature(residuals: Residuals, z: Array, r: Array, slopes: Array, steps: Array) -> Array:
+    """Return the second derivatives of the residuals along each step (n_steps, n).
+
+    Half the step against them, added to the step itself, follows a bent valley: geodesic acceleration,
+    Transtrum and Sethna, arXiv:1201.5885 (2012).
+    """
+    probed = residuals(z + PROBE * steps)
+    second: Array = 2 / PROBE * ((probed - r) / PROBE - steps @ slopes.T)
+    return second
+
+
+def _by_trust_region(residuals: Residuals, start: Array, typical: Array | float) -> Array:
+    """Return the values (p,) where scipy's trust region ends."""
+    from scipy.optimize import least_squares
+
+    def at(z: Array) -> Array:
+        return np.asarray(residuals(z[None])[0])
+
+    def slopes(z: Array) -> Array:
+        return jacobian(residuals, z, typical)
+
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):  # it refuses steps out of range
+        found = least_squares(
+            at,
+            start,
+            slopes,
+            x_scale="jac",
+            ftol=TRUST_REGION_END,
+            xtol=TRUST_REGION_END,
+            gtol=TRUST_REGION_END,
+            max_nfev=MAX_TRUST_REGION,
+        )
+    return np.asarray(found.x, dtype=np.float64)
 
 
 def _stencil(values: Array, typical: Array | float) -> tuple[Array, Array]:
