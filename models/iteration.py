@@ -39,6 +39,8 @@ START = 0.7
 """Temperature at which a fin starts [1], from that of the air, or of a held tip, to that of its base."""
 FITS = 2
 """Times a line is fitted to the fluxes before the first step [1]."""
+ROOM = 2**20
+"""Entries of the matrices that are solved at a time [1], 8 MB: sets on many nodes take turns."""
 
 
 class EndLaw(Protocol):
@@ -224,18 +226,13 @@ def _on_line(nodes: Nodes, cases: Cases, state: State, slope: Array) -> State:
 
 def _step(nodes: Nodes, cases: Cases, state: State) -> tuple[State, Array, Flags]:
     """Take one step; return the new state, how much it changed [1], and whether the step was whole."""
-    n, n_sets = state.u.shape
-    matrices = np.empty((n_sets, n, n))
-    matrices[:] = nodes.stiffness
-    matrices.reshape(n_sets, -1)[:, :: n + 1] += state.slopes.T
-    right = -(nodes.stiffness @ state.residual).T
-    d_base: Array = np.zeros(n_sets)
+    right = -(nodes.stiffness @ state.residual).T[:, :, None]
+    d_base: Array = np.zeros(right.shape[0])
     if cases.resistance is None:
-        du = np.asarray(np.linalg.solve(matrices, right[:, :, None])[:, :, 0].T, dtype=np.float64)
+        du = _solved(nodes, state.slopes, right)[0]
     else:
-        of_base = np.broadcast_to(nodes.stiffness @ nodes.lift, (n_sets, n))
-        both = np.stack([right, of_base], axis=2)
-        parts = np.asarray(np.linalg.solve(matrices, both).T, dtype=np.float64)
+        of_base = np.broadcast_to((nodes.stiffness @ nodes.lift)[:, None], right.shape)
+        parts = _solved(nodes, state.slopes, np.concatenate([right, of_base], axis=2))
         heats = nodes.lift @ (state.slopes * parts)
         more = 1 / state.base_conductivity + cases.resistance * (nodes.conductance + heats[1])
         d_base = -(state.gap + cases.resistance * heats[0]) / more
@@ -249,6 +246,21 @@ def _step(nodes: Nodes, cases: Cases, state: State) -> tuple[State, Array, Flags
     if worse.any():
         new = _halved(nodes, cases, state, (du, d_base), worse)
     return new, size, ~worse
+
+
+def _solved(nodes: Nodes, slopes: Array, right: Array) -> Array:
+    """Solve (C^-1 + D) w = right: slopes (n, n_sets), right (n_sets, n, n_right) -> (n_right, n, n_sets)."""
+    n_sets, n, _ = right.shape
+    found = np.empty(right.shape)
+    at_a_time = max(1, ROOM // n**2)
+    for start in range(0, n_sets, at_a_time):
+        some = slice(start, start + at_a_time)
+        diagonals = slopes.T[some]
+        matrices = np.empty((len(diagonals), n, n))
+        matrices[:] = nodes.stiffness
+        matrices.reshape(len(diagonals), -1)[:, :: n + 1] += diagonals
+        found[some] = np.linalg.solve(matrices, right[some])
+    return found.T
 
 
 def _halved(nodes: Nodes, cases: Cases, state: State, step: tuple[Array, Array], worse: Flags) -> State:
