@@ -160,7 +160,8 @@ class Terms:
 
     def reach(self, found: Sums) -> Array:
         """Return g(x)/g(L) [1], how far a change at the tip reaches: (n_x, n_sets)."""
-        return found.sums[self.n_x : 2 * self.n_x] / found.sums[-2]
+        share: Array = found.sums[self.n_x : 2 * self.n_x] / found.sums[-2]
+        return share
 
 
 @lru_cache(maxsize=512)
