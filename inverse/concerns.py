@@ -9,6 +9,8 @@ from finback.models.validity import TRANSVERSE_BIOT_LIMIT
 from finback.quantity import format_number, pretty_unit
 from finback.rig import Rig
 from finback.summaries import OF_THE_JOINT
+from finback.thermocouples import ThermocoupleClass
+from finback.wording import listed, quoted
 
 MISFIT_P = 0.01
 CLEAR = 0.9  # probability from which the readings are said to support a candidate
@@ -27,6 +29,7 @@ def collect(
         *_undetermined(rig, found, best),
         *_misfit(quality),
         *_validity(found),
+        *_thermocouples(best),
         *_heater(found, best),
         *_convergence(sampler),
         *rig.assumed,
@@ -89,6 +92,25 @@ def _validity(found: Mapping[str, Summary]) -> list[Finding]:
         "uniform across the fin, and the one-dimensional model does not hold."
     )
     return [Finding("thick-fin", "caution", message, evidence={"transverse_biot": biot})]
+
+
+def _thermocouples(best: Outcome) -> list[Finding]:
+    """Return a finding for each thermocouple class that is stated outside of its range."""
+    measured = best.problem.measured
+    outside: dict[ThermocoupleClass, list[str]] = {}
+    for sensor, value in zip(measured.sensors, measured.values, strict=True):
+        kind = sensor.calibration_class
+        if kind is not None and not kind.covers(value):
+            outside.setdefault(kind, []).append(sensor.name)
+    findings = []
+    for kind, names in outside.items():
+        message = (
+            f"{listed(names)} read outside {kind.range}, where {kind.standard} gives no tolerance for "
+            f"{quoted(kind.name)}: it is taken to go on as within."
+        )
+        sensor_name = names[0] if len(names) == 1 else None
+        findings.append(Finding("out-of-range", "note", message, sensor_name, {"class": kind.name}))
+    return findings
 
 
 def _heater(found: Mapping[str, Summary], best: Outcome) -> list[Finding]:

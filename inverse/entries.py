@@ -7,18 +7,24 @@ raises `EntryError`. The sections of `finback.rig_file` say which key takes whic
 from collections.abc import Callable
 from typing import NamedTuple, NoReturn
 
+from finback import thermocouples
 from finback.errors import InputError
 from finback.quantity import Dimension, Quantity, is_relative, parse
+from finback.thermocouples import ThermocoupleClass
 from finback.wording import listed, nearest, quoted
 
 LONGEST_TITLE = 200
 
 
 class Spread(NamedTuple):
-    """A stated noise or calibration uncertainty: K or W, or a fraction of the reading where `relative`."""
+    """A stated noise or calibration uncertainty: K or W, or a fraction of the reading where `relative`.
+
+    Where the calibration is a thermocouple class, that stands in its place, and the amount is 0.
+    """
 
     amount: float
     relative: bool
+    thermocouple: ThermocoupleClass | None = None
 
 
 class EntryError(ValueError):
@@ -130,14 +136,13 @@ def uncertainty(value: Quantity) -> Quantity:
 
 
 def spread(text: object, key: str, place: str) -> Spread:
-    """Read noise or calibration of a sensor: K for temperatures, W or per cent for heat.
+    """Read noise or calibration of a sensor: K or a thermocouple class for temperatures, W or % for heat.
 
     Arguments: text; key, "noise" or "calibration"; place, what the sensor reads.
     """
-    if isinstance(text, str) and "class" in text.casefold():
-        problem = f"this version does not know thermocouple classes such as {quoted(text)} yet"
-        raise EntryError(problem, 'write the standard uncertainty in kelvin, such as "0.3 K"')
     reads_heat = place in ("heat", "heater")
+    if isinstance(text, str) and thermocouples.is_meant(text):
+        return Spread(0.0, False, _thermocouple(text, key, reads_heat))
     relative = is_relative(text)
     if relative and not reads_heat:
         problem = f"{quoted(text)} is a share of the reading, which means nothing for a temperature"
@@ -148,6 +153,19 @@ def spread(text: object, key: str, place: str) -> Spread:
         problem = "a noise of zero means exactly known, which only plate and air can be"
         raise EntryError(problem, "write how much the sensor scatters, or leave noise out")
     return Spread(found.value, relative)
+
+
+def _thermocouple(text: str, key: str, reads_heat: bool) -> ThermocoupleClass:
+    if reads_heat:
+        problem = f"{quoted(text)} is for thermocouples, and this sensor reads heat"
+        raise EntryError(problem, 'write a heat flow or a share of the reading, such as "0.2 W" or "2 %"')
+    if key == "noise":
+        problem = f"{quoted(text)} says nothing of how much readings scatter"
+        raise EntryError(problem, 'write it as calibration, and noise in kelvin, such as "0.2 K"')
+    try:
+        return thermocouples.parse(text)
+    except InputError as error:
+        raise EntryError(error.problem, error.remedy) from None
 
 
 def _parsed(text: object, dimension: Dimension) -> Quantity:

@@ -252,7 +252,7 @@ def _sensor_table(rig: Rig) -> list[str]:
 
 
 def _uncertainties(sensor: Sensor) -> tuple[str, str]:
-    if sensor.noise == 0 and sensor.calibration == 0 and sensor.calibration_relative is None:
+    if sensor.exactly_known and sensor.calibration_relative is None:
         return "exact", "exact"
     unit = "W" if sensor.place in ("heat", "heater") else "K"
     noise = "estimated"
@@ -260,6 +260,8 @@ def _uncertainties(sensor: Sensor) -> tuple[str, str]:
         noise = f"{100 * sensor.noise_relative:g} %"
     elif sensor.noise is not None:
         noise = f"{sensor.noise:g} {unit}"
+    if sensor.calibration_class is not None:
+        return noise, sensor.calibration_class.name
     if sensor.calibration_relative is not None:
         return noise, f"{100 * sensor.calibration_relative:g} %"
     return noise, f"{sensor.calibration:g} {unit}"

@@ -77,7 +77,7 @@ def _measure(rig: Rig, readings: Readings) -> tuple[Measured, dict[str, float]]:
                 continue
             if place == "heater":
                 bounds.append(sensor)
-            elif place in ("plate", "air") and sensor.noise == 0 and sensor.calibration == 0:
+            elif place in ("plate", "air") and sensor.exactly_known:
                 exact[place] = readings.values[sensor.name]
             else:
                 sensors.append(sensor)
@@ -99,10 +99,7 @@ def _random_and_shared(sensor: Sensor, value: float) -> tuple[float, float]:
     random = max(sensor.noise, SMALLEST_NOISE) if sensor.noise is not None else np.nan
     if sensor.noise_relative is not None:
         random = sensor.noise_relative * abs(value)
-    shared = sensor.calibration
-    if sensor.calibration_relative is not None:
-        shared = sensor.calibration_relative * abs(value)
-    return random, shared
+    return random, sensor.calibration_at(value)
 
 
 def _stated_covariance(measured: Measured) -> tuple[Array, NDArray[np.bool_]]:

@@ -7,9 +7,11 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Literal
 
+from finback.entries import Spread
 from finback.errors import InputError
 from finback.findings import Finding
 from finback.quantity import Quantity
+from finback.thermocouples import ThermocoupleClass
 from finback.wording import listed, quoted
 
 if TYPE_CHECKING:
@@ -35,7 +37,8 @@ class Sensor:
     `position_sd` [m]. `noise`: standard deviation from reading to reading, K for temperatures and W for heat,
     None when it is to be estimated from the readings; `calibration`: standard uncertainty of the error common
     to all sensors of this place. Where either was given in per cent of the reading, `noise_relative` or
-    `calibration_relative` holds the fraction and the absolute one is None or 0.
+    `calibration_relative` holds the fraction and the absolute one is None or 0; `calibration_class` is a
+    thermocouple's, where that was given. `calibration_at` knows all three.
     """
 
     name: str
@@ -46,6 +49,7 @@ class Sensor:
     noise_relative: float | None = None
     calibration: float = 0.0
     calibration_relative: float | None = None
+    calibration_class: ThermocoupleClass | None = None
 
     @property
     def reads_temperature(self) -> bool:
@@ -55,7 +59,15 @@ class Sensor:
     @property
     def exactly_known(self) -> bool:
         """Whether what it reads is the true value: a noise of zero is stated, and no calibration error."""
-        return self.noise == 0 and self.calibration == 0
+        return self.noise == 0 and self.calibration == 0 and self.calibration_class is None
+
+    def calibration_at(self, value: float) -> float:
+        """Return the standard uncertainty [K or W] of the common error where it reads a value [K or W]."""
+        if self.calibration_class is not None:
+            return self.calibration_class.standard_uncertainty(value)
+        if self.calibration_relative is not None:
+            return self.calibration_relative * abs(value)
+        return self.calibration
 
 
 def place_sensors(section: SensorsSection, length: Quantity, source: Path | None) -> dict[str, Sensor]:
@@ -93,6 +105,14 @@ def assumed(section: SensorsSection, sensors: Mapping[str, Sensor]) -> Iterator[
             "calibration",
             0.0,
         )
+    for kind in dict.fromkeys(sensor.calibration_class for sensor in sensors.values()):
+        if kind is not None:
+            message = (
+                f"{quoted(kind.name)} is taken as an even spread within {kind.words} ({kind.standard}, "
+                f"{kind.range}), and as one error of all sensors that read the same; the instrument's own "
+                "error is not in it."
+            )
+            yield Finding("assumed", "note", message, evidence={"key": "calibration", "value": kind.name})
     unplaced = [
         name
         for name, entry in entries.items()
@@ -169,17 +189,17 @@ def _sensor(name: str, entry: SensorSection, section: SensorsSection, length: Qu
     defaults = section.defaults
     place: SensorPlace = entry.on or "fin"
     temperature = place in ("fin", "plate", "air")
-    noise, relative_noise = entry.noise or (None, False)
+    noise, relative_noise = entry.noise[:2] if entry.noise else (None, False)
     if entry.noise is None and temperature and defaults.noise is not None:
         noise = defaults.noise.amount
     if entry.noise is None and not temperature:
         noise, relative_noise = HEAT_NOISE, True
-    calibration, relative_calibration = entry.calibration or (0.0, False)
+    calibration = entry.calibration or Spread(0.0, False)
     exact = (
         entry.noise is not None and entry.noise.amount == 0
     )  # then a default does not speak of this sensor
     if entry.calibration is None and temperature and defaults.calibration is not None and not exact:
-        calibration = defaults.calibration.amount
+        calibration = defaults.calibration
     return Sensor(
         name,
         place,
@@ -187,8 +207,9 @@ def _sensor(name: str, entry: SensorSection, section: SensorsSection, length: Qu
         position_sd=_position_sd(entry, defaults.position),
         noise=None if relative_noise else noise,
         noise_relative=noise if relative_noise else None,
-        calibration=0.0 if relative_calibration else calibration,
-        calibration_relative=calibration if relative_calibration else None,
+        calibration=0.0 if calibration.relative else calibration.amount,
+        calibration_relative=calibration.amount if calibration.relative else None,
+        calibration_class=calibration.thermocouple,
     )
 
 

@@ -32,7 +32,7 @@ LAYERS = (
     "models.solve",
     "models",
     "errors findings wording",
-    "quantity",
+    "quantity thermocouples",
     "priors noise least_squares laplace diagnostics entries table",
     "parameters rig_file shape_table proposal",
     "sensors sampling shapes handbook surroundings",

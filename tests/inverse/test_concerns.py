@@ -9,6 +9,8 @@ from finback import concerns
 from finback.estimate import CandidateScore, FitQuality, SamplerRecord, Summary
 from finback.findings import Finding
 from finback.quantity import Quantity
+from finback.sensors import Sensor
+from finback.thermocouples import CLASSES
 
 NAMES = ("h", "k", "joint", "h_over_k", "joint_times_k", "base_temperature", "heat", "transverse_biot")
 LABELS = {"h": "convection coefficient h", "k": "conductivity k", "joint": "joint resistance R''"}
@@ -27,11 +29,17 @@ def quantities(**changes: Summary) -> dict[str, Summary]:
 
 
 def best(
-    bounds: tuple[float, ...] = (), places: tuple[str, ...] = ("fin", "air"), joint: bool = True
+    bounds: tuple[float, ...] = (),
+    places: tuple[str, ...] = ("fin", "air"),
+    joint: bool = True,
+    thermocouples: dict[str, float] | None = None,
 ) -> SimpleNamespace:
     """As much of an outcome as findings look at."""
+    read = thermocouples or {}
+    extra = [Sensor(name, "fin", 0.0, calibration_class=CLASSES["T class 1"]) for name in read]
     measured = SimpleNamespace(
-        sensors=[SimpleNamespace(place=place) for place in places],
+        sensors=[*(Sensor(place, place) for place in places), *extra],
+        values=np.array([300.0] * len(places) + list(read.values())),
         bounds=[SimpleNamespace(name=f"PH{i}") for i in range(len(bounds))],
         bound_values=np.array(bounds),
         bound_sds=0.1 * np.ones(len(bounds)),
@@ -112,6 +120,30 @@ def test_the_heat_may_not_exceed_a_heater_by_two_standard_uncertainties(power: f
     found = collect(quantities(), best=best(bounds=(power, 50.0)))
     assert [(f.code, f.severity, f.sensor) for f in found] == (
         [("heat-balance", "fault", "PH0")] if said else []
+    )
+
+
+@pytest.mark.parametrize(
+    ("read", "said"),
+    [
+        ({"T1": 300.0, "T2": 620.0}, None),  # T class 1 holds from -40 to 350 degC, IEC 60584-1
+        ({"T1": 300.0, "T2": 624.0}, '"T2"'),
+        ({"T1": 230.0, "T2": 624.0}, '"T1", "T2"'),
+    ],
+)
+def test_a_reading_beyond_the_range_of_its_thermocouple_class(
+    read: dict[str, float], said: str | None
+) -> None:
+    found = collect(quantities(), best=best(thermocouples=read))
+    if said is None:
+        assert found == ()
+        return
+    (finding,) = found
+    assert (finding.code, finding.severity) == ("out-of-range", "note")
+    assert finding.sensor == (None if "," in said else "T2")
+    assert finding.message == (
+        f'{said} read outside −40 to 350 °C, where IEC 60584-1:2013 gives no tolerance for "T class 1": '
+        "it is taken to go on as within."
     )
 
 

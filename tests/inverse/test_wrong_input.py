@@ -159,10 +159,13 @@ WRONG_RIGS = [
     (('"3 %"', '"0.2 K"'), '[sensors] Q noise: the unit "K" is not that of a heat flow; write a heat flow '
      'with '
      'its unit, such as "12 W".'),
-    (('"5 mm" }', '"5 mm", calibration = "K class 1" }'), "[sensors] T1 calibration: this version does not "
-     "know "
-     'thermocouple classes such as "K class 1" yet; write the standard uncertainty in kelvin, such as "0.3 '
-     'K".'),
+    (('"5 mm" }', '"5 mm", calibration = "K class 4" }'), '[sensors] T1 calibration: "K class 4" is no '
+     'thermocouple class that is known; the nearest known one is "K class 1".'),
+    (('"0.2 K"', '"K class 1"'), '[sensors.defaults] noise: "K class 1" says nothing of how much readings '
+     'scatter; write it as calibration, and noise in kelvin, such as "0.2 K".'),
+    (('"3 %"', '"3 %", calibration = "K class 1"'), '[sensors] Q calibration: "K class 1" is for '
+     'thermocouples, and this sensor reads heat; write a heat flow or a share of the reading, such as '
+     '"0.2 W" or "2 %".'),
     (("T1 =", "run ="), '[sensors]: "run" is the column that names the runs, and no name for a sensor; give '
      'the '
      "sensor another name."),
