@@ -6,16 +6,6 @@ loop: beside another run on the same processors, the eigenvalues of a 384 by 384
 """
 
 import os
-import sys
 
 for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS"):
     os.environ.setdefault(name, "1")
-
-
-def pytest_report_header():
-    if "numpy" in NUMPY_BEFORE:
-        return "numpy was imported before the number of its threads was set: timings may be poor"
-    return None
-
-
-NUMPY_BEFORE = set(sys.modules) & {"numpy"}
