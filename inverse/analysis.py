@@ -37,7 +37,10 @@ BAND_DRAWS = 1000
 BAND_POINTS = 121
 PRIOR_DRAWS = 4000
 PACKAGES = ("numpy", "scipy", "emcee", "arviz", "pandas", "matplotlib")
-PARAMETERS = ("h", "k", "joint", "plate", "air", "tip_temperature", "noise")
+PARAMETERS = (
+    *("h", "k", "joint", "plate", "air", "tip_temperature", "exponent", "rise", "emissivity", "surroundings"),
+    *("bare_area", "loss", "loss_coefficient", "noise"),
+)
 
 
 def fit(
@@ -63,7 +66,7 @@ def fit(
     if not isinstance(readings, Readings):
         readings = readings_file.read(Path(readings), rig).pick(run)
     checks.check_run(rig, readings)
-    rig = rig.warmed(expectation.mean_temperature(rig, readings))
+    rig = rig.warmed(expectation.mean_temperature(rig, readings), expectation.extremes(rig, readings))
     progress = progress or (lambda _stage, _fraction: None)
     outcomes = candidates.compare(rig, readings, seed, progress, settings)
     progress("summing up", 0.95)
@@ -100,6 +103,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         derived={name: found[name] for name in derived.DERIVED if name in found},
         candidates=scores,
         comparison=concerns.compare_in_words(scores, rig.tip is not None),
+        compared=candidates.why_compared(rig),
         fit=quality,
         table=table,
         band=_band(outcomes, mixture),
@@ -198,10 +202,11 @@ def _set_aside(best: Outcome) -> tuple[ReadingFit, ...]:
         if measured is None:
             continue
         solution = problem.solve(values, np.array([sensor.position or 0.0]))
+        heats = problem.heats(values, problem.build(values)[0], solution)
         predictions = {
             "fin": solution.temperatures[0, 0],
-            "heat": solution.base_heat[0],
-            "heater": solution.base_heat[0],
+            "heat": heats.fins[0],
+            "heater": heats.total[0],
         }
         predicted = float(np.ravel(predictions.get(sensor.place, values.get(sensor.place, np.nan)))[0])
         found.append(
@@ -253,7 +258,7 @@ def _draws(outcomes: Sequence[Outcome], mixture: summaries.Mixture) -> Draws:
     for column, name in enumerate(names):
         if name in known:
             z = random.normal(known[name].prior.mean, known[name].prior.sd, PRIOR_DRAWS)
-            prior[:, column] = summaries.to_reported(name, np.exp(z) if known[name].transform == "log" else z)
+            prior[:, column] = summaries.to_reported(name, known[name].values(z))
     shape = mixture.which.shape
     likelihoods = np.empty((*shape, len(outcomes[0].problem.measured.values)))
     for number, outcome in enumerate(outcomes):
@@ -278,7 +283,8 @@ def _priors(best: Outcome) -> tuple[str, ...]:
     for name in exact:
         label, unit = summaries.describe(name)
         value = float(summaries.to_reported(name, np.array([exact[name]]))[0])
-        lines.append(f"{label}: {value:.6g} {unit} exactly (stated)")
+        source = "by the readings" if name == "reference_excess" else "exactly (stated)"
+        lines.append(f"{label}: {value:.6g} {unit} {source}")
     return tuple(lines)
 
 

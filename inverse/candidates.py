@@ -22,10 +22,10 @@ from finback.evidence import Evidence
 from finback.laplace import Mode
 from finback.optimum import LeastSquares
 from finback.posing import is_read, pose
-from finback.problem import Candidate, Problem
+from finback.problem import LAW_WORDS, Candidate, Problem
 from finback.proposal import Proposal
 from finback.readings import Readings
-from finback.rig import Rig, TipName
+from finback.rig import LawName, Rig, TipName
 from finback.sampling import Chain, Settings
 
 Array = NDArray[np.float64]
@@ -69,12 +69,49 @@ class Outcome:
 
 def enumerate_candidates(rig: Rig, readings: Readings | None = None) -> tuple[Candidate, ...]:
     """Return the candidates that a fit compares, for one run or for any run that reads every sensor."""
-    tips = (COMPARED_TIPS if rig.has_tip_face else SHARP_TIPS) if rig.tip is None else (rig.tip,)
+    tips = rig.tips or COMPARED_TIPS if rig.tip is None else (rig.tip,)
+    if rig.tip is None and not rig.has_tip_face:
+        tips = SHARP_TIPS
+    laws = compared_laws(rig)
+    named = len(laws) > 1 or laws != ("uniform",)
     reads_plate = any(
         s.place == "plate" and (readings is None or is_read(s, readings)) for s in rig.sensors.values()
     )
     joints = (True, False) if reads_plate else (False,)
-    return tuple(Candidate(tip, joint, reads_plate) for tip in tips for joint in joints)
+    return tuple(
+        Candidate(tip, joint, reads_plate, law, named) for law in laws for tip in tips for joint in joints
+    )
+
+
+def compared_laws(rig: Rig) -> tuple[LawName, ...]:
+    """Return the surface laws that a fit compares: the rig's own, or by what it says of the air."""
+    if rig.laws is not None:
+        return rig.laws
+    free = rig.surroundings.driven is False or rig.exponent is not None
+    return ("uniform", "free-convection") if free else ("uniform",)
+
+
+def why_compared(rig: Rig) -> str:
+    """Return one sentence on which surface laws and tips a fit compares, and why."""
+    laws = compared_laws(rig)
+    words = " and ".join(LAW_WORDS[law] for law in laws)
+    if rig.laws is not None:
+        told = f"Surface laws as the rig lists them: {words}"
+    elif len(laws) > 1:
+        told = f"Surface laws: {words}, since the rig says that the air is still"
+    else:
+        told = f"Surface law: {words} alone, since the rig does not say that the air is still"
+    if rig.emissivity is not None:
+        told += "; each radiates with the stated emissivity"
+    if rig.tip is not None:
+        tips = "the tip is as stated"
+    elif not rig.has_tip_face:
+        tips = "a sharp tip is adiabatic"
+    elif rig.tips is not None:
+        tips = "tips as the rig lists them"
+    else:
+        tips = "the rig leaves the tip open, so all that a finite fin can have are compared"
+    return f"{told}; {tips}."
 
 
 def compare(

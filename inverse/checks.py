@@ -3,6 +3,7 @@
 from collections.abc import Sequence
 
 from finback.errors import InputError
+from finback.handbook import REACH
 from finback.readings import Readings
 from finback.rig import Rig, Sensor
 from finback.wording import quoted
@@ -29,6 +30,7 @@ def check_run(rig: Rig, readings: Readings) -> None:
     for sensor in read:
         _check_value(sensor, readings)
     _check_excess(read, readings)
+    _check_conducting(rig, read, readings)
     _check_number(rig, read, readings)
 
 
@@ -62,17 +64,33 @@ def _check_excess(read: Sequence[Sensor], readings: Readings) -> None:
         raise _error(readings, problem, f"heat or cool the fin, by {needed:.2g} K at the very least")
 
 
+def _check_conducting(rig: Rig, read: Sequence[Sensor], readings: Readings) -> None:
+    """Check that a stated change of the conductivity leaves a possible one at every temperature read."""
+    change = rig.change
+    temperatures = [readings.values[sensor.name] for sensor in read if sensor.place in ("fin", "plate")]
+    if change is None or not temperatures:
+        return
+    worst = max(temperatures, key=lambda t: abs(change.coefficient * (t - change.reference)))
+    share = 1 + change.coefficient * (worst - change.reference)
+    if abs(share - 1) > REACH:
+        problem = f"the conductivity would be {share:.2g} times the stated one at {worst - 273.15:.0f} °C"
+        remedy = "check temperature_coefficient in [material], a relative change a kelvin"
+        raise _error(readings, problem, remedy)
+
+
 def _check_number(rig: Rig, read: Sequence[Sensor], readings: Readings) -> None:
     """Check that there are at least as many readings as unknowns, what is exactly known being neither."""
     known = {sensor.place for sensor in read if sensor.place in ("plate", "air") and sensor.exactly_known}
-    counted = [sensor for sensor in read if sensor.place != "heater" and sensor.place not in known]
+    bounds = [sensor for sensor in read if sensor.place == "heater" and not rig.losses_stated]
+    counted = [sensor for sensor in read if sensor not in bounds and sensor.place not in known]
     places = {sensor.place for sensor in read}
-    unknowns = ["h" if rig.conductivity is not None or "heat" in places else "h/k"]
+    heat = any(map(rig.tells_heat, places))
+    unknowns = ["h" if rig.conductivity is not None or heat else "h/k"]
     if "plate" not in known:
         unknowns.append("plate temperature" if "plate" in places else "base temperature")
     if "plate" in places:
         unknowns.append("joint")
-    if rig.conductivity is None and "heat" in places:
+    if rig.conductivity is None and heat:
         unknowns.append("k")
     if "air" not in known:
         unknowns.append("air temperature")

@@ -101,7 +101,8 @@ def check(
         for readings in readings_reader.read(readings_file, rig):
             checks.check_run(rig, readings)
             runs.append(readings.run)
-    print(overview.describe(rig, runs, [each.name for each in candidates.enumerate_candidates(rig)]))
+    compared = [each.name for each in candidates.enumerate_candidates(rig)]
+    print(overview.describe(rig, runs, compared, candidates.why_compared(rig)))
 
 
 @app.command()

@@ -17,7 +17,14 @@ CLEAR = 0.9  # probability from which the readings are said to support a candida
 MENTIONED = 0.05  # and below which one is not named among those that cannot be told apart
 HEATER_MARGIN = 2.0  # standard uncertainties of its power
 
-SAID_WITH = {"joint_times_k": "joint", "base_heat_flux": "heat"}  # null for the reason given for the other
+SAID_WITH = {
+    "joint_times_k": "joint",
+    "base_heat_flux": "heat",
+    "plate_heat": "heat",
+    "heat_convected": "heat",
+    "heat_radiated": "heat",
+}  # null for the reason given for the other
+OF_A_LAW = ("exponent", "rise", "emissivity")
 APART = "state the conductivity or measure the heat into the fin"
 
 
@@ -41,7 +48,7 @@ def collect(
 def _undetermined(rig: Rig, found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
     """Return a finding for each quantity that is null, in the engineer's terms."""
     read = {s.place for s in best.problem.measured.sensors}
-    parted = "heat" in read or rig.conductivity is not None
+    parted = any(map(rig.tells_heat, read)) or rig.conductivity is not None
     findings = []
     for name, summary in found.items():
         said = name in SAID_WITH and found[SAID_WITH[name]].median is None
@@ -68,7 +75,7 @@ def _reason(
         return "caution", f"is not determined: the temperatures give only h/k = {ratio:.4g} 1/m; {APART}"
     if not parted and name in ("heat", "base_heat_flux"):
         return "caution", f"is not determined without a conductivity; {APART}"
-    return "caution", "is not determined by these readings"
+    return "note" if name in OF_A_LAW else "caution", "is not determined by these readings"
 
 
 def _misfit(quality: FitQuality) -> list[Finding]:
@@ -115,15 +122,16 @@ def _thermocouples(best: Outcome) -> list[Finding]:
 
 def _heater(found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
     """Return a finding where the heat that the temperatures ask for is more than a heater supplies."""
-    heat = found["heat"].median
+    heat = found["plate_heat" if "plate_heat" in found else "heat"].median
     measured = best.problem.measured
     if heat is None:
         return []
+    taker = "the fins and from the bare plate" if "plate_heat" in found else "the fin"
     findings = []
     for sensor, power, sd in zip(measured.bounds, measured.bound_values, measured.bound_sds, strict=True):
         if heat > power + HEATER_MARGIN * sd:
             message = (
-                f"{heat:.3g} W would have to flow into the fin, but {sensor.name} supplies {power:.3g} W: "
+                f"{heat:.3g} W would have to flow into {taker}, but {sensor.name} supplies {power:.3g} W: "
                 "the heat balance is impossible."
             )
             findings.append(Finding("heat-balance", "fault", message, sensor=sensor.name))

@@ -6,7 +6,18 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from finback.models import Profile, effectiveness, efficiency, transverse_biot
+from finback.models import (
+    Fin,
+    Profile,
+    Radiating,
+    Solution,
+    effectiveness,
+    efficiency,
+    heat_parts,
+    solve,
+    transverse_biot,
+)
+from finback.models.constants import STEFAN_BOLTZMANN
 from finback.parameters import ZERO_CELSIUS
 from finback.problem import Problem
 
@@ -30,6 +41,9 @@ DERIVED: Mapping[str, Meaning] = {
     "base_temperature": Meaning("base temperature", "degC"),
     "heat": Meaning("heat into the fin", "W"),
     "base_heat_flux": Meaning("heat flux at the base", "W/m^2"),
+    "heat_convected": Meaning("heat to the air", "W"),
+    "heat_radiated": Meaning("heat radiated", "W"),
+    "plate_heat": Meaning("heat from the plate in all", "W"),
     "efficiency": Meaning("fin efficiency", "1"),
     "effectiveness": Meaning("fin effectiveness", "1"),
     "transverse_biot": Meaning("transverse Biot number", "1"),
@@ -39,11 +53,12 @@ DERIVED: Mapping[str, Meaning] = {
 def evaluate(problem: Problem, z: Array) -> dict[str, Array]:
     """Return every parameter and derived quantity of a block z (n_sets, p): SI units, shape (n_sets,) each.
 
-    A candidate without a joint has none, and no product with k.
+    A candidate without a joint has none, and no product with k; one that does not radiate has no parts of its
+    heat, and a rig without a plate no heat of it.
     """
     values = problem.values(z)
-    fin, _, air = problem.build(values)
-    solution = problem.solve(values, np.zeros(0))
+    fin, base, air = problem.build(values)
+    solution = solve(fin, base, air, np.zeros(0))
     area = float(fin.profile.area(np.zeros(1))[0])
     perimeter = float(fin.profile.perimeter(np.zeros(1))[0])
     h, k = np.asarray(values["h"]), np.asarray(values["k"])
@@ -58,11 +73,27 @@ def evaluate(problem: Problem, z: Array) -> dict[str, Array]:
         "base_heat_flux": solution.base_heat / area,
         "efficiency": efficiency(fin, solution, air),
         "effectiveness": effectiveness(fin, solution, air),
-        "transverse_biot": np.asarray(transverse_biot(h, *_thickest(fin.profile), k)),
+        "transverse_biot": np.asarray(
+            transverse_biot(_at_base(fin, solution, h), *_thickest(fin.profile), k)
+        ),
     }
+    if "emissivity" in values:
+        parts = heat_parts(fin, solution)
+        found |= {"heat_convected": parts.convective, "heat_radiated": parts.radiative}
+    if problem.rig.plate is not None:
+        found["plate_heat"] = problem.heats(values, fin, solution).total
     if "joint" in values:
         found["joint_times_k"] = np.asarray(values["joint"]) * k
     return found
+
+
+def _at_base(fin: Fin, solution: Solution, h: Array) -> Array:
+    """Return h [W/(m² K)] with what a radiating side adds to it at the base, where that is most."""
+    if not isinstance(fin.surface, Radiating):
+        return h
+    hot = solution.base_temperature
+    radiated = 4 * STEFAN_BOLTZMANN * np.asarray(fin.surface.emissivity) * hot**3
+    return np.asarray(h + radiated)
 
 
 def _thickest(profile: Profile) -> tuple[float, float]:

@@ -5,7 +5,7 @@ raises `EntryError`. The sections of `finback.rig_file` say which key takes whic
 """
 
 from collections.abc import Callable
-from typing import NamedTuple, NoReturn
+from typing import NamedTuple
 
 from finback import thermocouples
 from finback.errors import InputError
@@ -14,6 +14,7 @@ from finback.thermocouples import ThermocoupleClass
 from finback.wording import listed, nearest, quoted
 
 LONGEST_TITLE = 200
+MOST_FINS = 100_000
 
 
 class Spread(NamedTuple):
@@ -25,6 +26,13 @@ class Spread(NamedTuple):
     amount: float
     relative: bool
     thermocouple: ThermocoupleClass | None = None
+
+
+class Losses(NamedTuple):
+    """Stated losses of a plate [W], or, where `per_kelvin`, of each kelvin that it is above the air [W/K]."""
+
+    amount: Quantity
+    per_kelvin: bool
 
 
 class EntryError(ValueError):
@@ -56,13 +64,81 @@ def choice(what: str, known: tuple[str, ...]) -> Callable[[object], str]:
     return choose
 
 
-def later(problem: str, instead: str) -> Callable[[object], NoReturn]:
-    """Return the function that refuses what this version does not have yet."""
+def several(what: str, known: tuple[str, ...]) -> Callable[[object], tuple[str, ...]]:
+    """Return the function that takes a list of the known words, each once."""
+    choose = choice(what, known)
 
-    def refuse(_: object) -> NoReturn:
-        raise EntryError(problem, instead)
+    def take(words: object) -> tuple[str, ...]:
+        if not isinstance(words, list | tuple) or not words:
+            remedy = f'write a list in brackets, such as ["{known[0]}", "{known[1]}"]'
+            raise EntryError(f"this is no list of {what}s", remedy)
+        taken = tuple(choose(word) for word in words)
+        twice = next((word for word in taken if taken.count(word) > 1), None)
+        if twice is not None:
+            raise EntryError(f"{quoted(twice)} is given twice", "name each once")
+        return taken
 
-    return refuse
+    return take
+
+
+def count(number: object) -> int:
+    """Read a number of fins."""
+    if isinstance(number, bool) or not isinstance(number, int) or not 1 <= number <= MOST_FINS:
+        raise EntryError(
+            "this is no number of fins", f"write a whole number from 1 to {MOST_FINS}, such as 24"
+        )
+    return number
+
+
+def losses(text: object) -> Losses:
+    """Read the losses of a plate: an amount [W], or one that grows with the plate's excess [W/K]."""
+    try:
+        return Losses(not_negative(parse(text, "heat a kelvin")), True)
+    except InputError:
+        return Losses(not_negative(_parsed(text, "heat")), False)
+
+
+def emissivity(text: object) -> Quantity:
+    """Read an emissivity: a number, or the name of a surface in the handbook."""
+    if isinstance(text, str) and text[:1].isalpha():
+        return _finish(text)
+    found = _parsed(text, "number")
+    if not 0 <= found.value <= 1:
+        problem = f"{quoted(found.text)} is no emissivity"
+        raise EntryError(problem, 'write one from 0 to 1, such as "0.08 +/- 0.03"')
+    return found
+
+
+def _finish(name: str) -> Quantity:
+    from finback.models import emissivity as finishes
+    from finback.models.names import UnknownNameError
+
+    try:
+        finish = finishes.find(name)
+    except UnknownNameError as error:
+        near = ", ".join(map(quoted, error.nearest))
+        problem = f"{quoted(name)} is no surface that the handbook knows"
+        raise EntryError(
+            problem, f'the nearest are {near}; or write a number, such as "0.08 +/- 0.03"'
+        ) from None
+    text = f"{finish.emissivity:.3g} +/- {finish.spread:.2g} ({finish.name})"
+    return Quantity(finish.emissivity, finish.spread, text)
+
+
+def exponent(value: Quantity) -> Quantity:
+    """Check the exponent of free convection."""
+    if not 0 < value.value < 2:
+        problem = f"{quoted(value.text)} is no exponent of free convection"
+        raise EntryError(problem, 'write one above 0 and below 2, such as 0.25 or "0.25 +/- 0.05"')
+    return value
+
+
+def exact(value: Quantity) -> Quantity:
+    """Check that a quantity states no uncertainty, since none of it is used."""
+    if value.sd > 0:
+        problem = f"the uncertainty in {quoted(value.text)} is not used"
+        raise EntryError(problem, "leave it out")
+    return value
 
 
 def line(what: str, longest: int = LONGEST_TITLE) -> Callable[[object], str]:

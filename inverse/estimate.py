@@ -155,9 +155,10 @@ class Estimate:
     """What a fit found.
 
     `parameters` and `derived`: summaries by name. `candidates`: best first. `comparison`: one sentence on
-    what the readings say of the candidates. `priors`: one line of text a parameter, of what was assumed.
-    `expected`: the coefficient that a healthy fin should have, where the rig tells; `implied_speed`: the air
-    speed that the estimated one implies, where the rig speaks of moving air.
+    what the readings say of the candidates, `compared` one on which there are and why. `priors`: one line of
+    text a parameter, of what was assumed. `expected`: the coefficient that a healthy fin should have, where
+    the rig tells; `implied_speed`: the air speed that the estimated one implies, where the rig speaks of
+    moving air.
     """
 
     rig: Rig
@@ -167,6 +168,7 @@ class Estimate:
     derived: Mapping[str, Summary]
     candidates: tuple[CandidateScore, ...]
     comparison: str
+    compared: str
     fit: FitQuality
     table: tuple[ReadingFit, ...]
     band: ProfileBand

@@ -2,7 +2,7 @@
 
 What a rig states itself comes first; else a correlation tells, with the air's properties at the film
 temperature of the readings, which lies half-way between the air and the fin's mean temperature. Both are
-convection alone, while an estimate of h holds what the fin radiates too.
+convection alone, while an estimate of h holds what the fin radiates too, unless its emissivity is known.
 """
 
 from __future__ import annotations
@@ -95,6 +95,13 @@ def mean_temperature(rig: Rig, readings: Readings) -> float:
     along = np.interp(x, *np.array(pairs).T)
     weights = rig.profile().perimeter(x)
     return float(np.average(along, weights=weights)) if weights.any() else float(along.mean())
+
+
+def extremes(rig: Rig, readings: Readings) -> tuple[float, float]:
+    """Return the lowest and the highest temperature [K] read along the fin and on its plate."""
+    read = readings.used
+    found = [read[s.name] for s in (*rig.fin_sensors(), *rig.sensors_on("plate")) if s.name in read]
+    return min(found), max(found)
 
 
 def warmth(rig: Rig, readings: Readings, air: float | None = None) -> Warmth | None:

@@ -3,7 +3,9 @@
 All in the coordinates of a problem and linear at one point. The wide default priors set the yardstick: with
 S the covariance from all sources and W the precision of the wide priors, the share g'S W S g / g'S g of what
 is known of a combination g comes from the wide priors, that is from nowhere. No tolerance on a rank is
-needed, and weakly determined is a number, not a switch.
+needed, and weakly determined is a number, not a switch. What little a combination depends on may come from
+nowhere all the same where it hardly depends on it: one that is known to a small part of what the wide priors
+would leave open, g' W^-1 g, is determined too.
 """
 
 from dataclasses import dataclass
@@ -20,6 +22,7 @@ Array = NDArray[np.float64]
 DETERMINED = (
     0.2  # of the default prior's variance: below it the prior adds at most a fifth of the information
 )
+NARROWED = 0.05  # of the standard deviation by the wide priors alone, to which a combination is known
 ALONE = 1.25  # a source decides alone when leaving out the other costs at most this factor in variance
 
 
@@ -42,7 +45,9 @@ class Information:
     def determines(self, gradient: Array) -> bool:
         """Tell whether readings and stated values determine the combination."""
         response = self._response(gradient, readings=True, stated=True)
-        return float(np.square(response) @ self.default) <= DETERMINED * float(gradient @ response)
+        variance, open_to = float(gradient @ response), float(np.square(gradient) @ (1 / self.default))
+        from_nowhere = float(np.square(response) @ self.default)
+        return from_nowhere <= DETERMINED * variance or variance <= NARROWED**2 * open_to
 
     def _response(self, gradient: Array, readings: bool, stated: bool) -> Array:
         precision = np.diag(self.default + stated * self.stated) + readings * self.readings

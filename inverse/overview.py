@@ -54,13 +54,14 @@ def tellings(rig: Rig) -> tuple[Telling, ...]:
     k; a stated k or the heat into the fins [W] parts h from k; a temperature on the plate adds R''·k.
     """
     places = [sensor.place for sensor in rig.sensors.values()]
-    heat, plate = "heat" in places, "plate" in places
+    heat, plate = any(map(rig.tells_heat, places)), "plate" in places
+    source = "the heat into the fins" if "heat" in places else "the heater's power less its losses"
     unknowns = 2 + ("air" not in places) + (rig.tip == "fixed" and rig.tip_temperature is None)
     along = places.count("fin")
     parted = heat or rig.conductivity is not None
     shape = along >= unknowns or (along + 1 >= unknowns and heat and rig.conductivity is not None)
     few = f"cannot be told: {along} of at least {unknowns} temperatures along the fin"
-    by = " and ".join(["as stated"] * (rig.conductivity is not None) + ["from the heat into the fins"] * heat)
+    by = " and ".join(["as stated"] * (rig.conductivity is not None) + [f"from {source}"] * heat)
     apart = "state k in [material] or measure the heat into the fins"
     if "heater" in places and not heat:
         apart += " (the heater's power is only an upper bound on it)"
@@ -74,9 +75,7 @@ def tellings(rig: Rig) -> tuple[Telling, ...]:
 
     if heat and shape:
         beside = "" if rig.conductivity is None else ", beside what is stated"
-        k = Telling(
-            "k", True, f"can be told: from the heat into the fins and the slope at their base{beside}"
-        )
+        k = Telling("k", True, f"can be told: from {source} and the slope at their base{beside}")
     elif rig.conductivity is not None:
         k = Telling("k", False, "is what [material] states: the readings add nothing to it")
     else:
@@ -93,11 +92,11 @@ def tellings(rig: Rig) -> tuple[Telling, ...]:
     return h, k, joint
 
 
-def describe(rig: Rig, runs: Sequence[str] | None, candidates: Iterable[str]) -> str:
+def describe(rig: Rig, runs: Sequence[str] | None, candidates: Iterable[str], compared: str) -> str:
     """Return the overview as text that fits 80 columns.
 
     Arguments: rig; runs, the names of the runs in the readings, None where no readings were given;
-    candidates, the names of those that a fit would compare.
+    candidates, the names of those that a fit would compare; compared, the sentence on why those.
     """
     blocks = [
         wrap(clean(rig.title)),
@@ -105,7 +104,7 @@ def describe(rig: Rig, runs: Sequence[str] | None, candidates: Iterable[str]) ->
         [draw(rig)],
         _sensor_table(rig),
         _labelled((telling.name, telling.reason) for telling in tellings(rig)),
-        ["Candidates", *(f"  {name}" for name in candidates)],
+        ["Candidates", *(f"  {name}" for name in candidates), *wrap(compared, "  ", "  ")],
     ]
     if rig.assumed:
         blocks.append(["Assumed"])
@@ -208,12 +207,29 @@ def _fin_texts(rig: Rig) -> Iterator[tuple[str, str]]:
         whose = f"of {rig.handbook.name} by the handbook at {ROOM - ZERO_CELSIUS:.0f} °C"
         yield "k", f"{_shown(rig.conductivity)}, {whose}"
     else:
-        yield "k", f"{_shown(rig.conductivity)}, stated{f' ({name})' if name else ''}"
+        changing = (
+            "" if rig.change is None else f", changing by {100 * rig.change.coefficient:.2g} % a kelvin"
+        )
+        yield "k", f"{_shown(rig.conductivity)}, stated{f' ({name})' if name else ''}{changing}"
+    if rig.emissivity is not None:
+        yield "ε", f"{_shown(rig.emissivity)}, stated: radiation apart from h"
+    yield from _plate_texts(rig)
     if rig.expected_joint is not None:
         yield "joint", f"{_shown(rig.expected_joint)} when healthy"
     if rig.expected_coefficient is not None:
         yield "air", f"h {_shown(rig.expected_coefficient)} when healthy"
     yield from _air_texts(rig.surroundings)
+
+
+def _plate_texts(rig: Rig) -> Iterator[tuple[str, str]]:
+    """Yield what carries the fin."""
+    if rig.plate is None:
+        return
+    bare, losses = rig.plate.bare_area, rig.plate.losses
+    parts = [f"{rig.plate.fins} fin{'s' * (rig.plate.fins > 1)}"]
+    parts += [] if bare is None else [f"{_shown(bare)} bare"]
+    parts += [] if losses is None else [f"losses {_shown(losses)}"]
+    yield "plate", ", ".join(parts)
 
 
 def _air_texts(around: Surroundings) -> Iterator[tuple[str, str]]:
@@ -224,7 +240,11 @@ def _air_texts(around: Surroundings) -> Iterator[tuple[str, str]]:
         yield "air", f"driven{stated}{law}" if around.driven else f"still{law}"
     state = [
         f"{name} {_shown(each)}"
-        for name, each in (("pressure", around.pressure), ("humidity", around.humidity))
+        for name, each in (
+            ("pressure", around.pressure),
+            ("humidity", around.humidity),
+            ("surroundings", around.temperature),
+        )
         if each is not None
     ]
     if state:

@@ -10,11 +10,11 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from finback.priors import Normal, log_normal, within_a_factor
+from finback.priors import Normal, log_normal, within, within_a_factor
 from finback.quantity import Quantity
 
 Array = NDArray[np.float64]
-Transform = Literal["log", "identity"]
+Transform = Literal["log", "identity", "bounded"]
 
 ZERO_CELSIUS = 273.15
 LARGEST_LOG = 80.0  # e**80 overflows nothing, and is further out than any prior reaches
@@ -27,11 +27,32 @@ DEFAULT_PRIORS: dict[str, tuple[Transform, Normal, str]] = {
     "base_temperature": ("identity", Normal(ZERO_CELSIUS + 50.0, 500.0), "degC"),
     "air": ("identity", Normal(ZERO_CELSIUS + 20.0, 100.0), "degC"),
     "tip_temperature": ("identity", Normal(ZERO_CELSIUS + 20.0, 100.0), "degC"),
+    "exponent": ("bounded", Normal(-1.5, 2.0), "1"),
+    "rise": ("bounded", within(0.0, 0.4, -2.0, 2.0), "1"),
+    "emissivity": ("bounded", Normal(-1.0, 1.5), "1"),
+    "surroundings": ("identity", Normal(ZERO_CELSIUS + 20.0, 100.0), "degC"),
+    "bare_area": ("log", within_a_factor(0.01, 10.0), "m^2"),
+    "loss": ("identity", Normal(0.0, 100.0), "W"),
+    "loss_coefficient": ("identity", Normal(0.0, 10.0), "W/K"),
     "noise": ("log", within_a_factor(0.2, 10.0), "K"),
 }
 """Wide priors by parameter: coordinate, prior, reported unit. Choices of ours, wide enough that determined
 quantities don't feel them: h and k within a factor of 10 of 50 (gases and liquids; plastics to copper), the
-joint within a factor of 5 of 1e-4 m² K/W (handbook tables of contact resistance run from 1e-5 to 1e-3)."""
+joint within a factor of 5 of 1e-4 m² K/W (handbook tables of contact resistance run from 1e-5 to 1e-3). A
+coefficient that rises or falls along the fin does so by some tens of per cent. An emissivity that nobody
+states may be a polished metal's or a paint's. What is told of a plate is stated, or no unknown: its wide
+priors only tell what a statement adds."""
+
+PRACTICE: dict[str, Normal] = {"exponent": within(0.25, 0.08, 0.0, 2.0)}
+"""What the trade knows where the rig says nothing: the exponent of free convection lies about that of a
+laminar boundary layer, 1/4, and holds 1/3 of a turbulent one and the smaller ones of weak convection."""
+
+BOUNDS: dict[str, tuple[float, float]] = {
+    "exponent": (0.0, 2.0),
+    "rise": (-2.0, 2.0),
+    "emissivity": (0.0, 1.0),
+}
+"""What a bounded parameter lies between: z = ln((value - low)/(high - value))."""
 
 UNMEASURED_AIR = Normal(ZERO_CELSIUS + 20.0, 15.0)
 """Air temperature where no sensor reads it [K]: a room or a bench."""
@@ -44,6 +65,14 @@ LABELS = {
     "base_temperature": "base temperature",
     "air": "air temperature",
     "tip_temperature": "tip temperature",
+    "exponent": "exponent n of h ∝ θⁿ",
+    "rise": "rise of h from base to tip, over its mean",
+    "emissivity": "emissivity ε",
+    "surroundings": "temperature of the surroundings",
+    "bare_area": "bare area of the plate",
+    "loss": "loss of the plate",
+    "loss_coefficient": "loss of the plate a kelvin",
+    "reference_excess": "excess temperature that h belongs to",
     "noise": "noise of a reading",
 }
 
@@ -52,8 +81,8 @@ LABELS = {
 class Parameter:
     """One unknown.
 
-    Arguments: name, a key of DEFAULT_PRIORS; prior of its coordinate; stated, whether the rig states that
-    prior (and not the default table).
+    Arguments: name, a key of DEFAULT_PRIORS; prior of its coordinate; stated, whether that prior is
+    knowledge, the rig's or the trade's, and not a wide one that only keeps the unknown in sight.
     """
 
     name: str
@@ -62,7 +91,7 @@ class Parameter:
 
     @property
     def transform(self) -> Transform:
-        """How the coordinate z gives the value: "log" for value = exp(z), "identity" for value = z."""
+        """How the coordinate z gives the value: "log" exp(z), "identity" z, "bounded" between its BOUNDS."""
         return DEFAULT_PRIORS[self.name][0]
 
     @property
@@ -75,6 +104,15 @@ class Parameter:
         """The wide prior that would hold if nothing were stated."""
         return DEFAULT_PRIORS[self.name][1]
 
+    def values(self, z: Array) -> Array:
+        """Return the values, SI units, that belong to coordinates z, of any shape."""
+        if self.transform == "log":
+            return np.asarray(np.exp(np.clip(z, -LARGEST_LOG, LARGEST_LOG)))
+        if self.transform == "identity":
+            return z
+        low, high = BOUNDS[self.name]
+        return low + (high - low) / (1 + np.exp(-np.clip(z, -LARGEST_LOG, LARGEST_LOG)))
+
     def describe(self) -> str:
         """Return one line of text on the prior, for the list of what was assumed."""
         label = LABELS[self.name]
@@ -86,23 +124,38 @@ class Parameter:
                 else f"within a factor of {factor:.3g}"
             )
             text = f"{label}: {centre:.4g} {self.unit} {width}"
-        else:
+        elif self.transform == "bounded":
+            low, centre, high = self.values(self.prior.mean + self.prior.sd * np.array([-1.0, 0.0, 1.0]))
+            text = f"{label}: {centre:.3g}, most likely from {low:.2g} to {high:.2g}"
+        elif self.unit == "degC":
             text = f"{label}: {self.prior.mean - ZERO_CELSIUS:.4g} degC ± {self.prior.sd:.3g} K"
+        else:
+            text = f"{label}: {self.prior.mean:.4g} ± {self.prior.sd:.3g} {self.unit}"
+        if self.prior == PRACTICE.get(self.name):
+            return text + " (common practice)"
         return text + (" (stated)" if self.stated else " (wide default)")
 
 
 def default(name: str) -> Parameter:
-    """Return the parameter of that name with its wide prior."""
-    return Parameter(name, DEFAULT_PRIORS[name][1])
+    """Return the parameter of that name with what the trade knows of it, or else with its wide prior."""
+    return Parameter(name, PRACTICE.get(name, DEFAULT_PRIORS[name][1]), stated=name in PRACTICE)
 
 
 def stated(name: str, quantity: Quantity) -> Parameter:
     """Return the parameter of that name with the prior that the rig states; its sd must not be 0."""
-    if DEFAULT_PRIORS[name][0] == "log":
+    transform = DEFAULT_PRIORS[name][0]
+    if transform == "log":
         return Parameter(name, log_normal(quantity.value, quantity.sd / quantity.value), stated=True)
+    if transform == "bounded":
+        return Parameter(name, within(quantity.value, quantity.sd, *BOUNDS[name]), stated=True)
     return Parameter(name, Normal(quantity.value, quantity.sd), stated=True)
 
 
 def reported(name: str, values: Array) -> Array:
     """Return SI values of a parameter in the unit it is reported in: temperatures in degC."""
-    return values - ZERO_CELSIUS if DEFAULT_PRIORS[name][2] == "degC" else values
+    return values - ZERO_CELSIUS if unit_of(name) == "degC" else values
+
+
+def unit_of(name: str) -> str:
+    """Return the unit in which a parameter, or the excess temperature of its law, is reported."""
+    return "K" if name == "reference_excess" else DEFAULT_PRIORS[name][2]

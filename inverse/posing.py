@@ -6,6 +6,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from finback import expectation
 from finback import noise as noises
 from finback.parameters import UNMEASURED_AIR, Parameter, default, stated
 from finback.problem import Candidate, Measured, Problem
@@ -16,6 +17,7 @@ from finback.rig import Rig, Sensor
 Array = NDArray[np.float64]
 
 SMALLEST_NOISE = 1e-6  # K or W; keeps two sensors that share all their error from being told apart exactly
+SMALLEST_REFERENCE = 1.0  # K
 LENGTH_STEP = 1e-4  # relative step of a length in the sensitivities
 
 
@@ -26,6 +28,8 @@ def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
     """
     measured, exact = _measure(rig, readings)
     parameters, fixed = _unknowns(rig, candidate, measured, exact)
+    if candidate.law == "free-convection":
+        fixed["reference_excess"] = reference_excess(rig, readings)
     covariance, estimated = _stated_covariance(measured)
     if estimated.any():
         parameters.append(default("noise"))
@@ -38,6 +42,16 @@ def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
         measured=measured,
         noise=noises.build(covariance, estimated),
     )
+
+
+def reference_excess(rig: Rig, readings: Readings) -> float:
+    """Return the excess temperature [K] at which a coefficient that follows it is reported.
+
+    It is the fin's mean one by the readings, so that the coefficient is close to the mean along the fin.
+    """
+    warm = expectation.warmth(rig, readings, UNMEASURED_AIR.mean)
+    assert warm is not None, "an air temperature is given"
+    return max(abs(warm.surface - warm.air), SMALLEST_REFERENCE)
 
 
 def is_read(sensor: Sensor, readings: Readings) -> bool:
@@ -75,7 +89,7 @@ def _measure(rig: Rig, readings: Readings) -> tuple[Measured, dict[str, float]]:
         for sensor in rig.sensors.values():
             if sensor.place != place or not is_read(sensor, readings):
                 continue
-            if place == "heater":
+            if place == "heater" and not rig.losses_stated:
                 bounds.append(sensor)
             elif place in ("plate", "air") and sensor.exactly_known:
                 exact[place] = readings.values[sensor.name]
@@ -133,6 +147,17 @@ def _unknowns(
     add("k", rig.conductivity)
     if candidate.joint:
         unknown.append(default("joint"))
+    if candidate.law == "free-convection":
+        add("exponent", rig.exponent)
+    elif candidate.law == "varying":
+        unknown.append(default("rise"))
+    if rig.emissivity is not None or candidate.law == "radiating":
+        add("emissivity", rig.emissivity)
+        if rig.surroundings.temperature is not None:
+            add("surroundings", rig.surroundings.temperature)
+    if rig.plate is not None and (measured.bounds or "heater" in read):
+        for name, quantity in rig.plate.unknowns().items():
+            add(name, quantity)
     if "plate" not in exact:
         unknown.append(default("plate" if "plate" in read else "base_temperature"))
     if "air" not in exact:

@@ -12,44 +12,58 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
-from finback.models import Base, Fin, Solution, solve
+from finback.models import Base, Fin, PlateHeat, Solution, plate_heat, solve
 from finback.noise import Noise
 from finback.parameters import LARGEST_LOG, Parameter
 from finback.readings import Readings
-from finback.rig import Rig, Sensor, TipName
+from finback.rig import LawName, Rig, Sensor, TipName
 
 Array = NDArray[np.float64]
 Values = Mapping[str, float | Array]
 
 LOG_TWO_PI = math.log(2 * math.pi)
+LAW_WORDS: Mapping[LawName, str] = {
+    "uniform": "uniform h",
+    "free-convection": "free convection",
+    "varying": "h varying along the fin",
+    "radiating": "uniform h and radiation",
+}
+HEATS = ("heat", "heater")
 FINEST_NOISE = 1e-6  # K; finer than any reading, and what readings without errors are left with
 
 
 @dataclass(frozen=True, slots=True)
 class Candidate:
-    """One hypothesis of the physics: the tip, and whether there is a joint at the base.
+    """One hypothesis of the physics: the tip, whether there is a joint at the base, and the surface's law.
 
-    `joint_possible`: whether the rig reads a plate, so that a joint could be seen at all.
+    `joint_possible`: whether the rig reads a plate, so that a joint could be seen at all; `law_named`:
+    whether its name says the law, as it does where several are compared.
     """
 
     tip: TipName
     joint: bool
     joint_possible: bool
+    law: LawName = "uniform"
+    law_named: bool = False
 
     @property
     def name(self) -> str:
         """Name in results, such as "convective tip, joint"."""
-        if not self.joint_possible:
-            return f"{self.tip} tip"
-        return f"{self.tip} tip, {'joint' if self.joint else 'no joint'}"
+        parts = [f"{self.tip} tip"]
+        if self.joint_possible:
+            parts.append("joint" if self.joint else "no joint")
+        if self.law_named:
+            parts.append(LAW_WORDS[self.law])
+        return ", ".join(parts)
 
 
 @dataclass(frozen=True)
 class Measured:
     """What the likelihood compares predictions with.
 
-    `sensors`: those with Gaussian noise, fin sensors first, then plate, air, heat; `values` (n,) [K, W] in
-    that order. `bounds`: heaters, whose power only limits the heat; `bound_values`, `bound_sds` [W].
+    `sensors`: those with Gaussian noise, fin sensors first, then plate, air, heat, and heaters of a plate
+    whose losses are stated; `values` (n,) [K, W] in that order. `bounds`: other heaters, whose power only
+    limits the heat; `bound_values`, `bound_sds` [W].
     """
 
     sensors: tuple[Sensor, ...]
@@ -110,6 +124,10 @@ class Problem:
         return np.array([p.transform == "log" for p in self.parameters])
 
     @cached_property
+    def _bounded(self) -> tuple[tuple[int, Parameter], ...]:
+        return tuple((i, p) for i, p in enumerate(self.parameters) if p.transform == "bounded")
+
+    @cached_property
     def _constant(self) -> float:
         return -0.5 * (self.noise.log_det + len(self.measured.values) * LOG_TWO_PI)
 
@@ -122,6 +140,8 @@ class Problem:
         found: dict[str, float | Array] = dict(self.fixed)
         natural = np.where(self._logs, np.exp(np.clip(z, -LARGEST_LOG, LARGEST_LOG)), z)
         found.update(zip(self.names, natural.T, strict=True))
+        for column, parameter in self._bounded:
+            found[parameter.name] = parameter.values(z[:, column])
         if self.noise.estimated:
             found["noise"] = np.hypot(natural[:, -1], FINEST_NOISE)
         return found
@@ -142,6 +162,11 @@ class Problem:
             x = np.minimum(x, fin.profile.length)
         return solve(fin, base, air, x)
 
+    def heats(self, values: Values, fin: Fin, solution: Solution) -> PlateHeat:
+        """Return where the heat of the plate goes, for values by name and the fin's solution."""
+        hot = values.get("plate", solution.base_temperature)
+        return plate_heat(self.rig.plate_of(values, fin), solution.base_heat, hot, values["air"])
+
     def predict(self, z: Array, changes: Mapping[str, float] | None = None) -> Array:
         """Predict all readings: block z (n_sets, p) -> (n_sets, n + n_bounds) [K, W], heaters last."""
         return self.predict_values(self.values(z), len(z), changes)
@@ -152,14 +177,19 @@ class Problem:
         """Predict all readings from values by name; see `predict`."""
         measured = self.measured
         n_fin = len(measured.positions)
-        solution = self.solve(values, measured.positions, changes)
+        fin, base, air = self.build(values, changes)
+        x = measured.positions if changes is None else np.minimum(measured.positions, fin.profile.length)
+        solution = solve(fin, base, air, x)
         found = np.empty((n_sets, len(measured.sensors) + len(measured.bounds)))
         found[:, :n_fin] = solution.temperatures
-        for column, sensor in enumerate(measured.sensors[n_fin:] + measured.bounds, start=n_fin):
-            if sensor.place in ("heat", "heater"):
-                found[:, column] = solution.base_heat
-            else:
-                found[:, column] = values[sensor.place]
+        others = measured.sensors[n_fin:] + measured.bounds
+        into_fins = of_heater = solution.base_heat
+        if self.rig.plate is not None and any(sensor.place in HEATS for sensor in others):
+            heats = self.heats(values, fin, solution)
+            into_fins, of_heater = heats.fins, heats.total
+        predicted = {**values, "heat": into_fins, "heater": of_heater}
+        for column, sensor in enumerate(others, start=n_fin):
+            found[:, column] = predicted[sensor.place]
         return found
 
     def whitened(self, z: Array, sigma: float | None = None) -> tuple[Array, Array | float]:

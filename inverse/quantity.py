@@ -49,6 +49,9 @@ Dimension = Literal[
     "pressure",
     "humidity",
     "relative",
+    "heat a kelvin",
+    "change a kelvin",
+    "number",
 ]
 
 
@@ -73,6 +76,9 @@ KINDS: Mapping[Dimension, _Kind] = {
     "pressure": _Kind({"kg": 1, "m": -1, "s": -2}, "a pressure", "98 kPa"),
     "humidity": _Kind({}, "a relative humidity", "45 %"),
     "relative": _Kind({}, "a share of the value", "3 %"),
+    "heat a kelvin": _Kind({"W": 1, "K": -1}, "a loss a kelvin", "0.05 W/K"),
+    "change a kelvin": _Kind({"K": -1}, "a relative change a kelvin", "-4e-4 1/K"),
+    "number": _Kind({}, "a number", "0.25"),
 }
 PER_CENT = ("humidity", "relative")
 """Dimensions whose unit is %; an uncertainty in per cent of such a value is an amount, no share of it."""
@@ -123,6 +129,8 @@ def parse(text: object, dimension: Dimension) -> Quantity:
     uncertainty of a temperature is a difference: 0.9 degF is 0.5 K. Returns SI values (K for temperatures).
     Raises InputError, without a place, for anything else.
     """
+    if dimension == "number":
+        return _parse_number(text)
     kind = KINDS[dimension]
     written = f'write {kind.words} with its unit, such as "{kind.example}"'
     if isinstance(text, bool) or not isinstance(text, str | int | float):
@@ -141,6 +149,28 @@ def parse(text: object, dimension: Dimension) -> Quantity:
     if not (math.isfinite(result) and math.isfinite(sd)):
         raise InputError(None, None, f"{quoted(text)} is too large a number", written)
     return Quantity(result, sd, text)
+
+
+def _parse_number(text: object) -> Quantity:
+    """Read a number without a unit, with or without a standard uncertainty: 0.25, "0.25 +/- 0.05"."""
+    written = 'write a number, such as 0.25 or "0.25 +/- 0.05"'
+    if isinstance(text, bool) or not isinstance(text, str | int | float):
+        raise InputError(None, None, "this is not a number", written)
+    shown = text if isinstance(text, str) else str(text)
+    if len(shown) > LONGEST:
+        raise InputError(None, None, f"{quoted(shown)} is longer than {LONGEST} characters", written)
+    value_part, sd_part = _halves(shown, written)
+    value, unit = _number_and_unit(value_part, shown, written)
+    sd, sd_unit = (0.0, "") if sd_part is None else _number_and_unit(sd_part, shown, written)
+    if sd_unit == "%":
+        sd, sd_unit = abs(value) * sd / 100, ""
+    if unit or sd_unit:
+        raise InputError(None, None, f"{quoted(shown)} has a unit, and should have none", written)
+    if sd < 0:
+        raise InputError(None, None, f"{quoted(shown)} has a negative uncertainty", "write a positive one")
+    if not (math.isfinite(value) and math.isfinite(sd)):
+        raise InputError(None, None, f"{quoted(shown)} is too large a number", written)
+    return Quantity(value, sd, shown)
 
 
 def is_temperature_scale(unit: str) -> bool:

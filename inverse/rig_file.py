@@ -23,7 +23,7 @@ from pydantic import (
 from pydantic_core import ErrorDetails
 
 from finback import entries
-from finback.entries import EntryError, Spread
+from finback.entries import EntryError, Losses, Spread
 from finback.errors import InputError
 from finback.quantity import Quantity
 from finback.wording import nearest, plain, quoted
@@ -37,6 +37,7 @@ EDGES = ("exposed", "guarded")
 SURFACES = ("projected", "slant")
 ORIENTATIONS = ("vertical", "horizontal")
 PLACES = ("plate", "air", "heat", "heater")
+LAWS = ("uniform", "free-convection", "varying", "radiating")
 
 # The validators before a value run from right to left, those after it from left to right.
 _KNOWN_BETTER = (AfterValidator(entries.positive), AfterValidator(entries.narrow))
@@ -48,6 +49,12 @@ Uncertainty = Annotated[
 ]
 Temperature = Annotated[
     Quantity, AfterValidator(entries.above_absolute_zero), BeforeValidator(entries.quantity("temperature"))
+]
+ExactTemperature = Annotated[
+    Quantity,
+    AfterValidator(entries.exact),
+    AfterValidator(entries.above_absolute_zero),
+    BeforeValidator(entries.quantity("temperature")),
 ]
 Resistance = Annotated[
     Quantity, AfterValidator(entries.positive), BeforeValidator(entries.quantity("resistance"))
@@ -71,6 +78,19 @@ Pressure = Annotated[Quantity, *_KNOWN_BETTER, BeforeValidator(entries.quantity(
 Humidity = Annotated[
     Quantity, AfterValidator(entries.up_to_saturation), BeforeValidator(entries.quantity("humidity"))
 ]
+Emissivity = Annotated[Quantity, BeforeValidator(entries.emissivity)]
+Exponent = Annotated[
+    Quantity,
+    AfterValidator(entries.exponent),
+    BeforeValidator(entries.quantity("number")),
+]
+Change = Annotated[
+    Quantity, AfterValidator(entries.exact), BeforeValidator(entries.quantity("change a kelvin"))
+]
+Area = Annotated[Quantity, *_KNOWN_BETTER, BeforeValidator(entries.quantity("area"))]
+PlateLosses = Annotated[Losses, BeforeValidator(entries.losses)]
+Laws = Annotated[tuple[str, ...], BeforeValidator(entries.several("surface law", LAWS))]
+Tips = Annotated[tuple[str, ...], BeforeValidator(entries.several("tip", TIPS))]
 ProfileName = Annotated[str, BeforeValidator(entries.choice("profile", PROFILES))]
 TipName = Annotated[
     Literal["adiabatic", "convective", "fixed", "infinite"], BeforeValidator(entries.choice("tip", TIPS))
@@ -118,15 +138,9 @@ class MaterialSection(Section):
 
     conductivity: Conductivity | None = None
     name: Annotated[str, BeforeValidator(entries.line("name of a material", 80))] | None = None
-    emissivity: Annotated[
-        None,
-        BeforeValidator(
-            entries.later(
-                "this version does not part radiation from convection yet",
-                "leave emissivity out: h is then the total coefficient",
-            )
-        ),
-    ] = None
+    temperature_coefficient: Change | None = None
+    reference_temperature: ExactTemperature | None = None
+    emissivity: Emissivity | None = None
 
 
 class JointSection(Section):
@@ -135,14 +149,31 @@ class JointSection(Section):
     expected: Resistance | None = None
 
 
+class PlateSection(Section):
+    """[plate]: what carries the fin, where heat is measured for all of it."""
+
+    fins: Annotated[int, BeforeValidator(entries.count)] = 1
+    bare_area: Area | None = None
+    losses: PlateLosses | None = None
+
+
+class CandidatesSection(Section):
+    """[candidates]: which models a fit compares."""
+
+    surface_laws: Laws | None = None
+    tips: Tips | None = None
+    exponent: Exponent | None = None
+
+
 class AirSection(Section):
-    """[air]: what a healthy fin should see, and what tells it."""
+    """[air]: what a healthy fin should see, what tells it, and what else the fin sees."""
 
     expected_h: Coefficient | None = None
     speed: Speed | None = None
     correlation: Annotated[str, BeforeValidator(entries.line("name of a correlation", 80))] | None = None
     pressure: Pressure | None = None
     humidity: Humidity | None = None
+    surroundings_temperature: Temperature | None = None
 
 
 class DefaultsSection(Section):
@@ -188,16 +219,9 @@ class RigSection(Section):
     fin: FinSection
     material: MaterialSection = MaterialSection()
     joint: JointSection | None = None
-    plate: Annotated[
-        None,
-        BeforeValidator(
-            entries.later(
-                "this version does not share heat among several fins yet",
-                "leave [plate] out and give the heat of one fin",
-            )
-        ),
-    ] = None
+    plate: PlateSection | None = None
     air: AirSection = AirSection()
+    candidates: CandidatesSection = CandidatesSection()
     sensors: SensorsSection
 
 
@@ -240,7 +264,9 @@ _SECTIONS: Mapping[str, type[BaseModel]] = {
     "fin": FinSection,
     "material": MaterialSection,
     "joint": JointSection,
+    "plate": PlateSection,
     "air": AirSection,
+    "candidates": CandidatesSection,
 }
 _EXAMPLES = {
     "fin": "add it with profile and the sizes that the profile needs",
@@ -279,7 +305,7 @@ def _unknown_key(path: tuple[str, ...], source: Path | None, is_table: bool) -> 
         model = DefaultsSection if table[1] == "defaults" else SensorSection
     elif table:
         model = _SECTIONS[table[0]]
-    known = [name for name, field in model.model_fields.items() if field.annotation is not type(None)]
+    known = list(model.model_fields)
     near = nearest(key, known)
     if is_table and not table:
         remedy = f"the nearest known one is [{near}]" if near else f"known are {', '.join(known)}"

@@ -1,14 +1,16 @@
 """Drawing from a posterior by Markov chain Monte Carlo with emcee.
 
-Several ensembles run independently, each from its own seed, and count as the chains of the diagnostics
-(walkers of one ensemble help each other, so R-hat and ESS over walkers mislead). Two moves alternate at
-random: independent draws from a Student t fitted to the posterior, which forget their past at once, and
-differential evolution, which needs no fit and finds what the fit misses. emcee's snooker move is not used: it
-is biased in the released version.
+Several ensembles run independently and count as the chains of the diagnostics (walkers of one ensemble help
+each other, so R-hat and ESS over walkers mislead). They take their steps together, so that their densities
+are computed in one block, but never see each other: each starts from its own seed, and no move mixes them.
+Two moves alternate at random: independent draws from a Student t fitted to the posterior, which forget their
+past at once, and differential evolution, which needs no fit and finds what the fit misses. emcee's snooker
+move is not used: it is biased in the released version.
 """
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -80,25 +82,21 @@ def sample(
     [1]; seed; settings; progress, called with the fraction done. Never raises for a chain that does not
     converge: `Chain.converged` says so.
     """
-    randoms = [np.random.RandomState(np.random.MT19937(child)) for child in seed.spawn(settings.ensembles)]
     share = SHARE_OF_INDEPENDENT if efficiency >= FIT else SHARE_WHERE_UNFIT
-    ensembles = [_Ensemble(log_density, proposal, share, random, settings) for random in randoms]
-    for ensemble in ensembles:
-        ensemble.run(settings.warm_up)
-        ensemble.forget()
+    ensembles = _Ensembles(log_density, proposal, share, seed, settings)
+    ensembles.run(settings.warm_up)
+    ensembles.forget()
     steps, target = 0, settings.block
     while True:
-        for ensemble in ensembles:
-            ensemble.run(target - steps)
+        ensembles.run(target - steps)
         steps = target
-        z = np.stack([e.chain for e in ensembles])
+        z = ensembles.chain
         ess, rhat, autocorrelation = _judge(z)
         wanted = settings.autocorrelation_times * autocorrelation
         converged = bool(steps >= wanted and rhat <= settings.rhat and ess >= settings.ess)
         progress(min(steps / max(wanted, 1.0), 1.0))
         if converged or steps >= settings.max_steps:
-            heights = np.stack([e.log_density for e in ensembles])
-            return Chain(z, heights, ess, rhat, autocorrelation, converged)
+            return Chain(z, ensembles.log_density, ess, rhat, autocorrelation, converged)
         target = int(min(max(GROWTH * wanted, steps + settings.block), 2 * steps, settings.max_steps))
 
 
@@ -129,31 +127,32 @@ def autocorrelation_time(draws: Array) -> float:
     return float(np.take_along_axis(times, last[None], axis=0).max())
 
 
-class _Ensemble:
-    """One emcee ensemble with its own random stream, started from draws of the proposal."""
+class _Ensembles:
+    """Ensembles of emcee side by side, each started from draws of the proposal by a stream of its own."""
 
     def __init__(
         self,
         log_density: LogDensity,
         proposal: Proposal,
         share: float,
-        random: np.random.RandomState,
+        seed: np.random.SeedSequence,
         settings: Settings,
     ) -> None:
         from emcee import EnsembleSampler, State
-        from emcee.moves import DEMove
         from emcee.moves.mh import MHMove
 
         def propose(coordinates: Array, generator: np.random.RandomState) -> tuple[Array, Array]:
             proposed = proposal.draw(len(coordinates), generator)
             return proposed, proposal.log_density(coordinates) - proposal.log_density(proposed)
 
-        p = proposal.centres.shape[1]
+        self._count, p = settings.ensembles, proposal.centres.shape[1]
         walkers = max(settings.walkers, 4 * p)
-        start = _finite_start(log_density, proposal, walkers, random)
-        moves = [(MHMove(propose), share), (DEMove(), 1 - share)]
-        self._sampler = EnsembleSampler(walkers, p, log_density, moves=moves, vectorize=True)
-        self._state = State(start, random_state=random.get_state())
+        walkers += walkers % 2
+        randoms = [np.random.RandomState(np.random.MT19937(child)) for child in seed.spawn(self._count + 1)]
+        starts = [_finite_start(log_density, proposal, walkers, random) for random in randoms[1:]]
+        moves = [(MHMove(propose), share), (_apart(self._count), 1 - share)]
+        self._sampler = EnsembleSampler(self._count * walkers, p, log_density, moves=moves, vectorize=True)
+        self._state = State(np.concatenate(starts), random_state=randoms[0].get_state())
 
     def run(self, steps: int) -> None:
         """Take steps."""
@@ -166,13 +165,35 @@ class _Ensemble:
 
     @property
     def chain(self) -> Array:
-        """Draws so far (steps, walkers, p)."""
-        return np.asarray(self._sampler.get_chain())
+        """Draws so far (ensembles, steps, walkers, p)."""
+        return self._by_ensemble(np.asarray(self._sampler.get_chain()))
 
     @property
     def log_density(self) -> Array:
-        """Log densities of the draws (steps, walkers)."""
-        return np.asarray(self._sampler.get_log_prob())
+        """Log densities of the draws (ensembles, steps, walkers)."""
+        return self._by_ensemble(np.asarray(self._sampler.get_log_prob()))
+
+    def _by_ensemble(self, values: Array) -> Array:
+        steps = len(values)
+        return np.ascontiguousarray(
+            np.moveaxis(values.reshape(steps, self._count, -1, *values.shape[2:]), 1, 0)
+        )
+
+
+def _apart(ensembles: int) -> Any:
+    """Return emcee's move of differential evolution for ensembles that must not see each other."""
+    from emcee.moves import DEMove
+
+    class Apart(DEMove):  # type: ignore[misc]  # emcee has no types
+        def get_proposal(
+            self, moved: Array, others: list[Array], random: np.random.RandomState
+        ) -> tuple[Array, Array]:
+            pairs = zip(np.split(moved, ensembles), np.split(np.concatenate(others), ensembles), strict=True)
+            found = [super(Apart, self).get_proposal(own, [rest], random) for own, rest in pairs]
+            return np.concatenate([q for q, _ in found]), np.concatenate([factor for _, factor in found])
+
+    # every second walker moves at a time, so that both halves keep the order of the ensembles
+    return Apart(randomize_split=False)
 
 
 def _finite_start(

@@ -121,8 +121,10 @@ def measure(fin: FinSection, source: Path | None) -> dict[str, Quantity]:
     return found
 
 
-def check_options(fin: FinSection, profile: Profile, source: Path | None) -> None:
-    """Check edges, surface and tip of a checked table [fin] against its profile.
+def check_options(
+    fin: FinSection, profile: Profile, source: Path | None, compared: tuple[str, ...] = ()
+) -> None:
+    """Check edges, surface and tip of a checked table [fin], and the tips compared, against its profile.
 
     Raises InputError for what this profile cannot have.
     """
@@ -134,16 +136,24 @@ def check_options(fin: FinSection, profile: Profile, source: Path | None) -> Non
         if shape.make is None:
             problem = "the perimeter of a table is taken as it stands"
         raise InputError(source, "[fin] surface", problem, "leave surface out")
-    if fin.tip == "infinite" and not shape.even:
+    for tip in compared:
+        _check_tip(tip, "[candidates] tips", shape, profile, source)
+    if fin.tip is not None:
+        _check_tip(fin.tip, "[fin] tip", shape, profile, source)
+
+
+def _check_tip(tip: str, place: str, shape: Shape, profile: Profile, source: Path | None) -> None:
+    key = place.partition(" ")[2]
+    if tip == "infinite" and not shape.even:
         problem = f"{shape.words} cannot go on for ever as it ends"
-        remedy = 'write "adiabatic", "convective" or "fixed", or leave tip out'
-        raise InputError(source, "[fin] tip", problem, remedy)
-    if fin.tip == "fixed" and not has_tip_face(profile):
+        remedy = f'write "adiabatic", "convective" or "fixed", or leave {key} out'
+        raise InputError(source, place, problem, remedy)
+    if tip == "fixed" and not has_tip_face(profile):
         which = shape.words
         if {"tip_thickness", "tip_diameter"} & {*shape.needed, *shape.optional}:  # another one may be held
             which = f"this {which.partition(' ')[2]}"
         problem = f"{which} ends too sharp to be held at a temperature"
-        raise InputError(source, "[fin] tip", problem, 'write tip = "adiabatic", or leave tip out')
+        raise InputError(source, place, problem, f'write tip = "adiabatic", or leave {key} out')
 
 
 def has_tip_face(profile: Profile) -> bool:

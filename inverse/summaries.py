@@ -161,7 +161,7 @@ def describe(name: str) -> tuple[str, str]:
     """Return label and reported unit of a parameter or derived quantity."""
     if name in DERIVED:
         return DERIVED[name].label, DERIVED[name].unit
-    return parameters.LABELS[name], parameters.DEFAULT_PRIORS[name][2]
+    return parameters.LABELS[name], parameters.unit_of(name)
 
 
 def to_reported(name: str, values: Array) -> Array:

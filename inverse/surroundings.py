@@ -44,7 +44,8 @@ class Surroundings:
     """What a rig says of its air, and of how its fin stands, SI units; None where it says nothing.
 
     `speed` [m/s], 0 in still air; `correlation`, by the name it has in `finback.models.laws`; `pressure`
-    [Pa]; `humidity`, relative [1]; `orientation` of the fin's axis, of an annular fin that of its tube.
+    [Pa]; `humidity`, relative [1]; `orientation` of the fin's axis, of an annular fin that of its tube;
+    `temperature` [K] of what the fin radiates to, None for the air's.
     """
 
     speed: Quantity | None = None
@@ -52,6 +53,7 @@ class Surroundings:
     pressure: Quantity | None = None
     humidity: Quantity | None = None
     orientation: Orientation | None = None
+    temperature: Quantity | None = None
 
     @property
     def driven(self) -> bool | None:
@@ -136,7 +138,9 @@ def read(
     Raises InputError for a correlation that is unknown, or for another flow than the fin's.
     """
     air, fin = section.air, section.fin
-    found = Surroundings(air.speed, None, air.pressure, air.humidity, fin.orientation)
+    found = Surroundings(
+        air.speed, None, air.pressure, air.humidity, fin.orientation, air.surroundings_temperature
+    )
     if air.correlation is None:
         return found
     place = "[air] correlation"

@@ -25,19 +25,19 @@ class Plate:
 
     Arguments: fins N [1], how many like fins it carries; bare_area [m²], what of it loses heat and carries
     none; surface, the law of that area, None where it loses nothing; loss [W], what leaves by another way.
-    loss may be a float or of shape (n_sets,), as the values of the law. Raises ValueError for fewer than one
-    fin or a negative area.
+    bare_area and loss may be floats or of shape (n_sets,), as the values of the law. Raises ValueError for
+    fewer than one fin or a negative area.
     """
 
     fins: float
-    bare_area: float = 0.0
+    bare_area: Values = 0.0
     surface: SurfaceLaw | None = None
     loss: Values = 0.0
 
     def __post_init__(self) -> None:
         if not (np.isfinite(self.fins) and self.fins >= 1):
             raise ValueError(f"fins must be one or more, got {self.fins!r}")
-        if not (np.isfinite(self.bare_area) and self.bare_area >= 0):
+        if not bool(np.all(np.isfinite(self.bare_area) & (np.asarray(self.bare_area) >= 0))):
             raise ValueError(f"bare_area must be finite and not negative, got {self.bare_area!r}")
 
 

@@ -38,12 +38,13 @@ def compare(estimate: Estimate) -> Comparison | None:
         sentences.append(_speed(implied))
     if not sentences:
         return None
-    by_law = implied is not None or (expected is not None and expected.correlation != STATED)
+    total = "emissivity" not in estimate.parameters
+    law = implied is not None or (expected is not None and expected.correlation != STATED)
     flags = dict.fromkeys((*(expected.flags if expected else ()), *(implied.flags if implied else ())))
     return Comparison(
         phrases.told(" ".join(sentences)),
         () if expected is None or expected.correlation == STATED else _rows(expected),
-        tuple(phrases.told(note) for note in (*([TOTAL] if by_law else []), *notes, *flags)),
+        tuple(phrases.told(note) for note in (*([TOTAL] if law and total else []), *notes, *flags)),
     )
 
 

@@ -2,6 +2,7 @@
 
 from dataclasses import dataclass
 
+from finback.candidates import compared_laws
 from finback.estimate import Estimate
 from finback.rig import Rig
 from finback.shapes import SHAPES
@@ -34,6 +35,30 @@ TAPERED = (
     ),
     Equation("m² = h P / (k A)", "with P and A at the base: temperatures alone give h/k"),
 )
+GENERAL = (
+    Equation(
+        "d/dx(k A dθ/dx) = P q″(T, x),   θ = T − T_air",
+        "steady conduction along the fin, whose side loses the flux q″ of a surface law",
+    ),
+)
+FLUXES = {
+    "uniform": Equation("q″ = h θ", "uniform h: one coefficient all along the fin"),
+    "free-convection": Equation(
+        "q″ = h (|θ|/θ_ref)ⁿ θ", "free convection: h is the coefficient at the fin's mean excess θ_ref"
+    ),
+    "varying": Equation(
+        "q″ = h (1 + r (x/L − ½)) θ", "h varying along the fin: h is its mean, r its rise from base to tip"
+    ),
+}
+RADIATION = Equation(
+    "q″_rad = ε σ (T⁴ − T_sur⁴)", "added to q″: grey radiation to the surroundings; h is convection alone"
+)
+CHANGING = Equation(
+    "k(T) = k (1 + b (T − T_0))", "the conductivity follows the temperature; k is that at T_0"
+)
+BALANCE = Equation(
+    "Q = N q_b + A_bare q″(T_plate) + Q_loss", "heat of the plate: N fins, what is bare of it, and its losses"
+)
 
 CAUTIONS = (
     "An estimate is no certificate. It holds for this rig, this run and the assumptions listed above; it "
@@ -49,10 +74,12 @@ def equations(estimate: Estimate) -> tuple[Equation, ...]:
     """Return the equations behind a report: fin, the candidates' tips, joint, likelihood, evidence."""
     joint = any(sensor.place == "plate" for sensor in estimate.rig.sensors.values())
     names = " ".join(score.name for score in estimate.candidates)
-    lines = list(UNIFORM if SHAPES[estimate.rig.profile_name].even else TAPERED)
+    lines = _along(estimate.rig)
     lines += [equation for tip, equation in TIPS.items() if tip in names]
     if joint:
         lines.append(Equation("−k θ′(0) = (T_plate − T_b) / R″", "joint at the base, of area resistance R″"))
+    if estimate.rig.plate is not None:
+        lines.append(BALANCE)
     lines += [
         Equation(
             "q_b = −k A θ′(0)", "heat into the base of the fin; it separates h from k where it is measured"
@@ -66,6 +93,17 @@ def equations(estimate: Estimate) -> tuple[Equation, ...]:
         Equation("Pᵢ = Zᵢ / Σⱼ Zⱼ", "its probability, all candidates being equally likely beforehand"),
     ]
     return tuple(lines)
+
+
+def _along(rig: Rig) -> list[Equation]:
+    """Return the equations of conduction along the fin and of what its side loses."""
+    laws = compared_laws(rig)
+    radiates = rig.emissivity is not None or "radiating" in laws
+    if laws == ("uniform",) and not radiates and rig.change is None:
+        return list(UNIFORM if SHAPES[rig.profile_name].even else TAPERED)
+    convective = dict.fromkeys("uniform" if law == "radiating" else law for law in laws)
+    lines = [*GENERAL, *(FLUXES[law] for law in convective)]
+    return lines + [RADIATION] * radiates + [CHANGING] * (rig.change is not None)
 
 
 def paragraph(rig: Rig) -> str:

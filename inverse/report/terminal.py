@@ -18,6 +18,8 @@ def summary(estimate: Estimate, folder: Path | str | None = None) -> str:
     """
     seen = view.build(estimate)
     blocks = [_heading(seen), *(_answer(answer) for answer in seen.answers), _candidates(seen)]
+    if seen.parts:
+        blocks.append(["Heat", *wrap(seen.parts, "  ", "  ")])
     if seen.healthy is not None:
         blocks.append(["Healthy fin", *wrap(seen.healthy.verdict, "  ", "  ")])
     blocks.append(_findings(seen))
@@ -49,7 +51,7 @@ def _candidates(seen: view.View) -> list[str]:
     lines = ["Candidates"] if seen.candidates else []
     for candidate in seen.candidates:
         lines += wrap(candidate.name, " " * 10, f"{candidate.probability:>8}  ")
-    return lines + wrap(seen.verdict, "  ", "  ")
+    return lines + wrap(seen.verdict, "  ", "  ") + wrap(seen.compared, "  ", "  ")
 
 
 def _findings(seen: view.View) -> list[str]:

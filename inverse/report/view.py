@@ -19,7 +19,12 @@ PLACES = {
     "plate": "plate",
     "air": "air",
     "heat": "heat into the fin",
-    "heater": "heater (upper bound)",
+    "heater": "heater",
+}
+UPPER_BOUND = "heater (upper bound)"
+COEFFICIENTS = {
+    False: "total coefficient: convection and radiation together",
+    True: "convective coefficient, radiation beside it",
 }
 HEADLINES = ("h", "k", "joint")
 STAND_INS = {
@@ -108,6 +113,8 @@ class View:
     status_text: str
     answers: tuple[Answer, ...]
     verdict: str
+    compared: str
+    parts: str
     healthy: Comparison | None
     worst: tuple[FindingRow, ...]
     more_findings: str
@@ -141,13 +148,15 @@ def build(estimate: Estimate) -> View:
         status_text=phrases.STATUS[estimate.status],
         answers=_answers(estimate),
         verdict=phrases.told(estimate.comparison),
+        compared=phrases.told(estimate.compared),
+        parts=_parts(estimate),
         healthy=comparison.compare(estimate),
         worst=worst,
         more_findings=f"{rest} more in the list of findings." if rest > 0 and worst else "",
         candidates=tuple(_candidate(score, len(estimate.candidates) == 1) for score in estimate.candidates),
         loo_note=_loo_note(estimate),
         quantities=tuple(_quantity(s) for s in (*estimate.parameters.values(), *estimate.derived.values())),
-        readings=tuple(_reading(row) for row in estimate.table),
+        readings=tuple(_reading(row, estimate.rig.losses_stated) for row in estimate.table),
         fit=_fit(estimate),
         findings=findings,
         assumptions=tuple(phrases.told(f.message) for f in estimate.findings if f.code == "assumed"),
@@ -177,7 +186,7 @@ def _answer(estimate: Estimate, name: str, summary: Summary) -> Answer:
     label = _label(summary)
     known = summary.median is not None
     if name == "h":
-        label = "total coefficient: convection and radiation together"
+        label = COEFFICIENTS["emissivity" in estimate.parameters]
     return Answer(
         symbol=phrases.symbol(name),
         label=label,
@@ -191,14 +200,21 @@ def _answer(estimate: Estimate, name: str, summary: Summary) -> Answer:
     )
 
 
+def _parts(estimate: Estimate) -> str:
+    """Return how the fin's heat parts into what the air takes and what is radiated, if that is known."""
+    air, radiated = (estimate.derived.get(name) for name in ("heat_convected", "heat_radiated"))
+    if air is None or radiated is None or air.median is None or radiated.median is None:
+        return ""
+    return (
+        f"The air takes {phrases.median(air)} of the fin's heat ({phrases.interval(air)}), "
+        f"{phrases.median(radiated)} are radiated ({phrases.interval(radiated)})."
+    )
+
+
 def _absent(estimate: Estimate, name: str) -> Answer:
     """Return the headline of a quantity that was no unknown of this fit."""
     label, value, reason = {
-        "h": (
-            "total coefficient: convection and radiation together",
-            phrases.NOT_DETERMINED,
-            "It was not fitted.",
-        ),
+        "h": (COEFFICIENTS[False], phrases.NOT_DETERMINED, "It was not fitted."),
         "k": ("conductivity", phrases.NOT_DETERMINED, "It was not fitted."),
         "joint": (
             "joint resistance",
@@ -262,8 +278,9 @@ def _candidate(score: CandidateScore, alone: bool) -> CandidateRow:
     )
 
 
-def _reading(row: ReadingFit) -> ReadingRow:
-    bound = row.place == "heater"  # the model may stay below it, so the difference is no residual
+def _reading(row: ReadingFit, losses_stated: bool) -> ReadingRow:
+    # the model may stay below a bound, so the difference is no residual
+    bound = row.place == "heater" and not losses_stated
     thermal = row.place not in ("heat", "heater")
     zero, unit, unit_of_difference = (ZERO_CELSIUS, "degC", "K") if thermal else (0.0, "W", "W")
     position = phrases.NOTHING
@@ -271,7 +288,7 @@ def _reading(row: ReadingFit) -> ReadingRow:
         position = f"{_position(row.position, row.position_sd)} mm"
     return ReadingRow(
         phrases.clean(row.sensor),
-        PLACES.get(row.place, row.place),
+        UPPER_BOUND if bound else PLACES.get(row.place, row.place),
         position,
         phrases.number(row.measured - zero, row.uncertainty, unit),
         phrases.number(row.predicted - zero, row.uncertainty, unit),

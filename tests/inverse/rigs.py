@@ -26,11 +26,16 @@ from finback.models import (
     HyperbolicAnnular,
     InfiniteTip,
     Joint,
+    LinearConductivity,
+    PowerCoefficient,
+    Radiating,
     Solution,
+    SurfaceLaw,
     Table,
     Trapezoidal,
     Triangular,
     UniformCoefficient,
+    VaryingCoefficient,
     pin,
     rectangular,
     solve,
@@ -40,6 +45,8 @@ from finback.readings import Readings
 from finback.rig import Rig, Sensor, TipName
 
 ZERO = 273.15
+REFERENCE = 40.0  # K, the excess temperature that h belongs to where it follows that
+T0 = 293.15  # K, the temperature that k belongs to where it follows that
 HOLES = tuple(1e-3 * x for x in (5, 20, 35, 50, 65, 80, 95, 112))  # m
 UNSTATED_NOISE = 0.15  # K
 SHAPES = {
@@ -70,6 +77,24 @@ class Truth:
     tip_temperature: float = ZERO + 30.0
     lengths: Mapping[str, float] = field(default_factory=dict)  # those that differ from what the rig states
     table: tuple[Sequence[float], ...] = ()  # positions [m], areas [m²], perimeters [m] of such a profile
+    exponent: float | None = None  # of h ∝ θⁿ, h being that at an excess of REFERENCE
+    rise: float | None = None  # of h from base to tip, over its mean
+    emissivity: float | None = None
+    surroundings: float | None = None  # the air's temperature where it is left out
+    coefficient: float = 0.0  # b of k(T) = k (1 + b (T - T0)) [1/K]
+    fins: int = 1
+    bare_area: float = 0.0
+    loss: float = 0.0
+
+    @property
+    def surface(self) -> SurfaceLaw:
+        """The law of the side."""
+        law: SurfaceLaw = UniformCoefficient(self.h)
+        if self.exponent is not None:
+            law = PowerCoefficient(self.h, self.exponent, REFERENCE)
+        if self.rise is not None:
+            law = VaryingCoefficient(self.h, self.rise)
+        return law if self.emissivity is None else Radiating(law, self.emissivity, self.surroundings)
 
     def solve(self, rig: Rig, x: np.ndarray) -> Solution:
         """Solve the true fin at positions x [m]."""
@@ -81,7 +106,8 @@ class Truth:
             "fixed": FixedTip(self.tip_temperature),
         }
         shape = Table(*self.table) if self.table else SHAPES[rig.profile_name](**sizes)
-        fin = Fin(shape, self.k, UniformCoefficient(self.h), tips[self.tip])
+        k = LinearConductivity(self.k, T0, self.coefficient) if self.coefficient else self.k
+        fin = Fin(shape, k, self.surface, tips[self.tip])
         base = BaseTemperature(self.plate) if self.joint is None else Joint(self.plate, self.joint)
         return solve(fin, base, self.air, x)
 
@@ -152,7 +178,9 @@ def _read(rig: Rig, truth: Truth, holes: Mapping[str, float], power: float | Non
     x = np.array([holes.get(s.name, s.position) for s in fin])
     solution = truth.solve(rig, x)
     values = dict(zip((s.name for s in fin), solution.temperatures[0].tolist(), strict=True))
-    heat = float(solution.base_heat[0])
-    others = {"plate": truth.plate, "air": truth.air, "heat": heat, "heater": power or heat}
+    heat = truth.fins * float(solution.base_heat[0])
+    bare = truth.bare_area * float(truth.surface.flux(np.array([truth.plate]), truth.air)[0])
+    total = heat + bare + truth.loss
+    others = {"plate": truth.plate, "air": truth.air, "heat": heat, "heater": power or total}
     values |= {s.name: others[s.place] for s in rig.sensors.values() if s.place != "fin"}
     return Readings("exact", {name: values[name] for name in rig.sensors})

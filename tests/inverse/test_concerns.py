@@ -49,7 +49,8 @@ def best(
 
 
 def rig(conductivity: Quantity | None = None, assumed: tuple[Finding, ...] = ()) -> SimpleNamespace:
-    return SimpleNamespace(conductivity=conductivity, assumed=assumed)
+    measured = {"conductivity": conductivity, "tells_heat": lambda place: place == "heat"}
+    return SimpleNamespace(assumed=assumed, **measured)
 
 
 GOOD = FitQuality({}, 7.0, 7, 0.43, None)

@@ -116,7 +116,8 @@ def test_without_name_and_number_k_is_free_and_says_so() -> None:
          "80 printable characters in quotes."),
         ({"conductivity": "201"}, '[material] conductivity: "201" has no unit; write a conductivity with its '
          'unit, such as "167 W/(m K)".'),
-        ({"material": "copper"}, '[material]: the key "material" is unknown; known are conductivity, name.'),
+        ({"material": "copper"}, '[material]: the key "material" is unknown; known are conductivity, name, '
+         "temperature_coefficient, reference_temperature, emissivity."),
     ],
 )  # fmt: skip
 def test_a_wrong_material_is_refused_in_a_sentence(material: dict[str, Any], sentence: str) -> None:

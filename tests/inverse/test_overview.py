@@ -156,12 +156,12 @@ def test_the_air_and_the_material_are_told() -> None:
         "air": {"speed": "0 m/s", "humidity": "45 %", "pressure": "98 kPa"},
         "sensors": {"S": {"at": "5 mm"}},
     }
-    text = overview.describe(Rig.from_dict(document), None, [])
+    text = overview.describe(Rig.from_dict(document), None, [], "Said why.")
     assert "k      401 W/(m K) +/- 3 %, of copper, pure by the handbook at 27 °C" in text
     assert "air    still\nair    pressure 98 kPa, humidity 45 %\naxis   vertical" in text
     document["material"] = {"name": "EN AW-6060, heat 4711", "conductivity": "201 W/(m K) +/- 2 %"}
     document["air"] = {"speed": "2.5 m/s", "correlation": "Hilpert"}
-    text = overview.describe(Rig.from_dict(document), None, [])
+    text = overview.describe(Rig.from_dict(document), None, [], "Said why.")
     assert "201 W/(m K) +/- 2 %, stated (EN AW-6060, heat 4711)" in text
     assert "air    driven, 2.5 m/s, by hilpert" in text
 
@@ -175,14 +175,21 @@ def test_the_whole_fits_80_columns_and_cannot_write_to_the_terminal() -> None:
     sensors = {f"thermocouple {'x' * 30} {n}": {"at": f"{n} mm", "position": "0.5 mm"} for n in (1, 50, 99)}
     shape = {"profile": "pin", "length": "100 mm", "diameter": "8 mm"}
     rig = Rig.from_dict({"title": "t" * 150, "fin": shape, "sensors": {**sensors, "TA": {"on": "air"}}})
-    text = overview.describe(rig, ["run\x1b[2J", "b" * 300], ["adiabatic tip"])
+    text = overview.describe(rig, ["run\x1b[2J", "b" * 300], ["adiabatic tip"], "Said why.")
     assert "\x1b" not in text
     assert max(map(len, text.splitlines())) <= 80
 
 
 def test_it_lists_runs_candidates_and_what_was_assumed() -> None:
-    text = overview.describe(rig_with(*ALONG, "air"), ["a", "b"], ["adiabatic tip", "convective tip"])
+    text = overview.describe(
+        rig_with(*ALONG, "air"), ["a", "b"], ["adiabatic tip", "convective tip"], "Said why."
+    )
     assert "2 runs: a, b" in text
     assert "Candidates\n  adiabatic tip\n  convective tip\n" in text
     assert "Assumed\n" in text
-    assert "run" not in overview.describe(rig_with(*ALONG, "air"), None, []).split("Candidates")[1].lower()
+    assert (
+        "run"
+        not in overview.describe(rig_with(*ALONG, "air"), None, [], "Said why.")
+        .split("Candidates")[1]
+        .lower()
+    )

@@ -5,16 +5,21 @@ import math
 import numpy as np
 import pytest
 
-from finback.parameters import DEFAULT_PRIORS, LABELS, default, reported, stated
+from finback.parameters import DEFAULT_PRIORS, LABELS, PRACTICE, default, reported, stated
 from finback.quantity import Quantity
 
 
 @pytest.mark.parametrize("name", DEFAULT_PRIORS)
 def test_every_parameter_has_a_label_a_unit_and_a_wide_prior(name: str) -> None:
     parameter = default(name)
-    assert not parameter.stated
     assert LABELS[name] in parameter.describe()
-    assert parameter.unit in parameter.describe()
+    assert parameter.unit in parameter.describe() or parameter.unit == "1"
+    if name in PRACTICE:
+        assert parameter.stated
+        assert parameter.prior.sd < parameter.default_prior.sd / 2
+        assert "(common practice)" in parameter.describe()
+        return
+    assert not parameter.stated
     assert "(wide default)" in parameter.describe()
     assert parameter.prior == parameter.default_prior
 

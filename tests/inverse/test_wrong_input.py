@@ -58,6 +58,22 @@ def fin(key: str, value: str) -> tuple[str, str]:
     return "[material]", f"{key} = {value}\n[material]"
 
 
+def material(key: str, value: str) -> tuple[str, str]:
+    return "[joint]", f"{key} = {value}\n[joint]"
+
+
+def air(key: str, value: str) -> tuple[str, str]:
+    return "[sensors.defaults]", f"{key} = {value}\n[sensors.defaults]"
+
+
+def plate(key: str, value: str) -> tuple[str, str]:
+    return "[joint]", f"[plate]\n{key} = {value}\n[joint]"
+
+
+def compared(key: str, value: str) -> tuple[str, str]:
+    return "[joint]", f"[candidates]\n{key} = {value}\n[joint]"
+
+
 WRONG_RIGS = [
     # keys and tables
     (("length =", "lenght ="), '[fin]: the key "lenght" is unknown; the nearest known key is "length".'),
@@ -113,13 +129,61 @@ WRONG_RIGS = [
     (fin("edges", '"guarded"'), "[fin] edges: a pin has no edges; leave edges out."),
     (('TP = { on = "plate" }\n', ""), "[joint]: no sensor reads the plate, so the readings cannot tell of a "
      'joint; leave it out, or add a sensor such as TP = { on = "plate" }.'),
-    # what comes later
-    (("[joint]", 'emissivity = "0.08 +/- 0.03"\n[joint]'), "[material] emissivity: this version does not "
-     "part "
-     "radiation from convection yet; leave emissivity out: h is then the total coefficient."),
-    (("[joint]", '[plate]\nfins = 24\nbare_area = "0.011 m^2"\n[joint]'), "[plate]: this version does not "
-     "share "
-     "heat among several fins yet; leave [plate] out and give the heat of one fin."),
+    # surfaces
+    (material("emissivity", "1.3"),
+     '[material] emissivity: "1.3" is no emissivity; write one from 0 to 1, such as "0.08 +/- 0.03".'),
+    (material("emissivity", '"0.9 W"'), '[material] emissivity: "0.9 W" has a unit, and should have none; '
+     'write '
+     'a number, such as 0.25 or "0.25 +/- 0.05".'),
+    (material("emissivity", "true"),
+     '[material] emissivity: this is not a number; write a number, such as 0.25 or "0.25 +/- 0.05".'),
+    (material("emissivity", '"0.9 +/- -0.1"'),
+     '[material] emissivity: "0.9 +/- -0.1" has a negative uncertainty; write a positive one.'),
+    (material("emissivity", '"black paint"'), '[material] emissivity: "black paint" is no surface that the '
+     'handbook knows; the nearest are "paint, black", "paint, white", "aluminium, black anodised, dull"; or '
+     'write a number, such as "0.08 +/- 0.03".'),
+    (air("surroundings_temperature", '"18 degC"'), "[air] surroundings_temperature: a temperature of the "
+     "surroundings matters only to a fin that radiates; leave it out, or write emissivity = "
+     '"0.08 +/- 0.03" in [material].'),
+    (material("temperature_coefficient", '"4e-4"'), '[material] temperature_coefficient: "4e-4" has no unit; '
+     'write a relative change a kelvin with its unit, such as "-4e-4 1/K".'),
+    (material("temperature_coefficient", '"4e-4 1/K +/- 1e-4 1/K"'), "[material] temperature_coefficient: "
+     "the "
+     'uncertainty in "4e-4 1/K +/- 1e-4 1/K" is not used; leave it out.'),
+    (('conductivity = "167 W/(m K) +/- 5 %"', 'temperature_coefficient = "4e-4 1/K"'),
+     "[material] temperature_coefficient: there is no stated conductivity that it could change; state "
+     "conductivity, or leave it out: a material's name brings its own."),
+    (material("reference_temperature", '"20 degC"'), "[material] reference_temperature: only a "
+     "temperature_coefficient has a reference temperature; leave it out, or write temperature_coefficient = "
+     '"-4e-4 1/K".'),
+    # the plate
+    (plate("fins", "0"),
+     "[plate] fins: this is no number of fins; write a whole number from 1 to 100000, such as 24."),
+    (plate("fins", '"24"'),
+     "[plate] fins: this is no number of fins; write a whole number from 1 to 100000, such as 24."),
+    (plate("bare_area", '"110 mm"'), '[plate] bare_area: the unit "mm" is not that of an area; write an area '
+     'with its unit, such as "50 mm^2".'),
+    (plate("losses", '"3 K"'), '[plate] losses: the unit "K" is not that of a heat flow; write a heat flow '
+     'with '
+     'its unit, such as "12 W".'),
+    (plate("losses", '"-3 W"'), '[plate] losses: "-3 W" is negative; write zero or a positive value.'),
+    # candidates
+    (compared("surface_laws", '"uniform"'), "[candidates] surface_laws: this is no list of surface laws; "
+     "write a "
+     'list in brackets, such as ["uniform", "free-convection"].'),
+    (compared("surface_laws", '["unifrom"]'), '[candidates] surface_laws: "unifrom" is no surface law; the '
+     'nearest known one is "uniform".'),
+    (compared("surface_laws", '["varying", "varying"]'),
+     '[candidates] surface_laws: "varying" is given twice; name each once.'),
+    (compared("tips", "[]"), "[candidates] tips: this is no list of tips; write a list in brackets, such as "
+     '["adiabatic", "convective"].'),
+    (compared("exponent", "2.5"), '[candidates] exponent: "2.5" is no exponent of free convection; write one '
+     'above 0 and below 2, such as 0.25 or "0.25 +/- 0.05".'),
+    (compared("exponent", '0.25\nsurface_laws = ["uniform"]'), "[candidates] exponent: only the law of free "
+     'convection has an exponent; leave it out, or add "free-convection" to surface_laws.'),
+    (compared("laws", '["uniform"]'), '[candidates]: the key "laws" is unknown; known are surface_laws, '
+     'tips, '
+     "exponent."),
     # sensors
     (('"5 mm"', '"130 mm"'), '[sensors] T1 at: "130 mm" is beyond the fin, whose length is "120 mm"; write '
      'the '

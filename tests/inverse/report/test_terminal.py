@@ -30,6 +30,7 @@ Candidates
    0.7 %  convective tip, no joint
  < 0.1 %  infinite tip, joint
   The readings favour a convective tip with a joint (probability 0.93).
+  Surface law: uniform h alone; the rig leaves the tip open.
 
 Findings
   caution sensor-outlier: T6 lies 1.5 K below what the others say.
@@ -63,6 +64,7 @@ h/k   = 0.0801 1/m ± 0.0011 1/m (k = 2, 95 %)
 Candidates
  100.0 %  convective tip
   One candidate was looked at: convective tip.
+  Surface law: uniform h alone; the tip is as stated.
 
 Findings
   caution not-determined: The readings along the fin determine h/k only: state
