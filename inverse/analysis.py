@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 import finback
-from finback import candidates, checks, concerns, derived, expectation, summaries
+from finback import candidates, checks, concerns, derived, expectation, geometry, summaries
 from finback import readings as readings_file
 from finback import rig as rig_file
 from finback.candidates import Outcome
@@ -76,7 +76,7 @@ def fit(
 def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: int) -> Estimate:
     probabilities = candidates.probabilities(outcomes)
     scores = tuple(candidates.score(o, float(p)) for o, p in zip(outcomes, probabilities, strict=True))
-    evaluated = [derived.evaluate(o.problem, o.draws.reshape(-1, o.draws.shape[-1])) for o in outcomes]
+    evaluated = [_quantities(outcome) for outcome in outcomes]
     mixture = summaries.mix(outcomes, probabilities, evaluated)
     found = _summaries(outcomes, probabilities, evaluated, mixture)
     best = outcomes[0]
@@ -93,7 +93,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         converged=all(o.converged for o in sampled),
     )
     healthy, implied, beyond = _expectation(rig, readings, found)
-    found_concerns = concerns.collect(rig, found, quality, sampler, best) + beyond
+    found_concerns = concerns.collect(rig, found, quality, sampler, best) + beyond + concerns.scored(scores)
     worst = {f.severity for f in found_concerns}
     return Estimate(
         rig=rig,
@@ -103,7 +103,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         derived={name: found[name] for name in derived.DERIVED if name in found},
         candidates=scores,
         comparison=concerns.compare_in_words(scores, rig.tip is not None),
-        compared=candidates.why_compared(rig),
+        compared=candidates.why_compared(rig, _left_out(rig, readings, outcomes)),
         fit=quality,
         table=table,
         band=_band(outcomes, mixture),
@@ -115,6 +115,18 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         expected=healthy,
         implied_speed=implied,
     )
+
+
+def _left_out(rig: Rig, readings: Readings, outcomes: Sequence[Outcome]) -> list[str]:
+    posed = [outcome.problem.candidate for outcome in outcomes]
+    return [each.name for each in candidates.enumerate_candidates(rig, readings) if each not in posed]
+
+
+def _quantities(outcome: Outcome) -> dict[str, Array]:
+    """Return all quantities of an outcome's draws, flat, uncertain lengths included."""
+    z = outcome.draws.reshape(-1, outcome.draws.shape[-1])
+    found = derived.evaluate(outcome.problem, z)
+    return geometry.spread(outcome.problem, outcome.mode.z, z, found, np.random.default_rng(1))
 
 
 def _expectation(

@@ -91,8 +91,11 @@ def compared_laws(rig: Rig) -> tuple[LawName, ...]:
     return ("uniform", "free-convection") if free else ("uniform",)
 
 
-def why_compared(rig: Rig) -> str:
-    """Return one sentence on which surface laws and tips a fit compares, and why."""
+def why_compared(rig: Rig, left_out: Sequence[str] = ()) -> str:
+    """Return one sentence on which surface laws and tips a fit compares, and why.
+
+    Argument: left_out, names of candidates that have more unknowns than a run has readings.
+    """
     laws = compared_laws(rig)
     words = " and ".join(LAW_WORDS[law] for law in laws)
     if rig.laws is not None:
@@ -111,7 +114,8 @@ def why_compared(rig: Rig) -> str:
         tips = "tips as the rig lists them"
     else:
         tips = "the rig leaves the tip open, so all that a finite fin can have are compared"
-    return f"{told}; {tips}."
+    few = f"; too few readings for {'; '.join(left_out)}" if left_out else ""
+    return f"{told}; {tips}{few}."
 
 
 def compare(
@@ -125,11 +129,13 @@ def compare(
     settings = settings or Settings()
     run = zlib.crc32(readings.run.encode())
     chosen = enumerate_candidates(rig, readings)
+    problems = affordable([pose(rig, readings, candidate) for candidate in chosen])
     prepared = []
-    for number, candidate in enumerate(chosen):
-        progress("comparing candidates", 0.1 * number / len(chosen))
+    for number, problem in enumerate(problems):
+        candidate = problem.candidate
+        progress("comparing candidates", 0.1 * number / len(problems))
         seeds = np.random.SeedSequence([seed, run, zlib.crc32(candidate.name.encode())]).spawn(3)
-        point = optimum.fit(pose(rig, readings, candidate))
+        point = optimum.fit(problem)
         mode = find_mode(point)
         random = np.random.RandomState(np.random.MT19937(seeds[0]))
         fitted = _fit_proposal(point.problem, mode, random)
@@ -163,6 +169,22 @@ def compare(
         chain = sampling.sample(point.problem.log_density, *fitted, seeds[1], settings, report)
         outcomes.append(_outcome(point, mode, chain, seeds[2]))
     return sorted(outcomes, key=lambda o: -o.evidence.log)
+
+
+def affordable(problems: Sequence[Problem]) -> list[Problem]:
+    """Return the problems that have no more unknowns than readings, or those with the fewest of all.
+
+    What is known beforehand is no unknown, and of h and k only one is where nothing parts them.
+    """
+
+    def missing(problem: Problem) -> int:
+        read = {sensor.place for sensor in problem.measured.sensors}
+        unparted = problem.rig.conductivity is None and not any(map(problem.rig.tells_heat, read))
+        unknowns = int((~problem.is_stated).sum()) - unparted
+        return max(unknowns - len(problem.measured.values), 0)
+
+    fewest = min(map(missing, problems))
+    return [problem for problem in problems if missing(problem) <= fewest]
 
 
 def find_mode(point: LeastSquares) -> Mode:

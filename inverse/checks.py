@@ -92,7 +92,7 @@ def _check_number(rig: Rig, read: Sequence[Sensor], readings: Readings) -> None:
         unknowns.append("joint")
     if rig.conductivity is None and heat:
         unknowns.append("k")
-    if "air" not in known:
+    if "air" not in known and (rig.surroundings.air is None or "air" in places):
         unknowns.append("air temperature")
     if rig.tip == "fixed" and rig.tip_temperature is None:
         unknowns.append("tip temperature")

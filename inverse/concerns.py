@@ -5,7 +5,9 @@ from collections.abc import Mapping, Sequence
 from finback.candidates import Outcome
 from finback.estimate import CandidateScore, FitQuality, SamplerRecord, Summary
 from finback.findings import Finding, Severity
+from finback.models.constants import ZERO_CELSIUS
 from finback.models.validity import TRANSVERSE_BIOT_LIMIT
+from finback.parameters import UNMEASURED_AIR
 from finback.quantity import format_number, pretty_unit
 from finback.rig import Rig
 from finback.summaries import OF_THE_JOINT
@@ -16,6 +18,7 @@ MISFIT_P = 0.01
 CLEAR = 0.9  # probability from which the readings are said to support a candidate
 MENTIONED = 0.05  # and below which one is not named among those that cannot be told apart
 HEATER_MARGIN = 2.0  # standard uncertainties of its power
+FAR_AIR = 1.5  # standard deviations from where unread air is assumed, at which that is said
 
 SAID_WITH = {
     "joint_times_k": "joint",
@@ -38,6 +41,7 @@ def collect(
         *_validity(found),
         *_thermocouples(best),
         *_heater(found, best),
+        *_unread_air(rig, found, best),
         *_convergence(sampler),
         *rig.assumed,
     ]
@@ -136,6 +140,35 @@ def _heater(found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
             )
             findings.append(Finding("heat-balance", "fault", message, sensor=sensor.name))
     return findings
+
+
+def scored(scores: Sequence[CandidateScore]) -> tuple[Finding, ...]:
+    """Return a finding where a candidate's AICc is not given."""
+    missing = [score.name for score in scores if score.aicc is None]
+    if not missing:
+        return ()
+    message = f"AICc needs two readings more than unknowns, and is not given for {'; '.join(missing)}."
+    return (Finding("not-determined", "note", message, evidence={"score": "aicc"}),)
+
+
+def _unread_air(rig: Rig, found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
+    """Return what must be said of an air temperature that nobody read nor stated."""
+    if rig.surroundings.air is not None or "air" in best.problem.fixed:
+        return []
+    if any(sensor.place == "air" for sensor in best.problem.measured.sensors):
+        return []
+    taken = f"{UNMEASURED_AIR.mean - ZERO_CELSIUS:.0f} °C ± {UNMEASURED_AIR.sd:.0f} K"
+    remedy = 'read it, or state it with temperature = "21 degC +/- 1 K" in [air]'
+    message = f"Nothing reads the air: its temperature is left free about {taken}; {remedy}."
+    assumed = Finding("assumed", "note", message, evidence={"key": "temperature"})
+    air = found["air"].median
+    if air is None or abs(air + ZERO_CELSIUS - UNMEASURED_AIR.mean) <= FAR_AIR * UNMEASURED_AIR.sd:
+        return [assumed]
+    message = (
+        f"The profile speaks of air at {air:.0f} °C, far from the {taken} that were assumed since nothing "
+        f"reads it, so every interval is drawn towards those: {remedy}."
+    )
+    return [assumed, Finding("air-reference", "caution", message, evidence={"air": air})]
 
 
 def _convergence(sampler: SamplerRecord) -> list[Finding]:

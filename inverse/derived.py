@@ -50,14 +50,15 @@ DERIVED: Mapping[str, Meaning] = {
 }
 
 
-def evaluate(problem: Problem, z: Array) -> dict[str, Array]:
+def evaluate(problem: Problem, z: Array, changes: Mapping[str, float] | None = None) -> dict[str, Array]:
     """Return every parameter and derived quantity of a block z (n_sets, p): SI units, shape (n_sets,) each.
 
+    `changes` replaces lengths [m].
     A candidate without a joint has none, and no product with k; one that does not radiate has no parts of its
     heat, and a rig without a plate no heat of it.
     """
     values = problem.values(z)
-    fin, base, air = problem.build(values)
+    fin, base, air = problem.build(values, changes)
     solution = solve(fin, base, air, np.zeros(0))
     area = float(fin.profile.area(np.zeros(1))[0])
     perimeter = float(fin.profile.perimeter(np.zeros(1))[0])

@@ -107,8 +107,11 @@ def extremes(rig: Rig, readings: Readings) -> tuple[float, float]:
 def warmth(rig: Rig, readings: Readings, air: float | None = None) -> Warmth | None:
     """Return how warm a run is; air [K] stands in where no sensor reads it, and without either it is None."""
     read = [readings.used[s.name] for s in rig.sensors_on("air") if s.name in readings.used]
+    stated = rig.surroundings.air
     if read:
         air = float(np.mean(read))
+    elif stated is not None:
+        air = stated.value
     return None if air is None else Warmth(air, mean_temperature(rig, readings))
 
 

@@ -63,7 +63,11 @@ def starting_point(problem: Problem) -> Array:
     level: dict[str, float] = {"base_temperature": near, "tip_temperature": far}
     level.update(problem.fixed)
     level.update({s.place: v for s, v in zip(measured.sensors, measured.values, strict=True)})
-    airs = [level["air"]] if "air" in level else [UNMEASURED_AIR.mean, *(far - FALLS * (near - far))]
+    airs = [UNMEASURED_AIR.mean, *(far - FALLS * (near - far))]
+    if "air" in level:
+        airs = [level["air"]]
+    elif problem.rig.surroundings.air is not None:
+        airs = [problem.rig.surroundings.air.value]
     block = np.concatenate([_grid(problem, {**level, "air": air}) for air in airs])
     whitened, _ = problem.whitened(block, REFERENCE_SIGMA)
     cost = np.einsum("ij,ij->i", whitened, whitened)

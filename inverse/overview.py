@@ -56,7 +56,8 @@ def tellings(rig: Rig) -> tuple[Telling, ...]:
     places = [sensor.place for sensor in rig.sensors.values()]
     heat, plate = any(map(rig.tells_heat, places)), "plate" in places
     source = "the heat into the fins" if "heat" in places else "the heater's power less its losses"
-    unknowns = 2 + ("air" not in places) + (rig.tip == "fixed" and rig.tip_temperature is None)
+    air_told = "air" in places or rig.surroundings.air is not None
+    unknowns = 2 + (not air_told) + (rig.tip == "fixed" and rig.tip_temperature is None)
     along = places.count("fin")
     parted = heat or rig.conductivity is not None
     shape = along >= unknowns or (along + 1 >= unknowns and heat and rig.conductivity is not None)
@@ -243,6 +244,7 @@ def _air_texts(around: Surroundings) -> Iterator[tuple[str, str]]:
         for name, each in (
             ("pressure", around.pressure),
             ("humidity", around.humidity),
+            ("temperature", around.air),
             ("surroundings", around.temperature),
         )
         if each is not None

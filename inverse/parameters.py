@@ -54,8 +54,8 @@ BOUNDS: dict[str, tuple[float, float]] = {
 }
 """What a bounded parameter lies between: z = ln((value - low)/(high - value))."""
 
-UNMEASURED_AIR = Normal(ZERO_CELSIUS + 20.0, 15.0)
-"""Air temperature where no sensor reads it [K]: a room or a bench."""
+UNMEASURED_AIR = Normal(ZERO_CELSIUS + 20.0, 25.0)
+"""Air temperature where no sensor reads it and the rig does not state it [K]: a room, a bench, a cabinet."""
 
 LABELS = {
     "h": "convection coefficient h",

@@ -49,7 +49,8 @@ def reference_excess(rig: Rig, readings: Readings) -> float:
 
     It is the fin's mean one by the readings, so that the coefficient is close to the mean along the fin.
     """
-    warm = expectation.warmth(rig, readings, UNMEASURED_AIR.mean)
+    stated = rig.surroundings.air
+    warm = expectation.warmth(rig, readings, UNMEASURED_AIR.mean if stated is None else stated.value)
     assert warm is not None, "an air temperature is given"
     return max(abs(warm.surface - warm.air), SMALLEST_REFERENCE)
 
@@ -69,15 +70,18 @@ def linearise(problem: Problem, z: Array) -> Problem:
     """Return the problem with the noise of hole positions and geometry added, taken at z (p,)."""
     covariance, estimated = _stated_covariance(problem.measured)
     n = len(estimated)
-    for name, sd in _uncertain_lengths(problem.rig):
-        slope = _length_sensitivity(problem, z, name)[:n] * sd
-        covariance = covariance + np.outer(slope, slope)
+    lengths = uncertain_lengths(problem.rig)
+    slopes_by_length = [_length_sensitivity(problem, z, name)[:n] * sd for name, sd in lengths]
+    by_lengths = np.stack(slopes_by_length, axis=1) if lengths else None
+    if by_lengths is not None:
+        covariance = covariance + by_lengths @ by_lengths.T
     spread = np.zeros(n)
     slopes = _temperature_slopes(problem, z)
     for i, sensor in enumerate(problem.measured.sensors):
         if sensor.place == "fin":
             spread[i] = (slopes[i] * sensor.position_sd) ** 2
-    return replace(problem, noise=noises.build(covariance + np.diag(spread), estimated))
+    noise = noises.build(covariance + np.diag(spread), estimated)
+    return replace(problem, noise=noise, by_lengths=by_lengths)
 
 
 def _measure(rig: Rig, readings: Readings) -> tuple[Measured, dict[str, float]]:
@@ -161,13 +165,19 @@ def _unknowns(
     if "plate" not in exact:
         unknown.append(default("plate" if "plate" in read else "base_temperature"))
     if "air" not in exact:
-        unknown.append(default("air") if "air" in read else Parameter("air", UNMEASURED_AIR))
+        if "air" in read:
+            unknown.append(default("air"))
+        elif rig.surroundings.air is not None:
+            add("air", rig.surroundings.air)
+        else:
+            unknown.append(Parameter("air", UNMEASURED_AIR))
     if candidate.tip == "fixed":
         add("tip_temperature", rig.tip_temperature)
     return unknown, fixed
 
 
-def _uncertain_lengths(rig: Rig) -> list[tuple[str, float]]:
+def uncertain_lengths(rig: Rig) -> list[tuple[str, float]]:
+    """Return name and standard uncertainty [m] of each length that is not exactly known."""
     return [(name, quantity.sd) for name, quantity in rig.geometry.items() if quantity.sd > 0]
 
 

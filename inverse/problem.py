@@ -83,7 +83,8 @@ class Problem:
     """One candidate posed on one run.
 
     `parameters`: the unknowns in the order of a parameter vector, the noise last where it is estimated.
-    `fixed`: what is exactly known, by name, in SI units.
+    `fixed`: what is exactly known, by name, in SI units. `by_lengths` (n, n_lengths) [K, W]: what one
+    standard uncertainty of each uncertain length makes of each reading, once the noise holds it.
     """
 
     rig: Rig
@@ -93,6 +94,7 @@ class Problem:
     fixed: Mapping[str, float]
     measured: Measured
     noise: Noise
+    by_lengths: Array | None = None
 
     @cached_property
     def names(self) -> tuple[str, ...]:

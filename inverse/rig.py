@@ -19,6 +19,7 @@ from numpy.typing import NDArray
 from finback import handbook, sensors, shapes, surroundings
 from finback.errors import InputError
 from finback.findings import Finding
+from finback.handbook import Change
 from finback.models import (
     AdiabaticTip,
     Base,
@@ -116,7 +117,7 @@ class Rig:
     material: str | None = None
     handbook: Material | None = None
     surroundings: Surroundings = field(default_factory=Surroundings)
-    change: handbook.Change | None = None
+    change: Change | None = None
     emissivity: Quantity | None = None
     plate: FinnedPlate | None = None
     laws: tuple[LawName, ...] | None = None
@@ -220,8 +221,8 @@ class Rig:
         where the rig has them; fin, as built from them.
         """
         bare, loss = values.get("bare_area"), values.get("loss", 0.0)
-        hot = values.get("plate", values.get("base_temperature"))
         if "loss_coefficient" in values:
+            hot = values["plate" if "plate" in values else "base_temperature"]
             loss = values["loss_coefficient"] * (hot - values["air"])
         carried = 1 if self.plate is None else self.plate.fins
         return Plate(carried, 0.0 if bare is None else bare, None if bare is None else fin.surface, loss)
@@ -436,6 +437,9 @@ def _check_together(section: RigSection, placed: Mapping[str, Sensor], source: P
         problem = "only a temperature_coefficient has a reference temperature"
         remedy = 'leave it out, or write temperature_coefficient = "-4e-4 1/K"'
         raise InputError(source, "[material] reference_temperature", problem, remedy)
+    if section.air.temperature is not None and any(sensor.place == "air" for sensor in placed.values()):
+        problem = "a sensor reads the air, so its temperature is no statement of the rig"
+        raise InputError(source, "[air] temperature", problem, "leave it out, or the sensor")
     if section.air.surroundings_temperature is not None and not _radiates(section):
         problem = "a temperature of the surroundings matters only to a fin that radiates"
         remedy = 'leave it out, or write emissivity = "0.08 +/- 0.03" in [material]'

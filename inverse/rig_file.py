@@ -168,6 +168,7 @@ class CandidatesSection(Section):
 class AirSection(Section):
     """[air]: what a healthy fin should see, what tells it, and what else the fin sees."""
 
+    temperature: Temperature | None = None
     expected_h: Coefficient | None = None
     speed: Speed | None = None
     correlation: Annotated[str, BeforeValidator(entries.line("name of a correlation", 80))] | None = None

@@ -15,6 +15,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from finback.errors import ComputationError
 from finback.laplace import LogDensity
 from finback.proposal import Proposal
 
@@ -206,4 +207,7 @@ def _finite_start(
         found = np.concatenate([found, trial[np.isfinite(log_density(trial))]])
         if len(found) >= n:
             return found[:n]
-    raise ValueError("no finite density found around the mode")
+    raise ComputationError(
+        "The sampler found no start at which the readings have a finite probability: check the readings and "
+        "their uncertainties against the rig."
+    )

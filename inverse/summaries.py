@@ -16,6 +16,7 @@ from finback.candidates import Outcome
 from finback.derived import DERIVED
 from finback.estimate import DeterminedBy, Summary
 from finback.identifiability import Information
+from finback.linear import LinearAnswers
 
 Array = NDArray[np.float64]
 
@@ -72,6 +73,7 @@ class Judge:
     outcome: Outcome
     information: Information
     gradients: Mapping[str, Array]
+    linear: LinearAnswers
 
     def summarise(self, name: str, draws: Array, absent: bool = False) -> Summary:
         """Return the summary of one quantity from its draws (any shape, SI units).
@@ -114,18 +116,10 @@ class Judge:
         return self.information.source(gradient)
 
     def _least_squares(self, name: str) -> tuple[float | None, float | None]:
-        point = self.outcome.point
         if name == "noise":
-            return point.sigma, None
-        value = derived.evaluate(point.problem, point.z[None])[name]
-        if name in point.problem.fixed:
-            return float(to_reported(name, value)[0]), 0.0
-        gradient = derived.gradients(point.problem, point.z)[name]
-        if np.abs(gradient @ point.point.null_space).max(initial=0.0) > 1e-6 * np.linalg.norm(gradient):
-            return None, None
-        return float(to_reported(name, value)[0]), float(
-            np.sqrt(gradient @ point.point.covariance @ gradient)
-        )
+            return self.outcome.point.sigma, None
+        value, standard_error = self.linear.answer(name)
+        return None if value is None else float(to_reported(name, np.array(value))), standard_error
 
     def _upper_limit(self, name: str, draws: Array) -> float | None:
         """Return the one-sided upper limit of a positive quantity, if larger values would have been seen.
@@ -154,7 +148,7 @@ def judge(outcome: Outcome) -> Judge:
     problem, z = outcome.problem, outcome.mode.z
     sigma = float(np.exp(z[-1])) if problem.noise.estimated else outcome.point.sigma
     information = identifiability.information(problem, z, sigma)
-    return Judge(outcome, information, derived.gradients(problem, z))
+    return Judge(outcome, information, derived.gradients(problem, z), LinearAnswers(outcome.point))
 
 
 def describe(name: str) -> tuple[str, str]:

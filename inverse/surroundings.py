@@ -45,7 +45,7 @@ class Surroundings:
 
     `speed` [m/s], 0 in still air; `correlation`, by the name it has in `finback.models.laws`; `pressure`
     [Pa]; `humidity`, relative [1]; `orientation` of the fin's axis, of an annular fin that of its tube;
-    `temperature` [K] of what the fin radiates to, None for the air's.
+    `temperature` [K] of what the fin radiates to, None for the air's; `air` [K], the air's own as stated.
     """
 
     speed: Quantity | None = None
@@ -54,6 +54,7 @@ class Surroundings:
     humidity: Quantity | None = None
     orientation: Orientation | None = None
     temperature: Quantity | None = None
+    air: Quantity | None = None
 
     @property
     def driven(self) -> bool | None:
@@ -139,7 +140,12 @@ def read(
     """
     air, fin = section.air, section.fin
     found = Surroundings(
-        air.speed, None, air.pressure, air.humidity, fin.orientation, air.surroundings_temperature
+        speed=air.speed,
+        pressure=air.pressure,
+        humidity=air.humidity,
+        orientation=fin.orientation,
+        temperature=air.surroundings_temperature,
+        air=air.temperature,
     )
     if air.correlation is None:
         return found

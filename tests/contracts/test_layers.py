@@ -43,6 +43,8 @@ LAYERS = (
     "optimum estimate",
     "identifiability",
     "candidates",
+    "geometry",
+    "linear",
     "summaries concerns",
     "analysis",
     "report report.phrases report.method",

@@ -45,11 +45,12 @@ def best(
         bound_sds=0.1 * np.ones(len(bounds)),
     )
     candidate = SimpleNamespace(joint_possible=joint)
-    return SimpleNamespace(problem=SimpleNamespace(measured=measured, candidate=candidate))
+    return SimpleNamespace(problem=SimpleNamespace(measured=measured, candidate=candidate, fixed={}))
 
 
 def rig(conductivity: Quantity | None = None, assumed: tuple[Finding, ...] = ()) -> SimpleNamespace:
     measured = {"conductivity": conductivity, "tells_heat": lambda place: place == "heat"}
+    measured["surroundings"] = SimpleNamespace(air=None)
     return SimpleNamespace(assumed=assumed, **measured)
 
 
@@ -87,7 +88,7 @@ def test_h_and_k_are_named_by_their_ratio_only_where_nothing_parts_them() -> Non
     nulls = {"h": summary("h", None), "k": summary("k", None)}
     together = collect(quantities(**nulls))
     assert all("h/k = 1 1/m" in f.message for f in together)
-    for parted in ({"rig": rig(Quantity(167.0, 5.0))}, {"best": best(places=("fin", "heat"))}):
+    for parted in ({"rig": rig(Quantity(167.0, 5.0))}, {"best": best(places=("fin", "air", "heat"))}):
         assert not any("h/k" in f.message for f in collect(quantities(**nulls), **parted))
 
 
@@ -185,3 +186,24 @@ def test_rivals_are_named_and_the_improbable_are_not() -> None:
     found = concerns.compare_in_words(scores, False)
     assert "cannot tell between adiabatic tip (0.5) and convective tip (0.48)" in found
     assert "fixed" not in found
+
+
+def test_air_that_nobody_reads_is_said_to_be_assumed() -> None:
+    findings = collect(quantities(air=summary("air", 25.0)), best=best(places=("fin", "plate")))
+    assert [f.code for f in findings] == ["assumed"]
+    assert 'temperature = "21 degC +/- 1 K" in [air]' in findings[0].message
+
+
+def test_a_profile_that_speaks_of_far_other_air_is_a_concern() -> None:
+    findings = collect(quantities(air=summary("air", 96.0)), best=best(places=("fin", "plate")))
+    assert [f.code for f in findings] == ["air-reference", "assumed"]
+    assert "air at 96 °C" in findings[0].message
+
+
+def test_a_missing_aicc_is_explained() -> None:
+    scores = [
+        CandidateScore(name, 0.5, -1.0, 0.01, 1.0, aicc, 1.0) for name, aicc in (("a", 3.0), ("b", None))
+    ]
+    (finding,) = concerns.scored(scores)
+    assert finding.message == "AICc needs two readings more than unknowns, and is not given for b."
+    assert concerns.scored(scores[:1]) == ()

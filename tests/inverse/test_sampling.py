@@ -11,6 +11,7 @@ from emcee.autocorr import integrated_time
 import finback
 from finback import proposal as proposals
 from finback import sampling
+from finback.errors import ComputationError
 from finback.laplace import Mode
 from finback.sampling import Chain, Settings, autocorrelation_time, sample
 
@@ -197,7 +198,7 @@ def test_too_few_steps_are_not_called_converged() -> None:
 
 
 def test_a_density_that_is_nowhere_finite_is_refused() -> None:
-    with pytest.raises(ValueError, match="no finite density"):
+    with pytest.raises(ComputationError, match="no start at which the readings have a finite probability"):
         draw(lambda z: np.full(len(z), -np.inf), Mode(np.zeros(2), 0.0, np.eye(2)))
 
 

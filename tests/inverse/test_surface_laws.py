@@ -339,3 +339,37 @@ def test_a_heat_beyond_the_heater_names_the_plate() -> None:
     estimate = finback.fit(found, readings, seed=1, settings=SHORT)
     (finding,) = [f for f in estimate.findings if f.code == "heat-balance"]
     assert "into the fins and from the bare plate, but P supplies 20 W" in finding.message
+
+
+# air that nobody reads, and too few readings
+
+
+def test_air_may_be_stated_where_nothing_reads_it() -> None:
+    found = rig(("plate", "heat"), air={"temperature": "22 degC +/- 0.3 K"})
+    estimate, true = fit(found, Truth(h=25.0, **HOT))
+    for name, value in {"h": true.h, "k": true.k, "air": 22.0}.items():
+        assert_near(estimate, name, value)
+    assert not any(f.evidence.get("key") == "temperature" for f in estimate.findings)
+
+
+def test_air_is_read_or_stated() -> None:
+    with pytest.raises(InputError) as caught:
+        rig(air={"temperature": "22 degC"})
+    assert str(caught.value) == (
+        "[air] temperature: a sensor reads the air, so its temperature is no statement of the rig; leave it "
+        "out, or the sensor."
+    )
+
+
+def test_a_candidate_with_more_unknowns_than_readings_is_left_out() -> None:
+    holes = {"T1": {"at": "5 mm"}, "T2": {"at": "45 mm"}, "T3": {"at": "95 mm"}, "TA": {"on": "air"}}
+    found = Rig.from_dict(
+        {
+            "fin": {"profile": "pin", "length": "100 mm", "diameter": "6 mm"},
+            "material": {"conductivity": "167 W/(m K) +/- 2 %"},
+            "sensors": holes | {"defaults": {"calibration": "0 K", "position": "0 mm"}},
+        }
+    )
+    estimate = finback.fit(found, exact_readings(found, Truth(joint=None)), settings=SHORT)
+    assert {score.name for score in estimate.candidates} == {"adiabatic tip", "convective tip"}
+    assert estimate.compared.endswith("too few readings for fixed tip.")

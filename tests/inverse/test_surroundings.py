@@ -149,8 +149,8 @@ def test_a_table_is_a_rod_or_a_plate_by_its_section(tmp_path, width: float, expo
          'unit, such as "45 %".'),
         (PIN, {"humidity": "145 %"}, '[air] humidity: "145 %" is no relative humidity; write one from 0 % to '
          '100 %, such as "45 %".'),
-        (PIN, {"velocity": "2 m/s"}, '[air]: the key "velocity" is unknown; known are expected_h, speed, '
-         "correlation, pressure, humidity, surroundings_temperature."),
+        (PIN, {"velocity": "2 m/s"}, '[air]: the key "velocity" is unknown; known are temperature, '
+         "expected_h, speed, correlation, pressure, humidity, surroundings_temperature."),
     ],
 )  # fmt: skip
 def test_wrong_air_is_refused_in_a_sentence(fin: dict[str, str], air: dict[str, Any], sentence: str) -> None:
