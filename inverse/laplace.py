@@ -30,11 +30,12 @@ class Mode:
         return self.log_density + 0.5 * p * float(np.log(2 * np.pi)) + float(np.linalg.slogdet(self.root)[1])
 
 
-def find_mode(log_density: LogDensity, start: Array, root: Array) -> Mode:
+def find_mode(log_density: LogDensity, start: Array, root: Array, tolerance: float = TOLERANCE) -> Mode:
     """Find the mode of a log density.
 
     Arguments: log_density, from a block (n_sets, p) to (n_sets,); start (p,), at finite density; root (p, p),
-    a guess of the scale, covariance root @ root.T. Where the curvature is not positive the guess's is kept.
+    a guess of the scale, covariance root @ root.T; tolerance, the Newton decrement [nats] at which to stop.
+    Where the curvature is not positive the guess's is kept.
     """
     z = start
     height = float(log_density(z[None])[0])
@@ -42,13 +43,15 @@ def find_mode(log_density: LogDensity, start: Array, root: Array) -> Mode:
     growing = 2.0 ** np.arange(4, -10, -1)  # for where the curvature is not positive and bounds no step
     for _ in range(MAX_STEPS):
         gradient, curvature = _derivatives(log_density, z, root)
+        if not np.isfinite(curvature).all():  # at the edge of where there is any density
+            return Mode(z, height, root)
         weights, axes = np.linalg.eigh(curvature)
         lengths = shrinking if weights.min() > SMALLEST_CURVATURE else growing
         weights = np.where(weights > SMALLEST_CURVATURE, weights, np.maximum(np.abs(weights), 1.0))
         step = axes @ ((axes.T @ gradient) / weights)
         decrement = float(gradient @ step)
         refined = root @ (axes / np.sqrt(weights))
-        if decrement < TOLERANCE:
+        if decrement < tolerance:
             return Mode(z, height, refined)
         trials = z + lengths[:, None] * (root @ step)
         heights = log_density(trials)

@@ -1,21 +1,23 @@
-"""A heavy-tailed proposal fitted to a posterior: a multivariate Student t, or several along its longest axis.
+"""A heavy-tailed proposal fitted to a posterior: a multivariate Student t, or several side by side.
 
-It starts at the posterior's mode and is fitted again to its own weighted draws where that helps: a posterior
-with an estimated noise, or one that a prior cuts off, is not shaped like its mode. One that is bent, such as
-that of h and an air temperature nobody read, needs several components side by side. One that is a funnel, as
-wide in the others as an estimated noise is large, gets a component for each step of the noise.
+It starts at the posterior's mode. Where the posterior is bent or skewed, such as that of h and an air
+temperature nobody read, of h and an emissivity, or of a joint that is too good to be seen, a ladder takes its
+place: one unknown is followed to both ends, and a component stands on every rung, where the others are most
+probable given that unknown. One that is a funnel, as wide in the others as an estimated noise is large, gets
+its ladder along the noise. What still fits badly is fitted again to its own weighted draws.
 Source of the refitting: Cappé, Guillin, Marin, Robert, J. Comp. Graph. Stat. 13 (2004) 907, population Monte
 Carlo; the largest weights are cut, so that no single draw decides.
 """
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import laplace
+from finback import cubics, laplace
 from finback.laplace import LogDensity, Mode
 
 Array = NDArray[np.float64]
@@ -23,6 +25,8 @@ Array = NDArray[np.float64]
 FREEDOM = 8.0  # tails heavy enough for a posterior with an estimated noise, light enough to be accepted
 COMPONENTS = (1, 1, 1, 4, 4, 8, 8)  # tried one after the other, until one is good
 DRAWS = 2000  # a trial
+FEW_DRAWS = 500  # a trial of what differs much
+LARGEST = 500.0  # exponent of a ratio, short of an overflow
 GOOD = 0.7  # efficiency from which refitting is not worth its time
 CUT = 10  # weights above the tenth largest count as much as that one
 WIDER = 1.1  # of the fitted variances: a proposal had better be too wide
@@ -32,6 +36,16 @@ SMALLEST_SPREAD = 1e-12  # of a correlation matrix: draws in a plane still give 
 RUNG = 0.5  # step of a ladder, in the logarithm of the noise
 RUNGS = 60  # at most, up or down
 FAINT = 12.0  # nats below the best rung, where a ladder ends
+NEAR = 1e-2  # Newton decrement [nats] of a rung, which is a place to draw about and no result
+STRAIGHT = 0.3  # of the others' standard deviations, that they may bend over one component
+EVEN = 0.2  # of their logarithm, that they may widen over one component
+PARTS = 8  # components a rung, at most
+SMALLEST_SHARE = 1e-4  # of a component: what lies beyond is left to the tails of the others
+LOOKS = np.array([-3.0, -1.5, 1.5, 3.0])  # standard deviations from the mode, where a bend would show
+BENT = 5.0  # nats off a normal distribution, over these looks, from which a posterior needs a ladder
+ALIKE = 0.3  # of the largest bend: a second unknown to try a ladder along
+STRIDE = 0.7  # standard deviations from component to component
+SLACK = 0.9  # of that: a step just as long as it should be is not halved
 
 
 @dataclass(frozen=True)
@@ -76,10 +90,12 @@ class Proposal:
         """Return the log density of a block (n_sets, p) -> (n_sets,)."""
         c, p = self.centres.shape
         power = (FREEDOM + p) / 2
-        logs: Array = np.empty((c, len(z)))
-        for i in range(c):
-            scaled = (z - self.centres[i]) @ self._inverses[i].T
-            logs[i] = self._constants[i] - power * np.log1p(np.einsum("ij,ij->i", scaled, scaled) / FREEDOM)
+        middle = self.centres[0]
+        # all components by one product: rows of (c p, p) inverses, less what they make of the centres
+        scaled = self._inverses.reshape(c * p, p) @ (z - middle).T
+        scaled -= (self._inverses @ (self.centres - middle)[:, :, None]).reshape(-1, 1)
+        squares = np.einsum("cpn,cpn->cn", *[scaled.reshape(c, p, -1)] * 2)
+        logs: Array = self._constants[:, None] - power * np.log1p(squares / FREEDOM)
         highest = logs.max(axis=0)
         found: Array = logs[0] if c == 1 else highest + np.log(np.exp(logs - highest).sum(axis=0))
         return found
@@ -95,37 +111,145 @@ def from_draws(draws: Array) -> Proposal:
     return _fit(draws, np.full(len(draws), 1 / len(draws)), 1)
 
 
-def ladder(log_density: LogDensity, mode: Mode) -> Proposal:
-    """Return components along the last unknown, each with the mode and curvature of the others given it.
+def ladder(log_density: LogDensity, mode: Mode, along: int = -1, step: float = RUNG) -> Proposal:
+    """Return components along one unknown, each with the mode and curvature of the others given it.
 
-    Arguments: log_density, from a block (n_sets, p) to (n_sets,); mode, with its curvature.
+    Arguments: log_density, from a block (n_sets, p) to (n_sets,); mode, with its curvature; along, which
+    unknown; step [in it] from rung to rung. Where the others bend or widen fast from one rung to the next,
+    components stand between the rungs as well, on cubics through them.
     """
-    best, top = _rung(log_density, mode.z[-1], mode.z[:-1], mode.root[:-1]), float(mode.z[-1])
-    rungs = {top: best}
-    for step in (RUNG, -RUNG):
-        at, last = top, best
-        for _ in range(RUNGS):
-            at += step
-            last = rungs[at] = _rung(log_density, at, last.z, last.root)
-            best = max(best, last, key=lambda rung: rung.log_evidence)
-            if last.log_evidence < best.log_evidence - FAINT:
-                break
-    heights = np.array([rung.log_evidence for rung in rungs.values()])
-    roots = np.zeros((len(rungs), len(mode.z), len(mode.z)))
-    roots[:, :-1, :-1] = [rung.root for rung in rungs.values()]
-    roots[:, -1, -1] = RUNG
-    centres = np.array([np.append(rung.z, at) for at, rung in rungs.items()])
+    p = len(mode.z)
+    along %= p
+    others = np.delete(np.arange(p), along)
+    centres, covariances, heights, first = _rungs(log_density, mode, along, step)
+    slopes = cubics.slopes(centres, step)
+    parts = _parts(centres, covariances, slopes, heights, step)
+    centres, slopes = cubics.refine(centres, slopes, step, parts)
+    heights, _ = cubics.refine(heights, cubics.slopes(heights, step), step, parts)
     shares = np.exp(heights - heights.max())
-    return Proposal(centres, roots, shares / shares.sum())
+    kept = np.flatnonzero(shares > SMALLEST_SHARE * shares.sum())
+    places = np.arange(len(shares)) / parts
+    width = step / parts
+    roots = np.zeros((len(kept), p, p))
+    for root, n in zip(roots, kept, strict=True):
+        low, high = int(places[n]), min(int(places[n]) + 1, len(covariances) - 1)
+        covariance = covariances[low] + (places[n] - low) * (covariances[high] - covariances[low])
+        root[np.ix_(others, others)] = _root(covariance)
+        root[along, along] = width
+        root[others, along] = width * slopes[n]  # the others follow the one
+    at = mode.z[along] + step * (first + places[kept])
+    centres = np.insert(centres[kept], along, at, axis=1)
+    return Proposal(centres, roots, shares[kept] / shares[kept].sum())
 
 
-def _rung(log_density: LogDensity, last: float, others: Array, root: Array) -> Mode:
-    """Return the mode of the other unknowns, given the last."""
+def _rungs(log_density: LogDensity, mode: Mode, along: int, step: float) -> tuple[Array, Array, Array, int]:
+    """Return modes (n, p - 1), covariances and log evidences of the others, from rung to rung of one unknown.
 
-    def given(block: Array) -> Array:
-        return log_density(np.column_stack([block, np.full(len(block), last)]))
+    The last is the number of the lowest rung, counted from the mode.
+    """
+    covariance = mode.root @ mode.root.T
+    others = np.delete(np.arange(len(mode.z)), along)
+    slope = covariance[others, along] / covariance[along, along]
+    given = covariance[np.ix_(others, others)] - np.outer(slope, slope) * covariance[along, along]
 
-    return laplace.find_mode(given, others, _root(root @ root.T))
+    def rung(number: int, start: Array, root: Array) -> Mode:
+        at = mode.z[along] + number * step
+        return laplace.find_mode(
+            lambda block: log_density(np.insert(block, along, at, axis=1)), start, root, NEAR
+        )
+
+    rungs = {0: rung(0, mode.z[others], _root(given))}
+    highest = rungs[0].log_evidence
+    for way in (1, -1):
+        last, move, change = rungs[0], way * step * slope, np.zeros(len(others))
+        for n in range(1, RUNGS + 1):
+            found = rung(way * n, last.z + move + change, last.root)
+            if not np.isfinite(found.log_density):
+                break
+            rungs[way * n] = found
+            change = (found.z - last.z - move) if n > 1 else change
+            move, last = found.z - last.z, found
+            highest = max(highest, last.log_evidence)
+            if last.log_evidence < highest - FAINT:
+                break
+    numbers = sorted(rungs)
+    ordered = [rungs[n] for n in numbers]
+    return (
+        np.array([one.z for one in ordered]),
+        np.array([one.root @ one.root.T for one in ordered]),
+        np.array([one.log_evidence for one in ordered]),
+        numbers[0],
+    )
+
+
+def _parts(centres: Array, covariances: Array, slopes: Array, heights: Array, step: float) -> int:
+    """Return how many components a rung needs, each nearly straight, of one width, not too long."""
+    n = len(centres)
+    if n < 3:
+        return 1
+    bends = 0.5 * step * np.gradient(slopes, axis=0)
+    bent = np.einsum("ni,nij,nj->n", bends, np.linalg.pinv(covariances, hermitian=True), bends)
+    spreads = 0.5 * np.log(np.einsum("nii->ni", covariances))
+    widened = np.square(np.gradient(spreads, axis=0)).max(axis=1)
+    shares = np.exp(heights - heights.max())
+    shares /= shares.sum()
+    typical_bend = math.sqrt(float(shares @ bent))
+    typical_widening = math.sqrt(float(shares @ widened))
+    sd = math.sqrt(float(shares @ np.square(np.arange(n) - shares @ np.arange(n))))  # in steps
+    wanted = max(math.sqrt(typical_bend / STRAIGHT), typical_widening / EVEN, SLACK / (STRIDE * sd))
+    return min(max(math.ceil(wanted), 1), PARTS)
+
+
+def _straighten(log_density: LogDensity, proposal: Proposal, random: np.random.RandomState) -> Proposal:
+    """Return a ladder in place of a proposal of one component, where the posterior is bent or skewed.
+
+    Of unknowns that bend together one may turn back where the other goes on: a few draws of both ladders
+    tell which is right.
+    """
+    centre, root = proposal.centres[0], proposal.roots[0]
+    if len(centre) == 1 or _bends(log_density, centre, root).max() < BENT:
+        return proposal
+    mode = laplace.find_mode(log_density, centre, root)  # what looked bent may lie beside the mode
+    bends = _bends(log_density, mode.z, mode.root)
+    if bends.max() < BENT:
+        return from_mode(mode)
+    alike = [i for i in np.argsort(-bends)[:2] if bends[i] > ALIKE * bends.max()]
+    steps = STRIDE * np.linalg.norm(mode.root, axis=1)
+    ladders = [ladder(log_density, mode, int(along), float(steps[along])) for along in alike]
+    return ladders[0] if len(ladders) == 1 else _fittest(log_density, ladders, random)
+
+
+def _fittest(
+    log_density: LogDensity, proposals: Sequence[Proposal], random: np.random.RandomState
+) -> Proposal:
+    """Return the proposal of the highest efficiency, judged on the draws of all.
+
+    One that misses a part of the posterior may look efficient on its own draws, but not on the others'.
+    """
+    z = np.concatenate([proposal.draw(FEW_DRAWS, random) for proposal in proposals])
+    heights = log_density(z)
+    logs = np.array([proposal.log_density(z) for proposal in proposals])
+    highest = logs.max(axis=0)
+    ratios = heights - highest - np.log(np.exp(logs - highest).mean(axis=0))
+    weights = np.exp(ratios - ratios.max())
+    # the mean of 1/efficiency under the posterior, up to a constant
+    losses = [weights @ np.exp(np.minimum(heights - heights.max() - own, LARGEST)) for own in logs]
+    return proposals[int(np.argmin(losses))]
+
+
+def _bends(log_density: LogDensity, centre: Array, root: Array) -> Array:
+    """Return how far from normal a posterior is along each unknown (p,) [nats].
+
+    Each is followed to both sides, the others as they would go with it were the posterior normal. All are 0
+    where the posterior ends on the way: then there is nothing to follow.
+    """
+    covariance = root @ root.T
+    away = (covariance / np.sqrt(np.diag(covariance))).T
+    places = centre + LOOKS[:, None, None] * away
+    heights = log_density(np.concatenate([centre[None], places.reshape(-1, len(centre))]))
+    excess = heights[1:].reshape(len(LOOKS), -1) - heights[0] + 0.5 * np.square(LOOKS)[:, None]
+    bends: Array = np.abs(excess).sum(axis=0)
+    return bends if np.isfinite(bends).all() else np.zeros(len(centre))
 
 
 def adapt(
@@ -136,6 +260,8 @@ def adapt(
     Arguments: log_density, from a block (n_sets, p) to (n_sets,); proposal to start with; random. The
     efficiency is the effective share of draws in importance sampling: 1 where the proposal is the posterior.
     """
+    if len(proposal.centres) == 1:
+        proposal = _straighten(log_density, proposal, random)
     best, highest = proposal, -1.0
     for components in COMPONENTS:
         z = proposal.draw(DRAWS, random)

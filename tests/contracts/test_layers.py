@@ -31,7 +31,7 @@ LAYERS = (
     "models.nonlinear",
     "models.solve",
     "models",
-    "errors findings wording",
+    "errors findings wording cubics",
     "quantity thermocouples",
     "priors noise least_squares laplace diagnostics entries table",
     "parameters rig_file shape_table proposal",

@@ -80,3 +80,27 @@ def test_steps_into_a_region_without_density_are_shortened() -> None:
 
     found = find_mode(cut, np.array([0.9]), np.array([[2.0]]))
     assert found.z[0] == pytest.approx(0.5, abs=0.01)
+
+
+def test_a_mode_at_an_edge_ends_the_search_beside_it() -> None:
+    def half(z: np.ndarray) -> np.ndarray:
+        return np.where(z[:, 0] > 0, -0.5 * np.square(z).sum(axis=1), -np.inf)
+
+    found = find_mode(half, np.array([0.3, 1.0]), np.eye(2))
+    assert 0 < found.z[0] < 0.3
+    assert np.isfinite(found.root).all()
+
+
+def test_a_loose_tolerance_stops_early() -> None:
+    calls = []
+
+    def counted(z: np.ndarray) -> np.ndarray:
+        calls.append(len(z))
+        return z[:, 0] - np.exp(z[:, 0])
+
+    exact = find_mode(counted, np.array([1.5]), np.eye(1))
+    needed = len(calls)
+    near = find_mode(counted, np.array([1.5]), np.eye(1), tolerance=0.1)
+    assert len(calls) - needed < needed
+    assert exact.z[0] == pytest.approx(0.0, abs=0.01)
+    assert near.z[0] == pytest.approx(0.0, abs=0.5)
