@@ -6,13 +6,14 @@ prior. Where the noise is estimated it is the value at which chi-square equals t
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from finback import least_squares, posing
 from finback.least_squares import PointEstimate
+from finback.models.constants import STEFAN_BOLTZMANN
 from finback.noise import REFERENCE_SIGMA
 from finback.parameters import UNMEASURED_AIR
 from finback.problem import Problem
@@ -21,6 +22,7 @@ Array = NDArray[np.float64]
 
 SMALLEST_SIGMA, LARGEST_SIGMA = 1e-7, 1e6  # K; readings that a model meets exactly leave no noise to estimate
 FALLS = np.array([0.0, 0.3, 1.0, 4.0])  # times the fin's own fall: how far below its end unread air may be
+LEAST_CONVECTED = 0.2  # share of a total coefficient that is convection at a start
 NOISE_ROUNDS = 20
 LINEARISING_ROUNDS = 2
 
@@ -55,8 +57,11 @@ def fit(problem: Problem) -> LeastSquares:
 def starting_point(problem: Problem) -> Array:
     """Return a parameter vector near the optimum (p,): the best of a grid in h and joint, levels adjusted.
 
-    Where nothing reads the air, the grid also holds air temperatures towards which the fin's may fall.
+    Where nothing reads the air, the grid also holds air temperatures towards which the fin's may fall. A fin
+    that is not linear starts from the optimum of the linear one that is most like it.
     """
+    if not is_linear(problem):
+        return _from_linear(problem)
     measured = problem.measured
     fin = measured.values[: len(measured.positions)]
     near, far = (float(fin[end(measured.positions)]) for end in (np.argmin, np.argmax))
@@ -72,6 +77,28 @@ def starting_point(problem: Problem) -> Array:
     whitened, _ = problem.whitened(block, REFERENCE_SIGMA)
     cost = np.einsum("ij,ij->i", whitened, whitened)
     return np.asarray(block[int(np.nanargmin(cost))])
+
+
+def is_linear(problem: Problem) -> bool:
+    """Tell whether a problem's fin has one h all along, one conductivity, and does not radiate."""
+    return (
+        problem.candidate.law == "uniform" and problem.rig.emissivity is None and problem.rig.change is None
+    )
+
+
+def _from_linear(problem: Problem) -> Array:
+    """Return a start (p,) from the fit of the same fin with one total h and one conductivity."""
+    rig = replace(problem.rig, emissivity=None, change=None)
+    twin = posing.pose(rig, problem.readings, replace(problem.candidate, law="uniform"))
+    found = dict(zip(twin.names, fit(twin).z, strict=True))
+    start = [found.get(name, mean) for name, mean in zip(problem.names, problem.prior_mean, strict=True)]
+    values = problem.values(np.array([start]))
+    if "emissivity" in values:
+        surface = float(problem.measured.values[: len(problem.measured.positions)].mean())
+        h, emissivity = (float(np.ravel(values[name])[0]) for name in ("h", "emissivity"))
+        radiated = 4 * emissivity * STEFAN_BOLTZMANN * surface**3
+        start[problem.names.index("h")] = math.log(max(h - radiated, LEAST_CONVECTED * h))
+    return np.array(start)
 
 
 def _grid(problem: Problem, level: Mapping[str, float]) -> Array:

@@ -79,6 +79,8 @@ class Picture:
     svg: bytes
 
 
+LETTER_OF_BARS = 0.072
+"""Width of a letter beside a bar [in]."""
 NAMES = ("drawing", "profile", "candidates", "pairs")
 
 
@@ -304,7 +306,9 @@ def _mark_positions(axes: Axes, below: Axes, scene: scenes.ProfileScene) -> None
 def _bars(bars: tuple[scenes.Bar, ...]) -> Figure:
     height = 0.6 + 0.27 * len(bars)
     figure = Figure(figsize=(WIDTH, height))
-    axes = figure.add_axes((0.34, 0.48 / height, 0.63, 1 - 0.52 / height))
+    longest = max(len(bar.name) for bar in bars)
+    left = min(max(LETTER_OF_BARS * longest / WIDTH + 0.02, 0.2), 0.6)
+    axes = figure.add_axes((left, 0.48 / height, 0.97 - left, 1 - 0.52 / height))
     rows = np.arange(len(bars))
     axes.barh(rows, [bar.percent for bar in bars], height=0.62, color=[BLUE] + [SKY] * (len(bars) - 1))
     for row, bar in enumerate(bars):
