@@ -14,7 +14,9 @@ import numpy as np
 import pytest
 
 from finback import candidates, diagnostics, optimum, posing, proposal, readings, rig, sampling
+from finback.analysis import fit
 from finback.datasets import path
+from finback.models import solve
 from finback.parameters import ZERO_CELSIUS
 
 pytestmark = pytest.mark.benchmark
@@ -113,3 +115,32 @@ def test_cold_fit_with_report(benchmark, tmp_path):
     ours = benchmark.stats.stats.min
     benchmark.extra_info |= {"s": ours, "times importing the libraries alone": ours / theirs}
     assert ours < 4 * theirs
+
+
+def test_a_tapered_fin_is_fitted_as_quickly_as_a_pin(benchmark):
+    # an invented fin of each kind, sensors at the same shares of its length; tips and joint are compared
+    pin = {"profile": "pin", "length": "90 mm", "diameter": "8 mm"}
+    tapered = {"profile": "trapezoidal", "length": "90 mm", "width": "80 mm", "thickness": "4 mm",
+               "tip_thickness": "1.5 mm", "edges": "exposed"}  # fmt: skip
+    theirs = fastest(invented(pin), 5)
+    benchmark.pedantic(invented(tapered), rounds=5, warmup_rounds=1)
+    ours = benchmark.stats.stats.min
+    benchmark.extra_info |= {"s": ours, "times the pin": ours / theirs}
+    assert ours < 1.5 * theirs
+
+
+def invented(fin):
+    """Return the whole fit of an invented fin, to call."""
+    sensors = {f"T{i}": {"at": f"{x} mm"} for i, x in enumerate((5, 20, 35, 50, 65, 80), start=1)}
+    sensors |= {"TP": {"on": "plate"}, "TA": {"on": "air"}, "Q": {"on": "heat", "noise": "3 %"}}
+    sensors["defaults"] = {"noise": "0.1 K", "calibration": "0.1 K", "position": "0.3 mm"}
+    document = {"fin": fin, "material": {"conductivity": "167 W/(m K) +/- 5 %"}, "sensors": sensors}
+    described = rig.Rig.from_dict(document)
+    truth = {"h": 45.0, "k": 167.0, "joint": 5e-5, "plate": 353.0, "air": 295.0}
+    x = np.array([sensor.position for sensor in described.fin_sensors()])
+    solution = solve(*described.build(truth, "convective"), x)
+    noise = np.random.default_rng(5).normal(0.0, 0.1, len(x))
+    values = {f"T{i}": float(t) for i, t in enumerate(solution.temperatures[0] + noise, start=1)}
+    values |= {"TP": 353.0, "TA": 295.0, "Q": float(solution.base_heat[0])}
+    run = readings.Readings("drawn", values)
+    return lambda: fit(described, run)
