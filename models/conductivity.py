@@ -26,7 +26,8 @@ NUMBERS = (float, np.ndarray, int, np.number)
 class Conductivity(Protocol):
     """A conductivity law: `at(temperature)` [K] -> k [W/(m K)]; `temperatures` [K], where it is known.
 
-    A frozen dataclass: an array among its fields holds one value a set, and a solver takes rows of it.
+    A frozen dataclass: an array among its fields holds one value a set, and a solver takes rows of it. A law
+    may have `kinks`, a tuple of the temperatures [K] at which it has one.
     """
 
     @property
@@ -139,6 +140,11 @@ class TabulatedConductivity:
             raise ValueError("a conductivity table needs two points or more, in rising order of temperature")
         if not bool(np.all(np.isfinite(values) & (values > 0) & (temperatures > 0))):
             raise ValueError("temperatures and conductivities of a table must be positive and finite")
+
+    @property
+    def kinks(self) -> tuple[float, ...]:
+        """Temperatures [K] of the points, at which the law has a kink."""
+        return tuple(temperature for temperature, _ in self.points)
 
     @property
     def temperatures(self) -> Range:

@@ -36,6 +36,8 @@ COUNTS = (4, 6, 8, 10, 12, 16, 20, 24, 32, 48)
 """Nodes [1] in one piece of the length."""
 MOST_LAYERS, SPLITS, IN_PIECE = 9, (4, 8, 16), 24
 """Most layers at an end; equal pieces, where one is not enough; nodes in each layer and such piece [1]."""
+IN_CELL = 12
+"""Least nodes [1] in a piece where cells part the length."""
 POWERS = (1.0, 0.5, 0.25, 0.125)
 """Powers of the distance from a sharp tip [1] in which the flux may be a polynomial."""
 BLUNT_POWERS = (1.0, 0.0, 0.5, 0.25)
@@ -63,6 +65,14 @@ class Plan:
             return Plan(min(count for count in COUNTS if count > self.count))
         pieces = [pieces for pieces in SPLITS if pieces > self.pieces]
         return Plan(IN_PIECE, pieces[0], self.layers) if pieces else None
+
+    def around_cells(self) -> "Plan":
+        """Return the plan for the same fin where cells part its length."""
+        return replace(self, count=max(self.count, IN_CELL))
+
+    def far_finer(self) -> "Plan":
+        """Return a plan that resolves several times as much everywhere: a kink makes errors fall slowly."""
+        return Plan(IN_PIECE, SPLITS[self.count > IN_PIECE], self.layers)
 
 
 PLANS = (*(Plan(count) for count in COUNTS), *(Plan(IN_PIECE, 1, n) for n in range(1, MOST_LAYERS + 1)))
@@ -112,10 +122,19 @@ class Responses:
     share: Array
 
 
-@lru_cache(maxsize=256)
 def nodes(shape: Shape, plan: Plan) -> Nodes:
-    """Return the nodes of a plan; what a shape needs is found once and kept."""
+    """Return the nodes of a plan; what a shape needs is found once and kept, of cells for some time."""
+    return _around_cells(shape, plan) if shape.cells else _nodes(shape, plan)
+
+
+@lru_cache(maxsize=256)
+def _nodes(shape: Shape, plan: Plan) -> Nodes:
     return _build(shape, plan, _power(shape))
+
+
+@lru_cache(maxsize=64)
+def _around_cells(shape: Shape, plan: Plan) -> Nodes:
+    return _build(shape, plan, _power(replace(shape, cells=())))
 
 
 @lru_cache(maxsize=256)
@@ -179,7 +198,7 @@ def _pieces(shape: Shape, fine: Grid, plan: Plan) -> NDArray[np.intp]:
         sides = breaks[:, None] + shape.length * 1e-9 * np.array([-1.0, 1.0])
         values = np.stack([shape.area(sides.ravel()), shape.perimeter(sides.ravel())]).reshape(2, -1, 2)
         jumps = np.abs(np.diff(np.log(values), axis=2)).max(axis=(0, 2)) > 1e-6
-        jumps |= np.isin(breaks, np.array(shape.more_breaks) * shape.length)
+        jumps |= np.isin(breaks, shape.ends)
         breaks = breaks[jumps]
     quarters = 0.25 ** np.arange(1, plan.layers + 1)
     wanted = [np.linspace(0.0, 1.0, plan.pieces + 1), breaks / shape.length, quarters]

@@ -4,16 +4,17 @@ Kirchhoff's potential makes conduction linear, `nodes` makes of it a few equatio
 those of a whole block of parameter sets by Newton's method. Here a fin is put into that form. Its nodes are
 chosen by how steep its potential can be; the solution is then carried over to finer nodes, and goes on from
 there in those sets that would change. A power law whose excess temperature changes sign along the fin, or a
-conductivity table with a point among the fin's temperatures, is a kink in the flux: it needs many nodes, and
-milliseconds a set.
+conductivity table with a point among the fin's temperatures, is a kink in the flux: it needs more nodes, the
+first one of them around its place (`kinks`).
 """
 
+from collections.abc import Iterator
 from dataclasses import dataclass, fields, is_dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from finback.models import iteration
+from finback.models import iteration, kinks
 from finback.models.conductivity import Conductivity, ConstantConductivity, constant
 from finback.models.coupling import require_tip, within
 from finback.models.endless import EndlessFin, settled
@@ -27,6 +28,7 @@ from finback.models.solution import Solution
 from finback.models.surface import UniformCoefficient
 
 Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
 Rows = NDArray[np.intp]
 Values = float | Array
 
@@ -40,7 +42,10 @@ NO_HEAT = 1e-6
 """Share [1] of what a fin between held ends could conduct that counts as no heat."""
 SLACK = 100.0
 """Times these accuracies [1] that the finest nodes may change a set that counts as converged."""
-
+CLOSER = 0.5
+"""Share of these accuracies [1] to which a set with a kink has to keep."""
+ENOUGH = 24
+"""Nodes [1] on which a kink that they do not resolve is well enough known to be put into a cell."""
 
 PROFILE = ("length", "area", "perimeter", "side_area")
 LAW = ("linear", "uniform", "flux", "response", "sinks")
@@ -79,7 +84,7 @@ def solve(fin: Fin, base: Base, air: Values, x: Array, steps: int = STEPS) -> So
         for start in range(0, len(ready), BLOCK):
             rows = ready[start : start + BLOCK]
             with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
-                _solve_block(_Block(shape, take(cases, rows), rows), plan, steps, answer)
+                _solve_block(_Block(shape, plan, take(cases, rows), rows), steps, answer)
         if not waiting.size:
             break
     return answer.solution()
@@ -164,68 +169,137 @@ def _steepest(cases: Cases) -> Array:
 
 @dataclass(frozen=True, slots=True)
 class _Block:
-    """Some sets of one shape, and their rows in the answer."""
+    """Some sets of one shape, the plan of their nodes, and their rows in the answer."""
 
     shape: Shape
+    plan: Plan
     cases: Cases
     rows: Rows
 
+    @property
+    def nodes(self) -> Nodes:
+        """The equations of the block."""
+        return nodes(self.shape, self.plan)
 
-def _solve_block(block: _Block, plan: Plan, steps: int, answer: "_Answer") -> None:
-    """Solve a block on the nodes of a plan, and its sets that finer nodes would change on those."""
-    carried, coarser = None, np.empty(0)
-    while True:
-        system, finer = nodes(block.shape, plan), plan.finer()
-        state, converged = iteration.solve(system, block.cases, steps, carried)
-        answer.fill(block, plan, state)
-        heats = _heats(system, state)
-        if finer is None:
-            change = np.zeros(len(block.rows))
-            if carried is not None:
-                change = _measure(system, block.cases, state.u - carried.u, heats - coarser, state)
+    def take(self, rows: Rows) -> "_Block":
+        """Return some of the sets."""
+        return replace(self, cases=take(self.cases, rows), rows=self.rows[rows])
+
+
+@dataclass(frozen=True, slots=True)
+class _Stand:
+    """A block and the state that it is in."""
+
+    block: _Block
+    state: State
+
+    def heats(self) -> Array:
+        """Return what enters the base and what side and tip's face lose [W], shape (2, n_sets)."""
+        return np.stack([self.state.heat, self.block.nodes.roots @ self.state.loads])
+
+    def take(self, rows: Rows) -> "_Stand":
+        """Return some of the sets."""
+        return _Stand(self.block.take(rows), self.state.take(rows))
+
+    def potential(self, positions: Array) -> Array:
+        """Return the potential [W/m] at positions [m], shape (n_x, n_sets)."""
+        block, state = self.block, self.state
+        at = responses(block.shape, block.plan, positions.tobytes())
+        across = state.base - held_potential(block.nodes, block.cases)
+        found: Array = (
+            state.base - at.share[:, None] * across - at.fall @ state.loads + at.values @ state.residual
+        )
+        return found
+
+    def passes(self, levels: tuple[Values, ...]) -> Flags:
+        """Tell in which sets one of several temperatures [K] lies within the fin, shape (n_sets,)."""
+        if not levels:
+            return np.zeros(len(self.block.rows), dtype=np.bool_)
+        held = bool(self.block.nodes.conductance)
+        ends = np.stack([self.state.base] + [held_potential(self.block.nodes, self.block.cases)] * held)
+        known = np.vstack([self.state.temperatures, self.block.cases.temperatures(ends)[0]])
+        return kinks.passed(known, levels, held)
+
+    def on(self, plan: Plan, cells: tuple[float, ...] = ()) -> "_Stand":
+        """Return the block with its potential on other nodes; cells, those that its shape is to have."""
+        shape = replace(self.block.shape, cells=cells) if cells else self.block.shape
+        block = replace(self.block, shape=shape, plan=plan)
+        potential = block.nodes.roots[:, None] * self.potential(block.nodes.places * shape.length)
+        return _Stand(block, iteration.evaluate(block.nodes, block.cases, potential, self.state.base))
+
+    def misfit(self, other: "_Stand") -> Array:
+        """Return how much [1] other nodes, on which the block has been put, might change, over what may be.
+
+        It would be less than the residual there, and much less where m L is large.
+        """
+        return other.measure(other.state.residual, other.heats() - self.heats())
+
+    def measure(self, u: Array, heats: Array) -> Array:
+        """Return how large differences of u [W] and of heats [W] are [1], over what is accurate."""
+        system, span, state = self.block.nodes, self.block.cases.span, self.state
+        potential = np.abs(u / system.roots[:, None])[system.counted].max(axis=0) / span
+        most = np.maximum(system.roots @ np.abs(state.loads), np.abs(state.heat))
+        least = np.maximum(NO_HEAT * system.conductance * span, TINY)  # of a fin held at one temperature
+        heat = np.abs(heats).max(axis=0) / np.maximum(most, least)
+        return np.asarray(np.maximum(potential / POTENTIAL_ACCURACY, heat / HEAT_ACCURACY))
+
+
+def _solve_block(
+    block: _Block, steps: int, answer: "_Answer", start: State | None = None, coarser: Array | None = None
+) -> None:
+    """Solve a block on the nodes of its plan, and its sets that finer nodes would change on those.
+
+    Arguments beside block, most steps and answer: of coarser nodes, if some have been solved, start, their
+    potential on these nodes, from which the first step sets out, and coarser, their heats [W].
+    """
+    state, converged = iteration.solve(block.nodes, block.cases, steps, start)
+    stand, finer = _Stand(block, state), block.plan.finer()
+    answer.fill(stand, converged)
+    heats = stand.heats()
+    if finer is None:
+        if start is not None and coarser is not None:
+            change = stand.measure(state.u - start.u, heats - coarser)
             answer.converged[block.rows] = converged & (change <= SLACK)
-            return
-        answer.converged[block.rows] = converged
-        carried = _carried(block, plan, finer, state)
-        there = nodes(block.shape, finer)
-        # What finer nodes would change is less than the residual there, and much less where m L is large.
-        misfit = _measure(there, block.cases, carried.residual, _heats(there, carried) - heats, carried)
-        rough = np.flatnonzero(converged & ~(misfit <= 1))
-        if not rough.size:
-            return
-        block = replace(block, cases=take(block.cases, rough), rows=block.rows[rough])
-        plan, carried, coarser = finer, carried.take(rough), heats[:, rough]
+        return
+    carried = stand.on(finer)
+    rough = converged & _changing(stand, carried)
+    for parted, rows in _parted_at_kinks(stand, rough):
+        _solve_block(parted.block, steps, answer, parted.state, heats[:, rows])
+        rough[rows] = False
+    rows = np.flatnonzero(rough)
+    if rows.size:
+        carried = carried.take(rows)
+        _solve_block(carried.block, steps, answer, carried.state, heats[:, rows])
 
 
-def _carried(block: _Block, plan: Plan, finer: Plan, state: State) -> State:
-    """Return a state on finer nodes, its potential that of a state on the nodes of a plan."""
-    there = nodes(block.shape, finer)
-    potential = _potential(block, plan, state, there.places * block.shape.length)
-    return iteration.evaluate(there, block.cases, there.roots[:, None] * potential, state.base)
+def _changing(stand: _Stand, carried: _Stand) -> Flags:
+    """Tell which sets finer nodes, on which they have been put, would change too much.
+
+    Errors of a kink fall slowly, and the next nodes may agree by chance: a set that has one has to keep
+    closer, and is looked at again on far finer nodes.
+    """
+    misfit, cases, plan = stand.misfit(carried), stand.block.cases, stand.block.plan
+    rough = np.asarray(~(misfit <= 1))
+    strong = () if stand.block.shape.cells else kinks.of_side(cases)
+    kinked = stand.passes((*strong, *kinks.of_solid(cases)))
+    rough |= kinked & ~(misfit <= CLOSER)
+    rows = np.flatnonzero(kinked & ~rough)
+    if rows.size and plan.pieces == 1:
+        some = stand.take(rows)
+        rough[rows] = ~(some.misfit(some.on(plan.far_finer())) <= CLOSER)
+    return rough
 
 
-def _potential(block: _Block, plan: Plan, state: State, positions: Array) -> Array:
-    """Return the potential [W/m] at positions [m], shape (n_x, n_sets)."""
-    at = responses(block.shape, plan, positions.tobytes())
-    across = state.base - held_potential(nodes(block.shape, plan), block.cases)
-    found: Array = (
-        state.base - at.share[:, None] * across - at.fall @ state.loads + at.values @ state.residual
-    )
-    return found
-
-
-def _heats(system: Nodes, state: State) -> Array:
-    """Return what enters the base and what the side and a tip's face lose [W], shape (2, n_sets)."""
-    return np.stack([state.heat, system.roots @ state.loads])
-
-
-def _measure(system: Nodes, cases: Cases, u: Array, heats: Array, state: State) -> Array:
-    """Return how large differences of u [W] and of heats [W] are [1], over what is accurate."""
-    potential = np.abs(u / system.roots[:, None])[system.counted].max(axis=0) / cases.span
-    most = np.maximum(system.roots @ np.abs(state.loads), np.abs(state.heat))
-    least = np.maximum(NO_HEAT * system.conductance * cases.span, TINY)  # of a fin held at one temperature
-    heat = np.abs(heats).max(axis=0) / np.maximum(most, least)
-    return np.asarray(np.maximum(potential / POTENTIAL_ACCURACY, heat / HEAT_ACCURACY))
+def _parted_at_kinks(stand: _Stand, rough: Flags) -> Iterator[tuple[_Stand, Rows]]:
+    """Yield the rough sets whose side has a kink on nodes with cells around it."""
+    block = stand.block
+    if block.plan.pieces > 1 or block.plan.count < ENOUGH or block.shape.cells:
+        return
+    rows = np.flatnonzero(rough & stand.passes(kinks.of_side(block.cases)))
+    some = stand.take(rows)
+    temperatures = some.block.cases.temperatures(some.potential(kinks.PLACES * block.shape.length))[0]
+    for cells, own in kinks.cells(temperatures, kinks.of_side(some.block.cases)):
+        yield some.take(own).on(block.plan.around_cells(), cells), rows[own]
 
 
 @dataclass(frozen=True, slots=True)
@@ -246,10 +320,12 @@ class _Answer:
         found = np.zeros((n_sets, len(positions)))
         return cls(positions, found, base, heat, tip, radiated, np.zeros(n_sets, dtype=np.bool_))
 
-    def fill(self, block: _Block, plan: Plan, state: State) -> None:
+    def fill(self, stand: _Stand, converged: Flags) -> None:
         """Write the sets of a block."""
-        rows, cases, system = block.rows, block.cases, nodes(block.shape, plan)
-        self.temperatures[rows] = cases.temperatures(_potential(block, plan, state, self.positions))[0].T
+        block, state = stand.block, stand.state
+        rows, cases, system = block.rows, block.cases, block.nodes
+        self.converged[rows] = converged
+        self.temperatures[rows] = cases.temperatures(stand.potential(self.positions))[0].T
         if system.grid.cold_tip:
             very_tip = np.flatnonzero(self.positions >= block.shape.length)
             losing = np.abs(state.loads).max(axis=0) > 0

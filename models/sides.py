@@ -24,12 +24,14 @@ class Shape:
     """A fin's geometry, a profile of its own.
 
     profile; more_breaks [1], places x/L where the law of the side has a kink or a jump; tip: "free" (its face
-    loses nothing), "face" (its face does) or "held".
+    loses nothing), "face" (its face does) or "held"; cells [1], places x/L around a kink that fins of some
+    temperatures have.
     """
 
     profile: Profile
     more_breaks: tuple[float, ...]
     tip: str
+    cells: tuple[float, ...] = ()
 
     @property
     def length(self) -> float:
@@ -38,9 +40,14 @@ class Shape:
 
     @property
     def breaks(self) -> Array:
-        """Positions [m] of kinks and jumps, of the profile and of the law."""
+        """Positions [m] of kinks and jumps, of the profile and of the law, and of what is around others."""
         own = np.asarray(getattr(self.profile, "breaks", ()), dtype=np.float64).ravel()
-        return np.unique(np.concatenate([own, np.array(self.more_breaks, dtype=np.float64) * self.length]))
+        return np.unique(np.concatenate([own, self.ends]))
+
+    @property
+    def ends(self) -> Array:
+        """Positions [m] at which pieces of the flux have to end whatever the profile is there."""
+        return np.array((*self.more_breaks, *self.cells), dtype=np.float64) * self.length
 
     @property
     def tip_area(self) -> float:

@@ -31,7 +31,8 @@ class SurfaceLaw(Protocol):
 
     A law is a frozen dataclass: an array among its fields holds one value a set, and a solver takes rows of
     it. A law with a kink or a jump along the fin may have `breaks`, a tuple of the places where they are:
-    solutions are more exact where they know them.
+    solutions are more exact where they know them. One whose flux has a kink at some temperature may have
+    `kinks(air)`, those temperatures [K].
     """
 
     @property
@@ -131,6 +132,10 @@ class PowerCoefficient:
 
     def sinks(self, air: Values, /) -> tuple[Values, ...]:
         """Return the air's temperature [K] alone."""
+        return (air,)
+
+    def kinks(self, air: Values) -> tuple[Values, ...]:
+        """Return the air's temperature [K]: beyond it the flux is another power."""
         return (air,)
 
     def _local(self, theta: Array) -> Array:
@@ -265,6 +270,11 @@ class Radiating:
     def breaks(self) -> tuple[float, ...]:
         """Places [1] of kinks and jumps of the convective law."""
         return tuple(getattr(self.convection, "breaks", ()))
+
+    def kinks(self, air: Values) -> tuple[Values, ...]:
+        """Return the temperatures [K] at which the convective law has a kink."""
+        own = getattr(self.convection, "kinks", None)
+        return () if own is None else tuple(own(air))
 
     @property
     def linear(self) -> bool:

@@ -1,0 +1,82 @@
+"""Kinks of the flux along a fin: where its temperature passes one at which a law of it has a kink.
+
+A power law of convection has one at the air's temperature, a conductivity table a weaker one at each of its
+points. No polynomial follows a flux across them. Where a fin has one is known once it is solved, if only
+roughly. The place of a strong one is put into a cell, 1/256 of the length, and pieces of the length end at
+the cell's sides and at eight and sixty-four times their distance from its middle. What the polynomials then
+miss lies in the cell. Cells stand at fixed places, so that fins whose kinks are in the same ones share their
+nodes.
+"""
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback.models.iteration import Cases, Values
+
+Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+Rows = NDArray[np.intp]
+
+CELLS = 256
+"""Middles of cells in a length [1]; a cell reaches to its neighbours' middles."""
+AROUND = (1, 8, 64)
+"""Distances from the middle of a cell [1], over that of two neighbours, at which pieces end."""
+PLACES = np.linspace(0.0, 1.0, 129)
+"""Places x/L [1] between which a fin is looked at for kinks."""
+ROUNDING = 1e-9
+"""Excess over a kink's temperature [1], over the fin's range, that is none."""
+
+
+def of_side(cases: Cases) -> tuple[Values, ...]:
+    """Return the temperatures [K] at which the law of the side has a kink."""
+    own = getattr(cases.surface, "kinks", None)
+    return () if own is None else tuple(own(cases.air))
+
+
+def of_solid(cases: Cases) -> tuple[Values, ...]:
+    """Return the temperatures [K] at which the conductivity has one: a far weaker one of the flux."""
+    return tuple(getattr(cases.conductivity, "kinks", ()))
+
+
+def passed(temperatures: Array, levels: tuple[Values, ...], ends_held: bool) -> Flags:
+    """Tell in which fins a kink lies among the temperatures [K]: (n_places, n_sets) -> (n_sets,).
+
+    Where both ends are held, one that is just there counts as well.
+    """
+    low, high = temperatures.min(axis=0), temperatures.max(axis=0)
+    nothing = ROUNDING * (low - high if ends_held else high - low)
+    found = [(low < level - nothing) & (level + nothing < high) for level in levels]
+    return np.asarray(np.any(found, axis=0))
+
+
+def cells(temperatures: Array, levels: tuple[Values, ...]) -> Iterator[tuple[tuple[float, ...], Rows]]:
+    """Put the kinks of fins into cells.
+
+    Arguments: temperatures [K] at `PLACES` (n_places, n_sets); levels [K]. Yields the places x/L [1] at which
+    pieces end, and the fins that have their kinks there; fins without a kink are left out.
+    """
+    middles = _middles(temperatures, levels)
+    fins = np.flatnonzero(middles.any(axis=0))
+    kinds, kind = np.unique(middles[:, fins], axis=1, return_inverse=True)
+    for i, own in enumerate(kinds.T):
+        ends = np.flatnonzero(own)[:, None] + np.array([*(-step for step in AROUND), *AROUND])
+        inside = np.unique(ends[(ends > 0) & (ends < CELLS)])
+        yield tuple((inside / CELLS).tolist()), fins[kind.ravel() == i]
+
+
+def _middles(temperatures: Array, levels: tuple[Values, ...]) -> Flags:
+    """Return which middles of cells are next to a kink, shape (CELLS + 1, n_sets)."""
+    nothing = ROUNDING * (temperatures.max(axis=0) - temperatures.min(axis=0))
+    found = np.zeros((CELLS + 1, temperatures.shape[1]), dtype=np.bool_)
+    for level in levels:
+        excess = temperatures - level
+        excess[np.abs(excess) <= nothing] = 0.0
+        before, after = excess[:-1], excess[1:]
+        at, fin = np.nonzero(before * after < 0)
+        start, end = before[at, fin], after[at, fin]
+        place = PLACES[at] + (PLACES[at + 1] - PLACES[at]) * start / (start - end)
+        found[np.rint(place * CELLS).astype(np.intp), fin] = True
+        found[-1] |= (after[-1] == 0) & (before[-1] != 0)
+    return found
