@@ -12,7 +12,7 @@ Carlo; the largest weights are cut, so that no single draw decides.
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cache, cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,6 +25,7 @@ Array = NDArray[np.float64]
 FREEDOM = 8.0  # tails heavy enough for a posterior with an estimated noise, light enough to be accepted
 COMPONENTS = (1, 1, 1, 4, 4, 8, 8)  # tried one after the other, until one is good
 DRAWS = 2000  # a trial
+PIECE = 2**15  # numbers at a time
 FEW_DRAWS = 500  # a trial of what differs much
 LARGEST = 500.0  # exponent of a ratio, short of an overflow
 GOOD = 0.7  # efficiency from which refitting is not worth its time
@@ -40,7 +41,7 @@ NEAR = 1e-2  # Newton decrement [nats] of a rung, which is a place to draw about
 STRAIGHT = 0.3  # of the others' standard deviations, that they may bend over one component
 EVEN = 0.2  # of their logarithm, that they may widen over one component
 PARTS = 8  # components a rung, at most
-SMALLEST_SHARE = 1e-4  # of a component: what lies beyond is left to the tails of the others
+SMALLEST_SHARE = 1e-5  # of a component: what lies beyond is left to the tails of the others
 LOOKS = np.array([-3.0, -1.5, 1.5, 3.0])  # standard deviations from the mode, where a bend would show
 BENT = 5.0  # nats off a normal distribution, over these looks, from which a posterior needs a ladder
 ALIKE = 0.3  # of the largest bend: a second unknown to try a ladder along
@@ -86,19 +87,51 @@ class Proposal:
             drawn = self.centres[which] + np.einsum("nij,nj->ni", self.roots[which], normal)
         return drawn
 
+    def place(self, points: Array) -> Array:
+        """Return the vectors (n, p) that evenly spread points (n, p + 2) in the unit cube become.
+
+        The first coordinate chooses the component, the next ones make normal numbers, the last their tails.
+        """
+        from scipy.special import ndtri
+
+        c = len(self.centres)
+        scores = ndtri(points[:, 1:])
+        normal = scores[:, :-1] / np.interp(scores[:, -1], *_radii())[:, None]
+        if c == 1:
+            return np.asarray(self.centres + normal @ self.roots[0].T)
+        shares = np.full(c, 1 / c) if self.shares is None else self.shares
+        which = np.minimum(np.searchsorted(np.cumsum(shares), points[:, 0]), c - 1)
+        return np.asarray(self.centres[which] + np.einsum("nij,nj->ni", self.roots[which], normal))
+
     def log_density(self, z: Array) -> Array:
         """Return the log density of a block (n_sets, p) -> (n_sets,)."""
+        c, p = self.centres.shape
+        # in pieces that stay in the processor's cache
+        at_a_time = max(1, PIECE // (c * p))
+        pieces = [self._log_density(z[i : i + at_a_time]) for i in range(0, len(z), at_a_time)]
+        return np.concatenate(pieces) if len(pieces) != 1 else pieces[0]
+
+    def _log_density(self, z: Array) -> Array:
         c, p = self.centres.shape
         power = (FREEDOM + p) / 2
         middle = self.centres[0]
         # all components by one product: rows of (c p, p) inverses, less what they make of the centres
         scaled = self._inverses.reshape(c * p, p) @ (z - middle).T
         scaled -= (self._inverses @ (self.centres - middle)[:, :, None]).reshape(-1, 1)
-        squares = np.einsum("cpn,cpn->cn", *[scaled.reshape(c, p, -1)] * 2)
+        squares = np.square(scaled, out=scaled).reshape(c, p, -1).sum(axis=1)
         logs: Array = self._constants[:, None] - power * np.log1p(squares / FREEDOM)
         highest = logs.max(axis=0)
         found: Array = logs[0] if c == 1 else highest + np.log(np.exp(logs - highest).sum(axis=0))
         return found
+
+
+@cache
+def _radii() -> tuple[Array, Array]:
+    """Return a table of the root of chi-square over its degrees of freedom by normal score."""
+    from scipy.special import gammaincinv, ndtr
+
+    scores = np.linspace(-8.2, 8.2, 4101)
+    return scores, np.sqrt(gammaincinv(FREEDOM / 2, ndtr(scores)) * 2 / FREEDOM)
 
 
 def from_mode(mode: Mode) -> Proposal:
