@@ -212,6 +212,8 @@ def main() -> None:
     """Run the command line of this process and exit with its status."""
     if not sys.warnoptions:
         warnings.simplefilter("ignore")  # what an engineer must know is a finding, not a library's warning
+    for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS"):
+        os.environ.setdefault(name, "1")  # matrices are small here, and threads that share them out only wait
     for stream in (sys.stdout, sys.stderr):
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")  # a console without "²" must not end the run
