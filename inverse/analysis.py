@@ -12,7 +12,6 @@ import finback
 from finback import candidates, checks, concerns, derived, expectation, geometry, summaries
 from finback import readings as readings_file
 from finback import rig as rig_file
-from finback.candidates import Outcome
 from finback.estimate import (
     Draws,
     Estimate,
@@ -28,6 +27,7 @@ from finback.findings import Finding
 from finback.models.constants import ZERO_CELSIUS
 from finback.readings import Readings
 from finback.rig import Rig
+from finback.routes import Outcome
 from finback.sampling import Settings
 
 Array = NDArray[np.float64]
@@ -85,7 +85,8 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
     sampled = [o for o in outcomes if o.sampled]
     sampler = SamplerRecord(
         method="emcee, independence and differential-evolution moves, "
-        f"{best.draws.shape[0]} independent ensembles",
+        f"{best.draws.shape[0]} independent ensembles"
+        + ("; other candidates by weighted draws" if len(sampled) < len(outcomes) else ""),
         draws=sum(o.n_draws for o in sampled),
         ess_min=min(o.ess_min for o in sampled if o.ess_min is not None),
         rhat_max=_finite(max(o.rhat_max for o in sampled if o.rhat_max is not None)),

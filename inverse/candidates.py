@@ -10,23 +10,18 @@ the readings.
 import math
 import zlib
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import diagnostics, evidence, laplace, optimum, sampling
-from finback import proposal as proposals
+from finback import diagnostics, fast, routes
 from finback.estimate import CandidateScore
-from finback.evidence import Evidence
-from finback.laplace import Mode
-from finback.optimum import LeastSquares
 from finback.posing import is_read, pose
 from finback.problem import LAW_WORDS, Candidate, Problem
-from finback.proposal import Proposal
 from finback.readings import Readings
 from finback.rig import LawName, Rig, TipName
-from finback.sampling import Chain, Settings
+from finback.routes import Outcome
+from finback.sampling import Settings
 
 Array = NDArray[np.float64]
 Progress = Callable[[str, float], None]
@@ -36,35 +31,7 @@ SHARP_TIPS: tuple[TipName, ...] = ("adiabatic",)
 """What is left of them for a tip without a face: it loses no heat, whatever its coefficient, and nothing can
 hold it at a temperature."""
 WORTH_SAMPLING = 5.0  # nats below the best: a candidate further down has a probability below 0.007
-KEPT_DRAWS = 2500  # an ensemble
 LOO_DRAWS = 500  # an ensemble
-LADDER_FITS = 0.1  # efficiency below which a ladder has missed its posterior: readings without any error
-SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
-
-
-@dataclass(frozen=True)
-class Outcome:
-    """What one candidate made of the readings.
-
-    `problem` with its noise linearised; `point`, its least-squares fit; `mode`; `draws` (chains, n, p);
-    `evidence`; how the draws were made: `ess_min`, `rhat_max`, `converged` (None, None, True where the
-    candidate was so improbable that its draws are weighted ones).
-    """
-
-    problem: Problem
-    point: LeastSquares
-    mode: Mode
-    draws: Array
-    evidence: Evidence
-    ess_min: float | None
-    rhat_max: float | None
-    converged: bool
-    n_draws: int
-
-    @property
-    def sampled(self) -> bool:
-        """Whether the draws come from MCMC."""
-        return self.ess_min is not None
 
 
 def enumerate_candidates(rig: Rig, readings: Readings | None = None) -> tuple[Candidate, ...]:
@@ -123,6 +90,9 @@ def compare(
 ) -> list[Outcome]:
     """Fit every candidate to one run and return the outcomes, most probable first.
 
+    The fast route weighs all of them; the most probable one is sampled by MCMC as well, and so is any other
+    that may matter and whose k-hat the fast route cannot be trusted with.
+
     Arguments: rig; readings; seed; progress, called with a stage and the fraction done; settings of the
     sampler. The random streams belong to seed, run and candidate, whatever else is computed.
     """
@@ -130,45 +100,32 @@ def compare(
     run = zlib.crc32(readings.run.encode())
     chosen = enumerate_candidates(rig, readings)
     problems = affordable([pose(rig, readings, candidate) for candidate in chosen])
-    prepared = []
+    weighed = []
     for number, problem in enumerate(problems):
-        candidate = problem.candidate
-        progress("comparing candidates", 0.1 * number / len(problems))
-        seeds = np.random.SeedSequence([seed, run, zlib.crc32(candidate.name.encode())]).spawn(3)
-        point = optimum.fit(problem)
-        mode = find_mode(point)
-        random = np.random.RandomState(np.random.MT19937(seeds[0]))
-        fitted = _fit_proposal(point.problem, mode, random)
-        quick = evidence.importance(point.problem.log_density, fitted[0], random)
-        prepared.append((point, mode, fitted, quick, seeds))
-    best = max(quick.evidence.log for *_, quick, _ in prepared)
-    worth = [quick.evidence.log > best - WORTH_SAMPLING for *_, quick, _ in prepared]
+        progress("comparing candidates", 0.3 * number / len(problems))
+        weighed.append(routes.weigh(problem, np.random.SeedSequence([seed, run, _number_of(problem)])))
+    best = max(weighed, key=lambda route: route.fast.evidence.log)
+    worth = [
+        route is best
+        or (route.khat > fast.TRUSTED and route.fast.evidence.log > best.fast.evidence.log - WORTH_SAMPLING)
+        for route in weighed
+    ]
     outcomes = []
-    for (point, mode, fitted, quick, seeds), sampled in zip(prepared, worth, strict=True):
+    for route, sampled in zip(weighed, worth, strict=True):
         if not sampled:
-            problem = point.problem
-            outcomes.append(
-                Outcome(
-                    problem,
-                    point,
-                    mode,
-                    quick.draws[None],
-                    quick.evidence,
-                    None,
-                    None,
-                    True,
-                    len(quick.draws),
-                )
-            )
+            outcomes.append(route.outcome())
             continue
         done = sum(o.sampled for o in outcomes)
 
         def report(fraction: float, done: int = done) -> None:
-            progress("sampling", 0.1 + 0.8 * (done + fraction) / sum(worth))
+            progress("sampling", 0.3 + 0.6 * (done + fraction) / sum(worth))
 
-        chain = sampling.sample(point.problem.log_density, *fitted, seeds[1], settings, report)
-        outcomes.append(_outcome(point, mode, chain, seeds[2]))
+        outcomes.append(route.sampled(settings, report))
     return sorted(outcomes, key=lambda o: -o.evidence.log)
+
+
+def _number_of(problem: Problem) -> int:
+    return zlib.crc32(problem.candidate.name.encode())
 
 
 def affordable(problems: Sequence[Problem]) -> list[Problem]:
@@ -185,49 +142,6 @@ def affordable(problems: Sequence[Problem]) -> list[Problem]:
 
     fewest = min(map(missing, problems))
     return [problem for problem in problems if missing(problem) <= fewest]
-
-
-def find_mode(point: LeastSquares) -> Mode:
-    """Find the posterior's mode from the least-squares optimum; the scale is guessed from its information."""
-    problem, n = point.problem, point.problem.n_physical
-    stated = np.where(problem.is_stated[:n], 0.0, 1.0)  # stated priors are among the residuals already
-    precision = point.point.jacobian.T @ point.point.jacobian + np.diag(stated / problem.prior_sd[:n] ** 2)
-    scale = 1 / np.sqrt(np.diag(precision))
-    weights, axes = np.linalg.eigh(precision * np.outer(scale, scale))
-    root = np.zeros((len(point.z), len(point.z)))
-    root[:n, :n] = scale[:, None] * (axes / np.sqrt(np.maximum(weights, SMALLEST_WEIGHT)))
-    if problem.noise.estimated:
-        root[n, n] = math.sqrt(0.5 / max(point.degrees_of_freedom, 1))
-    start = np.clip(
-        point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd
-    )
-    return laplace.find_mode(problem.log_density, start, root)
-
-
-def _fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) -> tuple[Proposal, float]:
-    """Return a proposal fitted to the posterior, and its efficiency [1].
-
-    An estimated noise makes the posterior a funnel, and its mode may be a spike far down in it, where plate
-    and air fit their readings without any noise: a ladder starts from the whole of it.
-    """
-    if problem.noise.estimated:
-        ladder = proposals.ladder(problem.log_density, mode)
-        found = proposals.adapt(problem.log_density, ladder, random)
-        if found[1] >= LADDER_FITS:
-            return found
-    return proposals.adapt(problem.log_density, proposals.from_mode(mode), random)
-
-
-def _outcome(point: LeastSquares, mode: Mode, chain: Chain, seed: np.random.SeedSequence) -> Outcome:
-    """Return the outcome of a sampled candidate, with draws enough for its quantiles."""
-    problem = point.problem
-    found = evidence.bridge(problem.log_density, chain, seed)
-    ensembles, steps, walkers, p = chain.z.shape
-    flat = chain.z.reshape(ensembles, steps * walkers, p)
-    kept = flat[:, np.linspace(0, steps * walkers - 1, KEPT_DRAWS).astype(int)]
-    return Outcome(
-        problem, point, mode, kept, found, chain.ess_min, chain.rhat_max, chain.converged, chain.n_draws
-    )
 
 
 def probabilities(outcomes: Sequence[Outcome]) -> Array:

@@ -2,7 +2,6 @@
 
 from collections.abc import Mapping, Sequence
 
-from finback.candidates import Outcome
 from finback.estimate import CandidateScore, FitQuality, SamplerRecord, Summary
 from finback.findings import Finding, Severity
 from finback.models.constants import ZERO_CELSIUS
@@ -10,6 +9,7 @@ from finback.models.validity import TRANSVERSE_BIOT_LIMIT
 from finback.parameters import UNMEASURED_AIR
 from finback.quantity import format_number, pretty_unit
 from finback.rig import Rig
+from finback.routes import Outcome
 from finback.summaries import OF_THE_JOINT
 from finback.thermocouples import ThermocoupleClass
 from finback.wording import listed, quoted
@@ -43,6 +43,7 @@ def collect(
         *_heater(found, best),
         *_unread_air(rig, found, best),
         *_convergence(sampler),
+        *_disagreement(best),
         *rig.assumed,
     ]
     gravity = {"fault": 0, "caution": 1, "note": 2}
@@ -180,6 +181,17 @@ def _convergence(sampler: SamplerRecord) -> list[Finding]:
         f"{sampler.ess_min:.0f}): treat every interval as provisional."
     )
     return [Finding("not-converged", "caution", message)]
+
+
+def _disagreement(best: Outcome) -> list[Finding]:
+    """Return a finding where the Markov chain and the weighted draws see a quantity differently."""
+    if not best.disagreeing:
+        return []
+    message = (
+        f"The Markov chain and weighted draws of the posterior disagree about {', '.join(best.disagreeing)}: "
+        "treat their intervals as provisional."
+    )
+    return [Finding("not-converged", "caution", message, evidence={"quantities": len(best.disagreeing)})]
 
 
 def compare_in_words(scores: Sequence[CandidateScore], tip_stated: bool) -> str:

@@ -11,13 +11,11 @@ from numpy.typing import NDArray
 
 from finback import proposal as proposals
 from finback.laplace import LogDensity
-from finback.proposal import Proposal
 from finback.sampling import Chain
 
 Array = NDArray[np.float64]
 
 DRAWS = 6000
-RESAMPLED = 2000
 TOLERANCE = 1e-10
 MAX_ROUNDS = 1000
 
@@ -63,25 +61,3 @@ def bridge(log_density: LogDensity, chain: Chain, seed: np.random.SeedSequence) 
     bottom = 1 / (share * a + (1 - share) * ratio)
     variance = np.var(top) / np.mean(top) ** 2 / DRAWS + np.var(bottom) / np.mean(bottom) ** 2 / n_ours
     return Evidence(centre + float(np.log(ratio)), float(np.sqrt(variance)))
-
-
-@dataclass(frozen=True, slots=True)
-class Weighted:
-    """A quick look at a posterior by importance sampling: evidence, and draws resampled by weight (n, p)."""
-
-    evidence: Evidence
-    draws: Array
-
-
-def importance(log_density: LogDensity, proposal: Proposal, random: np.random.RandomState) -> Weighted:
-    """Return the log evidence by importance sampling from a proposal, and draws resampled from it."""
-    z = proposal.draw(DRAWS, random)
-    ratio = log_density(z) - proposal.log_density(z)
-    highest = float(ratio.max())
-    weights = np.exp(ratio - highest)
-    mean = float(weights.mean())
-    error = float(weights.std() / mean / np.sqrt(DRAWS))
-    # systematic resampling: one random number, the least added scatter
-    targets = (random.random_sample() + np.arange(RESAMPLED)) / RESAMPLED
-    chosen = np.searchsorted(np.cumsum(weights) / weights.sum(), targets)
-    return Weighted(Evidence(highest + float(np.log(mean)), error), z[np.minimum(chosen, DRAWS - 1)])

@@ -12,11 +12,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from finback import derived, identifiability, parameters
-from finback.candidates import Outcome
 from finback.derived import DERIVED
 from finback.estimate import DeterminedBy, Summary
 from finback.identifiability import Information
 from finback.linear import LinearAnswers
+from finback.routes import Outcome
 
 Array = NDArray[np.float64]
 

@@ -13,7 +13,7 @@ import baseline
 import numpy as np
 import pytest
 
-from finback import candidates, diagnostics, optimum, posing, proposal, readings, rig, sampling
+from finback import candidates, diagnostics, optimum, posing, proposal, readings, rig, routes, sampling
 from finback.analysis import fit
 from finback.datasets import path
 from finback.models import solve
@@ -69,7 +69,7 @@ def test_forward_evaluation(benchmark, problem):
 def test_sampling(benchmark, problem):
     diagnostics.ensemble_rhat(np.random.default_rng(0).normal(size=(4, 100, 2, 1)))  # loads arviz
     point = optimum.fit(problem)
-    start = proposal.from_mode(candidates.find_mode(point))
+    start = proposal.from_mode(routes.find_mode(point))
     seed = np.random.SeedSequence(1)
 
     def draw():

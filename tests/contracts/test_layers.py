@@ -41,7 +41,7 @@ LAYERS = (
     "checks problem expectation outline",
     "posing derived",
     "optimum estimate",
-    "identifiability",
+    "identifiability routes",
     "candidates",
     "geometry",
     "linear",

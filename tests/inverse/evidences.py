@@ -7,7 +7,7 @@ from densities import LogDensity
 from rigs import Truth, draw, pin_rig
 from scipy.stats import multivariate_normal
 
-from finback import candidates, evidence, optimum, posing, sampling
+from finback import evidence, fast, optimum, posing, routes, sampling
 from finback import proposal as proposals
 from finback.evidence import Evidence
 from finback.laplace import Mode
@@ -17,14 +17,14 @@ from finback.sampling import Settings
 
 
 def both(log_density: LogDensity, mode: Mode, seed: int = 1) -> dict[str, Evidence]:
-    """The evidence by bridge sampling and by importance sampling."""
+    """The evidence by bridge sampling and by the fast route."""
     random = np.random.RandomState(seed)
     proposal, efficiency = proposals.adapt(log_density, proposals.from_mode(mode), random)
     seeds = np.random.SeedSequence(seed).spawn(2)
     chain = sampling.sample(log_density, proposal, efficiency, seeds[0], Settings(), lambda _: None)
     return {
         "bridge": evidence.bridge(log_density, chain, seeds[1]),
-        "importance": evidence.importance(log_density, proposal, random).evidence,
+        "fast": fast.sample(log_density, proposal, np.random.default_rng(seed)).evidence,
     }
 
 
@@ -67,4 +67,4 @@ def fin_problem(noise: float | None) -> tuple[Problem, Mode]:
     readings, _ = draw(rig, Truth(joint=None), np.random.default_rng(3))
     problem = posing.pose(rig, readings, Candidate("convective", joint=False, joint_possible=False))
     point = optimum.fit(problem)
-    return point.problem, candidates.find_mode(point)
+    return point.problem, routes.find_mode(point)

@@ -7,7 +7,7 @@ import pytest
 from rigs import TRUTH, Truth, draw, exact_readings, pin_rig
 from scipy.stats import multivariate_normal
 
-from finback import candidates, diagnostics, evidence, optimum, posing
+from finback import candidates, diagnostics, fast, optimum, posing, routes
 from finback import proposal as proposals
 from finback.problem import Candidate
 from finback.quantity import Quantity
@@ -52,13 +52,13 @@ def test_an_unstated_tip_is_compared() -> None:
 
 
 @pytest.fixture(scope="module")
-def outcomes() -> list[candidates.Outcome]:
+def outcomes() -> list[routes.Outcome]:
     rig = pin_rig(places=("air",), position_sd=0.0, conductivity=STATED_K)
     readings, _ = draw(rig, Truth(joint=None), np.random.default_rng(8))
     return candidates.compare(rig, readings, 1, quiet)
 
 
-def test_outcomes_come_most_probable_first(outcomes: list[candidates.Outcome]) -> None:
+def test_outcomes_come_most_probable_first(outcomes: list[routes.Outcome]) -> None:
     logs = [o.evidence.log for o in outcomes]
     assert logs == sorted(logs, reverse=True)
     found = candidates.probabilities(outcomes)
@@ -66,7 +66,7 @@ def test_outcomes_come_most_probable_first(outcomes: list[candidates.Outcome]) -
     assert outcomes[0].sampled
 
 
-def test_scores_follow_their_definitions(outcomes: list[candidates.Outcome]) -> None:
+def test_scores_follow_their_definitions(outcomes: list[routes.Outcome]) -> None:
     outcome = next(o for o in outcomes if o.problem.candidate.name == "convective tip")
     problem, point = outcome.problem, outcome.point
     found = candidates.score(outcome, 0.5)
@@ -81,7 +81,7 @@ def test_scores_follow_their_definitions(outcomes: list[candidates.Outcome]) -> 
     assert (found.probability, found.log_evidence) == (0.5, outcome.evidence.log)
 
 
-def test_leave_one_out_is_the_evidence_that_each_reading_adds(outcomes: list[candidates.Outcome]) -> None:
+def test_leave_one_out_is_the_evidence_that_each_reading_adds(outcomes: list[routes.Outcome]) -> None:
     # p(y_i | the others) = Z / Z without y_i, by importance sampling: exact, with no pointwise density in it
     outcome = next(o for o in outcomes if o.problem.candidate.name == "convective tip")
     rig, readings = outcome.problem.rig, outcome.problem.readings
@@ -90,8 +90,8 @@ def test_leave_one_out_is_the_evidence_that_each_reading_adds(outcomes: list[can
         excluded = {} if without is None else {without: "left out"}
         point = optimum.fit(posing.pose(rig, Readings("r", readings.values, excluded=excluded), PLAIN))
         log_density, random = point.problem.log_density, np.random.RandomState(1)
-        fitted, _ = proposals.adapt(log_density, proposals.from_mode(candidates.find_mode(point)), random)
-        return evidence.importance(log_density, fitted, random).evidence.log
+        fitted, _ = proposals.adapt(log_density, proposals.from_mode(routes.find_mode(point)), random)
+        return fast.sample(log_density, fitted, np.random.default_rng(1)).evidence.log
 
     whole = log_evidence(None)
     # without its only sensor the air has another prior; with it, readings along the fin alone are left out
@@ -140,7 +140,7 @@ def test_the_mode_is_found_where_least_squares_leaves_a_combination_open() -> No
     rig = pin_rig(places=("plate", "air"))
     point = optimum.fit(posing.pose(rig, exact_readings(rig), Candidate("convective", True, True)))
     assert point.point.rank == point.problem.n_physical - 1
-    mode = candidates.find_mode(point)
+    mode = routes.find_mode(point)
     spread = np.sqrt(np.diag(mode.root @ mode.root.T))
     h, k = (point.problem.names.index(name) for name in ("h", "k"))
     # h/k and R''·k are known well, so that the three priors, factors of 10, 10 and 5, say one thing together

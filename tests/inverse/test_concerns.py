@@ -45,7 +45,8 @@ def best(
         bound_sds=0.1 * np.ones(len(bounds)),
     )
     candidate = SimpleNamespace(joint_possible=joint)
-    return SimpleNamespace(problem=SimpleNamespace(measured=measured, candidate=candidate, fixed={}))
+    problem = SimpleNamespace(measured=measured, candidate=candidate, fixed={})
+    return SimpleNamespace(problem=problem, disagreeing=())
 
 
 def rig(conductivity: Quantity | None = None, assumed: tuple[Finding, ...] = ()) -> SimpleNamespace:

@@ -10,12 +10,9 @@ from densities import (
     gaussian,
     log_gamma,
     log_gamma_mode,
-    log_gamma_moments,
 )
 from evidences import both, fin_problem, gauss_hermite, linear_gaussian
 
-from finback import evidence
-from finback import proposal as proposals
 from finback.laplace import Mode
 
 
@@ -49,18 +46,6 @@ def test_a_fin_against_quadrature(noise: float | None) -> None:
     for name, found in both(problem.log_density, mode).items():
         assert found.log == pytest.approx(exact, abs=0.02), name
         assert abs(found.log - exact) < 4 * found.error, name
-
-
-def test_resampled_draws_follow_the_density() -> None:
-    shapes = np.array([0.7, 2.0, 9.0])
-    log_density = log_gamma(shapes)
-    proposal, _ = proposals.adapt(
-        log_density, proposals.from_mode(log_gamma_mode(shapes)), np.random.RandomState(1)
-    )
-    found = evidence.importance(log_density, proposal, np.random.RandomState(2))
-    mean, sd = log_gamma_moments(shapes)
-    assert np.abs((found.draws.mean(axis=0) - mean) / sd).max() < 4 / np.sqrt(500)
-    np.testing.assert_allclose(found.draws.std(axis=0), sd, rtol=0.1)
 
 
 def test_the_seed_alone_decides() -> None:

@@ -18,7 +18,7 @@ from evidences import fin_problem, gauss_hermite
 from rigs import Truth, draw, pin_rig
 from scipy.stats import chi2, norm
 
-from finback import candidates, fast, optimum, posing, readings, rig, sampling
+from finback import candidates, fast, optimum, posing, readings, rig, routes, sampling
 from finback import proposal as proposals
 from finback.datasets import path
 from finback.fast import FastPosterior
@@ -146,8 +146,8 @@ def long_chain(point: LeastSquares, fitted: tuple[Proposal, float]) -> np.ndarra
 
 
 def fitted(point: LeastSquares) -> tuple[Proposal, float]:
-    mode = candidates.find_mode(point)
-    return candidates._fit_proposal(point.problem, mode, np.random.RandomState(1))
+    mode = routes.find_mode(point)
+    return routes.fit_proposal(point.problem, mode, np.random.RandomState(1))
 
 
 def assert_agreement(found: FastPosterior, chain: np.ndarray) -> None:
@@ -187,7 +187,7 @@ def unresolved() -> LeastSquares:
 
 def test_an_unresolved_joint_is_caught_where_only_its_mode_is_known() -> None:
     problem = unresolved().problem
-    naive = proposals.from_mode(candidates.find_mode(unresolved()))
+    naive = proposals.from_mode(routes.find_mode(unresolved()))
     for seed in range(5):
         found = fast.sample(problem.log_density, naive, np.random.default_rng(seed))
         khats = dict(zip(problem.names, found.khat_of(found.z), strict=True))

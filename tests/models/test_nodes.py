@@ -18,6 +18,7 @@ from finback.models import (
     Table,
     UniformCoefficient,
     VaryingCoefficient,
+    nonlinear,
     pin,
     solve,
 )
@@ -132,8 +133,7 @@ def test_any_law_on_any_shape_from_short_to_endless(name):
             for value in (found.temperatures, found.base_heat, found.tip_heat, found.tip_temperature):
                 assert np.all(np.isfinite(value))
             assert np.all(np.abs(found.temperatures - (HOT + AIR) / 2) <= excess / 2 + 1e-6 * excess)
-            # From m L = 60 on a concave tip is so cold that finer nodes seem to change it: that is flagged.
-            assert np.all(found.converged | (("concave" in name) & (SHORT_TO_LONG >= 60)))
+            assert np.all(found.converged)
         assert others[-1].base_heat == pytest.approx(linear.base_heat, rel=1e-8)
         assert others[-1].temperatures == pytest.approx(linear.temperatures, rel=0, abs=1e-7 * excess)
 
@@ -152,6 +152,20 @@ def test_heat_does_not_reach_the_tip_of_a_concave_fin(name):
         np.array([]),
     )
     assert lossless.tip_temperature == pytest.approx(HOT, rel=1e-12)
+
+
+@pytest.mark.parametrize("name", [name for name in ALL if "concave" in name])
+def test_a_cold_tip_is_as_cold_as_the_air_however_long_the_fin_is(name):
+    """Temperatures fall from base to tip, to that of the air: rounding near the tip is none of theirs."""
+    profile, excess = ALL[name], HOT - AIR
+    law = PowerCoefficient(coefficient(profile, np.array([6.0, 60.0, 300.0, 1e3, 1e4]), K), 0.25, excess)
+    fin, base = Fin(profile, K, law, AdiabaticTip()), BaseTemperature(HOT)
+    x = profile.length * np.array([0.0, 0.3, 0.7, 0.9, 0.97, 0.99, 0.995, 0.998, 0.9985, 0.999])
+    found = solve(fin, base, AIR, x)
+    assert np.all(found.converged)
+    assert found.temperatures.min() >= AIR - 1e-6 * excess
+    assert np.diff(found.temperatures, axis=1).max() <= 1e-6 * excess
+    assert not np.any(nonlinear.solve(fin, base, AIR, x, steps=2).converged[1:])
 
 
 def test_a_table_of_many_rows_is_the_shape_it_follows():

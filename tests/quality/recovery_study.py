@@ -1,8 +1,7 @@
 """Recover the truth of synthetic runs of every profile and every surface law; print as JSON what came of it.
 
 Run `python tests/quality/recovery_study.py cone 0 100` for the first hundred runs of an invented cone. The
-true candidate is posed, so that what is tested is its posterior: by importance sampling from the proposal
-that the sampler starts with, whose weighted draws take a fraction of a second. Every error that the rig
+true candidate is posed, so that what is tested is its posterior, by the fast route. Every error that the rig
 states is drawn anew for each run, and so is what is known of a law beforehand (exponent, rise, emissivity),
 from its prior.
 """
@@ -18,7 +17,7 @@ sys.path.insert(0, str(Path(__file__).parents[1] / "inverse"))
 
 from rigs import REFERENCE, ZERO, Truth, draw
 
-from finback import candidates, derived, evidence, geometry, optimum, posing
+from finback import geometry, posing, routes
 from finback.parameters import default, stated
 from finback.problem import Candidate
 from finback.quantity import Quantity
@@ -92,13 +91,9 @@ def repeat(name: str, rig: Rig, number: int) -> dict[str, list[float]]:
     law = drawn_law(name, random)
     readings, truth = draw(rig, Truth(tip=rig.tip, table=table, **law), random)
     candidate = Candidate(rig.tip, True, True, rig.laws[0] if rig.laws else "uniform")
-    point = optimum.fit(posing.pose(rig, readings, candidate))
-    mode = candidates.find_mode(point)
-    generator = np.random.RandomState(number)
-    fitted, _ = candidates._fit_proposal(point.problem, mode, generator)
-    quick = evidence.importance(point.problem.log_density, fitted, generator)
-    values = derived.evaluate(point.problem, quick.draws)
-    values = geometry.spread(point.problem, mode.z, quick.draws, values, random)
+    route = routes.weigh(posing.pose(rig, readings, candidate), np.random.SeedSequence(number))
+    problem, posterior = route.point.problem, route.fast
+    values = geometry.spread(problem, route.mode.z, posterior.z, route.quantities, random)
     solution = truth.solve(rig, np.zeros(1))
     h = truth.h
     if truth.exponent is not None:
@@ -113,7 +108,7 @@ def repeat(name: str, rig: Rig, number: int) -> dict[str, list[float]]:
     true |= {"heat": float(solution.base_heat[0]), "base_temperature": float(solution.base_temperature[0])}
     found = {}
     for quantity, value in true.items():
-        low, high = np.quantile(values[quantity], (0.025, 0.975))
+        low, high = posterior.quantiles(values[quantity], (0.025, 0.975))
         found[quantity] = [value, float(low), float(high)]
     return found
 

@@ -26,7 +26,7 @@ def fin() -> tuple[LogDensity, Mode, float]:
 def test_stated_errors_are_honest(pose: Callable[[], tuple[LogDensity, Mode, float]]) -> None:
     log_density, mode, exact = pose()
     found = [both(log_density, mode, seed) for seed in SEEDS]
-    for name in ("bridge", "importance"):
+    for name in ("bridge", "fast"):
         scores = np.array([(each[name].log - exact) / each[name].error for each in found])
         assert 0.6 < scores.std(ddof=1) < 1.6, name
         assert abs(scores.mean()) < 0.6, name  # four standard errors of the mean of sixty

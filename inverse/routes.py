@@ -1,0 +1,171 @@
+"""Two routes to the posterior of one candidate: weighted draws in milliseconds, and a Markov chain.
+
+Both start from the least-squares fit, the posterior's mode and a proposal fitted to it. The fast route weighs
+draws of the proposal, with a k-hat for each quantity; the chain takes them as moves. Where both may be
+trusted they must agree.
+"""
+
+import math
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import derived, evidence, fast, laplace, optimum, sampling
+from finback import proposal as proposals
+from finback.evidence import Evidence
+from finback.fast import FastPosterior
+from finback.laplace import Mode
+from finback.optimum import LeastSquares
+from finback.problem import Problem
+from finback.proposal import Proposal
+from finback.sampling import Settings
+
+Array = NDArray[np.float64]
+
+KEPT_DRAWS = 2500  # an ensemble
+CHAINS, RESAMPLED = 4, 1000  # of a candidate that is not sampled by MCMC
+SAME_MEAN, SAME_SD = 0.1, 0.1  # of its standard deviation, by which two routes may see a quantity differently
+LADDER_FITS = 0.1  # efficiency below which a ladder has missed its posterior: readings without any error
+SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """What one candidate made of the readings.
+
+    `problem` with its noise linearised; `point`, its least-squares fit; `mode`; `draws` (chains, n, p);
+    `evidence`; `khat`, the largest of any quantity by the fast route; how the draws were made: `ess_min`,
+    `rhat_max`, `converged` (None, None, True where they are those of the fast route); `disagreeing`, the
+    quantities that both routes were trusted with and see differently.
+    """
+
+    problem: Problem
+    point: LeastSquares
+    mode: Mode
+    draws: Array
+    evidence: Evidence
+    ess_min: float | None
+    rhat_max: float | None
+    converged: bool
+    n_draws: int
+    khat: float = 0.0
+    disagreeing: tuple[str, ...] = ()
+
+    @property
+    def sampled(self) -> bool:
+        """Whether the draws come from MCMC."""
+        return self.ess_min is not None
+
+
+@dataclass(frozen=True)
+class Route:
+    """One candidate by the fast route: fit, mode, proposal with its efficiency, weighted draws."""
+
+    point: LeastSquares
+    mode: Mode
+    proposal: Proposal
+    efficiency: float
+    fast: FastPosterior
+    quantities: Mapping[str, Array]
+    khats: Mapping[str, float]
+    seeds: Sequence[np.random.SeedSequence]
+
+    @property
+    def khat(self) -> float:
+        """The largest k-hat of any quantity."""
+        return max(self.khats.values())
+
+    def outcome(self) -> Outcome:
+        """Return the outcome with draws resampled by their weights, dealt out to chains."""
+        random = np.random.default_rng(self.seeds[2])
+        chosen = random.permutation(self.fast.resample(CHAINS * RESAMPLED, random))
+        draws = self.fast.z[chosen].reshape(CHAINS, RESAMPLED, -1)
+        evidence_of = self.fast.evidence
+        return Outcome(
+            self.point.problem, self.point, self.mode, draws, evidence_of, None, None, True, len(self.fast.z),
+            self.khat,
+        )  # fmt: skip
+
+    def sampled(self, settings: Settings, progress: Callable[[float], None]) -> Outcome:
+        """Return the outcome with draws by MCMC, and how far they bear the fast route out."""
+        problem = self.point.problem
+        chain = sampling.sample(
+            problem.log_density, self.proposal, self.efficiency, self.seeds[1], settings, progress
+        )
+        found = evidence.bridge(problem.log_density, chain, self.seeds[2])
+        if self.khats["z"] <= fast.TRUSTED and self.fast.evidence.error < found.error:
+            found = self.fast.evidence
+        ensembles, steps, walkers, p = chain.z.shape
+        flat = chain.z.reshape(ensembles, steps * walkers, p)
+        kept = flat[:, np.linspace(0, steps * walkers - 1, KEPT_DRAWS).astype(int)]
+        return Outcome(
+            problem, self.point, self.mode, kept, found, chain.ess_min, chain.rhat_max, chain.converged,
+            chain.n_draws, self.khat, self._disagreeing(kept) if chain.converged else (),
+        )  # fmt: skip
+
+    def _disagreeing(self, draws: Array) -> tuple[str, ...]:
+        """Return the quantities whose mean or sd by the chain is another than by the fast route."""
+        by_chain = derived.evaluate(self.point.problem, draws.reshape(-1, draws.shape[-1]))
+        found = []
+        for name, values in self.quantities.items():
+            if self.khats[name] > fast.TRUSTED:
+                continue
+            mean, sd = float(self.fast.mean(values)), float(self.fast.sd(values))
+            other_mean, other_sd = float(by_chain[name].mean()), float(by_chain[name].std())
+            if abs(other_mean - mean) > SAME_MEAN * sd or abs(other_sd - sd) > SAME_SD * sd:
+                found.append(name)
+        return tuple(found)
+
+
+def weigh(problem: Problem, seed: np.random.SeedSequence) -> Route:
+    """Fit one candidate and weigh draws of a proposal that is fitted to its posterior.
+
+    Arguments: problem; seed, of three streams: proposal and lattice, chain, bridge or dealing.
+    """
+    seeds = seed.spawn(3)
+    point = optimum.fit(problem)
+    mode = find_mode(point)
+    random = np.random.RandomState(np.random.MT19937(seeds[0]))
+    proposal, efficiency = fit_proposal(point.problem, mode, random)
+    weighted = fast.sample(point.problem.log_density, proposal, np.random.default_rng(seeds[0]))
+    quantities = {
+        name: values
+        for name, values in derived.evaluate(point.problem, weighted.z).items()
+        if np.ptp(values) > 0 and np.isfinite(values).all()
+    }
+    khats = dict(zip(quantities, weighted.khat_of(np.stack([*quantities.values()], axis=1)), strict=True))
+    khats = {"z": weighted.khat, **{name: float(khat) for name, khat in khats.items()}}
+    return Route(point, mode, proposal, efficiency, weighted, quantities, khats, seeds)
+
+
+def find_mode(point: LeastSquares) -> Mode:
+    """Find the posterior's mode from the least-squares optimum; the scale is guessed from its information."""
+    problem, n = point.problem, point.problem.n_physical
+    stated = np.where(problem.is_stated[:n], 0.0, 1.0)  # stated priors are among the residuals already
+    precision = point.point.jacobian.T @ point.point.jacobian + np.diag(stated / problem.prior_sd[:n] ** 2)
+    scale = 1 / np.sqrt(np.diag(precision))
+    weights, axes = np.linalg.eigh(precision * np.outer(scale, scale))
+    root = np.zeros((len(point.z), len(point.z)))
+    root[:n, :n] = scale[:, None] * (axes / np.sqrt(np.maximum(weights, SMALLEST_WEIGHT)))
+    if problem.noise.estimated:
+        root[n, n] = math.sqrt(0.5 / max(point.degrees_of_freedom, 1))
+    start = np.clip(
+        point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd
+    )
+    return laplace.find_mode(problem.log_density, start, root)
+
+
+def fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) -> tuple[Proposal, float]:
+    """Return a proposal fitted to the posterior, and its efficiency [1].
+
+    An estimated noise makes the posterior a funnel, and its mode may be a spike far down in it, where plate
+    and air fit their readings without any noise: a ladder starts from the whole of it.
+    """
+    if problem.noise.estimated:
+        ladder = proposals.ladder(problem.log_density, mode)
+        found = proposals.adapt(problem.log_density, ladder, random)
+        if found[1] >= LADDER_FITS:
+            return found
+    return proposals.adapt(problem.log_density, proposals.from_mode(mode), random)
