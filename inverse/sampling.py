@@ -10,7 +10,7 @@ move is not used: it is biased in the released version.
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -92,22 +92,32 @@ def sample(
         ensembles.run(target - steps)
         steps = target
         z = ensembles.chain
-        ess, rhat, autocorrelation = _judge(z)
-        wanted = settings.autocorrelation_times * autocorrelation
-        converged = bool(steps >= wanted and rhat <= settings.rhat and ess >= settings.ess)
+        found = judge(z, settings)
+        wanted = settings.autocorrelation_times * found.autocorrelation
         progress(min(steps / max(wanted, 1.0), 1.0))
-        if converged or steps >= settings.max_steps:
-            return Chain(z, ensembles.log_density, ess, rhat, autocorrelation, converged)
+        if found.converged or steps >= settings.max_steps:
+            return Chain(z, ensembles.log_density, *found)
         target = int(min(max(GROWTH * wanted, steps + settings.block), 2 * steps, settings.max_steps))
 
 
-def _judge(z: Array) -> tuple[float, float, float]:
-    """Return smallest ESS, largest R-hat, longest autocorrelation time [steps] of draws (e, steps, w, p)."""
+class Judgement(NamedTuple):
+    """What draws say of themselves: smallest ESS, largest R-hat, longest autocorrelation time [steps]."""
+
+    ess_min: float
+    rhat_max: float
+    autocorrelation: float
+    converged: bool
+
+
+def judge(z: Array, settings: Settings) -> Judgement:
+    """Judge the draws (ensembles, steps, walkers, p) of a chain so far."""
     from finback import diagnostics
 
     some = z[:, :, :: max(1, z.shape[2] // WALKERS_FOR_AUTOCORRELATION)]
     longest = max(autocorrelation_time(ensemble) for ensemble in some)
-    return diagnostics.ensemble_ess(z), diagnostics.ensemble_rhat(z), longest
+    ess, rhat = diagnostics.ensemble_ess(z), diagnostics.ensemble_rhat(z)
+    long_enough = z.shape[1] >= settings.autocorrelation_times * longest
+    return Judgement(ess, rhat, longest, bool(long_enough and rhat <= settings.rhat and ess >= settings.ess))
 
 
 def autocorrelation_time(draws: Array) -> float:
