@@ -27,6 +27,11 @@ PLACES = np.linspace(0.0, 1.0, 129)
 """Places x/L [1] between which a fin is looked at for kinks."""
 ROUNDING = 1e-9
 """Excess over a kink's temperature [1], over the fin's range, that is none."""
+CLOSE = 1e-6
+"""How far beyond a kink's temperature [1], over its range, a fin has to go for the kink to count.
+
+A long fin settles at the air's temperature, and passes it by as much as is left of errors on the way.
+"""
 
 
 def of_side(cases: Cases) -> tuple[Values, ...]:
@@ -40,14 +45,17 @@ def of_solid(cases: Cases) -> tuple[Values, ...]:
     return tuple(getattr(cases.conductivity, "kinks", ()))
 
 
-def passed(temperatures: Array, levels: tuple[Values, ...], ends_held: bool) -> Flags:
+def passed(temperatures: Array, levels: tuple[Values, ...], tip_held: bool) -> Flags:
     """Tell in which fins a kink lies among the temperatures [K]: (n_places, n_sets) -> (n_sets,).
 
-    Where both ends are held, one that is just there counts as well.
+    Where the tip is held, the last of them, a kink at its very temperature counts as well.
     """
     low, high = temperatures.min(axis=0), temperatures.max(axis=0)
-    nothing = ROUNDING * (low - high if ends_held else high - low)
-    found = [(low < level - nothing) & (level + nothing < high) for level in levels]
+    nearly = CLOSE * (high - low)
+    found = [(low + nearly < level) & (level < high - nearly) for level in levels]
+    if tip_held:
+        nothing = ROUNDING * (high - low)
+        found += [(np.abs(temperatures[-1] - level) <= nothing) & (high > low) for level in levels]
     return np.asarray(np.any(found, axis=0))
 
 

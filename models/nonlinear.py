@@ -42,6 +42,8 @@ NO_HEAT = 1e-6
 """Share [1] of what a fin between held ends could conduct that counts as no heat."""
 SLACK = 100.0
 """Times these accuracies [1] that the finest nodes may change a set that counts as converged."""
+ROUNDING = 10.0
+"""Times the residual of a solved fin [1] that rounding may be of the potential beside its nodes."""
 CLOSER = 0.5
 """Share of these accuracies [1] to which a set with a kink has to keep."""
 ENOUGH = 24
@@ -206,10 +208,15 @@ class _Stand:
         block, state = self.block, self.state
         at = responses(block.shape, block.plan, positions.tobytes())
         across = state.base - held_potential(block.nodes, block.cases)
-        found: Array = (
-            state.base - at.share[:, None] * across - at.fall @ state.loads + at.values @ state.residual
-        )
-        return found
+        integrated = state.base - at.share[:, None] * across - at.fall @ state.loads
+        if not block.nodes.grid.cold_tip:
+            return np.asarray(integrated + at.values @ state.residual)
+        # Near a tip that heat does not reach rounding is large, and the residual is nothing else: there the
+        # polynomials through the nodes are better than the integral of their fluxes.
+        through_nodes = at.values @ state.u
+        beside = integrated + at.values @ state.residual - through_nodes
+        rounding = ROUNDING * (np.abs(at.values) @ np.abs(state.residual))
+        return np.asarray(through_nodes + np.sign(beside) * np.maximum(np.abs(beside) - rounding, 0.0))
 
     def passes(self, levels: tuple[Values, ...]) -> Flags:
         """Tell in which sets one of several temperatures [K] lies within the fin, shape (n_sets,)."""

@@ -110,10 +110,11 @@ def test_a_tip_held_at_a_level_has_half_a_cell_and_none_is_put_elsewhere():
 
 def test_what_passes_a_level():
     temperatures = np.array([[400.0, 310.0, 300.0, 300.0], [300.0, 300.0, 290.0, 300.0]])
-    assert kinks.passed(temperatures, (305.0,), ends_held=False).tolist() == [True, True, False, False]
-    assert kinks.passed(temperatures, (300.0,), ends_held=False).tolist() == [False] * 4
-    assert kinks.passed(temperatures, (300.0,), ends_held=True).tolist() == [True, True, True, False]
-    assert kinks.passed(temperatures, (280.0, 395.0), ends_held=False).tolist() == [True, False, False, False]
+    assert kinks.passed(temperatures, (305.0,), tip_held=False).tolist() == [True, True, False, False]
+    assert kinks.passed(temperatures, (300.0,), tip_held=False).tolist() == [False] * 4
+    assert kinks.passed(temperatures, (300.0,), tip_held=True).tolist() == [True, True, False, False]
+    assert not kinks.passed(temperatures, (300.0 + 1e-5,), tip_held=False).any()
+    assert kinks.passed(temperatures, (280.0, 395.0), tip_held=False).tolist() == [True, False, False, False]
 
 
 def test_laws_tell_their_kinks():
