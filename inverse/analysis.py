@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 import finback
-from finback import candidates, checks, concerns, derived, expectation, geometry, summaries
+from finback import budget, candidates, checks, concerns, derived, expectation, geometry, summaries
 from finback import readings as readings_file
 from finback import rig as rig_file
 from finback.estimate import (
@@ -79,6 +79,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
     evaluated = [_quantities(outcome) for outcome in outcomes]
     mixture = summaries.mix(outcomes, probabilities, evaluated)
     found = _summaries(outcomes, probabilities, evaluated, mixture)
+    origin = budget.collect(outcomes, probabilities, evaluated, found)
     best = outcomes[0]
     table = _table(best)
     quality = _quality(best, table)
@@ -115,6 +116,9 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         provenance=_provenance(rig, readings),
         expected=healthy,
         implied_speed=implied,
+        budget=origin.lines,
+        expanded=origin.expanded,
+        improvement=origin.improvement,
     )
 
 

@@ -3,7 +3,7 @@
 import math
 import textwrap
 from collections.abc import Mapping
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, field
 from html import escape
 from typing import Any, Literal
 
@@ -20,6 +20,7 @@ from finback.rig import Rig
 Array = NDArray[np.float64]
 Status = Literal["ok", "caution", "failed"]
 DeterminedBy = Literal["readings", "prior", "both"]
+BudgetKind = Literal["random", "systematic", "prior"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -142,6 +143,45 @@ class FitQuality:
 
 
 @dataclass(frozen=True, slots=True)
+class BudgetLine:
+    """One source of uncertainty, and its share [1] of the variance of each quantity by name.
+
+    The shares of a quantity add up to one over all lines.
+    """
+
+    source: str
+    kind: BudgetKind
+    share_of_variance: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True)
+class Expanded:
+    """Value ± U of one quantity, in its reported unit, U being k = 2 times the combined standard uncertainty.
+
+    All of it is linear at the posterior's mode (JCGM 100:2008, clauses 5 and 6); `linear`: whether it says
+    what the posterior's 95 % interval says.
+    """
+
+    value: float
+    expanded: float
+    linear: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Improvement:
+    """The one change of the rig that would narrow a quantity most.
+
+    `quantity` by name; `source`, a line of the budget; `change` in words; `sd_ratio` [1], the quantity's
+    standard uncertainty afterwards over that of now.
+    """
+
+    quantity: str
+    source: str
+    change: str
+    sd_ratio: float
+
+
+@dataclass(frozen=True, slots=True)
 class Provenance:
     """Where a result came from: versions by package, and SHA-256 of each input file by name."""
 
@@ -158,7 +198,8 @@ class Estimate:
     what the readings say of the candidates, `compared` one on which there are and why. `priors`: one line of
     text a parameter, of what was assumed. `expected`: the coefficient that a healthy fin should have, where
     the rig tells; `implied_speed`: the air speed that the estimated one implies, where the rig speaks of
-    moving air.
+    moving air. `budget`: where the uncertainty is from; `expanded`: value ± U by quantity; `improvement`:
+    what would help most, None where nothing helps much.
     """
 
     rig: Rig
@@ -179,6 +220,9 @@ class Estimate:
     provenance: Provenance
     expected: Expected | None = None
     implied_speed: ImpliedSpeed | None = None
+    budget: tuple[BudgetLine, ...] = ()
+    expanded: Mapping[str, Expanded] = field(default_factory=dict)
+    improvement: Improvement | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """Return the contents of estimate.json, in its key order; a number that is not determined is None."""
@@ -192,14 +236,21 @@ class Estimate:
             "candidates": [_rounded(asdict(score)) for score in self.candidates],
             "fit": _rounded(asdict(self.fit)),
             "sampler": _rounded(asdict(self.sampler)),
-            "budget": [],
+            "budget": [_rounded(asdict(line)) for line in self.budget],
             "findings": [
                 {"code": f.code, "severity": f.severity, "sensor": f.sensor, "message": f.message}
                 for f in self.findings
             ],
+            "expanded": {name: self._expanded(name) for name in self.expanded},
+            "improvement": None if self.improvement is None else _rounded(asdict(self.improvement)),
             **self._expectations(),
             "provenance": asdict(self.provenance),
         }
+
+    def _expanded(self, name: str) -> dict[str, Any]:
+        """Return value ± U of a quantity as estimate.json has it."""
+        unit = {**self.parameters, **self.derived}[name].unit
+        return {"unit": unit, **_rounded(asdict(self.expanded[name]))}
 
     def _expectations(self) -> dict[str, Any]:
         """Return what estimate.json says of a healthy fin, nothing where nothing is known of one."""

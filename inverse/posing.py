@@ -1,7 +1,8 @@
 """Posing a problem: which parameters a candidate has on a run, and what the noise of its readings is."""
 
 from collections.abc import Mapping
-from dataclasses import replace
+from dataclasses import dataclass, replace
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +20,8 @@ Array = NDArray[np.float64]
 SMALLEST_NOISE = 1e-6  # K or W; keeps two sensors that share all their error from being told apart exactly
 SMALLEST_REFERENCE = 1.0  # K
 LENGTH_STEP = 1e-4  # relative step of a length in the sensitivities
+
+ErrorKind = Literal["noise", "calibration", "position"]
 
 
 def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
@@ -75,13 +78,41 @@ def linearise(problem: Problem, z: Array) -> Problem:
     by_lengths = np.stack(slopes_by_length, axis=1) if lengths else None
     if by_lengths is not None:
         covariance = covariance + by_lengths @ by_lengths.T
-    spread = np.zeros(n)
-    slopes = _temperature_slopes(problem, z)
-    for i, sensor in enumerate(problem.measured.sensors):
-        if sensor.place == "fin":
-            spread[i] = (slopes[i] * sensor.position_sd) ** 2
+    spread = np.square(_by_positions(problem, z))
     noise = noises.build(covariance + np.diag(spread), estimated)
     return replace(problem, noise=noise, by_lengths=by_lengths)
+
+
+@dataclass(frozen=True, slots=True)
+class ErrorSource:
+    """One source of errors of the readings: its kind, the place whose sensors have it, and what it does.
+
+    `effect` (n, m): what one standard uncertainty of each of m independent errors makes of each of the n
+    readings [K, W].
+    """
+
+    kind: ErrorKind
+    place: str
+    effect: Array
+
+
+def error_sources(problem: Problem, z: Array, sigma: float) -> tuple[ErrorSource, ...]:
+    """Return the covariance of the readings by source: it is the sum of effect effect' over all of them.
+
+    Uncertain lengths are not among them: `Problem.by_lengths` holds theirs. Arguments: problem; z (p,), where
+    hole positions are linearised; sigma [K], the noise of a reading where that is estimated.
+    """
+    random, shared, places = _parts(problem.measured)
+    random = np.where(np.isnan(random), sigma, random)
+    found = []
+    for place in dict.fromkeys(places.tolist()):
+        here = places == place
+        found.append(ErrorSource("noise", place, np.diag(random)[:, here]))
+        found.append(ErrorSource("calibration", place, np.where(here, shared, 0.0)[:, None]))
+    if any(sensor.position_sd > 0 for sensor in problem.measured.sensors):
+        by_positions = _by_positions(problem, z)
+        found.append(ErrorSource("position", "fin", np.diag(by_positions)[:, places == "fin"]))
+    return tuple(source for source in found if source.effect.any())
 
 
 def _measure(rig: Rig, readings: Readings) -> tuple[Measured, dict[str, float]]:
@@ -120,12 +151,16 @@ def _random_and_shared(sensor: Sensor, value: float) -> tuple[float, float]:
     return random, sensor.calibration_at(value)
 
 
+def _parts(measured: Measured) -> tuple[Array, Array, NDArray[np.str_]]:
+    """Return random and common standard uncertainties of the readings [K, W], and their places, (n,) each."""
+    parts = [_random_and_shared(s, v) for s, v in zip(measured.sensors, measured.values, strict=True)]
+    random, shared = (np.array([p[i] for p in parts]) for i in (0, 1))
+    return random, shared, np.array([s.place for s in measured.sensors])
+
+
 def _stated_covariance(measured: Measured) -> tuple[Array, NDArray[np.bool_]]:
     """Return the stated part of the covariance (n, n) and which readings have an estimated noise (n,)."""
-    parts = [_random_and_shared(s, v) for s, v in zip(measured.sensors, measured.values, strict=True)]
-    random = np.array([p[0] for p in parts])
-    shared = np.array([p[1] for p in parts])
-    places = np.array([s.place for s in measured.sensors])
+    random, shared, places = _parts(measured)
     estimated = np.isnan(random)
     same_place = places[:, None] == places[None, :]
     covariance = np.where(same_place, np.outer(shared, shared), 0.0)
@@ -188,6 +223,16 @@ def _length_sensitivity(problem: Problem, z: Array, name: str) -> Array:
     up, down = (problem.predict(z[None], {name: length + sign * step})[0] for sign in (1, -1))
     slope: Array = (up - down) / (2 * step)
     return slope
+
+
+def _by_positions(problem: Problem, z: Array) -> Array:
+    """Return what one standard uncertainty of its hole's position makes of each reading [K], (n,)."""
+    found = np.zeros(len(problem.measured.sensors))
+    slopes = _temperature_slopes(problem, z)
+    for i, sensor in enumerate(problem.measured.sensors):
+        if sensor.place == "fin":
+            found[i] = slopes[i] * sensor.position_sd
+    return found
 
 
 def _temperature_slopes(problem: Problem, z: Array) -> Array:

@@ -46,6 +46,7 @@ LAYERS = (
     "geometry",
     "linear",
     "summaries concerns",
+    "budget",
     "analysis",
     "report report.phrases report.method",
     "report.comparison",

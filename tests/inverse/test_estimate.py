@@ -35,6 +35,8 @@ SUMMARY = ("unit", *NUMBERS, "determined_by")
 CANDIDATE = ("name", "probability", "log_evidence", "log_evidence_error", "loo", "aicc", "bic")
 FIT = ("residuals", "chi_square", "degrees_of_freedom", "p_value")
 SAMPLER = ("method", "draws", "ess_min", "rhat_max", "seed", "converged")
+LINE = ("source", "kind", "share_of_variance")
+EXPANDED = ("unit", "value", "expanded", "linear")
 FINDING = ("code", "severity", "sensor", "message")
 
 
@@ -73,6 +75,12 @@ def test_the_dictionary_keeps_the_contract(name: str, request: pytest.FixtureReq
     assert {"h_over_k", "m", "base_temperature", "heat", "efficiency"} <= set(found["derived"])
     for candidate in found["candidates"]:
         assert tuple(candidate) == CANDIDATE
+    assert found["budget"]
+    for line in found["budget"]:
+        assert tuple(line) == LINE
+        assert line["kind"] in ("random", "systematic", "prior")
+    for expanded in found["expanded"].values():
+        assert tuple(expanded) == EXPANDED
     probabilities = [candidate["probability"] for candidate in found["candidates"]]
     assert probabilities == sorted(probabilities, reverse=True)
     assert sum(probabilities) == pytest.approx(1.0, abs=1e-9)
