@@ -9,7 +9,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 import finback
-from finback import budget, candidates, checks, concerns, derived, expectation, geometry, summaries
+from finback import (
+    budget,
+    candidates,
+    checks,
+    concerns,
+    derived,
+    expectation,
+    geometry,
+    sensitivity,
+    summaries,
+)
 from finback import readings as readings_file
 from finback import rig as rig_file
 from finback.estimate import (
@@ -119,6 +129,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         budget=origin.lines,
         expanded=origin.expanded,
         improvement=origin.improvement,
+        sensitivity=sensitivity.of_joint(outcomes),
     )
 
 

@@ -182,6 +182,15 @@ class Improvement:
 
 
 @dataclass(frozen=True, slots=True)
+class Sensitivity:
+    """The candidates' probabilities by name with the prior of one parameter some `times_wider`."""
+
+    prior: str
+    times_wider: float
+    probabilities: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True)
 class Provenance:
     """Where a result came from: versions by package, and SHA-256 of each input file by name."""
 
@@ -199,7 +208,8 @@ class Estimate:
     text a parameter, of what was assumed. `expected`: the coefficient that a healthy fin should have, where
     the rig tells; `implied_speed`: the air speed that the estimated one implies, where the rig speaks of
     moving air. `budget`: where the uncertainty is from; `expanded`: value ± U by quantity; `improvement`:
-    what would help most, None where nothing helps much.
+    what would help most, None where nothing helps much; `sensitivity`: what a wider prior of the joint would
+    make of the candidates, None where no joint is compared.
     """
 
     rig: Rig
@@ -223,6 +233,7 @@ class Estimate:
     budget: tuple[BudgetLine, ...] = ()
     expanded: Mapping[str, Expanded] = field(default_factory=dict)
     improvement: Improvement | None = None
+    sensitivity: Sensitivity | None = None
 
     def to_dict(self) -> dict[str, Any]:
         """Return the contents of estimate.json, in its key order; a number that is not determined is None."""
@@ -243,6 +254,7 @@ class Estimate:
             ],
             "expanded": {name: self._expanded(name) for name in self.expanded},
             "improvement": None if self.improvement is None else _rounded(asdict(self.improvement)),
+            "sensitivity": None if self.sensitivity is None else _rounded(asdict(self.sensitivity)),
             **self._expectations(),
             "provenance": asdict(self.provenance),
         }

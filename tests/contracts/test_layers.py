@@ -46,7 +46,7 @@ LAYERS = (
     "geometry",
     "linear",
     "summaries concerns",
-    "budget",
+    "budget sensitivity",
     "analysis",
     "report report.phrases report.method",
     "report.comparison",
