@@ -22,6 +22,7 @@ Array = NDArray[np.float64]
 DETERMINED = (
     0.2  # of the default prior's variance: below it the prior adds at most a fifth of the information
 )
+CLEAR_OF_ZERO = 3.0  # standard deviations, from which a positive quantity is more than a limit
 NARROWED = 0.05  # of the standard deviation by the wide priors alone, to which a combination is known
 ALONE = 1.25  # a source decides alone when leaving out the other costs at most this factor in variance
 
@@ -49,6 +50,10 @@ class Information:
         from_nowhere = float(np.square(response) @ self.default)
         return from_nowhere <= DETERMINED * variance or variance <= NARROWED**2 * open_to
 
+    def clears_zero(self, gradient: Array, value: float) -> bool:
+        """Tell whether a positive quantity of this gradient (p,) and value lies clear of zero."""
+        return CLEAR_OF_ZERO**2 * self.variance(gradient) <= value**2
+
     def _response(self, gradient: Array, readings: bool, stated: bool) -> Array:
         precision = np.diag(self.default + stated * self.stated) + readings * self.readings
         scale = 1 / np.sqrt(np.diag(precision))
@@ -65,14 +70,19 @@ class Information:
         return "both"
 
 
-def information(problem: Problem, z: Array, sigma: float) -> Information:
-    """Return the information at a parameter vector z (p,) with the noise at sigma [K]."""
+def information(problem: Problem, z: Array, sigma: float, bounds: bool = True) -> Information:
+    """Return the information at a parameter vector z (p,) with the noise at sigma [K].
+
+    `bounds`: whether heaters count that only bound the heat. They exclude what lies beyond, and determine
+    nothing, however sharply they cut a posterior off.
+    """
     n = problem.n_physical
     rest = z[n:]
+    counted = len(problem.measured.values) + (len(problem.measured.bounds) if bounds else 0)
 
     def residuals(block: Array) -> Array:
         whole = np.concatenate([block, np.tile(rest, (len(block), 1))], axis=1)
-        return problem.whitened(whole, sigma)[0]
+        return problem.whitened(whole, sigma)[0][:, :counted]
 
     slopes = least_squares.jacobian(residuals, z[:n])
     physical = problem.parameters[:n]

@@ -23,6 +23,8 @@ Array = NDArray[np.float64]
 OF_THE_JOINT = ("joint", "joint_times_k")
 LIMITED = {"h": ("h",), "k": ("k",), "joint": ("joint",), "joint_times_k": ("k", "joint")}
 """Positive quantities that may have an upper limit only, and the parameters whose product each is."""
+POSITIVE = (*LIMITED, "h_over_k")
+"""Quantities that are more than a limit only where they lie clear of zero."""
 ONE_SIDED = 0.95  # probability of a limit where only a limit exists
 BEYOND = 3.0  # times its limit: where a quantity would have been seen, if the limit is the readings'
 
@@ -72,6 +74,7 @@ class Judge:
 
     outcome: Outcome
     information: Information
+    values: Mapping[str, float]
     gradients: Mapping[str, Array]
     linear: LinearAnswers
 
@@ -87,6 +90,8 @@ class Judge:
             determined = True
         else:
             determined = self.information.determines(gradient)
+            if name in POSITIVE:
+                determined = determined and self.information.clears_zero(gradient, self.values[name])
         least_squares, standard_error = self._least_squares(name)
         if absent or not determined:
             limit = self._upper_limit(name, draws)
@@ -147,8 +152,9 @@ def judge(outcome: Outcome) -> Judge:
     """Return the judge of one outcome, at its posterior mode."""
     problem, z = outcome.problem, outcome.mode.z
     sigma = float(np.exp(z[-1])) if problem.noise.estimated else outcome.point.sigma
-    information = identifiability.information(problem, z, sigma)
-    return Judge(outcome, information, derived.gradients(problem, z), LinearAnswers(outcome.point))
+    information = identifiability.information(problem, z, sigma, bounds=False)
+    values = {name: float(each[0]) for name, each in derived.evaluate(problem, z[None]).items()}
+    return Judge(outcome, information, values, derived.gradients(problem, z), LinearAnswers(outcome.point))
 
 
 def describe(name: str) -> tuple[str, str]:

@@ -12,6 +12,7 @@ Gelman, arXiv 1804.06788). Rigs are invented.
 import json
 import math
 import sys
+import zlib
 from dataclasses import replace
 from pathlib import Path
 
@@ -95,7 +96,7 @@ def cover(name: str, number: int) -> dict[str, list[float]]:
 def rank(name: str, number: int) -> dict[str, float]:
     """Return the posterior probability below the truth of each parameter of one simulation."""
     rig, candidate = FAMILIES[name]
-    random = np.random.default_rng([23, number])
+    random = np.random.default_rng([23, zlib.crc32(name.encode()), number])
     known = _known(posing.pose(rig, exact_readings(rig), candidate))
     truth = np.array([random.normal(p.prior.mean, p.prior.sd) for p in known.parameters])
     predicted = known.predict(truth[None])[0]
