@@ -9,6 +9,7 @@ Source: Kirchhoff, Vorlesungen über die Theorie der Wärme, 1894; Özisik, Heat
 """
 
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Protocol, runtime_checkable
 
 import numpy as np
@@ -153,8 +154,8 @@ class TabulatedConductivity:
 
     def at(self, temperature: Values) -> Values:
         """Conductivity [W/(m K)] at a temperature [K]."""
-        temperatures, values = np.array(self.points, dtype=np.float64).T
-        k: Values = self.factor * np.interp(temperature, temperatures, values)
+        temperatures, values, _, _ = _lines(self.points)
+        k: Values = self.factor * np.interp(temperature, temperatures, values[1:])
         return k
 
     def potential(self, temperature: Values, reference: Values) -> Values:
@@ -163,7 +164,7 @@ class TabulatedConductivity:
 
     def temperature(self, potential: Values, reference: Values) -> Values:
         """Temperature [K] that has a potential [W/m] above the reference [K]."""
-        temperatures, values, heights, slopes = self._lines()
+        temperatures, values, heights, slopes = _lines(self.points)
         above = np.asarray(potential / self.factor + self._heights(reference))
         row = np.searchsorted(heights, above, side="right")
         rise = (above - heights[np.maximum(row - 1, 0)]) / values[row]
@@ -175,19 +176,21 @@ class TabulatedConductivity:
 
     def _heights(self, temperature: Values) -> Values:
         """Potential [W/m] above the first point, of factor one."""
-        temperatures, values, heights, slopes = self._lines()
+        temperatures, values, heights, slopes = _lines(self.points)
         row = np.searchsorted(temperatures, temperature, side="right")
         start = np.maximum(row - 1, 0)
         rise = temperature - temperatures[start]
         return heights[start] + rise * (values[row] + slopes[row] / 2 * rise)
 
-    def _lines(self) -> tuple[Array, Array, Array, Array]:
-        """Return where lines start: temperature, k there, potential there; and the slope of k of each line.
 
-        Line 0 lies below the first point and the last one above the last point, both level.
-        """
-        temperatures, values = np.array(self.points, dtype=np.float64).T
-        rises = np.diff(temperatures)
-        heights = np.concatenate([[0.0], np.cumsum(rises * (values[1:] + values[:-1]) / 2)])
-        slopes = np.concatenate([[0.0], np.diff(values) / rises, [0.0]])
-        return temperatures, np.concatenate([values[:1], values]), heights, slopes
+@lru_cache(maxsize=64)
+def _lines(points: tuple[tuple[float, float], ...]) -> tuple[Array, Array, Array, Array]:
+    """Return where lines of a table start: temperature, k there, potential there; and k's slope of each line.
+
+    Line 0 lies below the first point and the last one above the last point, both level.
+    """
+    temperatures, values = np.array(points, dtype=np.float64).T
+    rises = np.diff(temperatures)
+    heights = np.concatenate([[0.0], np.cumsum(rises * (values[1:] + values[:-1]) / 2)])
+    slopes = np.concatenate([[0.0], np.diff(values) / rises, [0.0]])
+    return temperatures, np.concatenate([values[:1], values]), heights, slopes

@@ -173,9 +173,12 @@ def evaluate(nodes: Nodes, cases: Cases, u: Array, base: Array) -> State:
         tip_flux, tip_slope = cases.tip.response(temperatures[-1], cases.air, 1.0)
         flux, slope = np.vstack([flux[:-1], tip_flux]), np.vstack([slope[:-1], tip_slope])
     loads = roots * flux
-    held = held_potential(nodes, cases)
-    residual = u - nodes.lift[:, None] * base - nodes.tip_lift[:, None] * held + nodes.compliance @ loads
-    heat = nodes.conductance * (base - held) + nodes.lift @ loads
+    residual = u - nodes.lift[:, None] * base + nodes.compliance @ loads
+    heat = nodes.lift @ loads
+    if nodes.conductance:
+        held = held_potential(nodes, cases)
+        residual -= nodes.tip_lift[:, None] * held
+        heat += nodes.conductance * (base - held)
     error = np.einsum("ij,ij->j", residual, residual) / np.square(nodes.roots).sum()
     gap = base_k = np.zeros_like(base)
     if cases.resistance is not None:

@@ -81,12 +81,14 @@ def solve(fin: Fin, base: Base, air: Values, x: Array, steps: int = STEPS) -> So
     steep = _steepest(cases)
     waiting = np.arange(len(steep))
     for plan in PLANS:
-        fits = ~(steep[waiting] > nodes(shape, plan).largest) | (plan is PLANS[-1])
+        system = nodes(shape, plan)
+        fits = ~(steep[waiting] > system.largest) | (plan is PLANS[-1])
         ready, waiting = waiting[fits], waiting[~fits]
         for start in range(0, len(ready), BLOCK):
             rows = ready[start : start + BLOCK]
+            some = cases if len(rows) == len(steep) else take(cases, rows)
             with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
-                _solve_block(_Block(shape, plan, take(cases, rows), rows), steps, answer)
+                _solve_block(_Block(shape, plan, system, some, rows), steps, answer)
         if not waiting.size:
             break
     return answer.solution()
@@ -171,21 +173,17 @@ def _steepest(cases: Cases) -> Array:
 
 @dataclass(frozen=True, slots=True)
 class _Block:
-    """Some sets of one shape, the plan of their nodes, and their rows in the answer."""
+    """Some sets of one shape, the plan of their nodes and these, and the sets' rows in the answer."""
 
     shape: Shape
     plan: Plan
+    nodes: Nodes
     cases: Cases
     rows: Rows
 
-    @property
-    def nodes(self) -> Nodes:
-        """The equations of the block."""
-        return nodes(self.shape, self.plan)
-
     def take(self, rows: Rows) -> "_Block":
         """Return some of the sets."""
-        return replace(self, cases=take(self.cases, rows), rows=self.rows[rows])
+        return _Block(self.shape, self.plan, self.nodes, take(self.cases, rows), self.rows[rows])
 
 
 @dataclass(frozen=True, slots=True)
@@ -230,9 +228,10 @@ class _Stand:
     def on(self, plan: Plan, cells: tuple[float, ...] = ()) -> "_Stand":
         """Return the block with its potential on other nodes; cells, those that its shape is to have."""
         shape = replace(self.block.shape, cells=cells) if cells else self.block.shape
-        block = replace(self.block, shape=shape, plan=plan)
-        potential = block.nodes.roots[:, None] * self.potential(block.nodes.places * shape.length)
-        return _Stand(block, iteration.evaluate(block.nodes, block.cases, potential, self.state.base))
+        there, cases = nodes(shape, plan), self.block.cases
+        u = there.roots[:, None] * self.potential(there.places * shape.length)
+        block = _Block(shape, plan, there, cases, self.block.rows)
+        return _Stand(block, iteration.evaluate(there, cases, u, self.state.base))
 
     def misfit(self, other: "_Stand") -> Array:
         """Return how much [1] other nodes, on which the block has been put, might change, over what may be.

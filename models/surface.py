@@ -312,7 +312,7 @@ class Radiating:
 def _proportional(coefficient: Values, theta: Array) -> tuple[Array, Array]:
     """Return flux and derivative of a law that is proportional to the excess temperature, of one shape."""
     flux = coefficient * theta
-    return flux, np.broadcast_to(np.asarray(coefficient, dtype=np.float64), flux.shape)
+    return flux, np.zeros_like(flux) + coefficient
 
 
 def _require_within(name: str, value: Values, low: float, high: float) -> None:
