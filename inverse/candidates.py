@@ -107,7 +107,7 @@ def compare(
     best = max(weighed, key=lambda route: route.fast.evidence.log)
     worth = [
         route is best
-        or (route.khat > fast.TRUSTED and route.fast.evidence.log > best.fast.evidence.log - WORTH_SAMPLING)
+        or (route.fast.evidence.log > best.fast.evidence.log - WORTH_SAMPLING and route.khat > fast.TRUSTED)
         for route in weighed
     ]
     outcomes = []

@@ -8,6 +8,7 @@ trusted they must agree.
 import math
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -36,9 +37,9 @@ class Outcome:
     """What one candidate made of the readings.
 
     `problem` with its noise linearised; `point`, its least-squares fit; `mode`; `draws` (chains, n, p);
-    `evidence`; `khat`, the largest of any quantity by the fast route; how the draws were made: `ess_min`,
-    `rhat_max`, `converged` (None, None, True where they are those of the fast route); `disagreeing`, the
-    quantities that both routes were trusted with and see differently.
+    `evidence`; how the draws were made: `ess_min`, `rhat_max`, `converged` (None, None, True where they are
+    those of the fast route); `disagreeing`, the quantities that both routes were trusted with and see
+    differently.
     """
 
     problem: Problem
@@ -50,7 +51,6 @@ class Outcome:
     rhat_max: float | None
     converged: bool
     n_draws: int
-    khat: float = 0.0
     disagreeing: tuple[str, ...] = ()
 
     @property
@@ -68,9 +68,20 @@ class Route:
     proposal: Proposal
     efficiency: float
     fast: FastPosterior
-    quantities: Mapping[str, Array]
-    khats: Mapping[str, float]
     seeds: Sequence[np.random.SeedSequence]
+
+    @cached_property
+    def quantities(self) -> Mapping[str, Array]:
+        """Every parameter and derived quantity of the weighted draws, but for what is exactly known."""
+        found = derived.evaluate(self.point.problem, self.fast.z)
+        return {name: q for name, q in found.items() if np.ptp(q) > 0 and np.isfinite(q).all()}
+
+    @cached_property
+    def khats(self) -> Mapping[str, float]:
+        """The k-hat of each quantity, and "z", that of the weights alone."""
+        names = [*self.quantities]
+        khats = self.fast.khat_of(np.stack([self.quantities[name] for name in names], axis=1))
+        return {"z": self.fast.khat, **dict(zip(names, khats.tolist(), strict=True))}
 
     @property
     def khat(self) -> float:
@@ -82,11 +93,9 @@ class Route:
         random = np.random.default_rng(self.seeds[2])
         chosen = random.permutation(self.fast.resample(CHAINS * RESAMPLED, random))
         draws = self.fast.z[chosen].reshape(CHAINS, RESAMPLED, -1)
-        evidence_of = self.fast.evidence
-        return Outcome(
-            self.point.problem, self.point, self.mode, draws, evidence_of, None, None, True, len(self.fast.z),
-            self.khat,
-        )  # fmt: skip
+        made = len(self.fast.z)
+        weighed = self.fast.evidence
+        return Outcome(self.point.problem, self.point, self.mode, draws, weighed, None, None, True, made)
 
     def sampled(self, settings: Settings, progress: Callable[[float], None]) -> Outcome:
         """Return the outcome with draws by MCMC, and how far they bear the fast route out."""
@@ -102,7 +111,7 @@ class Route:
         kept = flat[:, np.linspace(0, steps * walkers - 1, KEPT_DRAWS).astype(int)]
         return Outcome(
             problem, self.point, self.mode, kept, found, chain.ess_min, chain.rhat_max, chain.converged,
-            chain.n_draws, self.khat, self._disagreeing(kept) if chain.converged else (),
+            chain.n_draws, self._disagreeing(kept) if chain.converged else (),
         )  # fmt: skip
 
     def _disagreeing(self, draws: Array) -> tuple[str, ...]:
@@ -130,14 +139,7 @@ def weigh(problem: Problem, seed: np.random.SeedSequence) -> Route:
     random = np.random.RandomState(np.random.MT19937(seeds[0]))
     proposal, efficiency = fit_proposal(point.problem, mode, random)
     weighted = fast.sample(point.problem.log_density, proposal, np.random.default_rng(seeds[0]))
-    quantities = {
-        name: values
-        for name, values in derived.evaluate(point.problem, weighted.z).items()
-        if np.ptp(values) > 0 and np.isfinite(values).all()
-    }
-    khats = dict(zip(quantities, weighted.khat_of(np.stack([*quantities.values()], axis=1)), strict=True))
-    khats = {"z": weighted.khat, **{name: float(khat) for name, khat in khats.items()}}
-    return Route(point, mode, proposal, efficiency, weighted, quantities, khats, seeds)
+    return Route(point, mode, proposal, efficiency, weighted, seeds)
 
 
 def find_mode(point: LeastSquares) -> Mode:

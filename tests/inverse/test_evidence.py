@@ -44,7 +44,7 @@ def test_a_fin_against_quadrature(noise: float | None) -> None:
     exact = rule(20)
     assert rule(25) == pytest.approx(exact, abs=1e-3)  # the rule itself has settled
     for name, found in both(problem.log_density, mode).items():
-        assert found.log == pytest.approx(exact, abs=0.02), name
+        assert found.log == pytest.approx(exact, abs=0.01 if name == "fast" else 0.02), name
         assert abs(found.log - exact) < 4 * found.error, name
 
 
