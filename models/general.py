@@ -81,9 +81,12 @@ def solve(fin: Fin, base: Base, air: Values, x: Array, accuracy: float = ACCURAC
     top = float(np.fmax.reduce(ratio))
     terms = _terms(fin.profile, kind, _level(top), accuracy, np.asarray(x, dtype=np.float64).tobytes())
     require_tip(fin.profile, tip)
-    held = np.minimum(np.maximum(ratio, SMALLEST_RATIO), terms.largest)
+    held = ratio
+    if not (top <= terms.largest and float(ratio.min()) >= SMALLEST_RATIO):
+        held = np.minimum(np.maximum(ratio, SMALLEST_RATIO), terms.largest)
     sums = terms.sums(held)
-    fall = held * terms.rest + sums[-1]
+    fall = sums[-1]  # in its place: fresh memory takes longer than the numbers, here and below
+    fall += held * terms.rest
     if top > terms.largest:
         fall += terms.beyond(ratio, terms.base_area, terms.base_perimeter)
     drive = driving(base, air, fin.constant_conductivity, terms.base_area)
@@ -141,9 +144,8 @@ class Terms:
     def sums(self, ratio: Array) -> Array:
         """Return sum_j D_j weights_j for h/k [1/m] of shape (n_sets,) -> (n_sums, n_sets)."""
         found = np.empty((len(self.weights), len(ratio)))
-        inverse = 1 / ratio
         for start in range(0, len(ratio), BLOCK):
-            share = inverse[start : start + BLOCK] + self.square
+            share = 1 / ratio[start : start + BLOCK] + self.square
             np.reciprocal(share, out=share)
             np.matmul(self.weights, share, out=found[:, start : start + BLOCK])
         return found
@@ -227,9 +229,9 @@ def _free(fin: Fin, air: Values, terms: Terms, drive: Driving, found: Sums) -> S
         fall = fall + at_tip * strength * weakened
         drop = drop + (at_tip - weakened) * terms.reach(found)
     else:
-        weakened = 1 - found.sums[-2]
+        weakened = np.subtract(1, found.sums[-2], out=found.sums[-2])
     base_excess = np.asarray(drive.excess / (1 + drive.bond * fall)).reshape(-1)
-    room = drop if drop.shape[1] == base_excess.size else None  # fresh memory takes longer than the numbers
+    room = drop if drop.shape[1] == base_excess.size else None
     temperatures = np.multiply(drop, -base_excess, out=room)
     temperatures += base_excess + air
     if terms.cold_tip:

@@ -2,7 +2,7 @@
 
 A power law of convection has one at the air's temperature, a conductivity table a weaker one at each of its
 points. No polynomial follows a flux across them. Where a fin has one is known once it is solved, if only
-roughly. The place of a strong one is put into a cell, 1/256 of the length, and pieces of the length end at
+roughly. The place of a strong one is put into a cell, 1/128 of the length, and pieces of the length end at
 the cell's sides and at eight and sixty-four times their distance from its middle. What the polynomials then
 miss lies in the cell. Cells stand at fixed places, so that fins whose kinks are in the same ones share their
 nodes.
