@@ -98,7 +98,8 @@ def test_a_hard_posterior_is_right_or_flagged_and_then_right_by_mcmc(name: str) 
     batches = outcome.draws.reshape(BATCHES, -1, outcome.draws.shape[-1])
     assert outcome.converged
     squares = np.square(batches - mean).mean(axis=1)  # whose scatter tells how well a heavy tail is known
-    for found, expected in ((batches.mean(axis=1), mean), (squares, np.square(sd))):
+    wanted = ((batches.mean(axis=1), mean, 0.1 * sd), (squares, np.square(sd), 0.3 * np.square(sd)))
+    for found, expected, largest in wanted:
         scatter = found.std(axis=0, ddof=1) / np.sqrt(BATCHES)
         assert np.all(np.abs(found.mean(axis=0) - expected) < 4 * scatter)
-        assert np.all(scatter < 0.2 * sd ** (1 if expected is mean else 2))  # or nothing would be told
+        assert np.all(scatter < largest)  # or nothing would be told: three readings leave a heavy tail
