@@ -5,6 +5,7 @@ User-given names are drawn as they are, never read as mathematics.
 """
 
 import io
+import math
 import warnings
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -22,7 +23,7 @@ from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from finback.estimate import Estimate
-from finback.report import scenes
+from finback.report import scenes, shares
 from finback.report.layout import (
     CROWDED,
     FIN_END,
@@ -79,9 +80,18 @@ class Picture:
     svg: bytes
 
 
+HATCHES = {"random": "", "systematic": "////", "prior": "...."}
+KIND_COLOURS = {
+    "random": (BLUE, SKY, "#a9d4f0", "#dcecf8"),
+    "systematic": (ORANGE, "#f6d58f", VERMILION, "#f5bd9a", "#fbeccb", "#e8e0d0"),
+    "prior": (GREEN, PURPLE, "#8fd4bd", "#ecc9dc"),
+}
+"""Colours of the sources of a kind, in turn."""
+LEAST_LETTERED, LEAST_NUMBERED = 3.0, 7.0
+"""Per cent of a bar from which a piece has room for its letter, and for its share."""
 LETTER_OF_BARS = 0.072
 """Width of a letter beside a bar [in]."""
-NAMES = ("drawing", "profile", "candidates", "pairs")
+NAMES = ("drawing", "profile", "candidates", "pairs", "budget")
 
 
 def draw(estimate: Estimate) -> tuple[Picture, ...]:
@@ -96,6 +106,8 @@ def draw(estimate: Estimate) -> tuple[Picture, ...]:
     paired = scenes.pairs(estimate)
     if paired:
         painters.append(("pairs", lambda: _pairs(paired)))
+    if estimate.budget:
+        painters.append(("budget", lambda: _budget(*shares.pieces(estimate))))
     with matplotlib.rc_context(STYLE), warnings.catch_warnings():
         warnings.filterwarnings(
             "ignore", "Glyph .* missing from", UserWarning
@@ -320,6 +332,42 @@ def _bars(bars: tuple[scenes.Bar, ...]) -> Figure:
     axes.tick_params(axis="y", length=0)
     axes.set_xlabel("posterior probability, %")
     return figure
+
+
+def _budget(names: tuple[str, ...], pieces: tuple[shares.Piece, ...]) -> Figure:
+    """Draw one stacked bar a quantity; a piece is told apart by its letter, its kind by hatch."""
+    bars, legend = 0.27 * len(names), 0.19 * math.ceil(len(pieces) / 2)
+    height = bars + legend + 0.53
+    figure = Figure(figsize=(WIDTH, height))
+    axes = figure.add_axes((0.08, (legend + 0.48) / height, 0.89, bars / height))
+    starts, used = np.zeros(len(names)), dict.fromkeys(KIND_COLOURS, 0)
+    for piece in pieces:
+        colours = KIND_COLOURS[piece.kind]
+        _draw_piece(axes, piece, starts, colours[used[piece.kind] % len(colours)])
+        used[piece.kind] += 1
+        starts = starts + np.array(piece.percent)
+    axes.set_yticks(range(len(names)), [scenes.name_on_axis(name) for name in names])
+    axes.set_xlim(0, 100)
+    axes.set_ylim(len(names) - 0.5, -0.5)
+    axes.tick_params(axis="y", length=0)
+    axes.set_xlabel("share of the variance, %")
+    spacing = {"handlelength": 2.2, "handleheight": 1.1, "labelspacing": 0.25, "borderaxespad": 0.1}
+    style: dict[str, Any] = {"ncols": 2, "frameon": False, "fontsize": 8, **spacing}
+    handles, labels = axes.get_legend_handles_labels()
+    figure.legend(handles, labels, loc="lower left", bbox_to_anchor=(0.06, 0.0), **style)
+    return figure
+
+
+def _draw_piece(axes: Axes, piece: shares.Piece, starts: Array, colour: str) -> None:
+    """Draw one source in every bar, with its letter and share where there is room."""
+    style: dict[str, Any] = {"facecolor": colour, "hatch": HATCHES[piece.kind], **EDGE}
+    rows, label = range(len(starts)), f"{piece.letter}  {piece.name}"
+    axes.barh(rows, piece.percent, 0.7, starts, label=label, **style)
+    backed = {"facecolor": "white", "edgecolor": "none", "pad": 0.8}
+    for row, start, percent in zip(rows, starts, piece.percent, strict=True):
+        if percent >= LEAST_LETTERED:
+            text = f"{piece.letter} {percent:.0f}" if percent >= LEAST_NUMBERED else piece.letter
+            axes.text(start + percent / 2, row, text, ha="center", va="center", bbox=backed, **SMALL)
 
 
 def _pairs(quantities: tuple[scenes.Paired, ...]) -> Figure:

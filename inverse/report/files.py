@@ -16,7 +16,7 @@ from finback.errors import InputError
 from finback.estimate import Estimate
 
 ESTIMATE, REPORT, POSTERIOR, FIGURES = "estimate.json", "report.html", "posterior.nc", "figures"
-FIGURE_STEMS = ("drawing", "profile", "candidates", "pairs")
+FIGURE_STEMS = ("drawing", "profile", "candidates", "pairs", "budget")
 OURS = (
     ESTIMATE,
     REPORT,

@@ -20,6 +20,8 @@ ALT = {
     "profile": "Temperature along the fin of {title}, run {run}: posterior median with its 95 % band, the "
     "readings with error bars of two standard deviations, and the residuals beneath.",
     "candidates": "Posterior probability of each candidate as a bar: {verdict}",
+    "budget": "Share of the variance of each result by source, as one bar a result: the table above it in a "
+    "picture. {shared}",
     "pairs": "Posterior of the main quantities of {title}: marginal densities with the prior dashed, and a "
     "density for each pair with contours holding 50 % and 95 % of the draws.",
 }
@@ -46,7 +48,9 @@ def render(estimate: Estimate, pictures: "Sequence[Picture]") -> str:
 
 def _embed(picture: "Picture", seen: view.View) -> Embedded:
     data = base64.b64encode(picture.svg).decode("ascii")
-    alt = ALT[picture.name].format(title=seen.title, run=seen.run, verdict=seen.verdict)
+    alt = ALT[picture.name].format(
+        title=seen.title, run=seen.run, verdict=seen.verdict, shared=seen.improvement
+    )
     return Embedded(f"data:image/svg+xml;base64,{data}", alt)
 
 

@@ -6,7 +6,7 @@ characters out), and each output escapes it in its own way.
 
 import math
 
-from finback.estimate import DeterminedBy, Status, Summary
+from finback.estimate import DeterminedBy, Expanded, Status, Summary
 from finback.quantity import pretty_unit
 
 SYMBOLS = {
@@ -50,6 +50,7 @@ STATUS: dict[Status, str] = {"ok": "Done", "caution": "Done, with cautions", "fa
 NOT_DETERMINED = "not determined"
 NOTHING = "–"
 COVERAGE = "(k = 2, 95 %)"
+BENT = "†"  # marks a value ± U whose linear approximation does not hold
 SKEWED = 0.1  # share of the interval's width by which mean ± 2 sd may miss a limit before it is left out
 
 _SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
@@ -182,11 +183,19 @@ def interval(summary: Summary, unit: bool = True) -> str:
     return NOTHING if summary.low95 is None else span(summary.low95, high, name)
 
 
-def expanded(summary: Summary) -> str:
-    """Return mean ± two standard deviations without unit, or "–" where that would misstate the interval."""
-    if summary.mean is None or summary.sd is None or not symmetric(summary):
+def expanded(stated: Expanded | None) -> str:
+    """Return value ± U without unit, marked where its linear approximation does not hold; "–" without one."""
+    if stated is None:
         return NOTHING
-    return compact(summary.mean, 2 * summary.sd)
+    return compact(stated.value, stated.expanded) + ("" if stated.linear else f" {BENT}")
+
+
+def bent(stated: Expanded | None, unit: str) -> str:
+    """Return the sentence on a value ± U that does not hold; "" where it does, or where there is none."""
+    if stated is None or stated.linear:
+        return ""
+    told = plus_minus(stated.value, stated.expanded, unit)
+    return f"too bent for linear propagation, which gives {told}: go by the interval"
 
 
 def least_squares(summary: Summary) -> str:

@@ -270,6 +270,11 @@ def bars(estimate: Estimate) -> tuple[Bar, ...]:
     )
 
 
+def name_on_axis(name: str) -> str:
+    """Return what an axis calls a quantity."""
+    return NAMED.get(name, phrases.symbol(name))
+
+
 def _varies(draws: Array) -> bool:
     finite = draws[np.isfinite(draws)]
     return finite.size > 1 and float(np.ptp(finite)) > 1e-9 * float(np.abs(finite).max())
@@ -297,7 +302,7 @@ def _paired(name: str, unit: str, draws: Array, prior: Array | None) -> Paired:
     given = None
     if prior is not None and np.all(np.isfinite(prior)) and _varies(prior):
         given = _density(prior / 10.0**power, grid, positive)
-    label = ", ".join(part for part in (NAMED.get(name, phrases.symbol(name)), shown.strip()) if part)
+    label = ", ".join(part for part in (name_on_axis(name), shown.strip()) if part)
     return Paired(label, draws, window, grid, _density(finite, grid, positive), given)
 
 

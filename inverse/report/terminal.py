@@ -3,7 +3,7 @@
 from pathlib import Path
 
 from finback.estimate import Estimate
-from finback.report import phrases, view
+from finback.report import phrases, shares, view
 
 COLUMNS = 79
 SYMBOL = 5  # columns of the symbol before its value
@@ -17,7 +17,11 @@ def summary(estimate: Estimate, folder: Path | str | None = None) -> str:
     terminal would obey.
     """
     seen = view.build(estimate)
-    blocks = [_heading(seen), *(_answer(answer) for answer in seen.answers), _candidates(seen)]
+    blocks = [_heading(seen), *(_answer(answer) for answer in seen.answers)]
+    if seen.shares is not None:
+        told = f"{shares.in_words(estimate)} {seen.improvement}"
+        blocks.append(["Uncertainty", *wrap(told, "  ", "  ")])
+    blocks.append(_candidates(seen))
     if seen.parts:
         blocks.append(["Heat", *wrap(seen.parts, "  ", "  ")])
     if seen.healthy is not None:
@@ -42,6 +46,8 @@ def _answer(answer: view.Answer) -> list[str]:
     lines += wrap(answer.label, indent, indent)
     if answer.determined_by:
         lines += wrap(answer.determined_by, indent, indent)
+    if answer.bent:
+        lines += wrap(answer.bent, indent, indent)
     if answer.reason:
         lines += wrap(answer.reason, indent, indent)
     return lines

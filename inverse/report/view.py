@@ -6,11 +6,12 @@ All text here is plain; each output escapes it in its own way.
 from dataclasses import dataclass
 from pathlib import PurePath
 
-from finback.estimate import CandidateScore, Estimate, ReadingFit, Summary
+from finback.estimate import CandidateScore, Estimate, Expanded, ReadingFit, Sensitivity, Summary
 from finback.findings import Finding
-from finback.report import comparison, method, phrases
+from finback.report import comparison, method, phrases, shares
 from finback.report.comparison import Comparison
 from finback.report.method import Equation
+from finback.report.shares import Shares
 
 ZERO_CELSIUS = 273.15
 SEVERITIES = ("fault", "caution", "note")
@@ -38,7 +39,8 @@ SHOWN_FIRST = 3  # findings in the first screen
 class Answer:
     """One headline: `value` with its uncertainty, or a verdict such as "not determined" with its `reason`.
 
-    `relation` stands between symbol and value; `coverage` goes with a value stated with ±.
+    `relation` stands between symbol and value; `coverage` goes with a value stated with ±; `bent`: what a
+    linear uncertainty would be where it does not hold.
     """
 
     symbol: str
@@ -50,11 +52,12 @@ class Answer:
     interval: str
     determined_by: str
     reason: str
+    bent: str = ""
 
 
 @dataclass(frozen=True, slots=True)
 class QuantityRow:
-    """One row of the table of quantities; `expanded`: mean ± two standard deviations."""
+    """One row of the table of quantities; `expanded`: value ± U, marked where linearity does not hold."""
 
     symbol: str
     label: str
@@ -68,10 +71,11 @@ class QuantityRow:
 
 @dataclass(frozen=True, slots=True)
 class CandidateRow:
-    """One row of the table of candidates."""
+    """One row of the table of candidates; `widened`: its probability with a wider prior of the joint."""
 
     name: str
     probability: str
+    widened: str
     log_evidence: str
     loo: str
     aicc: str
@@ -120,7 +124,10 @@ class View:
     more_findings: str
     candidates: tuple[CandidateRow, ...]
     loo_note: str
+    widened_note: str
     quantities: tuple[QuantityRow, ...]
+    shares: Shares | None
+    improvement: str
     readings: tuple[ReadingRow, ...]
     fit: str
     findings: tuple[FindingRow, ...]
@@ -153,9 +160,15 @@ def build(estimate: Estimate) -> View:
         healthy=comparison.compare(estimate),
         worst=worst,
         more_findings=f"{rest} more in the list of findings." if rest > 0 and worst else "",
-        candidates=tuple(_candidate(score, len(estimate.candidates) == 1) for score in estimate.candidates),
+        candidates=tuple(_candidate(estimate, score) for score in estimate.candidates),
         loo_note=_loo_note(estimate),
-        quantities=tuple(_quantity(s) for s in (*estimate.parameters.values(), *estimate.derived.values())),
+        widened_note=_widened_note(estimate.sensitivity),
+        quantities=tuple(
+            _quantity(summary, estimate.expanded.get(name))
+            for name, summary in (*estimate.parameters.items(), *estimate.derived.items())
+        ),
+        shares=shares.table(estimate),
+        improvement=shares.improved(estimate.improvement),
         readings=tuple(_reading(row, estimate.rig.losses_stated) for row in estimate.table),
         fit=_fit(estimate),
         findings=findings,
@@ -197,6 +210,7 @@ def _answer(estimate: Estimate, name: str, summary: Summary) -> Answer:
         interval=phrases.interval(summary),
         determined_by=phrases.determined_by(summary),
         reason="" if known else _reason(estimate, summary),
+        bent=phrases.bent(estimate.expanded.get(name), summary.unit) if known else "",
     )
 
 
@@ -253,7 +267,7 @@ def _label(summary: Summary) -> str:
     return label
 
 
-def _quantity(summary: Summary) -> QuantityRow:
+def _quantity(summary: Summary, expanded: Expanded | None) -> QuantityRow:
     determined = summary.median is not None
     return QuantityRow(
         phrases.symbol(summary.name),
@@ -261,16 +275,19 @@ def _quantity(summary: Summary) -> QuantityRow:
         phrases.pretty(summary.unit),
         phrases.median(summary, unit=False) if determined else phrases.NOT_DETERMINED,
         phrases.interval(summary, unit=False),
-        phrases.expanded(summary),
+        phrases.expanded(expanded),
         phrases.least_squares(summary),
         phrases.determined_by(summary, short=True) or phrases.NOTHING,
     )
 
 
-def _candidate(score: CandidateScore, alone: bool) -> CandidateRow:
+def _candidate(estimate: Estimate, score: CandidateScore) -> CandidateRow:
+    alone, sensitivity = len(estimate.candidates) == 1, estimate.sensitivity
+    widened = None if sensitivity is None else sensitivity.probabilities.get(score.name)
     return CandidateRow(
         phrases.clean(score.name),
         phrases.probability(score.probability, alone),
+        phrases.NOTHING if widened is None else phrases.probability(widened, alone),
         f"{phrases.number(score.log_evidence, 0.1)} ± {score.log_evidence_error:.2g}",
         phrases.number(score.loo, 1.0),
         phrases.number(score.aicc, 1.0),
@@ -323,6 +340,16 @@ def _loo_note(estimate: Estimate) -> str:
     return (
         "LOO: log density expected for each reading when it is left out, summed. "
         f"Few readings make LOO indicative only; here there are {n}."
+    )
+
+
+def _widened_note(sensitivity: Sensitivity | None) -> str:
+    if sensitivity is None:
+        return ""
+    return (
+        "With a wider prior: the probability if the prior of ln R″ were "
+        f"{sensitivity.times_wider:g} times as wide. Where it differs much, the width of that prior decides, "
+        "a choice of ours, and not the readings."
     )
 
 

@@ -49,7 +49,7 @@ LAYERS = (
     "budget sensitivity",
     "analysis",
     "report report.phrases report.method",
-    "report.comparison",
+    "report.comparison report.shares",
     "report.scenes report.view",
     "report.layout",
     "report.figures report.terminal",

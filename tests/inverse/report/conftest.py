@@ -11,14 +11,18 @@ import pytest
 
 from finback import analysis, datasets
 from finback.estimate import (
+    BudgetLine,
     CandidateScore,
     Draws,
     Estimate,
+    Expanded,
     FitQuality,
+    Improvement,
     ProfileBand,
     Provenance,
     ReadingFit,
     SamplerRecord,
+    Sensitivity,
     Summary,
 )
 from finback.findings import Finding
@@ -38,6 +42,19 @@ PROVENANCE = Provenance(
     "0.1.0",
     {"python": "3.11.7", "numpy": "2.0.0", "scipy": "1.13.0", "emcee": "3.1.6"},
     {"rig.toml": "9f" * 32, "readings.csv": "3c" * 32},
+)
+
+
+BUDGET = (  # invented
+    BudgetLine(
+        "calibration of the fin sensors", "systematic", {"h": 0.55, "k": 0.10, "h_over_k": 0.62, "heat": 0.0}
+    ),
+    BudgetLine("noise of the heat reading", "random", {"h": 0.25, "k": 0.35, "h_over_k": 0.004, "heat": 0.9}),
+    BudgetLine("conductivity k, as stated", "prior", {"h": 0.12, "k": 0.52, "h_over_k": 0.02, "heat": 0.06}),
+    BudgetLine(
+        "noise of the fin sensors", "random", {"h": 0.075, "k": 0.025, "h_over_k": 0.35, "heat": 0.04}
+    ),
+    BudgetLine("wide defaults", "prior", {"h": 0.005, "k": 0.005, "h_over_k": 0.006, "heat": 0.0}),
 )
 
 
@@ -178,6 +195,26 @@ def make_pin(names=None, title="Invented pin, bench 2"):
             "joint: log-normal around 1e-4 m² K/W, factor 4.5",
         ),
         provenance=PROVENANCE,
+        budget=BUDGET,
+        expanded={
+            "h": Expanded(42.0, 1.9, True),
+            "k": Expanded(166.0, 9.6, True),
+            "joint": Expanded(5.1e-5, 1.1e-5, False),
+            "h_over_k": Expanded(0.2531, 0.0054, True),
+        },
+        improvement=Improvement(
+            "h", "calibration of the fin sensors", "the fin sensors calibrated to 0.1 K", 0.7
+        ),
+        sensitivity=Sensitivity(
+            "joint",
+            3.0,
+            {
+                "convective tip, joint": 0.923,
+                "adiabatic tip, joint": 0.061,
+                "convective tip, no joint": 0.016,
+                "infinite tip, joint": 2e-9,
+            },
+        ),
     )
 
 

@@ -11,7 +11,7 @@ from finback.report import figures, html
 
 VOID = {"meta", "img", "br", "link", "input", "hr"}
 SECTIONS = [
-    "answer", "drawing", "profile", "candidates", "pairs", "quantities", "readings", "findings",
+    "answer", "drawing", "profile", "candidates", "pairs", "quantities", "budget", "readings", "findings",
     "assumptions", "method", "provenance", "cautions",
 ]  # fmt: skip
 
@@ -54,7 +54,8 @@ def parsed(pages):
 @pytest.mark.parametrize("name", ["pin", "rod", "hostile", "bench"])
 def test_it_has_every_section_in_order_and_nothing_that_runs_or_loads(parsed, pages, name):
     page = parsed[name]
-    assert [section["id"] for section in page.named("section")] == SECTIONS
+    expected = [section for section in SECTIONS if section != "budget" or name != "rod"]  # it has none
+    assert [section["id"] for section in page.named("section")] == expected
     tags = {tag for tag, _ in page.elements}
     assert not tags & {"script", "link", "iframe", "object", "embed", "form", "base", "audio", "video"}
     for tag, attributes in page.elements:
@@ -87,7 +88,7 @@ def test_what_a_healthy_fin_would_show_has_a_section_where_a_correlation_tells_i
 @pytest.mark.parametrize("name", ["pin", "rod", "hostile", "bench"])
 def test_every_picture_has_a_text_for_who_cannot_see_it(parsed, name):
     pictures = parsed[name].named("img")
-    assert len(pictures) == (3 if name == "rod" else 4)
+    assert len(pictures) == (3 if name == "rod" else 5)
     for picture in pictures:
         assert picture["src"].startswith("data:image/svg+xml;base64,")
         assert len(picture["alt"]) > 40
@@ -138,6 +139,31 @@ def test_the_page_of_a_real_fit_tells_what_the_estimate_holds(parsed, estimates)
         assert f"\n{row.sensor}\n" in texts["readings"]
     assert f"R-hat {estimate.sampler.rhat_max:.3f}" in texts["provenance"]
     assert not re.search(r"\b(nan|None|inf)\b", "".join(texts.values()))
+
+
+def test_the_budget_parts_random_systematic_and_prior(parsed):
+    told = parsed["pin"].texts["budget"]
+    assert "With the fin sensors calibrated to 0.1 K the interval of h would be 30 % narrower." in told
+    assert "\nshare of the variance of\nh\nk\nh/k\nqb\n" in told
+    assert "random: averages out over readings\n32 %\n38 %\n35 %\n94 %\n" in told  # sums of the two below
+    assert "noise of the fin sensors\n8 %\n2 %\n35 %\n4 %\n" in told
+    assert "systematic: does not average out\n55 %\n10 %\n62 %\n< 1 %\n" in told
+    assert "others, each below 1 %\n< 1 %\n< 1 %\n< 1 %\n< 1 %\n" in told
+    assert "wide defaults" not in told
+
+
+def test_value_and_expanded_uncertainty_are_marked_where_they_do_not_hold(parsed):
+    told = parsed["pin"].texts["quantities"]
+    assert "42.0 ± 1.9\n" in told
+    assert "(5.1 ± 1.1) × 10⁻⁵ †\n" in told
+    assert parsed["pin"].texts["answer"].count("too bent for linear propagation") == 1
+
+
+def test_a_wider_prior_of_the_joint_stands_beside_each_probability(parsed):
+    told = parsed["pin"].texts["candidates"]
+    assert "convective tip, no joint\n0.7 %\n1.6 %\n" in told
+    assert "3 times as wide" in told
+    assert "wider prior" not in parsed["rod"].texts["candidates"]
 
 
 def test_assumptions_method_provenance_and_cautions_are_told(parsed, pin_estimate):

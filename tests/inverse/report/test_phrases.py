@@ -5,7 +5,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from finback.estimate import Summary
+from finback.estimate import Expanded, Summary
 from finback.report import phrases
 
 H = Summary("h", "convection coefficient h", "W/(m^2 K)", 41.2, 41.3, 0.9, 39.6, 43.1, 41.0, 0.95, "readings")
@@ -56,14 +56,25 @@ def test_the_uncertainty_of_a_temperature_is_in_kelvin():
 def test_a_skewed_posterior_is_not_stated_with_plus_and_minus():
     skewed = replace(H, median=1.0, mean=1.6, sd=2.0, low95=0.1, high95=7.0)
     assert phrases.value(skewed) == "1.0 W/(m² K)"
-    assert phrases.expanded(skewed) == "–"
     assert phrases.interval(skewed) == "0.1 to 7.0 W/(m² K)"
+
+
+def test_a_linear_uncertainty_that_misses_the_interval_is_marked():
+    holds = Expanded(41.2, 1.8, True)
+    assert phrases.expanded(holds) == "41.2 ± 1.8"
+    assert phrases.expanded(replace(holds, linear=False)) == "41.2 ± 1.8 †"
+    assert phrases.expanded(None) == "–"
+    assert phrases.bent(holds, "W/(m^2 K)") == phrases.bent(None, "W/(m^2 K)") == ""
+    told = phrases.bent(replace(holds, linear=False), "W/(m^2 K)")
+    assert told == (
+        "too bent for linear propagation, which gives 41.2 W/(m² K) ± 1.8 W/(m² K): go by the interval"
+    )
 
 
 def test_an_exact_value_has_no_uncertainty_at_all():
     exact = replace(H, median=237.0, mean=237.0, sd=0.0, low95=237.0, high95=237.0, standard_error=0.0)
     assert phrases.value(exact) == "237 W/(m² K)"
-    assert phrases.interval(exact) == phrases.expanded(exact) == phrases.least_squares(exact) == "–"
+    assert phrases.interval(exact) == phrases.least_squares(exact) == "–"
     assert phrases.determined_by(exact) == "exactly known, as the rig states"
 
 
@@ -74,7 +85,7 @@ def test_an_upper_limit_alone_is_told_as_one():
 
 def test_what_is_not_determined_is_not_a_number():
     assert phrases.value(NOTHING) == "not determined"
-    for text in (phrases.median, phrases.interval, phrases.expanded, phrases.least_squares):
+    for text in (phrases.median, phrases.interval, phrases.least_squares):
         assert text(NOTHING) == "–"
     assert phrases.number(math.nan, 1.0) == "–"
 

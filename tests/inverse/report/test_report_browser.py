@@ -141,7 +141,7 @@ def test_every_picture_is_shown_and_the_page_fits_its_width(browser, report, wid
     browser.show(report, width)
 
     pictures = browser.evaluate(PICTURES)
-    assert len(pictures) == (3 if report.parent.name.startswith("rod") else 4)
+    assert len(pictures) == (3 if report.parent.name.startswith("rod") else 5)
     for picture in pictures:
         assert picture["natural"] > 0, "not decoded"
         assert picture["visible"]

@@ -23,6 +23,13 @@ R″    = 5.2 × 10⁻⁵ m² K/W ± 1.7 × 10⁻⁵ m² K/W (k = 2, 95 %)
         median 5.1 × 10⁻⁵ m² K/W, 95 % interval (3.8 to 7.1) × 10⁻⁵ m² K/W
         joint resistance
         determined by the readings
+        too bent for linear propagation, which gives 5.1 × 10⁻⁵ m² K/W ± 1.1 ×
+        10⁻⁵ m² K/W: go by the interval
+
+Uncertainty
+  Variance of h: 55 % calibration of the fin sensors, 25 % noise of the heat
+  reading, 12 % conductivity k, as stated. With the fin sensors calibrated to
+  0.1 K the interval of h would be 30 % narrower.
 
 Candidates
   93.1 %  convective tip, joint
