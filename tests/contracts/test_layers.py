@@ -28,6 +28,7 @@ LAYERS = (
     "models.closed_form models.bessel_forms models.modes models.sides models.gauss models.endless",
     "models.general models.nodes",
     "models.performance models.plate models.iteration",
+    "models.kinks",
     "models.nonlinear",
     "models.solve",
     "models",
