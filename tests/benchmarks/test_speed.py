@@ -87,6 +87,49 @@ def test_sampling(benchmark, problem):
     assert ours >= 10 * theirs
 
 
+def whole_posterior(problem, seed):
+    """Return means, sds, 95 % limits and evidence of everything that a problem's parameters tell."""
+    route = routes.weigh(problem, np.random.SeedSequence(seed))
+    z = route.fast.z
+    limits = route.fast.quantiles(z, (0.025, 0.975))
+    return route.fast.mean(z), route.fast.sd(z), limits, route.fast.evidence, route.fast.khat
+
+
+def test_whole_posterior(benchmark, problem):
+    theirs = fastest(lambda: baseline.whole_posterior(*data(problem)), 2)
+    mean, sd, _, evidence, khat = benchmark(whole_posterior, problem, 1)
+    ours = benchmark.stats.stats.min
+    benchmark.extra_info |= {"ms": 1e3 * ours, "times the baseline": theirs / ours, "k-hat": khat}
+    logs = [whole_posterior(problem, seed)[3].log for seed in range(40)]
+    benchmark.extra_info["scatter of the log evidence"] = float(np.std(logs))
+    their_mean, their_sd = baseline.whole_posterior(*data(problem))
+    at = [problem.names.index(name) for name in ("h", "noise")]
+    assert np.all(np.abs(mean[at] - their_mean[[0, 2]]) < 0.1 * their_sd[[0, 2]])
+    assert sd[at] == pytest.approx(their_sd[[0, 2]], rel=0.1)
+    assert np.std(logs) < 0.005
+    assert evidence.error < 0.02
+    assert theirs > 20 * ours
+
+
+def test_two_hundred_posteriors(benchmark):
+    described = rig.read(path("bench-pin") / "rig.toml")
+    run = readings.read(path("bench-pin") / "readings.csv", described).pick(None)
+    chosen = next(c for c in candidates.enumerate_candidates(described, run) if c.tip == "convective")
+    random = np.random.default_rng(1)
+    runs = []
+    for _ in range(200):
+        noise = random.normal(0.0, 0.1, len(run.values))
+        values = dict(zip(run.values, np.add(list(run.values.values()), noise).tolist(), strict=True))
+        runs.append(readings.Readings("drawn", values))
+
+    def all_of_them():
+        return [whole_posterior(posing.pose(described, each, chosen), 1) for each in runs]
+
+    found = benchmark.pedantic(all_of_them, rounds=3)
+    benchmark.extra_info["s"] = benchmark.stats.stats.min
+    assert max(khat for *_, khat in found) < 0.7
+
+
 def run_finback(*arguments):
     subprocess.run([sys.executable, "-m", "finback", *arguments], check=True, capture_output=True)
 
