@@ -28,6 +28,9 @@ Array = NDArray[np.float64]
 KEPT_DRAWS = 2500  # an ensemble
 CHAINS, RESAMPLED = 4, 1000  # of a candidate that is not sampled by MCMC
 SAME_MEAN, SAME_SD = 0.1, 0.1  # of its standard deviation, by which two routes may see a quantity differently
+SPARE_FOR_NOISE = (
+    10  # readings more than unknowns, that know a noise to a quarter: its posterior is no funnel
+)
 LADDER_FITS = 0.1  # efficiency below which a ladder has missed its posterior: readings without any error
 SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
 
@@ -162,10 +165,11 @@ def find_mode(point: LeastSquares) -> Mode:
 def fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) -> tuple[Proposal, float]:
     """Return a proposal fitted to the posterior, and its efficiency [1].
 
-    An estimated noise makes the posterior a funnel, and its mode may be a spike far down in it, where plate
-    and air fit their readings without any noise: a ladder starts from the whole of it.
+    An estimated noise makes the posterior of few readings a funnel, and its mode may be a spike far down in
+    it, where plate and air fit their readings without any noise: a ladder starts from the whole of it.
     """
-    if problem.noise.estimated:
+    spare = len(problem.measured.values) - problem.n_physical
+    if problem.noise.estimated and spare < SPARE_FOR_NOISE:
         ladder = proposals.ladder(problem.log_density, mode)
         found = proposals.adapt(problem.log_density, ladder, random)
         if found[1] >= LADDER_FITS:
