@@ -49,7 +49,7 @@ PRIOR_DRAWS = 4000
 PACKAGES = ("numpy", "scipy", "emcee", "arviz", "pandas", "matplotlib")
 PARAMETERS = (
     *("h", "k", "joint", "plate", "air", "tip_temperature", "exponent", "rise", "emissivity", "surroundings"),
-    *("bare_area", "loss", "loss_coefficient", "noise"),
+    *("bare_area", "loss", "loss_coefficient", "misfit", "noise"),
 )
 
 
@@ -105,7 +105,11 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         converged=all(o.converged for o in sampled),
     )
     healthy, implied, beyond = _expectation(rig, readings, found)
-    found_concerns = concerns.collect(rig, found, quality, sampler, best) + beyond + concerns.scored(scores)
+    heat = concerns.heat_asked_for(found, outcomes, evaluated)
+    smooth = concerns.smooth_misfit(outcomes, probabilities.tolist())
+    found_concerns = (
+        concerns.collect(rig, found, quality, sampler, best, smooth, heat) + beyond + concerns.scored(scores)
+    )
     worst = {f.severity for f in found_concerns}
     return Estimate(
         rig=rig,
@@ -115,7 +119,11 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         derived={name: found[name] for name in derived.DERIVED if name in found},
         candidates=scores,
         comparison=concerns.compare_in_words(scores, rig.tip is not None),
-        compared=candidates.why_compared(rig, _left_out(rig, readings, outcomes)),
+        compared=candidates.why_compared(
+            rig,
+            _left_out(rig, readings, outcomes),
+            smooth=any(outcome.problem.candidate.misfit for outcome in outcomes),
+        ),
         fit=quality,
         table=table,
         band=_band(outcomes, mixture),
@@ -205,7 +213,7 @@ def _table(best: Outcome) -> tuple[ReadingFit, ...]:
     """Return every reading beside what the best candidate's least-squares fit predicts for it."""
     problem, measured = best.problem, best.problem.measured
     predicted = problem.predict(best.point.z[None])[0]
-    uncertainty = np.sqrt(np.diag(problem.noise.covariance(best.point.sigma)))
+    uncertainty = np.sqrt(np.diag(best.point.noise.covariance(best.point.sigma)))
     rows = zip(
         measured.sensors + measured.bounds,
         np.concatenate([measured.values, measured.bound_values]),

@@ -10,6 +10,7 @@ and these add up to the variance of the whole, h'S h + b'(1 - E'C^-1 E) b. An av
 spread of their means as a source of its own.
 """
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
@@ -26,6 +27,7 @@ from finback.routes import Outcome
 Array = NDArray[np.float64]
 
 WEIGHTY = 0.005  # probability of a candidate from which it has a part in the budget
+OF_ALL = {"position": "hole positions", "misfit": "smooth misfit of the model"}
 CANDIDATES = "spread of the candidates"
 WIDE = "wide defaults"
 UNREAD_AIR = "air temperature, neither read nor stated"
@@ -232,7 +234,7 @@ def linearise(outcome: Outcome) -> Linear:
     gradients = {
         name: gradient
         for name, gradient in derived.gradients(problem, z).items()
-        if np.isfinite(gradient).all() and name != "noise"
+        if np.isfinite(gradient).all() and name not in ("misfit", "noise")
     }
     names = tuple(gradients)
     slopes = geometry.slopes(problem, z)
@@ -267,10 +269,10 @@ def _of_errors(outcome: Outcome, quantities: int) -> list[Source]:
     if problem.noise.estimated:
         draws = outcome.draws.reshape(-1, outcome.draws.shape[-1])
         sigma = float(np.median(problem.values(draws)["noise"]))
+    share = math.exp(outcome.point.z[problem.n_physical]) if problem.candidate.misfit else 0.0
     found = []
-    for error in posing.error_sources(problem, outcome.point.z, sigma):
-        words = _words(problem, error.place)
-        name = "hole positions" if error.kind == "position" else f"{error.kind} of {words}"
+    for error in posing.error_sources(problem, outcome.point.z, sigma, share):
+        name = OF_ALL.get(error.kind, f"{error.kind} of {_words(problem, error.place)}")
         source = Source(
             name,
             "random" if error.kind == "noise" else "systematic",
@@ -288,6 +290,8 @@ def _of_errors(outcome: Outcome, quantities: int) -> list[Source]:
 def _improved(problem: Problem, error: ErrorSource) -> tuple[str, Array]:
     """Return words for a smaller error and its effect; no words where there is nothing to gain."""
     words, effect = _words(problem, error.place), error.effect
+    if error.kind == "misfit":
+        return "", effect
     if error.kind == "position":
         sds = [s.position_sd for s in problem.measured.sensors if s.place == "fin"]
         smaller = np.array([min(sd, CAREFUL_HOLES) / sd if sd > 0 else 1.0 for sd in sds])

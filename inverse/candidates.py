@@ -3,24 +3,26 @@
 A rig that states its tip asks for that tip alone; one that leaves it out asks which of the three that a
 finite fin can have the readings support (infinite is only taken when stated: on a long fin it is the
 limit of the others, on a short one it is nothing that can be built). A sharp tip can be adiabatic only. With
-a sensor on the plate each comes with and without a joint. All candidates have the same probability before
-the readings.
+a sensor on the plate each comes with and without a joint. Those that may matter come once more with a smooth
+misfit. Before the readings all are equally probable, with a misfit a quarter as much.
 """
 
 import math
 import zlib
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from finback import diagnostics, fast, routes
 from finback.estimate import CandidateScore
+from finback.misfit import FEWEST_SENSORS
 from finback.posing import is_read, pose
-from finback.problem import LAW_WORDS, Candidate, Problem
+from finback.problem import LAW_WORDS, ODDS_OF_MISFIT, Candidate, Problem
 from finback.readings import Readings
 from finback.rig import LawName, Rig, TipName
-from finback.routes import Outcome
+from finback.routes import Outcome, Route
 from finback.sampling import Settings
 
 Array = NDArray[np.float64]
@@ -31,6 +33,7 @@ SHARP_TIPS: tuple[TipName, ...] = ("adiabatic",)
 """What is left of them for a tip without a face: it loses no heat, whatever its coefficient, and nothing can
 hold it at a temperature."""
 WORTH_SAMPLING = 5.0  # nats below the best: a candidate further down has a probability below 0.007
+WORTH_SMOOTHING = 6.0  # nats below the best, by an estimate: one more, as it may be off
 LOO_DRAWS = 500  # an ensemble
 
 
@@ -58,10 +61,11 @@ def compared_laws(rig: Rig) -> tuple[LawName, ...]:
     return ("uniform", "free-convection") if free else ("uniform",)
 
 
-def why_compared(rig: Rig, left_out: Sequence[str] = ()) -> str:
+def why_compared(rig: Rig, left_out: Sequence[str] = (), smooth: bool = False) -> str:
     """Return one sentence on which surface laws and tips a fit compares, and why.
 
-    Argument: left_out, names of candidates that have more unknowns than a run has readings.
+    Arguments: left_out, names of candidates that have more unknowns than a run has readings; smooth, whether
+    some are compared with a smooth misfit.
     """
     laws = compared_laws(rig)
     words = " and ".join(LAW_WORDS[law] for law in laws)
@@ -81,8 +85,9 @@ def why_compared(rig: Rig, left_out: Sequence[str] = ()) -> str:
         tips = "tips as the rig lists them"
     else:
         tips = "the rig leaves the tip open, so all that a finite fin can have are compared"
+    also = "; what may matter also with a smooth misfit of its profile" if smooth else ""
     few = f"; too few readings for {'; '.join(left_out)}" if left_out else ""
-    return f"{told}; {tips}{few}."
+    return f"{told}; {tips}{also}{few}."
 
 
 def compare(
@@ -97,17 +102,10 @@ def compare(
     sampler. The random streams belong to seed, run and candidate, whatever else is computed.
     """
     settings = settings or Settings()
-    run = zlib.crc32(readings.run.encode())
-    chosen = enumerate_candidates(rig, readings)
-    problems = affordable([pose(rig, readings, candidate) for candidate in chosen])
-    weighed = []
-    for number, problem in enumerate(problems):
-        progress("comparing candidates", 0.3 * number / len(problems))
-        weighed.append(routes.weigh(problem, np.random.SeedSequence([seed, run, _number_of(problem)])))
-    best = max(weighed, key=lambda route: route.fast.evidence.log)
+    weighed = weigh(rig, readings, seed, progress)
+    best = max(weighed, key=lambda route: route.log_weight)
     worth = [
-        route is best
-        or (route.fast.evidence.log > best.fast.evidence.log - WORTH_SAMPLING and route.khat > fast.TRUSTED)
+        route is best or (route.log_weight > best.log_weight - WORTH_SAMPLING and route.khat > fast.TRUSTED)
         for route in weighed
     ]
     outcomes = []
@@ -121,11 +119,47 @@ def compare(
             progress("sampling", 0.3 + 0.6 * (done + fraction) / sum(worth))
 
         outcomes.append(route.sampled(settings, report))
-    return sorted(outcomes, key=lambda o: -o.evidence.log)
+    return sorted(outcomes, key=lambda o: -o.log_weight)
 
 
-def _number_of(problem: Problem) -> int:
-    return zlib.crc32(problem.candidate.name.encode())
+def weigh(rig: Rig, readings: Readings, seed: int, progress: Progress) -> list[Route]:
+    """Weigh every candidate by the fast route, and those that may matter with a smooth misfit as well.
+
+    Arguments: as those of `compare`.
+    """
+    run = zlib.crc32(readings.run.encode())
+
+    def one(problem: Problem, start: Array | None = None) -> Route:
+        number = zlib.crc32(problem.candidate.name.encode())
+        return routes.weigh(problem, np.random.SeedSequence([seed, run, number]), start)
+
+    chosen = enumerate_candidates(rig, readings)
+    problems = affordable([pose(rig, readings, candidate) for candidate in chosen])
+    plain = []
+    for number, problem in enumerate(problems):
+        progress("comparing candidates", 0.2 * number / len(problems))
+        plain.append(one(problem))
+    smoothed = []
+    worth = worth_smoothing(plain)
+    for number, route in enumerate(worth):
+        progress("comparing candidates", 0.2 + 0.1 * number / len(worth))
+        posed = pose(rig, readings, replace(route.point.problem.candidate, misfit=True))
+        start = np.insert(route.point.z, posed.n_physical, posed.prior_mean[posed.n_physical])
+        smoothed.append(one(posed, start))
+    return plain + smoothed
+
+
+def worth_smoothing(weighed: Sequence[Route]) -> list[Route]:
+    """Return the candidates that may matter with a smooth misfit; none where few sensors are on the fin.
+
+    How much it would gain is judged by linear algebra at the fit.
+    """
+    if len(weighed[0].point.problem.measured.positions) < FEWEST_SENSORS:
+        return []
+    odds = math.log(ODDS_OF_MISFIT)
+    smoothed = [route.log_weight + routes.misfit_gain(route) + odds for route in weighed]
+    best = max(*smoothed, *(route.log_weight for route in weighed))
+    return [route for route, log in zip(weighed, smoothed, strict=True) if log > best - WORTH_SMOOTHING]
 
 
 def affordable(problems: Sequence[Problem]) -> list[Problem]:
@@ -145,8 +179,8 @@ def affordable(problems: Sequence[Problem]) -> list[Problem]:
 
 
 def probabilities(outcomes: Sequence[Outcome]) -> Array:
-    """Return the posterior probability of each outcome's candidate, equal before the readings."""
-    logs = np.array([o.evidence.log for o in outcomes])
+    """Return the posterior probability of each outcome's candidate."""
+    logs = np.array([o.log_weight for o in outcomes])
     weights: Array = np.exp(logs - logs.max())
     shares: Array = weights / weights.sum()
     return shares

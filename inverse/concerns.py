@@ -2,11 +2,16 @@
 
 from collections.abc import Mapping, Sequence
 
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import posing
 from finback.estimate import CandidateScore, FitQuality, SamplerRecord, Summary
 from finback.findings import Finding, Severity
 from finback.models.constants import ZERO_CELSIUS
 from finback.models.validity import TRANSVERSE_BIOT_LIMIT
 from finback.parameters import UNMEASURED_AIR
+from finback.problem import SMOOTH_MISFIT
 from finback.quantity import format_number, pretty_unit
 from finback.rig import Rig
 from finback.routes import Outcome
@@ -14,7 +19,10 @@ from finback.summaries import OF_THE_JOINT
 from finback.thermocouples import ThermocoupleClass
 from finback.wording import listed, quoted
 
+Array = NDArray[np.float64]
+
 MISFIT_P = 0.01
+LIKELY = 0.5  # probability of a smooth misfit above which it is said
 CLEAR = 0.9  # probability from which the readings are said to support a candidate
 MENTIONED = 0.05  # and below which one is not named among those that cannot be told apart
 HEATER_MARGIN = 2.0  # standard uncertainties of its power
@@ -32,15 +40,26 @@ APART = "state the conductivity or measure the heat into the fin"
 
 
 def collect(
-    rig: Rig, found: Mapping[str, Summary], quality: FitQuality, sampler: SamplerRecord, best: Outcome
+    rig: Rig,
+    found: Mapping[str, Summary],
+    quality: FitQuality,
+    sampler: SamplerRecord,
+    best: Outcome,
+    smooth: Finding | None = None,
+    heat: float | None = None,
 ) -> tuple[Finding, ...]:
-    """Return the findings of a fit, gravest first."""
+    """Return the findings of a fit, gravest first.
+
+    `smooth` is what was found of a smooth misfit, `heat` [W] what would flow without one.
+    """
+    explained = smooth is not None and not best.problem.candidate.misfit
     everything = [
         *_undetermined(rig, found, best),
-        *_misfit(quality),
+        *([] if smooth is None else [smooth]),
+        *([] if explained else _misfit(quality)),
         *_validity(found),
         *_thermocouples(best),
-        *_heater(found, best),
+        *_heater(found, best, heat),
         *_unread_air(rig, found, best),
         *_convergence(sampler),
         *_disagreement(best),
@@ -81,6 +100,25 @@ def _reason(
     if not parted and name in ("heat", "base_heat_flux"):
         return "caution", f"is not determined without a conductivity; {APART}"
     return "note" if name in OF_A_LAW else "caution", "is not determined by these readings"
+
+
+def smooth_misfit(outcomes: Sequence[Outcome], probabilities: Sequence[float]) -> Finding | None:
+    """Return a finding where the candidates with a smooth misfit are more probable than those without."""
+    shares = [(p, o) for p, o in zip(probabilities, outcomes, strict=True) if o.problem.candidate.misfit]
+    probability = float(sum(p for p, _ in shares))
+    if probability <= LIKELY:
+        return None
+    outcome = shares[0][1]
+    problem = outcome.problem
+    share = float(np.exp(np.median(outcome.draws[..., problem.n_physical])))
+    most = share * float(np.sqrt(np.diag(posing.smooth_covariance(problem, outcome.point.z)).max()))
+    message = (
+        f"The readings depart from every model in a smooth pattern (probability {probability:.2g}) of some "
+        f"{100 * share:.2g} % of the excess temperature, up to {most:.2g} K: the intervals allow for an h "
+        "that changes along the fin, leads that carry heat off, or air that is not the same everywhere, but "
+        "not for a sensor that is wrong."
+    )
+    return Finding("misfit", "caution", message, evidence={"probability": probability, "share": share})
 
 
 def _misfit(quality: FitQuality) -> list[Finding]:
@@ -125,9 +163,19 @@ def _thermocouples(best: Outcome) -> list[Finding]:
     return findings
 
 
-def _heater(found: Mapping[str, Summary], best: Outcome) -> list[Finding]:
+def heat_asked_for(
+    found: Mapping[str, Summary], outcomes: Sequence[Outcome], evaluated: Sequence[Mapping[str, Array]]
+) -> float | None:
+    """Return the heat [W] that the temperatures ask for, also where a misfit would explain it away."""
+    name = "plate_heat" if "plate_heat" in found else "heat"
+    if not outcomes[0].problem.candidate.misfit:
+        return found[name].median
+    pairs = zip(outcomes, evaluated, strict=True)
+    return float(np.median(next(q[name] for o, q in pairs if not o.problem.candidate.misfit)))
+
+
+def _heater(found: Mapping[str, Summary], best: Outcome, heat: float | None) -> list[Finding]:
     """Return a finding where the heat that the temperatures ask for is more than a heater supplies."""
-    heat = found["plate_heat" if "plate_heat" in found else "heat"].median
     measured = best.problem.measured
     if heat is None:
         return []
@@ -195,12 +243,16 @@ def _disagreement(best: Outcome) -> list[Finding]:
 
 
 def compare_in_words(scores: Sequence[CandidateScore], tip_stated: bool) -> str:
-    """Return one sentence on what the readings say of the candidates, best first."""
-    best = scores[0]
-    if len(scores) == 1:
-        return f"Only one model was posed, the {best.name}" + (" that the rig states." if tip_stated else ".")
-    if best.probability >= CLEAR:
-        return f"The readings support the {best.name} (probability {best.probability:.3g})."
-    rivals = [s for s in scores if s.probability >= MENTIONED]
-    named = " and ".join(f"{s.name} ({s.probability:.2g})" for s in rivals)
+    """Return one sentence on what the readings say of the candidates' physics, best first."""
+    shares: dict[str, float] = {}
+    for score in scores:
+        physics = score.name.removesuffix(SMOOTH_MISFIT)
+        shares[physics] = shares.get(physics, 0.0) + score.probability
+    best = max(shares, key=lambda name: shares[name])
+    if len(shares) == 1:
+        return f"Only one model was posed, the {best}" + (" that the rig states." if tip_stated else ".")
+    if shares[best] >= CLEAR:
+        return f"The readings support the {best} (probability {shares[best]:.3g})."
+    ordered = sorted(shares.items(), key=lambda item: -item[1])
+    named = " and ".join(f"{name} ({share:.2g})" for name, share in ordered if share >= MENTIONED)
     return f"The readings cannot tell between {named}; the intervals average over them."

@@ -71,11 +71,20 @@ def _lengths_given(problem: Problem, z: Array, random: np.random.Generator) -> A
     noise, n = problem.noise, len(by_lengths)
     quantities = problem.values(z)
     residuals = problem.measured.values - problem.predict_values(quantities, len(z))[:, :n]
+    if noise.smooth is not None:
+        inverse = noise.precision(quantities.get("noise", 0.0), quantities["misfit"])
+        seen_by = by_lengths.T @ inverse
+        left = np.eye(by_lengths.shape[1]) - seen_by @ by_lengths
+        return _normal(np.einsum("sin,sn->si", seen_by, residuals), left, random)
     sigma = np.asarray(quantities["noise"])[:, None] if noise.estimated else 0.0
     precision = 1 / np.broadcast_to(noise.variances(sigma), (len(z), n))
     seen = by_lengths.T @ noise.basis
     mean = ((residuals @ noise.basis) * precision) @ seen.T
-    left = np.eye(len(seen)) - np.einsum("in,sn,jn->sij", seen, precision, seen)
-    weights, axes = np.linalg.eigh(left)
+    return _normal(mean, np.eye(len(seen)) - np.einsum("in,sn,jn->sij", seen, precision, seen), random)
+
+
+def _normal(mean: Array, covariance: Array, random: np.random.Generator) -> Array:
+    """Draw one normal vector for each mean (n_sets, m) and covariance (n_sets, m, m)."""
+    weights, axes = np.linalg.eigh(covariance)
     normal = random.standard_normal(mean.shape) * np.sqrt(np.clip(weights, 0.0, None))
     return np.asarray(mean + np.einsum("sij,sj->si", axes, normal))

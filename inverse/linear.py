@@ -60,8 +60,8 @@ class LinearAnswers:
         if slope is None or problem.by_lengths is None:
             return 0.0, 0.0
         n = len(problem.by_lengths)
-        scale = np.sqrt(np.broadcast_to(problem.noise.variances(self.point.sigma), n))
-        seen = (problem.noise.basis.T @ problem.by_lengths) / scale[:, None]
+        scale = np.sqrt(np.broadcast_to(self.point.noise.variances(self.point.sigma), n))
+        seen = (self.point.noise.basis.T @ problem.by_lengths) / scale[:, None]
         shared = point.covariance @ point.jacobian[:n].T @ seen
         of_lengths = np.eye(len(slope)) - seen.T @ seen + seen.T @ point.jacobian[:n] @ shared
         added = 2 * gradient @ shared @ slope + slope @ of_lengths @ slope

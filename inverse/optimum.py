@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from finback import least_squares, posing
 from finback.least_squares import PointEstimate
 from finback.models.constants import STEFAN_BOLTZMANN
-from finback.noise import REFERENCE_SIGMA
+from finback.noise import REFERENCE_SIGMA, Noise
 from finback.parameters import UNMEASURED_AIR
 from finback.problem import Problem
 
@@ -32,7 +32,8 @@ class LeastSquares:
     """Least-squares optimum of a problem.
 
     `problem`: with its noise linearised at the optimum. `z` (p,): the parameter vector, noise included.
-    `point`: the estimate of the physical parameters, residuals whitened with the noise at `sigma` [K].
+    `point`: the estimate of the physical parameters, residuals whitened with `noise` at `sigma` [K]: the
+    problem's, with a misfit held at its share in z.
     `chi_square` and `degrees_of_freedom` count the readings, without heaters and stated values.
     """
 
@@ -42,16 +43,26 @@ class LeastSquares:
     sigma: float
     chi_square: float
     degrees_of_freedom: int
+    noise: Noise
 
 
-def fit(problem: Problem) -> LeastSquares:
-    """Fit a problem by least squares, from a start of its own."""
-    z = starting_point(problem)
+def fit(problem: Problem, start: Array | None = None) -> LeastSquares:
+    """Fit a problem by least squares, from a start (p,) or one of its own.
+
+    The share of a misfit stays at its start, or is the most probable one beforehand: by least squares alone
+    it would be none.
+    """
+    z = starting_point(problem) if start is None else start
     found = _fit_given_noise_model(problem, z)
     if posing.needs_linearising(problem):
         for _ in range(LINEARISING_ROUNDS):
             found = _fit_given_noise_model(posing.linearise(problem, found.z), found.z)
     return found
+
+
+def refit(found: LeastSquares, start: Array) -> LeastSquares:
+    """Fit again with the same noise, from a start (p,) that has another share of misfit."""
+    return _fit_given_noise_model(found.problem, start)
 
 
 def starting_point(problem: Problem) -> Array:
@@ -121,6 +132,10 @@ def _grid(problem: Problem, level: Mapping[str, float]) -> Array:
 
 
 def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
+    if problem.candidate.misfit:
+        at = problem.n_physical
+        found = _fit_given_noise_model(problem.given(math.exp(start[at])), np.delete(start, at))
+        return replace(found, problem=problem, z=np.insert(found.z, at, start[at]))
     physical, n = problem.n_physical, len(problem.measured.values)
     sigma = REFERENCE_SIGMA
     point = least_squares.fit(_residuals(problem, sigma), start[:physical])
@@ -140,7 +155,7 @@ def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
     is_reading = np.ones(len(point.residuals), dtype=bool)
     is_reading[n : n + len(problem.measured.bounds)] = False
     chi_square = float(np.square(point.residuals[is_reading]).sum())
-    return LeastSquares(problem, z, point, sigma, chi_square, freedom)
+    return LeastSquares(problem, z, point, sigma, chi_square, freedom, problem.noise)
 
 
 def _residuals(problem: Problem, sigma: float) -> least_squares.Residuals:

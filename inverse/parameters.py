@@ -34,6 +34,7 @@ DEFAULT_PRIORS: dict[str, tuple[Transform, Normal, str]] = {
     "bare_area": ("log", within_a_factor(0.01, 10.0), "m^2"),
     "loss": ("identity", Normal(0.0, 100.0), "W"),
     "loss_coefficient": ("identity", Normal(0.0, 10.0), "W/K"),
+    "misfit": ("log", within_a_factor(0.005, 2.5), "1"),
     "noise": ("log", within_a_factor(0.2, 10.0), "K"),
 }
 """Wide priors by parameter: coordinate, prior, reported unit. Choices of ours, wide enough that determined
@@ -78,6 +79,7 @@ LABELS = {
     "loss": "loss of the plate",
     "loss_coefficient": "loss of the plate a kelvin",
     "reference_excess": "excess temperature that h belongs to",
+    "misfit": "smooth misfit, as a share of the excess temperature",
     "noise": "noise of a reading",
 }
 
@@ -128,7 +130,8 @@ class Parameter:
                 if self.prior.sd < 0.3
                 else f"within a factor of {factor:.3g}"
             )
-            text = f"{label}: {centre:.4g} {self.unit} {width}"
+            unit = "" if self.unit == "1" else f" {self.unit}"
+            text = f"{label}: {centre:.4g}{unit} {width}"
         elif self.transform == "bounded":
             low, centre, high = self.values(self.prior.mean + self.prior.sd * np.array([-1.0, 0.0, 1.0]))
             text = f"{label}: {centre:.3g}, most likely from {low:.2g} to {high:.2g}"

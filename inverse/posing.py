@@ -7,7 +7,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import expectation
+from finback import expectation, misfit
 from finback import noise as noises
 from finback.parameters import UNMEASURED_AIR, Parameter, default, stated
 from finback.problem import Candidate, Measured, Problem
@@ -21,7 +21,7 @@ SMALLEST_NOISE = 1e-6  # K or W; keeps two sensors that share all their error fr
 SMALLEST_REFERENCE = 1.0  # K
 LENGTH_STEP = 1e-4  # relative step of a length in the sensitivities
 
-ErrorKind = Literal["noise", "calibration", "position"]
+ErrorKind = Literal["noise", "calibration", "position", "misfit"]
 
 
 def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
@@ -34,6 +34,8 @@ def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
     if candidate.law == "free-convection":
         fixed["reference_excess"] = reference_excess(rig, readings)
     covariance, estimated = _stated_covariance(measured)
+    if candidate.misfit:
+        parameters.append(default("misfit"))
     if estimated.any():
         parameters.append(default("noise"))
     return Problem(
@@ -43,7 +45,7 @@ def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
         parameters=tuple(parameters),
         fixed=fixed,
         measured=measured,
-        noise=noises.build(covariance, estimated),
+        noise=noises.build(covariance, estimated, _smooth_as_read(rig, readings, candidate, measured)),
     )
 
 
@@ -52,10 +54,24 @@ def reference_excess(rig: Rig, readings: Readings) -> float:
 
     It is the fin's mean one by the readings, so that the coefficient is close to the mean along the fin.
     """
+    warm = _warmth(rig, readings)
+    return max(abs(warm.surface - warm.air), SMALLEST_REFERENCE)
+
+
+def _warmth(rig: Rig, readings: Readings) -> expectation.Warmth:
     stated = rig.surroundings.air
     warm = expectation.warmth(rig, readings, UNMEASURED_AIR.mean if stated is None else stated.value)
     assert warm is not None, "an air temperature is given"
-    return max(abs(warm.surface - warm.air), SMALLEST_REFERENCE)
+    return warm
+
+
+def _smooth_as_read(rig: Rig, readings: Readings, candidate: Candidate, measured: Measured) -> Array | None:
+    """Return what a misfit of share 1 adds to the covariance, with excess temperatures as they were read."""
+    if not candidate.misfit:
+        return None
+    n_fin = len(measured.positions)
+    excess = measured.values[:n_fin] - _warmth(rig, readings).air
+    return misfit.covariance(measured.positions, excess, rig.profile().length, len(measured.values))
 
 
 def is_read(sensor: Sensor, readings: Readings) -> bool:
@@ -64,9 +80,9 @@ def is_read(sensor: Sensor, readings: Readings) -> bool:
 
 
 def needs_linearising(problem: Problem) -> bool:
-    """Tell whether positions or geometry are uncertain, so that the noise depends on the optimum."""
+    """Tell whether positions, geometry or the model are uncertain, so that noise depends on the optimum."""
     positions = any(s.position_sd > 0 for s in problem.measured.sensors)
-    return positions or any(q.sd > 0 for q in problem.rig.geometry.values())
+    return positions or problem.candidate.misfit or any(q.sd > 0 for q in problem.rig.geometry.values())
 
 
 def linearise(problem: Problem, z: Array) -> Problem:
@@ -79,7 +95,8 @@ def linearise(problem: Problem, z: Array) -> Problem:
     if by_lengths is not None:
         covariance = covariance + by_lengths @ by_lengths.T
     spread = np.square(_by_positions(problem, z))
-    noise = noises.build(covariance + np.diag(spread), estimated)
+    smooth = smooth_covariance(problem, z) if problem.candidate.misfit else None
+    noise = noises.build(covariance + np.diag(spread), estimated, smooth)
     return replace(problem, noise=noise, by_lengths=by_lengths)
 
 
@@ -96,11 +113,12 @@ class ErrorSource:
     effect: Array
 
 
-def error_sources(problem: Problem, z: Array, sigma: float) -> tuple[ErrorSource, ...]:
+def error_sources(problem: Problem, z: Array, sigma: float, share: float = 0.0) -> tuple[ErrorSource, ...]:
     """Return the covariance of the readings by source: it is the sum of effect effect' over all of them.
 
     Uncertain lengths are not among them: `Problem.by_lengths` holds theirs. Arguments: problem; z (p,), where
-    hole positions are linearised; sigma [K], the noise of a reading where that is estimated.
+    hole positions are linearised; sigma [K], the noise of a reading where that is estimated; share [1] of a
+    smooth misfit, where the candidate has one.
     """
     random, shared, places = _parts(problem.measured)
     random = np.where(np.isnan(random), sigma, random)
@@ -112,6 +130,9 @@ def error_sources(problem: Problem, z: Array, sigma: float) -> tuple[ErrorSource
     if any(sensor.position_sd > 0 for sensor in problem.measured.sensors):
         by_positions = _by_positions(problem, z)
         found.append(ErrorSource("position", "fin", np.diag(by_positions)[:, places == "fin"]))
+    if problem.candidate.misfit:
+        weights, axes = np.linalg.eigh(smooth_covariance(problem, z))
+        found.append(ErrorSource("misfit", "fin", share * axes * np.sqrt(np.clip(weights, 0.0, None))))
     return tuple(source for source in found if source.effect.any())
 
 
@@ -214,6 +235,14 @@ def _unknowns(
 def uncertain_lengths(rig: Rig) -> list[tuple[str, float]]:
     """Return name and standard uncertainty [m] of each length that is not exactly known."""
     return [(name, quantity.sd) for name, quantity in rig.geometry.items() if quantity.sd > 0]
+
+
+def smooth_covariance(problem: Problem, z: Array) -> Array:
+    """Return what a misfit of share 1 adds to the covariance (n, n) [K²] with the fin as at z (p,)."""
+    x, n = problem.measured.positions, len(problem.measured.values)
+    values = problem.values(z[None])
+    excess = problem.solve(values, x).temperatures[0] - np.ravel(values["air"])[0]
+    return misfit.covariance(x, excess, problem.rig.profile().length, n)
 
 
 def _length_sensitivity(problem: Problem, z: Array, name: str) -> Array:

@@ -6,7 +6,7 @@ the noise. Everything takes a block of parameter vectors, (n_sets, n_parameters)
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -28,6 +28,12 @@ LAW_WORDS: Mapping[LawName, str] = {
     "varying": "h varying along the fin",
     "radiating": "uniform h and radiation",
 }
+SMOOTH_MISFIT = ", smooth misfit"
+"""What the name of a candidate with a misfit ends on."""
+ODDS_OF_MISFIT = 0.25
+"""A candidate with a smooth misfit over the same one without, before the readings: a rig is taken to be as it
+is described unless the readings speak against that, and a model without a misfit is right or nearly so more
+often than not."""
 HEATS = ("heat", "heater")
 FINEST_NOISE = 1e-6  # K; finer than any reading, and what readings without errors are left with
 
@@ -37,7 +43,8 @@ class Candidate:
     """One hypothesis of the physics: the tip, whether there is a joint at the base, and the surface's law.
 
     `joint_possible`: whether the rig reads a plate, so that a joint could be seen at all; `law_named`:
-    whether its name says the law, as it does where several are compared.
+    whether its name says the law, as it does where several are compared; `misfit`: whether the profile may
+    differ smoothly from its physics.
     """
 
     tip: TipName
@@ -45,16 +52,27 @@ class Candidate:
     joint_possible: bool
     law: LawName = "uniform"
     law_named: bool = False
+    misfit: bool = False
 
     @property
     def name(self) -> str:
-        """Name in results, such as "convective tip, joint"."""
+        """Name in results, such as "convective tip, joint, smooth misfit"."""
+        return self.physics + SMOOTH_MISFIT * self.misfit
+
+    @property
+    def physics(self) -> str:
+        """Name of its physics, with or without a misfit."""
         parts = [f"{self.tip} tip"]
         if self.joint_possible:
             parts.append("joint" if self.joint else "no joint")
         if self.law_named:
             parts.append(LAW_WORDS[self.law])
         return ", ".join(parts)
+
+    @property
+    def log_prior(self) -> float:
+        """Log probability [nats] before the readings, up to a constant."""
+        return math.log(ODDS_OF_MISFIT) if self.misfit else 0.0
 
 
 @dataclass(frozen=True)
@@ -82,7 +100,8 @@ class Measured:
 class Problem:
     """One candidate posed on one run.
 
-    `parameters`: the unknowns in the order of a parameter vector, the noise last where it is estimated.
+    `parameters`: the unknowns in the order of a parameter vector, the physical ones first, then the share of
+    a smooth misfit and the noise, where they are estimated.
     `fixed`: what is exactly known, by name, in SI units. `by_lengths` (n, n_lengths) [K, W]: what one
     standard uncertainty of each uncertain length makes of each reading, once the noise holds it.
     """
@@ -118,8 +137,8 @@ class Problem:
 
     @cached_property
     def n_physical(self) -> int:
-        """Number of parameters that are not the noise."""
-        return len(self.parameters) - self.noise.estimated
+        """Number of parameters that are neither misfit nor noise."""
+        return len(self.parameters) - self.noise.estimated - self.candidate.misfit
 
     @cached_property
     def _logs(self) -> NDArray[np.bool_]:
@@ -147,6 +166,12 @@ class Problem:
         if self.noise.estimated:
             found["noise"] = np.hypot(natural[:, -1], FINEST_NOISE)
         return found
+
+    def given(self, misfit: float) -> "Problem":
+        """Return the problem with its misfit held at one share [1], which is then an unknown no more."""
+        parameters = tuple(p for p in self.parameters if p.name != "misfit")
+        candidate = replace(self.candidate, misfit=False)
+        return replace(self, candidate=candidate, parameters=parameters, noise=self.noise.given(misfit))
 
     def build(
         self, values: Values, changes: Mapping[str, float] | None = None
@@ -204,6 +229,19 @@ class Problem:
         values = self.values(z)
         predicted = self.predict_values(values, len(z))
         n = len(self.measured.values)
+        whitened, log_variances = self._whiten(self.measured.values - predicted[:, :n], values, sigma)
+        if self.measured.bounds:
+            from scipy.special import log_ndtr
+
+            margin = (self.measured.bound_values - predicted[:, n:]) / self.measured.bound_sds
+            whitened = np.concatenate([whitened, np.sqrt(-2 * log_ndtr(margin))], axis=1)
+        return whitened, log_variances
+
+    def _whiten(self, residuals: Array, values: Values, sigma: float | None) -> tuple[Array, Array | float]:
+        """Return whitened residuals of the readings with Gaussian noise, and the sum of log variances."""
+        if self.noise.smooth is not None:
+            noise = values.get("noise", 0.0) if sigma is None else sigma
+            return self.noise.whiten(residuals, noise, values["misfit"])
         if not self.noise.estimated:
             variances: Array = self.noise.floor
         elif sigma is None:
@@ -212,14 +250,8 @@ class Problem:
             variances = self.noise.variances(noise_values[:, None])
         else:
             variances = self.noise.variances(sigma)
-        whitened = ((self.measured.values - predicted[:, :n]) @ self.noise.basis) / np.sqrt(variances)
-        log_variances = np.log(variances).sum(axis=-1) if self.noise.estimated else 0.0
-        if self.measured.bounds:
-            from scipy.special import log_ndtr
-
-            margin = (self.measured.bound_values - predicted[:, n:]) / self.measured.bound_sds
-            whitened = np.concatenate([whitened, np.sqrt(-2 * log_ndtr(margin))], axis=1)
-        return whitened, log_variances
+        whitened = (residuals @ self.noise.basis) / np.sqrt(variances)
+        return whitened, np.log(variances).sum(axis=-1) if self.noise.estimated else 0.0
 
     def log_likelihood(self, z: Array) -> Array:
         """Return ln p(readings | z) of a block (n_sets, p) -> (n_sets,)."""
@@ -247,6 +279,10 @@ class Problem:
         values = self.values(z)
         n = len(self.measured.values)
         residuals = self.measured.values - self.predict_values(values, len(z))[:, :n]
+        if self.noise.smooth is not None:
+            inverse = self.noise.precision(values.get("noise", 0.0), values["misfit"])
+            pull, precision = np.einsum("sij,sj->si", inverse, residuals), np.einsum("sii->si", inverse)
+            return np.asarray(0.5 * (np.log(precision) - LOG_TWO_PI - np.square(pull) / precision))
         if self.noise.estimated:
             weights = 1 / self.noise.variances(np.asarray(values["noise"])[:, None])
         else:

@@ -13,7 +13,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import derived, evidence, fast, laplace, optimum, sampling
+from finback import derived, evidence, fast, laplace, optimum, parameters, posing, sampling
 from finback import proposal as proposals
 from finback.evidence import Evidence
 from finback.fast import FastPosterior
@@ -32,6 +32,10 @@ SPARE_FOR_NOISE = (
     10  # readings more than unknowns, that know a noise to a quarter: its posterior is no funnel
 )
 LADDER_FITS = 0.1  # efficiency below which a ladder has missed its posterior: readings without any error
+MISFIT_SPREAD = 0.7  # of the logarithm of its share: about what some ten readings leave
+LOOKED_AT = np.array([-2.0, -1.0, 0.0, 1.0, 2.0, 3.0])  # standard deviations beforehand of the same
+SMALLER = np.array([1.0, 0.5, 0.25])  # noise than least squares estimate where there is no misfit
+SMALLEST_NOISE = 1e-3  # K; readings without errors would leave none
 SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
 
 
@@ -55,6 +59,11 @@ class Outcome:
     converged: bool
     n_draws: int
     disagreeing: tuple[str, ...] = ()
+
+    @property
+    def log_weight(self) -> float:
+        """Log probability [nats] of its candidate, up to a constant."""
+        return self.evidence.log + self.problem.candidate.log_prior
 
     @property
     def sampled(self) -> bool:
@@ -85,6 +94,11 @@ class Route:
         names = [*self.quantities]
         khats = self.fast.khat_of(np.stack([self.quantities[name] for name in names], axis=1))
         return {"z": self.fast.khat, **dict(zip(names, khats.tolist(), strict=True))}
+
+    @property
+    def log_weight(self) -> float:
+        """Log probability [nats] of its candidate, up to a constant."""
+        return self.fast.evidence.log + self.point.problem.candidate.log_prior
 
     @property
     def khat(self) -> float:
@@ -131,18 +145,50 @@ class Route:
         return tuple(found)
 
 
-def weigh(problem: Problem, seed: np.random.SeedSequence) -> Route:
+def weigh(problem: Problem, seed: np.random.SeedSequence, start: Array | None = None) -> Route:
     """Fit one candidate and weigh draws of a proposal that is fitted to its posterior.
 
-    Arguments: problem; seed, of three streams: proposal and lattice, chain, bridge or dealing.
+    Arguments: problem; seed, of three streams: proposal and lattice, chain, bridge or dealing; start (p,) of
+    the least-squares fit.
     """
     seeds = seed.spawn(3)
-    point = optimum.fit(problem)
+    point = optimum.fit(problem, start)
     mode = find_mode(point)
+    if problem.candidate.misfit:  # how much there is of it, the posterior tells and not least squares
+        point = optimum.refit(point, mode.z)
     random = np.random.RandomState(np.random.MT19937(seeds[0]))
     proposal, efficiency = fit_proposal(point.problem, mode, random)
     weighted = fast.sample(point.problem.log_density, proposal, np.random.default_rng(seeds[0]))
     return Route(point, mode, proposal, efficiency, weighted, seeds)
+
+
+def misfit_gain(route: Route) -> float:
+    """Return the log evidence [nats] that a smooth misfit would add to a candidate without, at the most.
+
+    Linear at the fit, where residuals r are normal with covariance C + J S J' + a² K, S being what was known
+    beforehand: the largest density of a few a over that of none. Where the noise is estimated, it may be
+    smaller than it looks without a misfit.
+    """
+    point, problem = route.point, route.point.problem
+    n, p = len(problem.measured.values), problem.n_physical
+    prior = parameters.DEFAULT_PRIORS["misfit"][1]
+    shares = np.exp(prior.mean + prior.sd * LOOKED_AT)
+    smooth = posing.smooth_covariance(problem, point.z)
+    back = np.linalg.inv(point.noise.basis)
+    variances = np.broadcast_to(point.noise.variances(point.sigma), n)
+    to_readings = back.T * np.sqrt(variances)
+    residuals = to_readings @ point.point.residuals[:n]
+    spread = (to_readings @ point.point.jacobian[:n]) * problem.prior_sd[:p]
+    sigmas = np.maximum(point.sigma, SMALLEST_NOISE) * (SMALLER if problem.noise.estimated else np.ones(1))
+    known = [problem.noise.covariance(float(sigma)) + spread @ spread.T for sigma in sigmas]
+
+    def log_density(covariance: Array) -> float:
+        lower = np.linalg.cholesky(covariance)
+        whitened = np.linalg.solve(lower, residuals)
+        return -float(0.5 * np.square(whitened).sum() + np.log(np.diag(lower)).sum())
+
+    found = max(log_density(one + share**2 * smooth) for one in known for share in shares)
+    return found - max(map(log_density, known))
 
 
 def find_mode(point: LeastSquares) -> Mode:
@@ -154,8 +200,10 @@ def find_mode(point: LeastSquares) -> Mode:
     weights, axes = np.linalg.eigh(precision * np.outer(scale, scale))
     root = np.zeros((len(point.z), len(point.z)))
     root[:n, :n] = scale[:, None] * (axes / np.sqrt(np.maximum(weights, SMALLEST_WEIGHT)))
+    if problem.candidate.misfit:
+        root[n, n] = MISFIT_SPREAD
     if problem.noise.estimated:
-        root[n, n] = math.sqrt(0.5 / max(point.degrees_of_freedom, 1))
+        root[-1, -1] = math.sqrt(0.5 / max(point.degrees_of_freedom, 1))
     start = np.clip(
         point.z, problem.prior_mean - 3 * problem.prior_sd, problem.prior_mean + 3 * problem.prior_sd
     )
@@ -166,11 +214,13 @@ def fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) ->
     """Return a proposal fitted to the posterior, and its efficiency [1].
 
     An estimated noise makes the posterior of few readings a funnel, and its mode may be a spike far down in
-    it, where plate and air fit their readings without any noise: a ladder starts from the whole of it.
+    it, where plate and air fit their readings without any noise: a ladder starts from the whole of it. So
+    does one along the share of a misfit.
     """
     spare = len(problem.measured.values) - problem.n_physical
-    if problem.noise.estimated and spare < SPARE_FOR_NOISE:
-        ladder = proposals.ladder(problem.log_density, mode)
+    funnel = problem.noise.estimated and spare < SPARE_FOR_NOISE
+    if funnel or problem.candidate.misfit:
+        ladder = proposals.ladder(problem.log_density, mode, -1 if funnel else problem.n_physical)
         found = proposals.adapt(problem.log_density, ladder, random)
         if found[1] >= LADDER_FITS:
             return found

@@ -32,7 +32,7 @@ def of_joint(outcomes: Sequence[Outcome]) -> Sensitivity | None:
     for outcome in outcomes:
         candidate = outcome.problem.candidate
         change = _change(outcome, logs.get(_without(candidate))) if candidate.joint else 0.0
-        widened[candidate] = outcome.evidence.log + change
+        widened[candidate] = outcome.log_weight + change
     highest = max(widened.values())
     weights = {candidate: float(np.exp(log - highest)) for candidate, log in widened.items()}
     whole = sum(weights.values())

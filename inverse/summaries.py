@@ -25,6 +25,8 @@ LIMITED = {"h": ("h",), "k": ("k",), "joint": ("joint",), "joint_times_k": ("k",
 """Positive quantities that may have an upper limit only, and the parameters whose product each is."""
 POSITIVE = (*LIMITED, "h_over_k")
 """Quantities that are more than a limit only where they lie clear of zero."""
+SCATTER = ("misfit", "noise")
+"""What no physical parameter changes."""
 ONE_SIDED = 0.95  # probability of a limit where only a limit exists
 BEYOND = 3.0  # times its limit: where a quantity would have been seen, if the limit is the readings'
 
@@ -86,7 +88,7 @@ class Judge:
         label, unit = describe(name)
         exact = name in self.outcome.problem.fixed
         gradient = self.gradients.get(name)
-        if exact or name == "noise" or gradient is None:
+        if exact or name in SCATTER or gradient is None:
             determined = True
         else:
             determined = self.information.determines(gradient)
@@ -116,13 +118,15 @@ class Judge:
     def _source(self, name: str, gradient: Array | None, exact: bool) -> DeterminedBy:
         if exact:
             return "prior"
-        if name == "noise" or gradient is None:
-            return "readings"
+        if name in SCATTER or gradient is None:
+            return "both" if name == "misfit" else "readings"
         return self.information.source(gradient)
 
     def _least_squares(self, name: str) -> tuple[float | None, float | None]:
         if name == "noise":
             return self.outcome.point.sigma, None
+        if name == "misfit":
+            return None, None
         value, standard_error = self.linear.answer(name)
         return None if value is None else float(to_reported(name, np.array(value))), standard_error
 

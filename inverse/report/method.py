@@ -4,6 +4,7 @@ from dataclasses import dataclass
 
 from finback.candidates import compared_laws
 from finback.estimate import Estimate
+from finback.problem import SMOOTH_MISFIT
 from finback.rig import Rig
 from finback.shapes import SHAPES
 
@@ -56,6 +57,11 @@ RADIATION = Equation(
 CHANGING = Equation(
     "k(T) = k (1 + b (T − T_0))", "the conductivity follows the temperature; k is that at T_0"
 )
+MISFIT = Equation(
+    "C + a² θ(x) θ(x′) exp(−(x − x′)² / 2ℓ²)",
+    "smooth misfit: the covariance of readings along a fin whose profile differs from the model by a share "
+    "a of its excess temperature, much the same within ℓ = 0.3 L",
+)
 BALANCE = Equation(
     "Q = N q_b + A_bare q″(T_plate) + Q_loss", "heat of the plate: N fins, what is bare of it, and its losses"
 )
@@ -89,8 +95,12 @@ def equations(estimate: Estimate) -> tuple[Equation, ...]:
             "likelihood of all readings y at once, r = y − f(p); C holds random noise, the calibration error "
             "common to a kind of sensor, and hole positions through dT/dx",
         ),
+        *([MISFIT] if any(SMOOTH_MISFIT in score.name for score in estimate.candidates) else []),
         Equation("Zᵢ = ∫ Lᵢ(p) πᵢ(p) dp", "evidence of candidate i, with its prior π"),
-        Equation("Pᵢ = Zᵢ / Σⱼ Zⱼ", "its probability, all candidates being equally likely beforehand"),
+        Equation(
+            "Pᵢ = wᵢ Zᵢ / Σⱼ wⱼ Zⱼ",
+            "its probability, w being that beforehand: the same for all, a quarter with a smooth misfit",
+        ),
     ]
     return tuple(lines)
 

@@ -34,6 +34,7 @@ SYMBOLS = {
     "efficiency": "η",
     "effectiveness": "ε_f",
     "transverse_biot": "Bi",
+    "misfit": "a",
     "noise": "σ",
 }
 """Symbol of a quantity by its name in estimate.json; others go by their name."""

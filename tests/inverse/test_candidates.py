@@ -59,7 +59,8 @@ def outcomes() -> list[routes.Outcome]:
 
 
 def test_outcomes_come_most_probable_first(outcomes: list[routes.Outcome]) -> None:
-    logs = [o.evidence.log for o in outcomes]
+    odds = [0.25 if o.problem.candidate.misfit else 1.0 for o in outcomes]
+    logs = [o.evidence.log + math.log(odd) for o, odd in zip(outcomes, odds, strict=True)]
     assert logs == sorted(logs, reverse=True)
     found = candidates.probabilities(outcomes)
     np.testing.assert_allclose(found, np.exp(logs) / np.exp(logs).sum(), rtol=1e-9)
@@ -115,9 +116,10 @@ def test_too_few_readings_have_no_aicc() -> None:
 def test_an_improbable_candidate_is_weighed_and_not_sampled() -> None:
     rig = pin_rig(conductivity=STATED_K, tip="convective")
     found = candidates.compare(rig, exact_readings(rig), 1, quiet)
-    assert [o.sampled for o in found] == [True, False]
-    assert candidates.probabilities(found)[1] < 1e-6
-    assert found[1].draws.ndim == 3
+    assert [o.sampled for o in found] == [True, False, False]
+    assert candidates.probabilities(found)[2] < 1e-6
+    assert found[2].problem.candidate.name == "convective tip, no joint"
+    assert found[2].draws.ndim == 3
 
 
 def test_random_numbers_belong_to_seed_run_and_candidate() -> None:

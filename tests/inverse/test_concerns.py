@@ -63,7 +63,8 @@ def collect(
     found: dict[str, Summary], *, quality: FitQuality = GOOD, sampler: SamplerRecord = DONE, **more: object
 ) -> tuple[Finding, ...]:
     posed = {"rig": rig(), "best": best()} | more
-    return concerns.collect(posed["rig"], found, quality, sampler, posed["best"])
+    heat = found["heat"].median
+    return concerns.collect(posed["rig"], found, quality, sampler, posed["best"], heat=heat)
 
 
 def test_a_good_fit_has_nothing_to_say() -> None:

@@ -110,9 +110,10 @@ def test_the_wrong_profile_is_noticed() -> None:
     estimate = finback.fit(rig("convex-pin", PIN, joined=False), readings, seed=1)
     h = estimate.parameters["h"]
     assert "misfit" in {finding.code for finding in estimate.findings}
-    assert h.median is not None
-    assert h.sd is not None
-    assert abs(h.median - truth.h) > 5 * h.sd
+    # what fits nowhere but as a misfit of many per cent gives no number that would be wrong
+    assert h.median is None or h.low95 <= truth.h <= h.high95
+    plain = next(i for i, c in enumerate(estimate.candidates) if "misfit" not in c.name)
+    assert estimate.candidates[plain].probability < 1e-3
 
 
 def test_the_efficiency_of_a_triangular_fin_is_the_textbooks() -> None:

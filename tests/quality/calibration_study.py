@@ -48,6 +48,7 @@ PRIORS = {
     "exponent": within(0.25, 0.08, 0.0, 2.0),
     "rise": within(0.0, 0.4, -2.0, 2.0),
     "emissivity": within(0.8, 0.08, 0.0, 1.0),
+    "misfit": within_a_factor(0.005, 2.5),
     "noise": within_a_factor(0.15, 1.5),
 }
 """What truths are drawn from: tighter than the defaults, so that every one of them is a fin."""
@@ -73,6 +74,11 @@ FAMILIES: dict[str, tuple[Rig, Candidate]] = {
     "free convection": (_ranked(), Candidate("convective", True, True, "free-convection")),
     "varying h": (_ranked(), Candidate("convective", True, True, "varying")),
     "radiating": (_ranked(), Candidate("convective", True, True, "radiating")),
+    "smooth misfit": (_ranked(), Candidate("convective", True, True, misfit=True)),
+    "misfit and unstated noise": (
+        _ranked(noise=None, calibration=0.0),
+        Candidate("convective", True, True, misfit=True),
+    ),
 }
 
 
@@ -101,7 +107,10 @@ def rank(name: str, number: int) -> dict[str, float]:
     truth = np.array([random.normal(p.prior.mean, p.prior.sd) for p in known.parameters])
     predicted = known.predict(truth[None])[0]
     sigma = float(np.exp(truth[-1])) if known.noise.estimated else 0.0
-    errors = random.multivariate_normal(np.zeros(len(predicted)), known.noise.covariance(sigma))
+    share = float(np.exp(truth[known.n_physical])) if candidate.misfit else 0.0
+    # a misfit is a share of the excess temperature that the truth has
+    true = posing.linearise(known, truth).noise if candidate.misfit else known.noise
+    errors = random.multivariate_normal(np.zeros(len(predicted)), true.covariance(sigma, share))
     names = [sensor.name for sensor in known.measured.sensors]
     readings = Readings("drawn", dict(zip(names, (predicted + errors).tolist(), strict=True)))
     problem = replace(_known(posing.pose(rig, readings, candidate)), fixed=known.fixed)

@@ -175,7 +175,7 @@ def test_assumptions_method_provenance_and_cautions_are_told(parsed, pin_estimat
         "d²θ/dx² = m² θ",
         "m² = h P / (k A)",
         "−k θ′(0) = (Tplate − Tb) / R″",
-        "Pᵢ = Zᵢ / Σⱼ Zⱼ",
+        "Pᵢ = wᵢ Zᵢ / Σⱼ wⱼ Zⱼ",
     ):
         assert equation in texts["method"]
     for name, digest in pin_estimate.provenance.inputs.items():
