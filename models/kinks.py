@@ -34,10 +34,23 @@ A long fin settles at the air's temperature, and passes it by as much as is left
 """
 
 
-def of_side(cases: Cases) -> tuple[Values, ...]:
-    """Return the temperatures [K] at which the law of the side has a kink."""
+def of_side(cases: Cases, tip_held: bool) -> tuple[Values, ...]:
+    """Return the temperatures [K] at which the law of the side has a kink, nan in fins that cannot pass them.
+
+    Where all that drives a fin is on one side of a temperature the fin is too, up to rounding. A tip that is
+    held at that very temperature does reach it.
+    """
     own = getattr(cases.surface, "kinks", None)
-    return () if own is None else tuple(own(cases.air))
+    levels = () if own is None else tuple(own(cases.air))
+    if tip_held:
+        return levels
+    nearly = CLOSE * (cases.highest - cases.lowest)
+    found = []
+    for level in levels:
+        potential = cases.conductivity.potential(level, cases.air)
+        between = (cases.lowest + nearly < potential) & (potential < cases.highest - nearly)
+        found.append(np.where(between, level, np.nan))
+    return tuple(found)
 
 
 def of_solid(cases: Cases) -> tuple[Values, ...]:

@@ -44,6 +44,8 @@ BLUNT_POWERS = (1.0, 0.0, 0.5, 0.25)
 """The same for a blunt tip; 0 stands for the limit, a logarithm: the resistance of what lies beyond."""
 NEAR_SHARP_TIP = 1e-3
 """Share of the length at a sharp tip [1] where the error is not measured: heat may not reach the tip."""
+FEW_PIECES = 4
+"""Most layers and pieces [1] whose nodes are kept for good: below 1 MB; many take up to 30 MB."""
 FEW_BREAKS = 6
 """Most breaks of a profile [1] that all part pieces; of more, only those where section or perimeter jump."""
 
@@ -123,8 +125,9 @@ class Responses:
 
 
 def nodes(shape: Shape, plan: Plan) -> Nodes:
-    """Return the nodes of a plan; what a shape needs is found once and kept, of cells for some time."""
-    return _around_cells(shape, plan) if shape.cells else _nodes(shape, plan)
+    """Return the nodes of a plan; what a shape needs is found once and kept, many nodes for some time."""
+    few = not shape.cells and plan.layers + plan.pieces <= FEW_PIECES
+    return _nodes(shape, plan) if few else _many_nodes(shape, plan)
 
 
 @lru_cache(maxsize=256)
@@ -132,8 +135,8 @@ def _nodes(shape: Shape, plan: Plan) -> Nodes:
     return _build(shape, plan, _power(shape))
 
 
-@lru_cache(maxsize=64)
-def _around_cells(shape: Shape, plan: Plan) -> Nodes:
+@lru_cache(maxsize=24)
+def _many_nodes(shape: Shape, plan: Plan) -> Nodes:
     return _build(shape, plan, _power(replace(shape, cells=())))
 
 

@@ -193,6 +193,11 @@ class _Stand:
     block: _Block
     state: State
 
+    @property
+    def tip_held(self) -> bool:
+        """Whether the tip is held at a temperature."""
+        return bool(self.block.nodes.conductance)
+
     def heats(self) -> Array:
         """Return what enters the base and what side and tip's face lose [W], shape (2, n_sets)."""
         return np.stack([self.state.heat, self.block.nodes.roots @ self.state.loads])
@@ -220,7 +225,7 @@ class _Stand:
         """Tell in which sets one of several temperatures [K] lies within the fin, shape (n_sets,)."""
         if not levels:
             return np.zeros(len(self.block.rows), dtype=np.bool_)
-        held = bool(self.block.nodes.conductance)
+        held = self.tip_held
         ends = np.stack([self.state.base] + [held_potential(self.block.nodes, self.block.cases)] * held)
         known = np.vstack([self.state.temperatures, self.block.cases.temperatures(ends)[0]])
         return kinks.passed(known, levels, held)
@@ -286,7 +291,7 @@ def _changing(stand: _Stand, carried: _Stand) -> Flags:
     """
     misfit, cases, plan = stand.misfit(carried), stand.block.cases, stand.block.plan
     rough = np.asarray(~(misfit <= 1))
-    strong = () if stand.block.shape.cells else kinks.of_side(cases)
+    strong = () if stand.block.shape.cells else kinks.of_side(cases, stand.tip_held)
     kinked = stand.passes((*strong, *kinks.of_solid(cases)))
     rough |= kinked & ~(misfit <= CLOSER)
     rows = np.flatnonzero(kinked & ~rough)
@@ -301,10 +306,11 @@ def _parted_at_kinks(stand: _Stand, rough: Flags) -> Iterator[tuple[_Stand, Rows
     block = stand.block
     if block.plan.pieces > 1 or block.plan.count < ENOUGH or block.shape.cells:
         return
-    rows = np.flatnonzero(rough & stand.passes(kinks.of_side(block.cases)))
+    rows = np.flatnonzero(rough & stand.passes(kinks.of_side(block.cases, stand.tip_held)))
     some = stand.take(rows)
+    levels = kinks.of_side(some.block.cases, stand.tip_held)
     temperatures = some.block.cases.temperatures(some.potential(kinks.PLACES * block.shape.length))[0]
-    for cells, own in kinks.cells(temperatures, kinks.of_side(some.block.cases)):
+    for cells, own in kinks.cells(temperatures, levels):
         yield some.take(own).on(block.plan.around_cells(), cells), rows[own]
 
 
