@@ -4,7 +4,7 @@ A rig that states its tip asks for that tip alone; one that leaves it out asks w
 finite fin can have the readings support (infinite is only taken when stated: on a long fin it is the
 limit of the others, on a short one it is nothing that can be built). A sharp tip can be adiabatic only. With
 a sensor on the plate each comes with and without a joint. Those that may matter come once more with a smooth
-misfit. Before the readings all are equally probable, with a misfit a quarter as much.
+misfit. Before the readings all are equally probable, with a misfit a tenth as much.
 """
 
 import math
@@ -150,11 +150,14 @@ def weigh(rig: Rig, readings: Readings, seed: int, progress: Progress) -> list[R
 
 
 def worth_smoothing(weighed: Sequence[Route]) -> list[Route]:
-    """Return the candidates that may matter with a smooth misfit; none where few sensors are on the fin.
+    """Return the candidates that may matter with a smooth misfit.
 
-    How much it would gain is judged by linear algebra at the fit.
+    None where few sensors are on the fin, nor where the noise is estimated: it then holds what a model
+    misses, and the readings cannot tell the two apart. How much it would gain is judged by linear algebra at
+    the fit.
     """
-    if len(weighed[0].point.problem.measured.positions) < FEWEST_SENSORS:
+    problem = weighed[0].point.problem
+    if len(problem.measured.positions) < FEWEST_SENSORS or problem.noise.estimated:
         return []
     odds = math.log(ODDS_OF_MISFIT)
     smoothed = [route.log_weight + routes.misfit_gain(route) + odds for route in weighed]

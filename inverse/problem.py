@@ -30,7 +30,7 @@ LAW_WORDS: Mapping[LawName, str] = {
 }
 SMOOTH_MISFIT = ", smooth misfit"
 """What the name of a candidate with a misfit ends on."""
-ODDS_OF_MISFIT = 0.25
+ODDS_OF_MISFIT = 0.1
 """A candidate with a smooth misfit over the same one without, before the readings: a rig is taken to be as it
 is described unless the readings speak against that, and a model without a misfit is right or nearly so more
 often than not."""

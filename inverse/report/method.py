@@ -99,7 +99,7 @@ def equations(estimate: Estimate) -> tuple[Equation, ...]:
         Equation("Zᵢ = ∫ Lᵢ(p) πᵢ(p) dp", "evidence of candidate i, with its prior π"),
         Equation(
             "Pᵢ = wᵢ Zᵢ / Σⱼ wⱼ Zⱼ",
-            "its probability, w being that beforehand: the same for all, a quarter with a smooth misfit",
+            "its probability, w being that beforehand: the same for all, a tenth of it with a smooth misfit",
         ),
     ]
     return tuple(lines)

@@ -59,7 +59,7 @@ def outcomes() -> list[routes.Outcome]:
 
 
 def test_outcomes_come_most_probable_first(outcomes: list[routes.Outcome]) -> None:
-    odds = [0.25 if o.problem.candidate.misfit else 1.0 for o in outcomes]
+    odds = [0.1 if o.problem.candidate.misfit else 1.0 for o in outcomes]
     logs = [o.evidence.log + math.log(odd) for o, odd in zip(outcomes, odds, strict=True)]
     assert logs == sorted(logs, reverse=True)
     found = candidates.probabilities(outcomes)

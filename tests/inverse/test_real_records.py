@@ -124,3 +124,38 @@ def test_what_a_laboratory_really_knows_widens_the_aluminium_rod_and_the_budget_
     assert shares[largest] > 0.5
     assert estimate.improvement is not None
     assert estimate.improvement.source == largest
+
+
+# brass bar in still room air: a physics laboratory's record of 2017, sample/data.csv of the public repository
+# Physics-Simulations/UncValue, with the uncertainties that it states; its length is not stated
+BRASS = {
+    0.1: 98.0,
+    0.2: 74.7,
+    0.3: 57.1,
+    0.4: 47.3,
+    0.5: 39.3,
+    0.6: 34.2,
+    0.7: 31.1,
+    0.8: 29.3,
+    0.9: 28.2,
+    1.0: 27.6,
+    1.1: 27.4,
+}
+
+
+def test_the_stated_uncertainties_of_the_brass_bar_conflict_with_its_profile() -> None:
+    estimate = fit(
+        {"profile": "pin", "length": "1150 mm", "diameter": "30 mm +/- 0.1 mm"},
+        BRASS,
+        {
+            "defaults": {"noise": "0.1 K", "calibration": "0 K", "position": "1 mm"},
+            "TA": {"on": "air", "noise": "0.1 K"},
+        },
+        read_air=24.0,
+    )
+    assert {"misfit", "air-reference"} & {finding.code for finding in estimate.findings}
+    ratio = estimate.derived["h_over_k"]
+    assert ratio.sd is not None
+    assert ratio.median is not None
+    assert ratio.sd > 0.015 * ratio.median  # the formal one is 1 %
+    assert estimate.parameters["h"].median is None
