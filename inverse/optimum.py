@@ -71,7 +71,7 @@ def starting_point(problem: Problem) -> Array:
     Where nothing reads the air, the grid also holds air temperatures towards which the fin's may fall. A fin
     that is not linear starts from the optimum of the linear one that is most like it.
     """
-    if not is_linear(problem):
+    if not problem.is_linear:
         return _from_linear(problem)
     measured = problem.measured
     fin = measured.values[: len(measured.positions)]
@@ -88,13 +88,6 @@ def starting_point(problem: Problem) -> Array:
     whitened, _ = problem.whitened(block, REFERENCE_SIGMA)
     cost = np.einsum("ij,ij->i", whitened, whitened)
     return np.asarray(block[int(np.nanargmin(cost))])
-
-
-def is_linear(problem: Problem) -> bool:
-    """Tell whether a problem's fin has one h all along, one conductivity, and does not radiate."""
-    return (
-        problem.candidate.law == "uniform" and problem.rig.emissivity is None and problem.rig.change is None
-    )
 
 
 def _from_linear(problem: Problem) -> Array:

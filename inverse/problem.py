@@ -35,6 +35,7 @@ ODDS_OF_MISFIT = 0.1
 is described unless the readings speak against that, and a model without a misfit is right or nearly so more
 often than not."""
 HEATS = ("heat", "heater")
+PIECE = 1024  # sets of a linear fin at a time, that stay in the processor's cache
 FINEST_NOISE = 1e-6  # K; finer than any reading, and what readings without errors are left with
 
 
@@ -134,6 +135,11 @@ class Problem:
     def is_stated(self) -> NDArray[np.bool_]:
         """Which priors the rig states, shape (p,)."""
         return np.array([p.stated for p in self.parameters])
+
+    @cached_property
+    def is_linear(self) -> bool:
+        """Whether the fin has one h all along, one conductivity, and does not radiate."""
+        return self.candidate.law == "uniform" and self.rig.emissivity is None and self.rig.change is None
 
     @cached_property
     def n_physical(self) -> int:
@@ -267,6 +273,8 @@ class Problem:
 
     def log_density(self, z: Array) -> Array:
         """Return ln p(readings, z) of a block (n_sets, p) -> (n_sets,); -inf where it is not a number."""
+        if self.is_linear and len(z) > PIECE:
+            return np.concatenate([self.log_density(z[i : i + PIECE]) for i in range(0, len(z), PIECE)])
         found = self.log_likelihood(z) + self.log_prior(z)
         return np.where(np.isfinite(found), found, -np.inf)
 
