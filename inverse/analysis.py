@@ -1,7 +1,7 @@
 """The main job: one run of one rig to an estimate. What `finback fit` does is one call of `fit` here."""
 
 import sys
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from importlib.metadata import version
 from pathlib import Path
 
@@ -14,27 +14,15 @@ from finback import (
     candidates,
     checks,
     concerns,
+    conclusions,
     derived,
     expectation,
-    geometry,
     sensitivity,
     summaries,
 )
 from finback import readings as readings_file
 from finback import rig as rig_file
-from finback.estimate import (
-    Draws,
-    Estimate,
-    FitQuality,
-    ProfileBand,
-    Provenance,
-    ReadingFit,
-    SamplerRecord,
-    Summary,
-)
-from finback.expectation import Expected, ImpliedSpeed
-from finback.findings import Finding
-from finback.models.constants import ZERO_CELSIUS
+from finback.estimate import Draws, Estimate, ProfileBand, Provenance
 from finback.readings import Readings
 from finback.rig import Rig
 from finback.routes import Outcome
@@ -86,35 +74,16 @@ def fit(
 def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: int) -> Estimate:
     probabilities = candidates.probabilities(outcomes)
     scores = tuple(candidates.score(o, float(p)) for o, p in zip(outcomes, probabilities, strict=True))
-    evaluated = [_quantities(outcome) for outcome in outcomes]
+    evaluated = [conclusions.quantities(outcome) for outcome in outcomes]
     mixture = summaries.mix(outcomes, probabilities, evaluated)
-    found = _summaries(outcomes, probabilities, evaluated, mixture)
+    found = conclusions.summarise(outcomes, probabilities, evaluated, mixture)
     origin = budget.collect(outcomes, probabilities, evaluated, found)
-    best = outcomes[0]
-    table = _table(best)
-    quality = _quality(best, table)
-    sampled = [o for o in outcomes if o.sampled]
-    sampler = SamplerRecord(
-        method="emcee, independence and differential-evolution moves, "
-        f"{best.draws.shape[0]} independent ensembles"
-        + ("; other candidates by weighted draws" if len(sampled) < len(outcomes) else ""),
-        draws=sum(o.n_draws for o in sampled),
-        ess_min=min(o.ess_min for o in sampled if o.ess_min is not None),
-        rhat_max=_finite(max(o.rhat_max for o in sampled if o.rhat_max is not None)),
-        seed=seed,
-        converged=all(o.converged for o in sampled),
-    )
-    healthy, implied, beyond = _expectation(rig, readings, found)
-    heat = concerns.heat_asked_for(found, outcomes, evaluated)
-    smooth = concerns.smooth_misfit(outcomes, probabilities.tolist())
-    found_concerns = (
-        concerns.collect(rig, found, quality, sampler, best, smooth, heat) + beyond + concerns.scored(scores)
-    )
-    worst = {f.severity for f in found_concerns}
+    sampler = conclusions.sampler_record(outcomes, seed)
+    concluded = conclusions.draw(rig, readings, outcomes, scores, evaluated, found, sampler)
     return Estimate(
         rig=rig,
         readings=readings,
-        status="caution" if worst & {"caution", "fault"} else "ok",
+        status=concluded.status,
         parameters={name: found[name] for name in PARAMETERS if name in found},
         derived={name: found[name] for name in derived.DERIVED if name in found},
         candidates=scores,
@@ -124,16 +93,16 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
             _left_out(rig, readings, outcomes),
             smooth=any(outcome.problem.candidate.misfit for outcome in outcomes),
         ),
-        fit=quality,
-        table=table,
+        fit=concluded.fit,
+        table=concluded.table,
         band=_band(outcomes, mixture),
         draws=_draws(outcomes, mixture),
         sampler=sampler,
-        findings=found_concerns,
-        priors=_priors(best),
+        findings=concluded.findings,
+        priors=_priors(outcomes[0]),
         provenance=_provenance(rig, readings),
-        expected=healthy,
-        implied_speed=implied,
+        expected=concluded.expected,
+        implied_speed=concluded.implied_speed,
         budget=origin.lines,
         expanded=origin.expanded,
         improvement=origin.improvement,
@@ -144,130 +113,6 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
 def _left_out(rig: Rig, readings: Readings, outcomes: Sequence[Outcome]) -> list[str]:
     posed = [outcome.problem.candidate for outcome in outcomes]
     return [each.name for each in candidates.enumerate_candidates(rig, readings) if each not in posed]
-
-
-def _quantities(outcome: Outcome) -> dict[str, Array]:
-    """Return all quantities of an outcome's draws, flat, uncertain lengths included."""
-    z = outcome.draws.reshape(-1, outcome.draws.shape[-1])
-    found = derived.evaluate(outcome.problem, z)
-    return geometry.spread(outcome.problem, outcome.mode.z, z, found, np.random.default_rng(1))
-
-
-def _expectation(
-    rig: Rig, readings: Readings, found: Mapping[str, Summary]
-) -> tuple[Expected | None, ImpliedSpeed | None, tuple[Finding, ...]]:
-    """Return what a healthy fin would show, the air speed that h implies, and what to beware of in both."""
-    h, air = found["h"], found["air"].median
-    if air is not None:
-        air += ZERO_CELSIUS
-    try:
-        expected = expectation.expect(rig, readings, air)
-        implied = None
-        if h.median is not None:
-            implied = expectation.imply(rig, readings, h.median, h.sd or 0.0, air)
-    except ValueError as error:
-        message = f"What a healthy fin would show cannot be worked out: {error}."
-        return None, None, (Finding("out-of-range", "note", message, evidence={"key": "expected"}),)
-    return expected, implied, tuple(expectation.findings(expected, implied))
-
-
-def _finite(value: float) -> float | None:
-    """Return a number, or None for what is none: R-hat of ensembles that never moved."""
-    return value if np.isfinite(value) else None
-
-
-def _summaries(
-    outcomes: Sequence[Outcome],
-    probabilities: Array,
-    evaluated: Sequence[Mapping[str, Array]],
-    mixture: summaries.Mixture,
-) -> dict[str, Summary]:
-    """Return the summaries by name; what not all candidates have comes from those that have it."""
-    best = summaries.judge(outcomes[0])
-    found = {}
-    for name in evaluated[0]:
-        if name in summaries.OF_THE_JOINT:
-            continue
-        draws = mixture.values[name]
-        if not all(name in each for each in evaluated):  # the temperature of a tip that is held
-            draws = draws[np.isfinite(draws)]
-        found[name] = best.summarise(name, draws)
-    with_joint = [i for i, o in enumerate(outcomes) if o.problem.candidate.joint]
-    if not with_joint:
-        for name in summaries.OF_THE_JOINT:
-            label, unit = summaries.describe(name)
-            found[name] = Summary(name, label, unit, None, None, None, None, None, None, None, "prior")
-        return found
-    joint_judge = summaries.judge(outcomes[with_joint[0]])
-    weights = probabilities[with_joint] + np.finfo(np.float64).tiny
-    joint_mixture = summaries.mix(
-        [outcomes[i] for i in with_joint], weights / weights.sum(), [evaluated[i] for i in with_joint]
-    )
-    absent = float(probabilities[with_joint].sum()) < 0.5
-    for name in summaries.OF_THE_JOINT:
-        found[name] = joint_judge.summarise(name, joint_mixture.values[name], absent)
-    return found
-
-
-def _table(best: Outcome) -> tuple[ReadingFit, ...]:
-    """Return every reading beside what the best candidate's least-squares fit predicts for it."""
-    problem, measured = best.problem, best.problem.measured
-    predicted = problem.predict(best.point.z[None])[0]
-    uncertainty = np.sqrt(np.diag(best.point.noise.covariance(best.point.sigma)))
-    rows = zip(
-        measured.sensors + measured.bounds,
-        np.concatenate([measured.values, measured.bound_values]),
-        predicted,
-        np.concatenate([uncertainty, measured.bound_sds]),
-        strict=True,
-    )
-    found = [
-        ReadingFit(s.name, s.place, s.position, s.position_sd, float(v), float(p), float(v - p), float(u))
-        for s, v, p, u in rows
-    ]
-    return tuple(found) + _set_aside(best)
-
-
-def _set_aside(best: Outcome) -> tuple[ReadingFit, ...]:
-    """Return the excluded readings, predicted all the same."""
-    problem = best.problem
-    values = problem.values(best.point.z[None])
-    found = []
-    for name, reason in problem.readings.excluded.items():
-        sensor, measured = problem.rig.sensors[name], problem.readings.values.get(name)
-        if measured is None:
-            continue
-        solution = problem.solve(values, np.array([sensor.position or 0.0]))
-        heats = problem.heats(values, problem.build(values)[0], solution)
-        predictions = {
-            "fin": solution.temperatures[0, 0],
-            "heat": heats.fins[0],
-            "heater": heats.total[0],
-        }
-        predicted = float(np.ravel(predictions.get(sensor.place, values.get(sensor.place, np.nan)))[0])
-        found.append(
-            ReadingFit(
-                name, sensor.place, sensor.position, sensor.position_sd, measured, predicted,
-                measured - predicted,
-                best.point.sigma, reason,
-            )
-        )  # fmt: skip
-    return tuple(found)
-
-
-def _quality(best: Outcome, table: Sequence[ReadingFit]) -> FitQuality:
-    from scipy.special import gammaincc
-
-    point, estimated = best.point, best.problem.noise.estimated
-    freedom = point.degrees_of_freedom
-    judged = not estimated and freedom > 0
-    return FitQuality(
-        residuals={row.sensor: row.residual for row in table if row.excluded is None},
-        chi_square=point.chi_square,
-        degrees_of_freedom=freedom,
-        p_value=float(gammaincc(freedom / 2, point.chi_square / 2)) if judged else None,
-        noise=point.sigma if estimated else None,
-    )
 
 
 def _band(outcomes: Sequence[Outcome], mixture: summaries.Mixture) -> ProfileBand:

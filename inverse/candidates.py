@@ -189,8 +189,11 @@ def probabilities(outcomes: Sequence[Outcome]) -> Array:
     return shares
 
 
-def score(outcome: Outcome, probability: float) -> CandidateScore:
-    """Return the scores of one candidate; AICc is None with too few readings for it."""
+def score(outcome: Outcome, probability: float, leave_out: bool = True) -> CandidateScore:
+    """Return the scores of one candidate; AICc is None with too few readings for it.
+
+    `leave_out`: whether the leave-one-out score is worked out, which takes longer than all others.
+    """
     problem, point = outcome.problem, outcome.point
     n = len(problem.measured.values)
     free = int((~problem.is_stated).sum())
@@ -199,16 +202,20 @@ def score(outcome: Outcome, probability: float) -> CandidateScore:
         z[-1] += 0.5 * math.log(max(point.degrees_of_freedom, 1) / n)
     deviance = -2 * float(problem.log_likelihood(z[None])[0])
     spare = n - free - 1
-    stride = max(1, outcome.draws.shape[1] // LOO_DRAWS)
-    thinned = outcome.draws[:, ::stride]
-    pointwise = problem.pointwise(thinned.reshape(-1, thinned.shape[-1])).reshape(*thinned.shape[:2], n)
-    loo, _ = diagnostics.loo(pointwise)
     return CandidateScore(
         name=problem.candidate.name,
         probability=probability,
         log_evidence=outcome.evidence.log,
         log_evidence_error=outcome.evidence.error,
-        loo=loo,
+        loo=_loo(outcome) if leave_out else None,
         aicc=deviance + 2 * free + 2 * free * (free + 1) / spare if spare > 0 else None,
         bic=deviance + free * math.log(n),
     )
+
+
+def _loo(outcome: Outcome) -> float:
+    """Return the leave-one-out score [nats] from some of an outcome's draws."""
+    stride = max(1, outcome.draws.shape[1] // LOO_DRAWS)
+    thinned = outcome.draws[:, ::stride]
+    pointwise = outcome.problem.pointwise(thinned.reshape(-1, thinned.shape[-1]))
+    return diagnostics.loo(pointwise.reshape(*thinned.shape[:2], -1))[0]

@@ -44,14 +44,26 @@ class Mixture:
     values: Mapping[str, Array]
 
 
-def mix(outcomes: Sequence[Outcome], weights: Array, evaluated: Sequence[Mapping[str, Array]]) -> Mixture:
+def deal(weights: Array, n: int) -> NDArray[np.intp]:
+    """Return how many of n draws each outcome adds, in proportion to weights that sum to one."""
+    return np.diff(np.round(np.concatenate([[0.0], np.cumsum(weights)]) * n).astype(int))
+
+
+def mix(
+    outcomes: Sequence[Outcome],
+    weights: Array,
+    evaluated: Sequence[Mapping[str, Array]],
+    n: int | None = None,
+) -> Mixture:
     """Average over outcomes, each adding draws in proportion to its weight.
 
     Arguments: outcomes; weights, their probabilities, summing to one; evaluated, the quantities of all draws
-    of each outcome, flat (chains * n,).
+    of each outcome, flat (chains * its own n,); n, the draws of a chain of the average, as many as of the
+    first outcome if left out.
     """
-    chains, n = outcomes[0].draws.shape[:2]
-    counts = np.diff(np.round(np.concatenate([[0.0], np.cumsum(weights)]) * n).astype(int))
+    chains, own = outcomes[0].draws.shape[:2]
+    n = own if n is None else n
+    counts = deal(weights, n)
     which = np.repeat(np.arange(len(outcomes)), counts)
     index = np.empty((chains, n), dtype=np.intp)
     names = {name: None for each, count in zip(evaluated, counts, strict=True) if count for name in each}
@@ -78,7 +90,7 @@ class Judge:
     information: Information
     values: Mapping[str, float]
     gradients: Mapping[str, Array]
-    linear: LinearAnswers
+    linear: LinearAnswers | None
 
     def summarise(self, name: str, draws: Array, absent: bool = False) -> Summary:
         """Return the summary of one quantity from its draws (any shape, SI units).
@@ -125,7 +137,7 @@ class Judge:
     def _least_squares(self, name: str) -> tuple[float | None, float | None]:
         if name == "noise":
             return self.outcome.point.sigma, None
-        if name == "misfit":
+        if name == "misfit" or self.linear is None:
             return None, None
         value, standard_error = self.linear.answer(name)
         return None if value is None else float(to_reported(name, np.array(value))), standard_error
@@ -152,13 +164,14 @@ class Judge:
         return limit if there.determines(gradient) else None
 
 
-def judge(outcome: Outcome) -> Judge:
-    """Return the judge of one outcome, at its posterior mode."""
+def judge(outcome: Outcome, least_squares: bool = True) -> Judge:
+    """Return the judge of one outcome, at its posterior mode; with the least-squares answers if wanted."""
     problem, z = outcome.problem, outcome.mode.z
     sigma = float(np.exp(z[-1])) if problem.noise.estimated else outcome.point.sigma
     information = identifiability.information(problem, z, sigma, bounds=False)
     values = {name: float(each[0]) for name, each in derived.evaluate(problem, z[None]).items()}
-    return Judge(outcome, information, values, derived.gradients(problem, z), LinearAnswers(outcome.point))
+    linear = LinearAnswers(outcome.point) if least_squares else None
+    return Judge(outcome, information, values, derived.gradients(problem, z), linear)
 
 
 def describe(name: str) -> tuple[str, str]:
