@@ -233,7 +233,7 @@ def linearise(outcome: Outcome) -> Linear:
     here = derived.evaluate(problem, z[None])
     gradients = {
         name: gradient
-        for name, gradient in derived.gradients(problem, z).items()
+        for name, gradient in geometry.gradients(problem, z).items()
         if np.isfinite(gradient).all() and name not in ("misfit", "noise")
     }
     names = tuple(gradients)
@@ -248,8 +248,11 @@ def linearise(outcome: Outcome) -> Linear:
 
     jacobian = least_squares.jacobian(predict, z[:n])
     readings = len(problem.measured.values)
+    if problem.shared is not None:
+        jacobian[:readings, problem.are_shared] = problem.shared
     sources = (
         *_of_errors(outcome, len(names)),
+        *_of_shared(problem, len(names)),
         *_of_lengths(problem, by_lengths),
         *_of_heaters(problem, predict(z[None, :n])[0, readings:], jacobian[readings:], len(names)),
         *_of_priors(problem, len(names)),
@@ -327,6 +330,26 @@ def _of_lengths(problem: Problem, slopes: Mapping[str, Array]) -> list[Source]:
     return found
 
 
+def _of_shared(problem: Problem, quantities: int) -> list[Source]:
+    """Return the errors that are unknowns beside heavy tails, under the names that they have otherwise."""
+    if problem.shared is None:
+        return []
+    found = []
+    for i, effect in enumerate(problem.shared.T, start=problem.are_shared.start):
+        name = problem.names[i].removesuffix("_error").replace("_", " ")
+        words = f"{name} of the fin"
+        change, factor = f"the {words} known twice as well", HALF
+        if name == "calibration":
+            words = f"calibration of {_words(problem, 'fin')}"
+            change, smaller = _improved(problem, ErrorSource("calibration", "fin", effect[:, None]))
+            factor = float(smaller.max() / effect.max())
+        row = np.eye(problem.n_physical)[i : i + 1]
+        nothing = np.zeros((len(effect), 0)), np.zeros((0, quantities))
+        source = Source(words, "systematic", *nothing, row, change)
+        found.append(replace(source, better=replace(source, rows=row / factor)) if change else source)
+    return found
+
+
 def _of_heaters(problem: Problem, predicted: Array, jacobian: Array, quantities: int) -> list[Source]:
     """Return the heaters that only bound the heat, with the curvature of their likelihood ln Phi."""
     measured = problem.measured
@@ -347,7 +370,7 @@ def _of_priors(problem: Problem, quantities: int) -> list[Source]:
     """Return what was known beforehand, by parameter; the wide defaults together."""
     rows: dict[str, list[Array]] = {}
     changes: dict[str, tuple[str, float]] = {}
-    for i, parameter in enumerate(problem.parameters[: problem.n_physical]):
+    for i, parameter in enumerate(problem.parameters[: problem.are_shared.start]):
         name = _name(parameter)
         row = np.zeros(problem.n_physical)
         row[i] = 1 / parameter.prior.sd

@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from finback import diagnostics, fast, routes
 from finback.estimate import CandidateScore
 from finback.misfit import FEWEST_SENSORS
-from finback.posing import is_read, pose
+from finback.posing import integrated_log_likelihood, is_read, pose
 from finback.problem import LAW_WORDS, ODDS_OF_MISFIT, Candidate, Problem
 from finback.readings import Readings
 from finback.rig import LawName, Rig, TipName
@@ -48,8 +48,11 @@ def enumerate_candidates(rig: Rig, readings: Readings | None = None) -> tuple[Ca
         s.place == "plate" and (readings is None or is_read(s, readings)) for s in rig.sensors.values()
     )
     joints = (True, False) if reads_plate else (False,)
-    return tuple(
+    physics = [
         Candidate(tip, joint, reads_plate, law, named) for law in laws for tip in tips for joint in joints
+    ]
+    return tuple(
+        replace(each, heavy_tails=noise == "heavy-tailed") for noise in rig.noise for each in physics
     )
 
 
@@ -85,9 +88,13 @@ def why_compared(rig: Rig, left_out: Sequence[str] = (), smooth: bool = False) -
         tips = "tips as the rig lists them"
     else:
         tips = "the rig leaves the tip open, so all that a finite fin can have are compared"
+    noise = ""
+    if "heavy-tailed" in rig.noise:
+        kinds = "with normal and with heavy-tailed" if "normal" in rig.noise else "with heavy-tailed"
+        noise = f"; each {kinds} noise along the fin"
     also = "; what may matter also with a smooth misfit of its profile" if smooth else ""
     few = f"; too few readings for {'; '.join(left_out)}" if left_out else ""
-    return f"{told}; {tips}{also}{few}."
+    return f"{told}; {tips}{noise}{also}{few}."
 
 
 def compare(
@@ -156,6 +163,9 @@ def worth_smoothing(weighed: Sequence[Route]) -> list[Route]:
     misses, and the readings cannot tell the two apart. How much it would gain is judged by linear algebra at
     the fit.
     """
+    weighed = [route for route in weighed if not route.point.problem.candidate.heavy_tails]
+    if not weighed:
+        return []
     problem = weighed[0].point.problem
     if len(problem.measured.positions) < FEWEST_SENSORS or problem.noise.estimated:
         return []
@@ -200,7 +210,7 @@ def score(outcome: Outcome, probability: float, leave_out: bool = True) -> Candi
     z = point.z.copy()
     if problem.noise.estimated:  # the likelihood is greatest at the biased estimate of the noise
         z[-1] += 0.5 * math.log(max(point.degrees_of_freedom, 1) / n)
-    deviance = -2 * float(problem.log_likelihood(z[None])[0])
+    deviance = -2 * integrated_log_likelihood(problem, z)
     spare = n - free - 1
     return CandidateScore(
         name=problem.candidate.name,

@@ -5,13 +5,13 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import posing
+from finback import posing, tails
 from finback.estimate import CandidateScore, FitQuality, SamplerRecord, Summary
 from finback.findings import Finding, Severity
 from finback.models.constants import ZERO_CELSIUS
 from finback.models.validity import TRANSVERSE_BIOT_LIMIT
 from finback.parameters import UNMEASURED_AIR
-from finback.problem import SMOOTH_MISFIT
+from finback.problem import HEAVY_TAILS, SMOOTH_MISFIT
 from finback.quantity import format_number, pretty_unit
 from finback.rig import Rig
 from finback.routes import Outcome
@@ -26,6 +26,7 @@ LIKELY = 0.5  # probability of a smooth misfit above which it is said
 CLEAR = 0.9  # probability from which the readings are said to support a candidate
 MENTIONED = 0.05  # and below which one is not named among those that cannot be told apart
 HEATER_MARGIN = 2.0  # standard uncertainties of its power
+FAR_OFF = 4.0  # times its scale, from which a reading with heavy tails is named
 FAR_AIR = 1.5  # standard deviations from where unread air is assumed, at which that is said
 
 SAID_WITH = {
@@ -47,15 +48,18 @@ def collect(
     best: Outcome,
     smooth: Finding | None = None,
     heat: float | None = None,
+    heavy: Sequence[Finding] = (),
 ) -> tuple[Finding, ...]:
     """Return the findings of a fit, gravest first.
 
-    `smooth` is what was found of a smooth misfit, `heat` [W] what would flow without one.
+    `smooth` is what was found of a smooth misfit, `heat` [W] what would flow without one, `heavy` what was
+    found of heavy tails.
     """
     explained = smooth is not None and not best.problem.candidate.misfit
     everything = [
         *_undetermined(rig, found, best),
         *([] if smooth is None else [smooth]),
+        *heavy,
         *([] if explained else _misfit(quality)),
         *_validity(found),
         *_thermocouples(best),
@@ -119,6 +123,24 @@ def smooth_misfit(outcomes: Sequence[Outcome], probabilities: Sequence[float]) -
         "not for a sensor that is wrong."
     )
     return Finding("misfit", "caution", message, evidence={"probability": probability, "share": share})
+
+
+def heavy_tails(outcomes: Sequence[Outcome], probabilities: Sequence[float]) -> tuple[Finding, ...]:
+    """Return a finding where heavy-tailed noise is more probable than a normal one."""
+    shares = [(p, o) for p, o in zip(probabilities, outcomes, strict=True) if o.problem.candidate.heavy_tails]
+    probability = float(sum(p for p, _ in shares))
+    if probability <= LIKELY or len(shares) == len(outcomes):
+        return ()
+    best = shares[0][1]
+    whitened, _ = best.problem.whitened(best.mode.z[None])
+    away = tails.unbend(whitened[0, : best.problem.noise.heavy])
+    names = [s.name for s, e in zip(best.problem.measured.sensors, away, strict=False) if abs(e) > FAR_OFF]
+    message = f"Readings along the fin scatter wider than normal noise does (probability {probability:.2g})"
+    if names:
+        message += f": {listed(names)} {'lies' if len(names) == 1 else 'lie'} far off the others"
+    message += ", and what is far off hardly counts: look for a loose junction, a wrong hole or channel."
+    sensor = names[0] if len(names) == 1 else None
+    return (Finding("misfit", "caution", message, sensor, {"probability": probability}),)
 
 
 def _misfit(quality: FitQuality) -> list[Finding]:
@@ -246,7 +268,7 @@ def compare_in_words(scores: Sequence[CandidateScore], tip_stated: bool) -> str:
     """Return one sentence on what the readings say of the candidates' physics, best first."""
     shares: dict[str, float] = {}
     for score in scores:
-        physics = score.name.removesuffix(SMOOTH_MISFIT)
+        physics = score.name.removesuffix(SMOOTH_MISFIT).removesuffix(HEAVY_TAILS)
         shares[physics] = shares.get(physics, 0.0) + score.probability
     best = max(shares, key=lambda name: shares[name])
     if len(shares) == 1:

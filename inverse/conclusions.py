@@ -68,8 +68,11 @@ def draw(
     healthy, implied, beyond = _expectation(rig, readings, found)
     heat = concerns.heat_asked_for(found, outcomes, evaluated)
     smooth = concerns.smooth_misfit(outcomes, [score.probability for score in scores])
+    heavy = concerns.heavy_tails(outcomes, [score.probability for score in scores])
     findings = (
-        concerns.collect(rig, found, quality, sampler, best, smooth, heat) + beyond + concerns.scored(scores)
+        *concerns.collect(rig, found, quality, sampler, best, smooth, heat, heavy),
+        *beyond,
+        *concerns.scored(scores),
     )
     worst = {f.severity for f in findings}
     status: Status = "caution" if worst & {"caution", "fault"} else "ok"
@@ -174,7 +177,10 @@ def fitted_readings(best: Outcome) -> tuple[ReadingFit, ...]:
     """Return every reading beside what the best candidate's least-squares fit predicts for it."""
     problem, measured = best.problem, best.problem.measured
     predicted = problem.predict(best.point.z[None])[0]
-    uncertainty = np.sqrt(np.diag(best.point.noise.covariance(best.point.sigma)))
+    variances = np.diag(best.point.noise.covariance(best.point.sigma))
+    if problem.shared is not None:
+        variances = variances + np.square(problem.shared).sum(axis=1)
+    uncertainty = np.sqrt(variances)
     rows = zip(
         measured.sensors + measured.bounds,
         np.concatenate([measured.values, measured.bound_values]),
@@ -222,7 +228,8 @@ def fit_quality(best: Outcome, table: Sequence[ReadingFit]) -> FitQuality:
 
     point, estimated = best.point, best.problem.noise.estimated
     freedom = point.degrees_of_freedom
-    judged = not estimated and freedom > 0
+    # where tails are heavy chi-square is not distributed as its name says
+    judged = not estimated and freedom > 0 and not best.problem.candidate.heavy_tails
     return FitQuality(
         residuals={row.sensor: row.residual for row in table if row.excluded is None},
         chi_square=point.chi_square,

@@ -18,7 +18,7 @@ from finback.models import (
     transverse_biot,
 )
 from finback.models.constants import STEFAN_BOLTZMANN
-from finback.parameters import ZERO_CELSIUS
+from finback.parameters import SHARED_ERRORS, ZERO_CELSIUS
 from finback.problem import Problem
 
 Array = NDArray[np.float64]
@@ -64,7 +64,9 @@ def evaluate(problem: Problem, z: Array, changes: Mapping[str, float] | None = N
     perimeter = float(fin.profile.perimeter(np.zeros(1))[0])
     h, k = np.asarray(values["h"]), np.asarray(values["k"])
     found = {
-        name: np.broadcast_to(np.asarray(value, dtype=np.float64), len(z)) for name, value in values.items()
+        name: np.broadcast_to(np.asarray(value, dtype=np.float64), len(z))
+        for name, value in values.items()
+        if name not in SHARED_ERRORS
     }
     found |= {
         "h_over_k": h / k,

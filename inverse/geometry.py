@@ -7,7 +7,8 @@ residuals at a draw, and all lengths standard normal beforehand, they are given 
 
     delta | z ~ N(G' C^-1 r, I - G' C^-1 G),
 
-and each quantity q moves by (dq/d delta) delta. Everything is linear in delta.
+and each quantity q moves by (dq/d delta) delta. Everything is linear in delta. Beside heavy tails the lengths
+are unknowns with draws of their own.
 """
 
 from collections.abc import Mapping
@@ -47,6 +48,30 @@ def slopes(problem: Problem, z: Array) -> dict[str, Array]:
     }
 
 
+def gradients(problem: Problem, z: Array) -> dict[str, Array]:
+    """Return d quantity/d z as `derived.gradients`, with lengths that are unknowns themselves."""
+    found = derived.gradients(problem, z)
+    own = _own_lengths(problem)
+    if own is not None:
+        for quantity, slope in slopes(problem, z).items():
+            found[quantity][own] = slope
+    return found
+
+
+def moved(problem: Problem, z: Array) -> Array | None:
+    """Return the lengths of draws z (n, p), in standard uncertainties off, where they are unknowns."""
+    own = _own_lengths(problem)
+    return None if own is None else z[:, own]
+
+
+def _own_lengths(problem: Problem) -> slice | None:
+    """Return where in a parameter vector lengths are that are unknowns: the last errors that are shared."""
+    count = len(posing.uncertain_lengths(problem.rig))
+    if not problem.candidate.heavy_tails or not count:
+        return None
+    return slice(problem.are_shared.stop - count, problem.are_shared.stop)
+
+
 def spread(
     problem: Problem, at: Array, z: Array, values: Mapping[str, Array], random: np.random.Generator
 ) -> dict[str, Array]:
@@ -55,13 +80,15 @@ def spread(
     Arguments: problem with its noise linearised; at (p,), where slopes are taken; z (n, p), the draws;
     values, their quantities (n,) by name; random.
     """
-    if problem.by_lengths is None:
+    delta = moved(problem, z)
+    if delta is None and problem.by_lengths is None:
         return dict(values)
-    delta = _lengths_given(problem, z, random)
-    moved = {
+    if delta is None:
+        delta = _lengths_given(problem, z, random)
+    changed = {
         name: values[name] + delta @ slope for name, slope in slopes(problem, at).items() if name in values
     }
-    return {**values, **moved}
+    return {**values, **changed}
 
 
 def _lengths_given(problem: Problem, z: Array, random: np.random.Generator) -> Array:

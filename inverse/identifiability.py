@@ -31,8 +31,9 @@ ALONE = 1.25  # a source decides alone when leaving out the other costs at most 
 class Information:
     """Information on the physical parameters at one point.
 
-    `readings` (p, p): J'J of the whitened readings; `stated` (p,): precisions of stated priors; `default`
-    (p,): precisions of the wide priors, for every parameter.
+    Errors that are unknowns of their own, the last of them, are averaged over: p does not count them, and
+    what a gradient has for them does not matter. `readings` (p, p): J'J of the whitened readings; `stated`
+    (p,): precisions of stated priors; `default` (p,): precisions of the wide priors, for every parameter.
     """
 
     readings: Array
@@ -41,10 +42,12 @@ class Information:
 
     def variance(self, gradient: Array, readings: bool = True, stated: bool = True) -> float:
         """Return the variance of the combination gradient (p,) by the chosen sources and wide priors."""
+        gradient = gradient[: len(self.default)]
         return float(gradient @ self._response(gradient, readings, stated))
 
     def determines(self, gradient: Array) -> bool:
         """Tell whether readings and stated values determine the combination."""
+        gradient = gradient[: len(self.default)]
         response = self._response(gradient, readings=True, stated=True)
         variance, open_to = float(gradient @ response), float(np.square(gradient) @ (1 / self.default))
         from_nowhere = float(np.square(response) @ self.default)
@@ -85,9 +88,19 @@ def information(problem: Problem, z: Array, sigma: float, bounds: bool = True) -
         return problem.whitened(whole, sigma)[0][:, :counted]
 
     slopes = least_squares.jacobian(residuals, z[:n])
-    physical = problem.parameters[:n]
+    own = problem.are_shared.start
+    physical = problem.parameters[:own]
     return Information(
-        readings=slopes.T @ slopes,
+        readings=_without(slopes.T @ slopes, own),
         stated=np.array([p.prior.sd**-2 if p.stated else 0.0 for p in physical]),
         default=np.array([p.default_prior.sd**-2 for p in physical]),
     )
+
+
+def _without(information: Array, own: int) -> Array:
+    """Return the information (own, own) on the first parameters, the others being standard normal errors."""
+    if own == len(information):
+        return information
+    known = information[own:, own:] + np.eye(len(information) - own)
+    across = information[:own, own:]
+    return np.asarray(information[:own, :own] - across @ np.linalg.solve(known, across.T))

@@ -1,7 +1,8 @@
 """Least-squares values of all quantities with their standard errors, by linear propagation.
 
 Source: JCGM 100:2008, clause 5. Uncertain lengths, which the noise of the readings holds, move a quantity by
-what the residuals say of them, and add their own variance and their covariance with the parameters.
+what the residuals say of them, and add their own variance and their covariance with the parameters. A reading
+with heavy tails counts as the normal one that tells as much (`tails`).
 """
 
 from collections.abc import Mapping
@@ -11,7 +12,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import derived, geometry
+from finback import derived, geometry, least_squares, tails
 from finback.optimum import LeastSquares
 
 Array = NDArray[np.float64]
@@ -36,7 +37,7 @@ class LinearAnswers:
         if outside > OUT_OF_REACH * np.linalg.norm(gradient):
             return None, None
         moved, added = self._of_lengths(name, gradient)
-        variance = float(gradient @ point.point.covariance @ gradient) + added
+        variance = float(gradient @ self._covariance @ gradient) + added
         return value + moved, float(np.sqrt(max(variance, 0.0)))
 
     @cached_property
@@ -45,18 +46,30 @@ class LinearAnswers:
 
     @cached_property
     def _gradients(self) -> Mapping[str, Array]:
-        return derived.gradients(self.point.problem, self.point.z)
+        return geometry.gradients(self.point.problem, self.point.z)
+
+    @cached_property
+    def _covariance(self) -> Array:
+        """The covariance of the parameters."""
+        point, heavy = self.point.point, self.point.noise.heavy
+        if not heavy:
+            return point.covariance
+        bent, slopes = point.residuals[:heavy], point.jacobian.copy()
+        slopes[:heavy] /= (tails.steepness(bent) * tails.widening(bent))[:, None]
+        return least_squares.invert_information(slopes)[0]
 
     @cached_property
     def _slopes(self) -> Mapping[str, Array]:
-        if self.point.problem.by_lengths is None:
+        if self.point.problem.by_lengths is None and not self.point.problem.candidate.heavy_tails:
             return {}
         return geometry.slopes(self.point.problem, self.point.z)
 
     def _of_lengths(self, name: str, gradient: Array) -> tuple[float, float]:
         """Return by how much uncertain lengths move a quantity, and what they add to its variance."""
         problem, point = self.point.problem, self.point.point
-        slope = self._slopes.get(name)
+        slope, own = self._slopes.get(name), geometry.moved(problem, self.point.z[None])
+        if slope is not None and own is not None:
+            return float(own[0] @ slope), 0.0  # their variance is among that of the parameters
         if slope is None or problem.by_lengths is None:
             return 0.0, 0.0
         n = len(problem.by_lengths)

@@ -11,6 +11,7 @@ A smooth misfit adds a² K. Where sigma is stated V can be turned so that V' K V
 both are unknown no V makes all three diagonal, and each set has a Cholesky factor of its own.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -29,7 +30,8 @@ class Noise:
     `basis` V (n, n); `floor`, `slope` (n,): variance of part i is floor_i + slope_i sigma²;
     `log_det` of V'V inverse, so that ln det C = log_det + sum ln(variances). `estimated`: is sigma unknown.
     `smooth`: what a misfit of share 1 adds to the parts, their variances (n,) or their covariance (n, n);
-    None where none is looked for.
+    None where none is looked for. `heavy`: how many parts, the first ones, have heavy tails (`tails`) and
+    their variance's root for a scale.
     """
 
     basis: Array
@@ -38,6 +40,7 @@ class Noise:
     log_det: float
     estimated: bool
     smooth: Array | None = None
+    heavy: int = 0
 
     def variances(self, sigma: Array | float) -> Array:
         """Return the variances of the parts without misfit for sigma [K] of shape (n_sets, 1) or a float."""
@@ -107,6 +110,23 @@ def build(fixed: Array, estimated: NDArray[np.bool_], smooth: Array | None = Non
         return replace(found, smooth=of_parts)
     weights, axes = np.linalg.eigh(of_parts)
     return replace(found, basis=found.basis @ axes, smooth=np.clip(weights, 0.0, None))
+
+
+def side_by_side(parts: Sequence[Noise]) -> Noise:
+    """Return the noise of readings that come in groups, without an error that two groups share or misfit."""
+    sizes = [len(part.floor) for part in parts]
+    basis, start = np.zeros((sum(sizes), sum(sizes))), 0
+    for part, size in zip(parts, sizes, strict=True):
+        own = slice(start, start + size)
+        basis[own, own] = part.basis
+        start += size
+    return Noise(
+        basis,
+        np.concatenate([part.floor for part in parts]),
+        np.concatenate([part.slope for part in parts]),
+        sum(part.log_det for part in parts),
+        any(part.estimated for part in parts),
+    )
 
 
 def _part(reference: Array, factor: Array, estimated: bool) -> Noise:

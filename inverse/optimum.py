@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import least_squares, posing
+from finback import least_squares, posing, tails
 from finback.least_squares import PointEstimate
 from finback.models.constants import STEFAN_BOLTZMANN
 from finback.noise import REFERENCE_SIGMA, Noise
@@ -69,8 +69,11 @@ def starting_point(problem: Problem) -> Array:
     """Return a parameter vector near the optimum (p,): the best of a grid in h and joint, levels adjusted.
 
     Where nothing reads the air, the grid also holds air temperatures towards which the fin's may fall. A fin
-    that is not linear starts from the optimum of the linear one that is most like it.
+    that is not linear starts from the optimum of the linear one that is most like it, and a candidate with
+    heavy tails from that of the same one with normal noise.
     """
+    if problem.candidate.heavy_tails:
+        return _from_normal(problem)
     if not problem.is_linear:
         return _from_linear(problem)
     measured = problem.measured
@@ -88,6 +91,13 @@ def starting_point(problem: Problem) -> Array:
     whitened, _ = problem.whitened(block, REFERENCE_SIGMA)
     cost = np.einsum("ij,ij->i", whitened, whitened)
     return np.asarray(block[int(np.nanargmin(cost))])
+
+
+def _from_normal(problem: Problem) -> Array:
+    """Return a start (p,) from the fit with normal noise; what that noise holds of shared errors is none."""
+    twin = posing.pose(problem.rig, problem.readings, replace(problem.candidate, heavy_tails=False))
+    found = dict(zip(twin.names, fit(twin).z, strict=True))
+    return np.array([found.get(name, 0.0) for name in problem.names])
 
 
 def _from_linear(problem: Problem) -> Array:
@@ -172,15 +182,19 @@ def _scales_with_sigma(problem: Problem) -> bool:
     """Tell whether sigma scales every residual alike, so that the optimum does not depend on it."""
     slope = problem.noise.slope
     alike = not problem.noise.floor.any() and bool(np.ptp(slope) <= 1e-12 * slope.max())
-    return alike and not problem.is_stated.any() and not problem.measured.bounds
+    free = not problem.is_stated.any() and not problem.measured.bounds and not problem.noise.heavy
+    return alike and free
 
 
 def _matching_sigma(problem: Problem, residuals: Array, sigma: float, freedom: int) -> float:
-    """Return the sigma [K] at which chi-square equals the degrees of freedom, within given limits."""
+    """Return the sigma [K] at which chi-square equals the degrees of freedom, within given limits.
+
+    Readings with heavy tails count by their weights at the sigma [K] that the residuals are whitened with.
+    """
     from scipy.optimize import brentq
 
     n = len(problem.measured.values)
-    squares = np.square(residuals[:n]) * problem.noise.variances(sigma)
+    squares = tails.counted(residuals[:n], problem.noise.heavy) * problem.noise.variances(sigma)
     rest = float(np.square(residuals[n + len(problem.measured.bounds) :]).sum())
 
     def excess(log_sigma: float) -> float:

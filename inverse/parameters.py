@@ -19,6 +19,19 @@ Transform = Literal["log", "identity", "bounded"]
 ZERO_CELSIUS = 273.15
 LARGEST_LOG = 80.0  # e**80 overflows nothing, and is further out than any prior reaches
 
+SHARED_ERRORS: dict[str, str] = {
+    "calibration": "common calibration error of the fin sensors, in standard uncertainties",
+    **{
+        f"{length}_error": f"error of the fin's {length.replace('_', ' ')}, in standard uncertainties"
+        for length in (
+            *("length", "width", "thickness", "tip_thickness", "diameter", "tip_diameter"),
+            *("inner_diameter", "outer_diameter"),
+        )
+    },
+}
+"""Errors that several readings share, with their labels: unknowns of their own beside heavy tails, and part
+of the readings' covariance otherwise."""
+
 DEFAULT_PRIORS: dict[str, tuple[Transform, Normal, str]] = {
     "h": ("log", within_a_factor(50.0, 10.0), "W/(m^2 K)"),
     "k": ("log", within_a_factor(50.0, 10.0), "W/(m K)"),
@@ -36,6 +49,7 @@ DEFAULT_PRIORS: dict[str, tuple[Transform, Normal, str]] = {
     "loss_coefficient": ("identity", Normal(0.0, 10.0), "W/K"),
     "misfit": ("log", within_a_factor(0.005, 2.5), "1"),
     "noise": ("log", within_a_factor(0.2, 10.0), "K"),
+    **dict.fromkeys(SHARED_ERRORS, ("identity", Normal(0.0, 1.0), "1")),
 }
 """Wide priors by parameter: coordinate, prior, reported unit. Choices of ours, wide enough that determined
 quantities don't feel them: h and k within a factor of 10 of 50 (gases and liquids; plastics to copper), the
@@ -81,6 +95,7 @@ LABELS = {
     "reference_excess": "excess temperature that h belongs to",
     "misfit": "smooth misfit, as a share of the excess temperature",
     "noise": "noise of a reading",
+    **SHARED_ERRORS,
 }
 
 
@@ -138,7 +153,8 @@ class Parameter:
         elif self.unit == "degC":
             text = f"{label}: {self.prior.mean - ZERO_CELSIUS:.4g} degC ± {self.prior.sd:.3g} K"
         else:
-            text = f"{label}: {self.prior.mean:.4g} ± {self.prior.sd:.3g} {self.unit}"
+            unit = "" if self.unit == "1" else f" {self.unit}"
+            text = f"{label}: {self.prior.mean:.4g} ± {self.prior.sd:.3g}{unit}"
         if self.prior == PRACTICE.get(self.name):
             return text + " (common practice)"
         return text + (" (stated)" if self.stated else " (wide default)")
@@ -157,6 +173,11 @@ def stated(name: str, quantity: Quantity) -> Parameter:
     if transform == "bounded":
         return Parameter(name, within(quantity.value, quantity.sd, *BOUNDS[name]), stated=True)
     return Parameter(name, Normal(quantity.value, quantity.sd), stated=True)
+
+
+def shared(name: str) -> Parameter:
+    """Return the parameter of one of the SHARED_ERRORS, whose size the rig states."""
+    return Parameter(name, DEFAULT_PRIORS[name][1], stated=True)
 
 
 def reported(name: str, values: Array) -> Array:

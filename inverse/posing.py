@@ -7,9 +7,9 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import expectation, misfit
+from finback import expectation, misfit, tails
 from finback import noise as noises
-from finback.parameters import UNMEASURED_AIR, Parameter, default, stated
+from finback.parameters import UNMEASURED_AIR, Parameter, default, shared, stated
 from finback.problem import Candidate, Measured, Problem
 from finback.quantity import Quantity
 from finback.readings import Readings
@@ -33,11 +33,17 @@ def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
     parameters, fixed = _unknowns(rig, candidate, measured, exact)
     if candidate.law == "free-convection":
         fixed["reference_excess"] = reference_excess(rig, readings)
-    covariance, estimated = _stated_covariance(measured)
+    covariance, estimated = _stated_covariance(measured, candidate.heavy_tails)
+    errors = _shared_errors(rig, measured) if candidate.heavy_tails else {}
+    parameters += [shared(name) for name in errors]
     if candidate.misfit:
         parameters.append(default("misfit"))
     if estimated.any():
         parameters.append(default("noise"))
+    if candidate.heavy_tails:
+        noise = tails.build(covariance, estimated, len(measured.positions))
+    else:
+        noise = noises.build(covariance, estimated, _smooth_as_read(rig, readings, candidate, measured))
     return Problem(
         rig=rig,
         readings=readings,
@@ -45,7 +51,8 @@ def pose(rig: Rig, readings: Readings, candidate: Candidate) -> Problem:
         parameters=tuple(parameters),
         fixed=fixed,
         measured=measured,
-        noise=noises.build(covariance, estimated, _smooth_as_read(rig, readings, candidate, measured)),
+        noise=noise,
+        shared=np.stack([*errors.values()], axis=1) if errors else None,
     )
 
 
@@ -87,14 +94,19 @@ def needs_linearising(problem: Problem) -> bool:
 
 def linearise(problem: Problem, z: Array) -> Problem:
     """Return the problem with the noise of hole positions and geometry added, taken at z (p,)."""
-    covariance, estimated = _stated_covariance(problem.measured)
+    measured, heavy_tails = problem.measured, problem.candidate.heavy_tails
+    covariance, estimated = _stated_covariance(measured, heavy_tails)
     n = len(estimated)
     lengths = uncertain_lengths(problem.rig)
     slopes_by_length = [_length_sensitivity(problem, z, name)[:n] * sd for name, sd in lengths]
     by_lengths = np.stack(slopes_by_length, axis=1) if lengths else None
+    spread = np.square(_by_positions(problem, z))
+    if heavy_tails:
+        errors = _shared_errors(problem.rig, measured, by_lengths)
+        noise = tails.build(covariance + np.diag(spread), estimated, len(measured.positions))
+        return replace(problem, noise=noise, shared=np.stack([*errors.values()], axis=1) if errors else None)
     if by_lengths is not None:
         covariance = covariance + by_lengths @ by_lengths.T
-    spread = np.square(_by_positions(problem, z))
     smooth = smooth_covariance(problem, z) if problem.candidate.misfit else None
     noise = noises.build(covariance + np.diag(spread), estimated, smooth)
     return replace(problem, noise=noise, by_lengths=by_lengths)
@@ -116,12 +128,16 @@ class ErrorSource:
 def error_sources(problem: Problem, z: Array, sigma: float, share: float = 0.0) -> tuple[ErrorSource, ...]:
     """Return the covariance of the readings by source: it is the sum of effect effect' over all of them.
 
-    Uncertain lengths are not among them: `Problem.by_lengths` holds theirs. Arguments: problem; z (p,), where
-    hole positions are linearised; sigma [K], the noise of a reading where that is estimated; share [1] of a
-    smooth misfit, where the candidate has one.
+    Uncertain lengths are not among them: `Problem.by_lengths` holds theirs. Nor are errors that are unknowns
+    of their own, and a noise with heavy tails is the normal one that tells as much. Arguments: problem; z
+    (p,), where hole positions are linearised; sigma [K], the noise of a reading where that is estimated;
+    share [1] of a smooth misfit, where the candidate has one.
     """
     random, shared, places = _parts(problem.measured)
     random = np.where(np.isnan(random), sigma, random)
+    if problem.candidate.heavy_tails:
+        shared = np.where(places == "fin", 0.0, shared)
+        random[places == "fin"] *= _widening(problem, z, sigma)
     found = []
     for place in dict.fromkeys(places.tolist()):
         here = places == place
@@ -129,11 +145,36 @@ def error_sources(problem: Problem, z: Array, sigma: float, share: float = 0.0) 
         found.append(ErrorSource("calibration", place, np.where(here, shared, 0.0)[:, None]))
     if any(sensor.position_sd > 0 for sensor in problem.measured.sensors):
         by_positions = _by_positions(problem, z)
+        if problem.candidate.heavy_tails:
+            by_positions[places == "fin"] *= _widening(problem, z, sigma)
         found.append(ErrorSource("position", "fin", np.diag(by_positions)[:, places == "fin"]))
     if problem.candidate.misfit:
         weights, axes = np.linalg.eigh(smooth_covariance(problem, z))
         found.append(ErrorSource("misfit", "fin", share * axes * np.sqrt(np.clip(weights, 0.0, None))))
     return tuple(source for source in found if source.effect.any())
+
+
+def integrated_log_likelihood(problem: Problem, z: Array) -> float:
+    """Return ln p(readings | z) at a fitted z (p,), averaged over errors that are unknowns of their own.
+
+    By Laplace's method, so that it is to be compared with that of a candidate whose noise holds these errors.
+    """
+    log = float(problem.log_likelihood(z[None])[0])
+    if problem.shared is None:
+        return log
+    noise, heavy = problem.noise, problem.noise.heavy
+    variances = noise.variances(float(np.exp(z[-1])) if noise.estimated else 0.0)
+    seen = (noise.basis.T @ problem.shared) / np.sqrt(variances)[:, None]
+    seen[:heavy] /= tails.widening(problem.whitened(z[None])[0][0, :heavy])[:, None]
+    errors = z[problem.are_shared]
+    curvature = np.eye(len(errors)) + seen.T @ seen
+    return log - 0.5 * float(errors @ errors) - 0.5 * float(np.linalg.slogdet(curvature)[1])
+
+
+def _widening(problem: Problem, z: Array, sigma: float) -> Array:
+    """Return what to multiply the scales of fin sensors (n_fin,) by where they count as normal ones."""
+    bent = problem.whitened(z[None], sigma)[0][0, : problem.noise.heavy]
+    return tails.widening(bent)
 
 
 def _measure(rig: Rig, readings: Readings) -> tuple[Measured, dict[str, float]]:
@@ -179,13 +220,32 @@ def _parts(measured: Measured) -> tuple[Array, Array, NDArray[np.str_]]:
     return random, shared, np.array([s.place for s in measured.sensors])
 
 
-def _stated_covariance(measured: Measured) -> tuple[Array, NDArray[np.bool_]]:
-    """Return the stated part of the covariance (n, n) and which readings have an estimated noise (n,)."""
+def _stated_covariance(measured: Measured, apart: bool) -> tuple[Array, NDArray[np.bool_]]:
+    """Return the stated part of the covariance (n, n) and which readings have an estimated noise (n,).
+
+    `apart`: whether what the fin's sensors share is an unknown of its own, and not in it.
+    """
     random, shared, places = _parts(measured)
+    if apart:
+        shared = np.where(places == "fin", 0.0, shared)
     estimated = np.isnan(random)
     same_place = places[:, None] == places[None, :]
     covariance = np.where(same_place, np.outer(shared, shared), 0.0)
     return covariance + np.diag(np.where(estimated, 0.0, random**2)), estimated
+
+
+def _shared_errors(rig: Rig, measured: Measured, by_lengths: Array | None = None) -> dict[str, Array]:
+    """Return the errors that are unknowns beside heavy tails, and what one standard uncertainty of each does.
+
+    Arguments: rig; measured; by_lengths (n, n_lengths) [K, W], None where it is not known yet. The effects
+    are (n,) each, lengths last.
+    """
+    _, common, places = _parts(measured)
+    common = np.where(places == "fin", common, 0.0)
+    found = {"calibration": common} if common.any() else {}
+    for i, (name, _) in enumerate(uncertain_lengths(rig)):
+        found[f"{name}_error"] = np.zeros_like(common) if by_lengths is None else by_lengths[:, i]
+    return found
 
 
 def _unknowns(

@@ -12,6 +12,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
+from finback import tails
 from finback.models import Base, Fin, PlateHeat, Solution, plate_heat, solve
 from finback.noise import Noise
 from finback.parameters import LARGEST_LOG, Parameter
@@ -30,10 +31,15 @@ LAW_WORDS: Mapping[LawName, str] = {
 }
 SMOOTH_MISFIT = ", smooth misfit"
 """What the name of a candidate with a misfit ends on."""
+HEAVY_TAILS = ", heavy-tailed noise"
+"""What the name of a candidate with heavy tails ends on."""
 ODDS_OF_MISFIT = 0.1
 """A candidate with a smooth misfit over the same one without, before the readings: a rig is taken to be as it
 is described unless the readings speak against that, and a model without a misfit is right or nearly so more
 often than not."""
+ODDS_OF_HEAVY_TAILS = 0.1
+"""A candidate with heavy tails over the same one with normal noise, before the readings: most sensors on most
+rigs are in order."""
 HEATS = ("heat", "heater")
 PIECE = 1024  # sets of a linear fin at a time, that stay in the processor's cache
 FINEST_NOISE = 1e-6  # K; finer than any reading, and what readings without errors are left with
@@ -45,7 +51,8 @@ class Candidate:
 
     `joint_possible`: whether the rig reads a plate, so that a joint could be seen at all; `law_named`:
     whether its name says the law, as it does where several are compared; `misfit`: whether the profile may
-    differ smoothly from its physics.
+    differ smoothly from its physics; `heavy_tails`: whether the noise of the fin's sensors has heavy tails.
+    There is no candidate with both.
     """
 
     tip: TipName
@@ -54,15 +61,16 @@ class Candidate:
     law: LawName = "uniform"
     law_named: bool = False
     misfit: bool = False
+    heavy_tails: bool = False
 
     @property
     def name(self) -> str:
         """Name in results, such as "convective tip, joint, smooth misfit"."""
-        return self.physics + SMOOTH_MISFIT * self.misfit
+        return self.physics + SMOOTH_MISFIT * self.misfit + HEAVY_TAILS * self.heavy_tails
 
     @property
     def physics(self) -> str:
-        """Name of its physics, with or without a misfit."""
+        """Name of its physics, whatever the misfit and the tails of the noise."""
         parts = [f"{self.tip} tip"]
         if self.joint_possible:
             parts.append("joint" if self.joint else "no joint")
@@ -73,7 +81,8 @@ class Candidate:
     @property
     def log_prior(self) -> float:
         """Log probability [nats] before the readings, up to a constant."""
-        return math.log(ODDS_OF_MISFIT) if self.misfit else 0.0
+        odds = (ODDS_OF_MISFIT if self.misfit else 1.0) * (ODDS_OF_HEAVY_TAILS if self.heavy_tails else 1.0)
+        return math.log(odds)
 
 
 @dataclass(frozen=True)
@@ -101,10 +110,12 @@ class Measured:
 class Problem:
     """One candidate posed on one run.
 
-    `parameters`: the unknowns in the order of a parameter vector, the physical ones first, then the share of
-    a smooth misfit and the noise, where they are estimated.
+    `parameters`: the unknowns in the order of a parameter vector, the physical ones first, then errors that
+    readings share and that are unknowns of their own, then the share of a smooth misfit and the noise, where
+    they are estimated.
     `fixed`: what is exactly known, by name, in SI units. `by_lengths` (n, n_lengths) [K, W]: what one
     standard uncertainty of each uncertain length makes of each reading, once the noise holds it.
+    `shared` (n, n_shared) [K, W]: the same of those errors that are unknowns of their own, in order.
     """
 
     rig: Rig
@@ -115,6 +126,7 @@ class Problem:
     measured: Measured
     noise: Noise
     by_lengths: Array | None = None
+    shared: Array | None = None
 
     @cached_property
     def names(self) -> tuple[str, ...]:
@@ -147,6 +159,12 @@ class Problem:
         return len(self.parameters) - self.noise.estimated - self.candidate.misfit
 
     @cached_property
+    def are_shared(self) -> slice:
+        """Where in a parameter vector the errors are that readings share and that are unknowns."""
+        count = 0 if self.shared is None else self.shared.shape[1]
+        return slice(self.n_physical - count, self.n_physical)
+
+    @cached_property
     def _logs(self) -> NDArray[np.bool_]:
         return np.array([p.transform == "log" for p in self.parameters])
 
@@ -156,7 +174,8 @@ class Problem:
 
     @cached_property
     def _constant(self) -> float:
-        return -0.5 * (self.noise.log_det + len(self.measured.values) * LOG_TWO_PI)
+        normal = -0.5 * (self.noise.log_det + len(self.measured.values) * LOG_TWO_PI)
+        return normal + self.noise.heavy * tails.LOG_HEIGHT
 
     @cached_property
     def _prior_constant(self) -> float:
@@ -230,18 +249,24 @@ class Problem:
 
         Each Gaussian residual has unit variance under the noise; one for a heater is sqrt(-2 ln Phi(y)), with
         y the margin of its power over the predicted heat in standard deviations, so that half the sum of
-        squares is the negative log likelihood up to constants. `sigma` [K] overrides the noise parameter.
+        squares is the negative log likelihood up to constants; `tails` does the same for one with heavy
+        tails. `sigma` [K] overrides the noise parameter.
         """
         values = self.values(z)
         predicted = self.predict_values(values, len(z))
         n = len(self.measured.values)
-        whitened, log_variances = self._whiten(self.measured.values - predicted[:, :n], values, sigma)
+        whitened, log_variances = self._whiten(self._residuals(z, predicted[:, :n]), values, sigma)
         if self.measured.bounds:
             from scipy.special import log_ndtr
 
             margin = (self.measured.bound_values - predicted[:, n:]) / self.measured.bound_sds
             whitened = np.concatenate([whitened, np.sqrt(-2 * log_ndtr(margin))], axis=1)
         return whitened, log_variances
+
+    def _residuals(self, z: Array, predicted: Array) -> Array:
+        """Return what readings are off the predicted ones (n_sets, n), less the errors that they share."""
+        residuals = self.measured.values - predicted
+        return residuals if self.shared is None else residuals - z[:, self.are_shared] @ self.shared.T
 
     def _whiten(self, residuals: Array, values: Values, sigma: float | None) -> tuple[Array, Array | float]:
         """Return whitened residuals of the readings with Gaussian noise, and the sum of log variances."""
@@ -257,6 +282,8 @@ class Problem:
         else:
             variances = self.noise.variances(sigma)
         whitened = (residuals @ self.noise.basis) / np.sqrt(variances)
+        if self.noise.heavy:
+            whitened = tails.bend(whitened, self.noise.heavy)
         return whitened, np.log(variances).sum(axis=-1) if self.noise.estimated else 0.0
 
     def log_likelihood(self, z: Array) -> Array:
@@ -282,11 +309,12 @@ class Problem:
         """Return ln p(reading i | the other readings, z), (n_sets, n), as leave-one-out needs it.
 
         With C the covariance, P its inverse and e = P r: mean y_i - e_i/P_ii, variance 1/P_ii.
-        Source: Bürkner, Gabry, Vehtari, Computational Statistics 36 (2021) 1243, eq. for Gaussian models.
+        Source: Bürkner, Gabry, Vehtari, Computational Statistics 36 (2021) 1243, eq. for Gaussian models. One
+        with heavy tails shares nothing with others that z does not hold.
         """
         values = self.values(z)
         n = len(self.measured.values)
-        residuals = self.measured.values - self.predict_values(values, len(z))[:, :n]
+        residuals = self._residuals(z, self.predict_values(values, len(z))[:, :n])
         if self.noise.smooth is not None:
             inverse = self.noise.precision(values.get("noise", 0.0), values["misfit"])
             pull, precision = np.einsum("sij,sj->si", inverse, residuals), np.einsum("sii->si", inverse)
@@ -298,4 +326,9 @@ class Problem:
         basis = self.noise.basis
         pull = ((residuals @ basis) * weights) @ basis.T
         precision = weights @ np.square(basis).T
-        return 0.5 * (np.log(precision) - LOG_TWO_PI - np.square(pull) / precision)
+        scores, heavy = pull / np.sqrt(precision), self.noise.heavy
+        if heavy:
+            scores = tails.bend(scores, heavy)
+        found = 0.5 * (np.log(precision) - LOG_TWO_PI - np.square(scores))
+        found[:, :heavy] += tails.LOG_HEIGHT
+        return np.asarray(found)

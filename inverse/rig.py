@@ -54,6 +54,7 @@ __all__ = ["Rig", "Sensor", "SensorPlace", "TipName", "read", "read_bytes", "rea
 
 TipName = Literal["adiabatic", "convective", "fixed", "infinite"]
 LawName = Literal["uniform", "free-convection", "varying", "radiating"]
+NoiseName = Literal["normal", "heavy-tailed"]
 Values = float | NDArray[np.float64]
 
 LARGEST_FILE = 1_000_000
@@ -96,7 +97,8 @@ class Rig:
     number, is what tells the conductivity; `change`, how that follows the temperature, None where it does
     not. `emissivity` None: h is the total coefficient; `plate`, what carries the fin. `laws`, `tips`: the
     surface laws and tips that candidates are to have, None where the rig leaves that open; `exponent` of free
-    convection. `assumed`: defaults that were used, each an `assumed` finding.
+    convection; `noise`, the kinds of noise along the fin that they are to have. `assumed`: defaults that were
+    used, each an `assumed` finding.
     """
 
     title: str
@@ -123,6 +125,7 @@ class Rig:
     laws: tuple[LawName, ...] | None = None
     tips: tuple[TipName, ...] | None = None
     exponent: Quantity | None = None
+    noise: tuple[NoiseName, ...] = ("normal",)
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "geometry", MappingProxyType(dict(self.geometry)))
@@ -334,6 +337,7 @@ def _rig(document: Mapping[str, Any], source: Path | None, sha256: str | None) -
         laws=cast("tuple[LawName, ...] | None", section.candidates.surface_laws),
         tips=cast("tuple[TipName, ...] | None", section.candidates.tips),
         exponent=section.candidates.exponent,
+        noise=cast("tuple[NoiseName, ...]", section.candidates.noise),
         expected_joint=section.joint.expected if section.joint else None,
         expected_coefficient=section.air.expected_h,
         source=source,

@@ -38,6 +38,7 @@ SURFACES = ("projected", "slant")
 ORIENTATIONS = ("vertical", "horizontal")
 PLACES = ("plate", "air", "heat", "heater")
 LAWS = ("uniform", "free-convection", "varying", "radiating")
+NOISES = ("normal", "heavy-tailed")
 
 # The validators before a value run from right to left, those after it from left to right.
 _KNOWN_BETTER = (AfterValidator(entries.positive), AfterValidator(entries.narrow))
@@ -90,6 +91,7 @@ Change = Annotated[
 Area = Annotated[Quantity, *_KNOWN_BETTER, BeforeValidator(entries.quantity("area"))]
 PlateLosses = Annotated[Losses, BeforeValidator(entries.losses)]
 Laws = Annotated[tuple[str, ...], BeforeValidator(entries.several("surface law", LAWS))]
+Noises = Annotated[tuple[str, ...], BeforeValidator(entries.several("noise", NOISES))]
 Tips = Annotated[tuple[str, ...], BeforeValidator(entries.several("tip", TIPS))]
 ProfileName = Annotated[str, BeforeValidator(entries.choice("profile", PROFILES))]
 TipName = Annotated[
@@ -163,6 +165,7 @@ class CandidatesSection(Section):
     surface_laws: Laws | None = None
     tips: Tips | None = None
     exponent: Exponent | None = None
+    noise: Noises = ("normal",)
 
 
 class AirSection(Section):

@@ -4,7 +4,7 @@ from dataclasses import dataclass
 
 from finback.candidates import compared_laws
 from finback.estimate import Estimate
-from finback.problem import SMOOTH_MISFIT
+from finback.problem import HEAVY_TAILS, SMOOTH_MISFIT
 from finback.rig import Rig
 from finback.shapes import SHAPES
 
@@ -62,6 +62,12 @@ MISFIT = Equation(
     "smooth misfit: the covariance of readings along a fin whose profile differs from the model by a share "
     "a of its excess temperature, much the same within ℓ = 0.3 L",
 )
+TAILS = Equation(
+    "ln L(p) = −½ (ν + 1) Σᵢ ln(1 + eᵢ² / (ν sᵢ²)) + …,   ν = 4",
+    "heavy-tailed noise: the errors eᵢ that each reading along the fin has of its own follow Student's t, "
+    "whose scale sᵢ is the stated noise with what the hole's position adds; the calibration error that they "
+    "share, and uncertain lengths, are unknowns; … stands for the other readings",
+)
 BALANCE = Equation(
     "Q = N q_b + A_bare q″(T_plate) + Q_loss", "heat of the plate: N fins, what is bare of it, and its losses"
 )
@@ -96,10 +102,12 @@ def equations(estimate: Estimate) -> tuple[Equation, ...]:
             "common to a kind of sensor, and hole positions through dT/dx",
         ),
         *([MISFIT] if any(SMOOTH_MISFIT in score.name for score in estimate.candidates) else []),
+        *([TAILS] if any(HEAVY_TAILS in score.name for score in estimate.candidates) else []),
         Equation("Zᵢ = ∫ Lᵢ(p) πᵢ(p) dp", "evidence of candidate i, with its prior π"),
         Equation(
             "Pᵢ = wᵢ Zᵢ / Σⱼ wⱼ Zⱼ",
-            "its probability, w being that beforehand: the same for all, a tenth of it with a smooth misfit",
+            "its probability, w being that beforehand: the same for all, a tenth of it with a smooth misfit "
+            "or with heavy tails",
         ),
     ]
     return tuple(lines)

@@ -34,7 +34,7 @@ LAYERS = (
     "models",
     "errors findings wording cubics lattice pareto",
     "quantity thermocouples",
-    "priors noise misfit least_squares laplace diagnostics entries table",
+    "priors noise tails misfit least_squares laplace diagnostics entries table",
     "parameters rig_file shape_table proposal",
     "sensors sampling shapes handbook surroundings",
     "rig columns evidence",
