@@ -38,43 +38,49 @@ def find_mode(log_density: LogDensity, start: Array, root: Array, tolerance: flo
     Where the curvature is not positive the guess's is kept.
     """
     z = start
-    height = float(log_density(z[None])[0])
+    height, gradient, curvature = _derivatives(log_density, z, root)
     shrinking = 0.5 ** np.arange(12)
     growing = 2.0 ** np.arange(4, -10, -1)  # for where the curvature is not positive and bounds no step
     for _ in range(MAX_STEPS):
-        gradient, curvature = _derivatives(log_density, z, root)
         if not np.isfinite(curvature).all():  # at the edge of where there is any density
             return Mode(z, height, root)
         weights, axes = np.linalg.eigh(curvature)
-        lengths = shrinking if weights.min() > SMALLEST_CURVATURE else growing
+        bounded = weights.min() > SMALLEST_CURVATURE
         weights = np.where(weights > SMALLEST_CURVATURE, weights, np.maximum(np.abs(weights), 1.0))
         step = axes @ ((axes.T @ gradient) / weights)
         decrement = float(gradient @ step)
         refined = root @ (axes / np.sqrt(weights))
         if decrement < tolerance:
             return Mode(z, height, refined)
-        trials = z + lengths[:, None] * (root @ step)
+        away = root @ step
+        if bounded:  # the full step is mostly the best one
+            found = _derivatives(log_density, z + away, refined)
+            if found[0] > height and np.isfinite(found[2]).all():
+                z, root, (height, gradient, curvature) = z + away, refined, found
+                continue
+        trials = z + (shrinking if bounded else growing)[:, None] * away
         heights = log_density(trials)
         best = int(np.argmax(heights))
         if not heights[best] > height:
             return Mode(z, height, refined)
-        z, height, root = trials[best], float(heights[best]), refined
+        z, root = trials[best], refined
+        height, gradient, curvature = _derivatives(log_density, z, root)
     return Mode(z, height, root)
 
 
-def _derivatives(log_density: LogDensity, z: Array, root: Array) -> tuple[Array, Array]:
-    """Return the gradient (p,) and minus the Hessian (p, p) along the columns of root."""
+def _derivatives(log_density: LogDensity, z: Array, root: Array) -> tuple[float, Array, Array]:
+    """Return the height, and the gradient (p,) and minus the Hessian (p, p) along the columns of root."""
     p = len(z)
     unit = STEP * np.eye(p)
-    pairs = [(i, j) for i in range(p) for j in range(i)]
-    crossed = [unit[i] + unit[j] for i, j in pairs] + [-unit[i] - unit[j] for i, j in pairs]
-    offsets = np.concatenate([np.zeros((1, p)), unit, -unit, np.array(crossed).reshape(-1, p)])
+    rows, columns = np.tril_indices(p, -1)
+    crossed = unit[rows] + unit[columns]
+    offsets = np.concatenate([np.zeros((1, p)), unit, -unit, crossed, -crossed])
     f = log_density(z + offsets @ root.T)
     centre, up, down = f[0], f[1 : p + 1], f[p + 1 : 2 * p + 1]
-    gradient = (up - down) / (2 * STEP)
-    curvature = np.diag(-(up - 2 * centre + down) / STEP**2)
-    both = f[2 * p + 1 :].reshape(2, -1)
-    for n, (i, j) in enumerate(pairs):
-        mixed = (both[0, n] + both[1, n] + 2 * centre - up[i] - up[j] - down[i] - down[j]) / (2 * STEP**2)
-        curvature[i, j] = curvature[j, i] = -mixed
-    return gradient, curvature
+    with np.errstate(invalid="ignore"):  # at the edge of where there is any density
+        gradient = (up - down) / (2 * STEP)
+        curvature = np.diag(-(up - 2 * centre + down) / STEP**2)
+        both = f[2 * p + 1 :].reshape(2, -1).sum(axis=0) + 2 * centre
+        mixed = (both - (up + down)[rows] - (up + down)[columns]) / (2 * STEP**2)
+    curvature[rows, columns] = curvature[columns, rows] = -mixed
+    return float(centre), gradient, curvature

@@ -68,23 +68,29 @@ class PointEstimate:
         )
 
 
-def fit(residuals: Residuals, start: Array, typical: Array | float = 1.0) -> PointEstimate:
+def fit(
+    residuals: Residuals, start: Array, typical: Array | float = 1.0, gain: float = SMALLEST_GAIN
+) -> PointEstimate:
     """Minimise the sum of squared residuals.
 
     Arguments: residuals, from a block (n_sets, p) to (n_sets, n); start (p,); typical, the size of a change
-    in each value that matters, which bounds the difference steps from below, (p,) or one for all.
+    in each value that matters, which bounds the difference steps from below, (p,) or one for all; gain, the
+    share of the sum of squares that the full step must still promise, or the fit ends: more than the least
+    where only a place near the minimum is asked for.
 
     Returns a `PointEstimate`; `converged` is False when the iteration ended for want of progress or time.
     """
     first = np.array(start, dtype=np.float64)
-    found, ended = _iterate(residuals, first, typical)
+    found, ended = _iterate(residuals, first, typical, gain)
     if ended:
         return found
-    other, _ = _iterate(residuals, _by_trust_region(residuals, first, typical), typical)
+    other, _ = _iterate(residuals, _by_trust_region(residuals, first, typical), typical, gain)
     return min(found, other, key=lambda each: (not each.converged, each.chi_square))
 
 
-def _iterate(residuals: Residuals, start: Array, typical: Array | float) -> tuple[PointEstimate, bool]:
+def _iterate(
+    residuals: Residuals, start: Array, typical: Array | float, gain: float
+) -> tuple[PointEstimate, bool]:
     """Minimise by Levenberg and Marquardt's method; return also whether it ended before its time was up."""
     z = start
     r, slopes = _linearise(residuals, z, typical)
@@ -96,7 +102,7 @@ def _iterate(residuals: Residuals, start: Array, typical: Array | float) -> tupl
         tried = local.steps(r, dampings)
         small = np.abs(tried[0]) <= SMALLEST_STEP * np.maximum(np.abs(z), typical)
         promised = local.gain(r)
-        if small.all() or promised <= SMALLEST_GAIN * cost:
+        if small.all() or promised <= gain * cost:
             converged = ended = True
             break
         if damping > FULL_STEP_BELOW:

@@ -25,6 +25,7 @@ FALLS = np.array([0.0, 0.3, 1.0, 4.0])  # times the fin's own fall: how far belo
 LEAST_CONVECTED = 0.2  # share of a total coefficient that is convection at a start
 NOISE_ROUNDS = 20
 LINEARISING_ROUNDS = 2
+NEAR = 1e-3  # of the sum of squares: near enough to the optimum for slopes, of which the noise is made
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,11 +54,13 @@ def fit(problem: Problem, start: Array | None = None) -> LeastSquares:
     it would be none.
     """
     z = starting_point(problem) if start is None else start
-    found = _fit_given_noise_model(problem, z)
     if posing.needs_linearising(problem):
-        for _ in range(LINEARISING_ROUNDS):
-            found = _fit_given_noise_model(posing.linearise(problem, found.z), found.z)
-    return found
+        for n in range(LINEARISING_ROUNDS):
+            before, z = z, _fit_given_noise_model(problem, z, NEAR).z
+            if n > 0 and np.array_equal(before, z):
+                break
+            problem = posing.linearise(problem, z)
+    return _fit_given_noise_model(problem, z)
 
 
 def refit(found: LeastSquares, start: Array) -> LeastSquares:
@@ -134,14 +137,16 @@ def _grid(problem: Problem, level: Mapping[str, float]) -> Array:
     return block
 
 
-def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
+def _fit_given_noise_model(
+    problem: Problem, start: Array, gain: float = least_squares.SMALLEST_GAIN
+) -> LeastSquares:
     if problem.candidate.misfit:
         at = problem.n_physical
-        found = _fit_given_noise_model(problem.given(math.exp(start[at])), np.delete(start, at))
+        found = _fit_given_noise_model(problem.given(math.exp(start[at])), np.delete(start, at), gain)
         return replace(found, problem=problem, z=np.insert(found.z, at, start[at]))
     physical, n = problem.n_physical, len(problem.measured.values)
     sigma = REFERENCE_SIGMA
-    point = least_squares.fit(_residuals(problem, sigma), start[:physical])
+    point = least_squares.fit(_residuals(problem, sigma), start[:physical], gain=gain)
     freedom = n + int(problem.is_stated[:physical].sum()) - point.rank
     if problem.noise.estimated and _scales_with_sigma(problem):
         sigma *= math.sqrt(point.chi_square / max(freedom, 1))
@@ -153,7 +158,7 @@ def _fit_given_noise_model(problem: Problem, start: Array) -> LeastSquares:
             sigma = _matching_sigma(problem, point.residuals, before, freedom)
             if abs(sigma - before) <= 1e-10 * before:
                 break
-            point = least_squares.fit(_residuals(problem, sigma), point.values)
+            point = least_squares.fit(_residuals(problem, sigma), point.values, gain=gain)
     z = np.concatenate([point.values, [math.log(sigma)] * (len(problem.parameters) - physical)])
     is_reading = np.ones(len(point.residuals), dtype=bool)
     is_reading[n : n + len(problem.measured.bounds)] = False

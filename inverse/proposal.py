@@ -233,14 +233,14 @@ def _parts(centres: Array, covariances: Array, slopes: Array, heights: Array, st
     return min(max(math.ceil(wanted), 1), PARTS)
 
 
-def _straighten(log_density: LogDensity, proposal: Proposal, random: np.random.RandomState) -> Proposal:
+def straighten(log_density: LogDensity, proposal: Proposal, random: np.random.RandomState) -> Proposal:
     """Return a ladder in place of a proposal of one component, where the posterior is bent or skewed.
 
     Of unknowns that bend together one may turn back where the other goes on: a few draws of both ladders
-    tell which is right.
+    tell which is right. A proposal of several components is returned as it is.
     """
     centre, root = proposal.centres[0], proposal.roots[0]
-    if len(centre) == 1 or _bends(log_density, centre, root).max() < BENT:
+    if len(proposal.centres) > 1 or len(centre) == 1 or _bends(log_density, centre, root).max() < BENT:
         return proposal
     mode = laplace.find_mode(log_density, centre, root)  # what looked bent may lie beside the mode
     bends = _bends(log_density, mode.z, mode.root)
@@ -286,19 +286,26 @@ def _bends(log_density: LogDensity, centre: Array, root: Array) -> Array:
 
 
 def adapt(
-    log_density: LogDensity, proposal: Proposal, random: np.random.RandomState
+    log_density: LogDensity,
+    proposal: Proposal,
+    random: np.random.RandomState,
+    tried: tuple[Array, Array] | None = None,
 ) -> tuple[Proposal, float]:
     """Return the best of several refitted proposals and its efficiency [1].
 
-    Arguments: log_density, from a block (n_sets, p) to (n_sets,); proposal to start with; random. The
-    efficiency is the effective share of draws in importance sampling: 1 where the proposal is the posterior.
+    Arguments: log_density, from a block (n_sets, p) to (n_sets,); proposal to start with; random; tried,
+    draws (n, p) of that proposal and their log ratios (n,), where there are some: it is then straight as it
+    is. The efficiency is the effective share of draws in importance sampling: 1 where the proposal is the
+    posterior.
     """
-    if len(proposal.centres) == 1:
-        proposal = _straighten(log_density, proposal, random)
+    if tried is None:
+        proposal = straighten(log_density, proposal, random)
     best, highest = proposal, -1.0
     for components in COMPONENTS:
-        z = proposal.draw(DRAWS, random)
-        ratio = log_density(z) - proposal.log_density(z)
+        if tried is None:
+            z = proposal.draw(DRAWS, random)
+            tried = z, log_density(z) - proposal.log_density(z)
+        z, ratio = tried
         weights = np.exp(ratio - ratio.max())
         efficiency = float(weights.sum() ** 2 / np.square(weights).sum() / len(z))
         if efficiency > highest:
@@ -306,7 +313,7 @@ def adapt(
         if efficiency >= GOOD:
             break
         weights = np.minimum(weights, np.partition(weights, -CUT)[-CUT])
-        proposal = _fit(z, weights / weights.sum(), components)
+        proposal, tried = _fit(z, weights / weights.sum(), components), None
     return best, highest
 
 

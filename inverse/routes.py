@@ -73,12 +73,11 @@ class Outcome:
 
 @dataclass(frozen=True)
 class Route:
-    """One candidate by the fast route: fit, mode, proposal with its efficiency, weighted draws."""
+    """One candidate by the fast route: fit, mode, proposal, weighted draws."""
 
     point: LeastSquares
     mode: Mode
     proposal: Proposal
-    efficiency: float
     fast: FastPosterior
     seeds: Sequence[np.random.SeedSequence]
 
@@ -118,7 +117,7 @@ class Route:
         """Return the outcome with draws by MCMC, and how far they bear the fast route out."""
         problem = self.point.problem
         chain = sampling.sample(
-            problem.log_density, self.proposal, self.efficiency, self.seeds[1], settings, progress
+            problem.log_density, self.proposal, self.fast.efficiency, self.seeds[1], settings, progress
         )
         found = evidence.bridge(problem.log_density, chain, self.seeds[2])
         if self.khats["z"] <= fast.TRUSTED and self.fast.evidence.error < found.error:
@@ -156,10 +155,8 @@ def weigh(problem: Problem, seed: np.random.SeedSequence, start: Array | None = 
     mode = find_mode(point)
     if problem.candidate.misfit:  # how much there is of it, the posterior tells and not least squares
         point = optimum.refit(point, mode.z)
-    random = np.random.RandomState(np.random.MT19937(seeds[0]))
-    proposal, efficiency = fit_proposal(point.problem, mode, random)
-    weighted = fast.sample(point.problem.log_density, proposal, np.random.default_rng(seeds[0]))
-    return Route(point, mode, proposal, efficiency, weighted, seeds)
+    proposal, weighted = fit_proposal(point.problem, mode, seeds[0])
+    return Route(point, mode, proposal, weighted, seeds)
 
 
 def misfit_gain(route: Route) -> float:
@@ -210,8 +207,10 @@ def find_mode(point: LeastSquares) -> Mode:
     return laplace.find_mode(problem.log_density, start, root)
 
 
-def fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) -> tuple[Proposal, float]:
-    """Return a proposal fitted to the posterior, and its efficiency [1].
+def fit_proposal(
+    problem: Problem, mode: Mode, seed: np.random.SeedSequence
+) -> tuple[Proposal, FastPosterior]:
+    """Return a proposal fitted to the posterior, and its weighted draws.
 
     An estimated noise makes the posterior of few readings a funnel, and its mode may be a spike far down in
     it, where plate and air fit their readings without any noise: a ladder starts from the whole of it. So
@@ -219,9 +218,25 @@ def fit_proposal(problem: Problem, mode: Mode, random: np.random.RandomState) ->
     """
     spare = len(problem.measured.values) - problem.n_physical
     funnel = problem.noise.estimated and spare < SPARE_FOR_NOISE
+    random = np.random.RandomState(np.random.MT19937(seed)), np.random.default_rng(seed)
     if funnel or problem.candidate.misfit:
         ladder = proposals.ladder(problem.log_density, mode, -1 if funnel else problem.n_physical)
-        found = proposals.adapt(problem.log_density, ladder, random)
-        if found[1] >= LADDER_FITS:
+        found = _weigh_fitted(problem, ladder, *random)
+        if found[1].efficiency >= LADDER_FITS:
             return found
-    return proposals.adapt(problem.log_density, proposals.from_mode(mode), random)
+    start = proposals.straighten(problem.log_density, proposals.from_mode(mode), random[0])
+    return _weigh_fitted(problem, start, *random)
+
+
+def _weigh_fitted(
+    problem: Problem, start: Proposal, random: np.random.RandomState, shifts: np.random.Generator
+) -> tuple[Proposal, FastPosterior]:
+    """Weigh draws of a proposal, and of one refitted to them where they are too few that count."""
+    weighted = fast.sample(problem.log_density, start, shifts)
+    if weighted.efficiency >= proposals.GOOD:
+        return start, weighted
+    tried = weighted.z, weighted.log_ratios
+    proposal, _ = proposals.adapt(problem.log_density, start, random, tried)
+    if proposal is start:
+        return start, weighted
+    return proposal, fast.sample(problem.log_density, proposal, shifts)

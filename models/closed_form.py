@@ -55,9 +55,11 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
     far = np.exp(m * -L)
     base_slope = m * (one_minus_r - r * decay) / whole
 
-    column = m[:, None]  # one row a set, one column a position
-    echo = _as_column(one_plus_r) + _as_column(r) * np.expm1(column * (2 * (x - L)))
-    shape = echo * np.exp(column * -x)
+    along = x[:, None]  # one row a position, one column a set: what follows runs over many sets at once
+    echo = r * np.expm1((2 * (along - L)) * m)
+    echo += one_plus_r
+    shape = np.exp(-along * m)
+    shape *= echo
 
     driving = base.plate_temperature if isinstance(base, Joint) else base.temperature
     bond = base.resistance * k if isinstance(base, Joint) else 0.0
@@ -71,8 +73,8 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
         theta_b = (drive + bond * through * tip_excess) / slack
         base_fall = (through * across + half * drive) / slack
         tip_fall = (through * across - half * tip_excess * (1 + bond * (through + base_slope))) / slack
-        from_tip = np.exp(column * (x - L)) * np.expm1(column * (-2 * x))
-        theta = shape * (theta_b / whole)[:, None] + from_tip * _as_column(tip_excess / decay)
+        from_tip = np.exp((along - L) * m) * np.expm1((-2 * along) * m)
+        theta = shape * (theta_b / whole) + from_tip * (tip_excess / decay)
         tip_theta: Values = tip_excess
     else:
         theta_b = drive / slack
@@ -80,22 +82,19 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
         scaled = theta_b / whole
         at_end = far * scaled
         tip_fall = m * one_minus_r * at_end
-        theta = shape * scaled[:, None]
+        theta = shape
+        theta *= scaled
         tip_theta = one_plus_r * at_end
 
     base_heat = (k * A) * base_fall
+    theta += air
     return Solution(
-        temperatures=theta + _as_column(air),
+        temperatures=theta.T,
         base_temperature=_rows(theta_b + air, base_heat),
         base_heat=base_heat,
         tip_temperature=_rows(tip_theta + air, base_heat),
         tip_heat=(k * A) * tip_fall,
     )
-
-
-def _as_column(value: Values) -> Values:
-    """Return a value as a column that spreads over positions; a float spreads by itself."""
-    return value[:, None] if isinstance(value, np.ndarray) and value.ndim else value
 
 
 def _rows(value: Values, like: Array) -> Array:

@@ -147,7 +147,8 @@ def long_chain(point: LeastSquares, fitted: tuple[Proposal, float]) -> np.ndarra
 
 def fitted(point: LeastSquares) -> tuple[Proposal, float]:
     mode = routes.find_mode(point)
-    return routes.fit_proposal(point.problem, mode, np.random.RandomState(1))
+    proposal, weighted = routes.fit_proposal(point.problem, mode, np.random.SeedSequence(1))
+    return proposal, weighted.efficiency
 
 
 def assert_agreement(found: FastPosterior, chain: np.ndarray) -> None:
