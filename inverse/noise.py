@@ -20,6 +20,8 @@ from numpy.typing import NDArray
 Array = NDArray[np.float64]
 
 REFERENCE_SIGMA = 0.3  # K; any positive number gives the same answer, this one keeps M well scaled
+EVERY = slice(None)
+ALIKE = 12  # digits to which parts of the noise that are alike are made equal
 PIECE = 2**16  # numbers of covariances at a time, that stay in the processor's cache
 
 
@@ -42,9 +44,9 @@ class Noise:
     smooth: Array | None = None
     heavy: int = 0
 
-    def variances(self, sigma: Array | float) -> Array:
+    def variances(self, sigma: Array | float, parts: NDArray[np.intp] | slice = EVERY) -> Array:
         """Return the variances of the parts without misfit for sigma [K] of shape (n_sets, 1) or a float."""
-        return self.floor + self.slope * np.square(sigma)
+        return self.floor[parts] + self.slope[parts] * np.square(sigma)
 
     def covariance(self, sigma: float, misfit: float = 0.0) -> Array:
         """Return the covariance C of the readings (n, n) for one sigma [K] and one share of misfit [1]."""
@@ -139,7 +141,7 @@ def _part(reference: Array, factor: Array, estimated: bool) -> Noise:
         return Noise(inverse.T, np.ones(n), np.zeros(n), log_det, False)
     marked = inverse @ factor
     slope, vectors = np.linalg.eigh(marked @ marked.T)
-    slope = np.clip(slope, 0.0, REFERENCE_SIGMA**-2)
+    slope = np.clip(np.round(slope * REFERENCE_SIGMA**2, ALIKE) / REFERENCE_SIGMA**2, 0.0, REFERENCE_SIGMA**-2)
     floor = np.clip(1 - REFERENCE_SIGMA**2 * slope, 0.0, None)
     floor[floor < 1e-12] = 0.0
     return Noise(inverse.T @ vectors, floor, slope, log_det, True)

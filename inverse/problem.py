@@ -173,6 +173,17 @@ class Problem:
         return tuple((i, p) for i, p in enumerate(self.parameters) if p.transform == "bounded")
 
     @cached_property
+    def _is_white(self) -> bool:
+        return bool((self.noise.floor == 1).all())
+
+    @cached_property
+    def _kinds(self) -> tuple[NDArray[np.intp], NDArray[np.intp], Array]:
+        """Parts of the noise that are alike: where the first of each kind is, which kind each is, how many."""
+        both = np.stack([self.noise.floor, self.noise.slope])
+        _, first, which, counts = np.unique(both, axis=1, return_index=True, return_inverse=True, return_counts=True)
+        return first, which.ravel(), counts.astype(np.float64)
+
+    @cached_property
     def _constant(self) -> float:
         normal = -0.5 * (self.noise.log_det + len(self.measured.values) * LOG_TWO_PI)
         return normal + self.noise.heavy * tails.LOG_HEIGHT
@@ -232,7 +243,7 @@ class Problem:
         fin, base, air = self.build(values, changes)
         x = measured.positions if changes is None else np.minimum(measured.positions, fin.profile.length)
         solution = solve(fin, base, air, x)
-        found = np.empty((n_sets, len(measured.sensors) + len(measured.bounds)))
+        found = np.empty((len(measured.sensors) + len(measured.bounds), n_sets)).T  # many sets side by side
         found[:, :n_fin] = solution.temperatures
         others = measured.sensors[n_fin:] + measured.bounds
         into_fins = of_heater = solution.base_heat
@@ -273,18 +284,18 @@ class Problem:
         if self.noise.smooth is not None:
             noise = values.get("noise", 0.0) if sigma is None else sigma
             return self.noise.whiten(residuals, noise, values["misfit"])
-        if not self.noise.estimated:
-            variances: Array = self.noise.floor
-        elif sigma is None:
-            noise_values = values["noise"]
-            assert isinstance(noise_values, np.ndarray)
-            variances = self.noise.variances(noise_values[:, None])
-        else:
-            variances = self.noise.variances(sigma)
-        whitened = (residuals @ self.noise.basis) / np.sqrt(variances)
-        if self.noise.heavy:
-            whitened = tails.bend(whitened, self.noise.heavy)
-        return whitened, np.log(variances).sum(axis=-1) if self.noise.estimated else 0.0
+        parts = residuals @ self.noise.basis
+        log_variances: Array | float = 0.0
+        if self.noise.estimated:
+            first, which, counts = self._kinds
+            noise = values["noise"] if sigma is None else sigma
+            variances = self.noise.variances(np.reshape(noise, (-1, 1)), first)
+            parts *= (1 / np.sqrt(variances))[:, which]
+            log_variances = np.log(variances) @ counts
+        elif not self._is_white:
+            parts /= np.sqrt(self.noise.floor)
+        whitened = tails.bend(parts, self.noise.heavy) if self.noise.heavy else parts
+        return whitened, log_variances
 
     def log_likelihood(self, z: Array) -> Array:
         """Return ln p(readings | z) of a block (n_sets, p) -> (n_sets,)."""
