@@ -111,10 +111,7 @@ def compare(
     settings = settings or Settings()
     weighed = weigh(rig, readings, seed, progress)
     best = max(weighed, key=lambda route: route.log_weight)
-    worth = [
-        route is best or (route.log_weight > best.log_weight - WORTH_SAMPLING and route.khat > fast.TRUSTED)
-        for route in weighed
-    ]
+    worth = [route is best or (matters(route, weighed) and route.khat > fast.TRUSTED) for route in weighed]
     outcomes = []
     for route, sampled in zip(weighed, worth, strict=True):
         if not sampled:
@@ -147,13 +144,20 @@ def weigh(rig: Rig, readings: Readings, seed: int, progress: Progress) -> list[R
         progress("comparing candidates", 0.2 * number / len(problems))
         plain.append(one(problem))
     smoothed = []
-    worth = worth_smoothing(plain)
-    for number, route in enumerate(worth):
-        progress("comparing candidates", 0.2 + 0.1 * number / len(worth))
+    bent = worth_smoothing(plain)
+    for number, route in enumerate(bent):
+        progress("comparing candidates", 0.2 + 0.1 * number / len(bent))
         posed = pose(rig, readings, replace(route.point.problem.candidate, misfit=True))
         start = np.insert(route.point.z, posed.n_physical, posed.prior_mean[posed.n_physical])
         smoothed.append(one(posed, start))
-    return plain + smoothed
+    weighed = plain + smoothed
+    worth = [matters(route, weighed) and route.khat > fast.TRUSTED for route in weighed]
+    return [route.steadied() if unsteady else route for route, unsteady in zip(weighed, worth, strict=True)]
+
+
+def matters(route: Route, weighed: Sequence[Route]) -> bool:
+    """Tell whether a candidate has a share in the averages that may be seen."""
+    return route.log_weight > max(each.log_weight for each in weighed) - WORTH_SAMPLING
 
 
 def worth_smoothing(weighed: Sequence[Route]) -> list[Route]:

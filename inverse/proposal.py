@@ -144,6 +144,19 @@ def from_draws(draws: Array) -> Proposal:
     return _fit(draws, np.full(len(draws), 1 / len(draws)), 1)
 
 
+def mix(first: Proposal, second: Proposal, share: float) -> Proposal:
+    """Return the components of two proposals side by side, the second's with a share [1] of the whole."""
+    parts = [
+        weight * (np.full(len(one.centres), 1 / len(one.centres)) if one.shares is None else one.shares)
+        for one, weight in ((first, 1 - share), (second, share))
+    ]
+    return Proposal(
+        np.concatenate([first.centres, second.centres]),
+        np.concatenate([first.roots, second.roots]),
+        np.concatenate(parts),
+    )
+
+
 def ladder(log_density: LogDensity, mode: Mode, along: int = -1, step: float = RUNG) -> Proposal:
     """Return components along one unknown, each with the mode and curvature of the others given it.
 
@@ -167,7 +180,7 @@ def ladder(log_density: LogDensity, mode: Mode, along: int = -1, step: float = R
     for root, n in zip(roots, kept, strict=True):
         low, high = int(places[n]), min(int(places[n]) + 1, len(covariances) - 1)
         covariance = covariances[low] + (places[n] - low) * (covariances[high] - covariances[low])
-        root[np.ix_(others, others)] = _root(covariance)
+        root[np.ix_(others, others)] = root_of(covariance)
         root[along, along] = width
         root[others, along] = width * slopes[n]  # the others follow the one
     at = mode.z[along] + step * (first + places[kept])
@@ -191,7 +204,7 @@ def _rungs(log_density: LogDensity, mode: Mode, along: int, step: float) -> tupl
             lambda block: log_density(np.insert(block, along, at, axis=1)), start, root, NEAR
         )
 
-    rungs = {0: rung(0, mode.z[others], _root(given))}
+    rungs = {0: rung(0, mode.z[others], root_of(given))}
     highest = rungs[0].log_evidence
     for way in (1, -1):
         last, move, change = rungs[0], way * step * slope, np.zeros(len(others))
@@ -338,10 +351,10 @@ def _moments(draws: Array, weights: Array) -> tuple[Array, Array]:
     """Return mean (p,) and a root (p, p) of the widened covariance of weighted draws."""
     centre = weights @ draws
     away = draws - centre
-    return centre, _root(WIDER * (away.T @ (away * weights[:, None])))
+    return centre, root_of(WIDER * (away.T @ (away * weights[:, None])))
 
 
-def _root(covariance: Array) -> Array:
+def root_of(covariance: Array) -> Array:
     """Return a root of a covariance (p, p), be it flat in some direction or of very different scales."""
     scale = np.sqrt(np.maximum(np.diag(covariance), np.finfo(np.float64).tiny))
     spread, axes = np.linalg.eigh(covariance / np.outer(scale, scale))

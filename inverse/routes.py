@@ -7,7 +7,7 @@ trusted they must agree.
 
 import math
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -34,6 +34,7 @@ SPARE_FOR_NOISE = (
 LADDER_FITS = 0.1  # efficiency below which a ladder has missed its posterior: readings without any error
 MISFIT_SPREAD = 0.7  # of the logarithm of its share: about what some ten readings leave
 LOOKED_AT = np.array([-2.0, -1.0, 0.0, 1.0, 2.0, 3.0])  # standard deviations beforehand of the same
+SECOND_LADDER = 0.3  # share of it, beside a proposal that lets some unknown's tail go
 SMALLER = np.array([1.0, 0.5, 0.25])  # noise than least squares estimate where there is no misfit
 SMALLEST_NOISE = 1e-3  # K; readings without errors would leave none
 SMALLEST_WEIGHT = 1e-10  # of a scaled precision: what rounding leaves of it
@@ -103,6 +104,24 @@ class Route:
     def khat(self) -> float:
         """The largest k-hat of any quantity."""
         return max(self.khats.values())
+
+    def steadied(self) -> "Route":
+        """Return the route with a second ladder in its proposal, or itself where that does not help.
+
+        Along the unknown whose k-hat is largest: a joint that a misfit leaves open, say, which no component
+        reaches that follows the misfit alone.
+        """
+        density, names = self.point.problem.log_density, self.point.problem.names
+        worst = max((name for name in names if name in self.khats), key=lambda name: self.khats[name])
+        along = names.index(worst)
+        spread = self.fast.z - self.fast.mean(self.fast.z)
+        covariance = spread.T @ (spread * self.fast.weights[:, None])
+        mode = laplace.find_mode(density, self.fast.mean(self.fast.z), proposals.root_of(covariance))
+        step = proposals.STRIDE * math.sqrt(covariance[along, along])
+        both = proposals.mix(self.proposal, proposals.ladder(density, mode, along, step), SECOND_LADDER)
+        weighted = fast.sample(density, both, np.random.default_rng(self.seeds[0].spawn(1)[0]))
+        found = replace(self, proposal=both, fast=weighted)
+        return found if found.khat < self.khat else self
 
     def outcome(self) -> Outcome:
         """Return the outcome with draws resampled by their weights, dealt out to chains."""

@@ -217,3 +217,15 @@ def test_a_heat_that_no_heater_supplies_is_not_explained_away() -> None:
     estimate = finback.fit(rig, readings, settings=QUICK)
     assert "misfit" in estimate.candidates[0].name  # it would
     assert "heat-balance" in {f.code for f in estimate.findings if f.severity == "fault"}
+
+
+def test_a_second_ladder_reaches_the_joint_that_a_misfit_leaves_open() -> None:
+    # with more of a misfit than is likely the plate's neighbours no longer limit the joint from below
+    rig = pin_rig(diameter=Quantity(0.008, 2e-5), conductivity=Quantity(167.0, 8.35), tip="convective")
+    readings, _ = draw(rig, Truth(), np.random.default_rng([7, 121]))
+    posed = posing.pose(rig, readings, SMOOTH)
+    route = routes.weigh(posed, np.random.SeedSequence(1))
+    steadied = route.steadied()
+    assert steadied.khat < route.khat
+    assert steadied.fast.efficiency > route.fast.efficiency
+    assert steadied.fast.evidence.log == pytest.approx(route.fast.evidence.log, abs=0.03)
