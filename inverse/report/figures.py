@@ -112,10 +112,11 @@ def draw(estimate: Estimate) -> tuple[Picture, ...]:
         warnings.filterwarnings(
             "ignore", "Glyph .* missing from", UserWarning
         )  # a name in any script is drawn
-        return tuple(_picture(name, paint()) for name, paint in painters)
+        return tuple(picture(name, paint()) for name, paint in painters)
 
 
-def _picture(name: str, figure: Figure) -> Picture:
+def picture(name: str, figure: Figure) -> Picture:
+    """Return a figure as PNG and SVG, the same bytes every time."""
     png, svg = io.BytesIO(), io.BytesIO()
     figure.set_dpi(DPI)  # the canvases' own print methods: print_figure would lay everything out twice
     raster: Any = FigureCanvasAgg(figure)  # matplotlib does not say what the print methods take

@@ -7,7 +7,7 @@ estimate.json last, so that it stands for a complete result.
 import json
 import os
 import tempfile
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
@@ -36,13 +36,13 @@ class Written:
     figures: tuple[Path, ...]
 
 
-def prepare(folder: Path, force: bool = False) -> None:
+def prepare(folder: Path, force: bool = False, ours: Sequence[str] = OURS) -> None:
     """Make sure that a result can be written to a folder, before anything is computed; create the folder.
 
-    Arguments: folder; force, whether an earlier result there may be replaced.
+    Arguments: folder; force, whether an earlier result there may be replaced; ours, the files that it has.
     Raises InputError when it holds one and force is False, is no folder, or cannot be written.
     """
-    earlier = [name for name in OURS if os.path.lexists(folder / name)]
+    earlier = [name for name in ours if os.path.lexists(folder / name)]
     if earlier and not force:
         raise InputError(
             folder, None, f"already holds an earlier result ({earlier[0]})",
@@ -59,7 +59,7 @@ def prepare(folder: Path, force: bool = False) -> None:
             with tempfile.TemporaryFile(dir=place):
                 pass
     except (OSError, ValueError) as error:
-        raise _unwritable(folder, error) from error
+        raise unwritable(folder, error) from error
 
 
 def write(estimate: Estimate, folder: Path, force: bool = False) -> Written:
@@ -87,18 +87,18 @@ def write(estimate: Estimate, folder: Path, force: bool = False) -> Written:
         ESTIMATE: lambda place: place.write_text(text, encoding="utf-8", newline="\n"),
     }
     try:
-        _put(folder, fillers)
+        put(folder, fillers)
         for name in OURS:
             if name not in fillers:  # of an earlier result, and wrong beside this one
                 (folder / name).unlink(missing_ok=True)
     except OSError as error:
-        raise _unwritable(folder, error) from error
+        raise unwritable(folder, error) from error
     return Written(
         folder / ESTIMATE, folder / REPORT, folder / POSTERIOR, tuple(folder / name for name in drawn)
     )
 
 
-def _put(folder: Path, fillers: Mapping[str, Callable[[Path], object]]) -> None:
+def put(folder: Path, fillers: Mapping[str, Callable[[Path], object]]) -> None:
     """Fill a temporary file beside each place, then move all there; a failure leaves nothing behind."""
     filled: dict[Path, Path] = {}
     try:
@@ -122,6 +122,7 @@ def _umask() -> int:
     return mask
 
 
-def _unwritable(folder: Path, error: Exception) -> InputError:
+def unwritable(folder: Path, error: Exception) -> InputError:
+    """Return the error for a folder that cannot be written, with the reason."""
     reason = (error.strerror if isinstance(error, OSError) else None) or str(error)
     return InputError(folder, None, f"cannot be written to ({reason})", "give a folder that can be written")

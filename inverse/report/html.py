@@ -54,16 +54,21 @@ def _embed(picture: "Picture", seen: view.View) -> Embedded:
     return Embedded(f"data:image/svg+xml;base64,{data}", alt)
 
 
-@cache
 def _template() -> Any:
+    return environment().get_template("report.html.j2")
+
+
+@cache
+def environment() -> Any:
+    """Return what renders the templates: everything escaped, nothing undefined."""
     from jinja2 import Environment, PackageLoader, StrictUndefined
 
-    environment = Environment(
+    made = Environment(
         loader=PackageLoader("finback.report"), autoescape=True, undefined=StrictUndefined, trim_blocks=True,
         lstrip_blocks=True, keep_trailing_newline=True,
     )  # fmt: skip
-    environment.filters |= {"whole": whole, "subscripts": subscripts}
-    return environment.get_template("report.html.j2")
+    made.filters |= {"whole": whole, "subscripts": subscripts}
+    return made
 
 
 def whole(text: str) -> str:
