@@ -1,4 +1,4 @@
-"""The command line: `fit`, `check` and `demo`. The only module that prints.
+"""The command line: `fit`, `batch`, `check` and `demo`. The only module that prints.
 
 Results go to standard output; errors and progress to standard error. Nothing heavy is imported at the top, so
 that `finback --help` answers at once. Exit status: 0 done, 1 the computation failed, 2 the input is wrong,
@@ -80,6 +80,59 @@ def fit(
     rig = rig_reader.read(rig_file)
     readings = readings_reader.read(readings_file, rig).pick(run)
     return _fit_into(out, rig, readings, seed=seed, quiet=quiet, force=force)
+
+
+@app.command()
+def batch(
+    inputs: Annotated[
+        list[Path],
+        typer.Argument(metavar="RIG READINGS...", help="A rig file and its readings; then others likewise."),
+    ],
+    out: Annotated[Path, typer.Option("--out", metavar="DIR", help="The folder to write the results to.")],
+    workers: Annotated[
+        int | None,
+        typer.Option("--workers", metavar="N", min=1, help="Processes that share the work; one a processor."),
+    ] = None,
+    block: Annotated[
+        int | None,
+        typer.Option("--block", metavar="N", min=1, help="Runs sent out at a time; by the time they take."),
+    ] = None,
+    scheduler: Annotated[
+        str | None,
+        typer.Option("--scheduler", metavar="ADDRESS", help="Send the work to this dask scheduler instead."),
+    ] = None,
+    keep_posteriors: Annotated[
+        bool, typer.Option("--keep-posteriors", help="Write the posterior of every run as well.")
+    ] = False,
+    seed: Seed = 1,
+    quiet: Quiet = False,
+    force: Annotated[
+        bool, typer.Option("--force", help="Start anew, and overwrite earlier results.")
+    ] = False,
+) -> int:
+    """Estimate every run of one or several tables, and go on where an earlier call has ended."""
+    from contextlib import closing
+
+    from finback import campaign, campaign_table
+    from finback.report import campaign_terminal
+
+    sources = campaign.read(inputs)
+    campaign_table.prepare(out, force)
+    pool = campaign.cluster(scheduler) if scheduler else campaign.processes(workers or os.cpu_count() or 1)
+    with closing(pool), _campaign_progress(quiet) as progress:
+        done = campaign.run(
+            sources,
+            out,
+            seed=seed,
+            pool=pool,
+            block=block,
+            keep_posteriors=keep_posteriors,
+            progress=progress,
+        )
+    tally = campaign_table.write(done)
+    if not quiet:
+        print(campaign_terminal.summary(done, tally))
+    return 0 if tally.runs > tally.statuses["failed"] else 1
 
 
 @app.command()
@@ -174,6 +227,28 @@ def _progress(quiet: bool) -> Iterator[Callable[[str, float], None] | None]:
     with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
         task = bar.add_task("reading", total=1.0)
         yield lambda stage, fraction: bar.update(task, description=stage, completed=fraction)
+
+
+@contextmanager
+def _campaign_progress(quiet: bool) -> Iterator[Callable[[int, int, float | None], None] | None]:
+    """Yield a callable (done, total, runs a second) that draws a bar, or None where nobody watches."""
+    if quiet or not sys.stderr.isatty():
+        yield None
+        return
+    from rich.console import Console
+    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
+
+    columns = (
+        BarColumn(), MofNCompleteColumn(), TextColumn("{task.fields[rate]}", markup=False),
+        TimeRemainingColumn(), TextColumn("left"),
+    )  # fmt: skip
+    with Progress(*columns, console=Console(stderr=True), transient=True) as bar:
+        task = bar.add_task("runs", total=None, rate="")
+
+        def show(done: int, total: int, rate: float | None) -> None:
+            bar.update(task, completed=done, total=total, rate=f"{rate:.3g} runs a second" if rate else "")
+
+        yield show
 
 
 def run(arguments: Sequence[str]) -> int:

@@ -170,7 +170,7 @@ def given_joint(outcomes: Sequence[Outcome], probabilities: Array) -> Array:
     """Return the probabilities of outcomes given that there is a joint, zero where theirs has none."""
     joint = np.array([outcome.problem.candidate.joint for outcome in outcomes])
     shares: Array = np.where(joint, probabilities + np.finfo(np.float64).tiny, 0.0)
-    return shares / shares.sum()
+    return np.asarray(shares / shares.sum())
 
 
 def fitted_readings(best: Outcome) -> tuple[ReadingFit, ...]:

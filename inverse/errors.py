@@ -2,7 +2,8 @@
 
     FinbackError
     ├── InputError         what the user gave is wrong: exit status 2
-    └── ComputationError   the input was read and the computation failed: exit status 1
+    ├── ComputationError   the input was read and the computation failed: exit status 1
+    └── StoppedError       the user ended it, and what was done is kept: exit status 130
 
 Each is one clear sentence: where, what is wrong, what would be right.
 """
@@ -33,3 +34,9 @@ class InputError(FinbackError):
 
 class ComputationError(FinbackError):
     """The input was read and the computation failed; the sentence says what was tried."""
+
+
+class StoppedError(FinbackError):
+    """The user ended a long computation; the sentence says how far it came and how to go on."""
+
+    exit_status = 130

@@ -102,7 +102,7 @@ def _taken(outcomes: Sequence[Outcome], probabilities: Array) -> tuple[list[Outc
     if outcomes[0].problem.candidate.misfit:  # what heat the readings ask for is told without one
         plain = next(i for i, outcome in enumerate(outcomes) if not outcome.problem.candidate.misfit)
         counts[plain] = max(counts[plain], FOR_A_MEDIAN)
-    taken = np.flatnonzero(counts)
+    taken = np.flatnonzero(counts).tolist()
     kept = []
     for at in taken:
         draws = outcomes[at].draws

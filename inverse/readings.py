@@ -92,42 +92,48 @@ class Table:
             remedy = f"the nearest is {quoted(near)}" if near else f"there are {listed(self.rows, 3)}"
             raise InputError(self.source, None, f"there is no run {quoted(run)}", remedy)
         row = self.rows[run]
-        values = {}
-        for column in self.columns.sensors:
-            value = self._value(column, row)
-            if value is not None:
-                values[column.sensor.name] = value
-        if not any(c.sensor.place == "fin" and c.sensor.name in values for c in self.columns.sensors):
-            problem = f"run {quoted(run)} has no temperature along the fin"
-            raise InputError(
-                self.source, f"row {row[0]}", problem, "fill in at least one, or choose another run"
-            )
-        extra = {name: _cell(row, at) for name, at in self.columns.extra.items()}
+        extra = {name: cell_of(row, at) for name, at in self.columns.extra.items()}
+        values = values_of(self.columns, run, row, self.decimal_comma, self.source)
         return Readings(run, values, extra=extra, source=self.source, sha256=self.sha256)
 
-    def _value(self, column: Column, row: Row) -> float | None:
-        """Return what a sensor read in a row [K or W], None where it was not measured."""
-        cell = _cell(row, column.index)
-        if is_empty(cell):
-            return None
-        place = f"row {row[0]}, column {plain(column.sensor.name)}"
-        number = to_number(cell, self.decimal_comma)
-        if number is None:
-            raise InputError(
-                self.source, place, f"{quoted(cell)} is no number", "write a number or leave it empty"
-            )
-        value = number * column.factor + column.offset
-        if not math.isfinite(value):
-            raise InputError(
-                self.source, place, f"{quoted(cell)} is too large", "write a number or leave it empty"
-            )
-        if column.sensor.reads_temperature and value < 0:
-            problem = f"{quoted(cell)} {column.unit} is below absolute zero"
-            raise InputError(self.source, place, problem, "correct the value, or its unit in the header")
-        if column.sensor.reads_temperature and value > HOTTEST:
-            problem = f"{quoted(cell)} {column.unit} is hotter than any fin (3000 degC)"
-            raise InputError(self.source, place, problem, "correct the value, or its unit in the header")
-        return value
+
+def values_of(
+    columns: Columns, run: str, row: Row, decimal_comma: bool, source: Path | None
+) -> dict[str, float]:
+    """Return what the sensors read in one row [K or W], by name; those that were measured.
+
+    Raises InputError for a cell that is no such reading, and for a row without a temperature along the fin.
+    """
+    values = {}
+    for column in columns.sensors:
+        value = _value(column, row, decimal_comma, source)
+        if value is not None:
+            values[column.sensor.name] = value
+    if not any(c.sensor.place == "fin" and c.sensor.name in values for c in columns.sensors):
+        problem = f"run {quoted(run)} has no temperature along the fin"
+        raise InputError(source, f"row {row[0]}", problem, "fill in at least one, or choose another run")
+    return values
+
+
+def _value(column: Column, row: Row, decimal_comma: bool, source: Path | None) -> float | None:
+    """Return what a sensor read in a row [K or W], None where it was not measured."""
+    cell = cell_of(row, column.index)
+    if is_empty(cell):
+        return None
+    place = f"row {row[0]}, column {plain(column.sensor.name)}"
+    number = to_number(cell, decimal_comma)
+    if number is None:
+        raise InputError(source, place, f"{quoted(cell)} is no number", "write a number or leave it empty")
+    value = number * column.factor + column.offset
+    if not math.isfinite(value):
+        raise InputError(source, place, f"{quoted(cell)} is too large", "write a number or leave it empty")
+    if column.sensor.reads_temperature and value < 0:
+        problem = f"{quoted(cell)} {column.unit} is below absolute zero"
+        raise InputError(source, place, problem, "correct the value, or its unit in the header")
+    if column.sensor.reads_temperature and value > HOTTEST:
+        problem = f"{quoted(cell)} {column.unit} is hotter than any fin (3000 degC)"
+        raise InputError(source, place, problem, "correct the value, or its unit in the header")
+    return value
 
 
 def read(path: Path | str, rig: Rig) -> Table:
@@ -158,9 +164,9 @@ def _runs(body: tuple[Row, ...], column: int | None, source: Path | None) -> dic
         return {str(count): row for count, row in enumerate(body, start=1)}
     runs: dict[str, Row] = {}
     for row in body:
-        name = _cell(row, column)
+        name = cell_of(row, column)
         place = f"row {row[0]}, column {RUN_COLUMN}"
-        if not name or len(name) > LONGEST_RUN or not name.isprintable():
+        if not is_run_name(name):
             remedy = f"write a name of 1 to {LONGEST_RUN} printable characters"
             raise InputError(source, place, "this run has no proper name", remedy)
         if name in runs:
@@ -170,6 +176,12 @@ def _runs(body: tuple[Row, ...], column: int | None, source: Path | None) -> dic
     return runs
 
 
-def _cell(row: Row, at: int) -> str:
+def is_run_name(name: str) -> bool:
+    """Tell whether a run may be called so: 1 to 120 printable characters."""
+    return 0 < len(name) <= LONGEST_RUN and name.isprintable()
+
+
+def cell_of(row: Row, at: int) -> str:
+    """Return the cell of a row in one column, "" where the row is shorter."""
     cells = row[1]
     return cells[at] if at < len(cells) else ""

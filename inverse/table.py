@@ -10,10 +10,10 @@ import datetime
 import io
 import re
 import warnings
-from collections.abc import Collection, Iterable, Mapping
+from collections.abc import Collection, Iterable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
-from typing import NamedTuple
+from typing import IO, NamedTuple
 
 from finback.errors import InputError
 from finback.wording import quoted
@@ -73,6 +73,50 @@ def to_number(cell: str, decimal_comma: bool) -> float | None:
     return float(text) if _NUMBER.fullmatch(text) else None
 
 
+class Layout(NamedTuple):
+    """How a CSV file is written: its separator, and whether its first row says that and nothing else.
+
+    `decimal_comma`: a comma in a number is its decimal sign.
+    """
+
+    separator: str
+    declared: bool
+
+    @property
+    def decimal_comma(self) -> bool:
+        """Whether a comma is the decimal sign: where it does not part the cells."""
+        return self.separator != ","
+
+
+def layout_of(first: str, names: Collection[str]) -> Layout:
+    """Return the layout of a CSV file by its first line that is not blank and the columns expected."""
+    declared = _EXCEL_SEPARATOR.fullmatch(first.rstrip("\r\n"))
+    if declared:
+        return Layout(declared[1], True)
+    return Layout(max(SEPARATORS, key=lambda mark: _known_columns(first, mark, names)), False)
+
+
+def split_rows(lines: Iterable[str], layout: Layout, source: Path | None) -> Iterator[Row]:
+    """Yield the rows of a CSV file that are not empty, its header among them.
+
+    Arguments: lines, with their ends; layout; source, for errors. Raises InputError for a row that cannot be
+    split into cells.
+    """
+    number, skipping = 0, layout.declared
+    try:
+        for number, cells in enumerate(csv.reader(lines, delimiter=layout.separator, strict=True), start=1):
+            if any(cell.strip() for cell in cells):
+                if not skipping:
+                    yield number, tuple(cell.strip() for cell in cells)
+                skipping = False
+    except csv.Error as error:
+        problem = "this row cannot be split into cells"
+        remedy = "close every quotation mark, and write one inside a cell twice"
+        if str(error).startswith("field larger"):
+            problem, remedy = "this row has a cell of more than 131072 characters", "shorten it"
+        raise InputError(source, f"row {number + 1}", problem, remedy) from None
+
+
 def parse_text(
     content: bytes, names: Collection[str], source: Path | None, contents: Contents = RUNS
 ) -> Sheet:
@@ -83,26 +127,9 @@ def parse_text(
     """
     text = _decode(content, source)
     lines = (line for line in text.splitlines() if line.strip())
-    first = next(lines, "")
-    declared = _EXCEL_SEPARATOR.fullmatch(first)
-    if declared:
-        separator = declared[1]
-    else:
-        separator = max(SEPARATORS, key=lambda mark: _known_columns(first, mark, names))
-    reader = csv.reader(io.StringIO(text, newline=""), delimiter=separator, strict=True)
-    rows: list[Row] = []
-    number = 0
-    try:
-        for number, cells in enumerate(reader, start=1):
-            if any(cell.strip() for cell in cells) and not (declared and not rows and number == 1):
-                rows.append((number, tuple(cell.strip() for cell in cells)))
-    except csv.Error as error:
-        problem = "this row cannot be split into cells"
-        remedy = "close every quotation mark, and write one inside a cell twice"
-        if str(error).startswith("field larger"):
-            problem, remedy = "this row has a cell of more than 131072 characters", "shorten it"
-        raise InputError(source, f"row {number + 1}", problem, remedy) from None
-    return _sheet(rows, separator != ",", source, contents)
+    layout = layout_of(next(lines, ""), names)
+    rows = list(split_rows(io.StringIO(text, newline=""), layout, source))
+    return _sheet(rows, layout.decimal_comma, source, contents)
 
 
 def parse_workbook(content: bytes, source: Path | None, contents: Contents = RUNS) -> Sheet:
@@ -111,19 +138,23 @@ def parse_workbook(content: bytes, source: Path | None, contents: Contents = RUN
     Arguments: content; source and contents, for errors.
     Raises InputError for what is no such workbook, is empty, or holds a formula whose value was not stored.
     """
-    rows = _workbook_rows(content, True, source)
+    rows = [row for row in workbook_rows(io.BytesIO(content), True, source) if any(row[1])]
     if not rows or any("" in cells for _, cells in rows):
-        _check_formulas(_workbook_rows(content, False, source), dict(rows), source)
+        typed = workbook_rows(io.BytesIO(content), False, source)
+        check_formulas(typed, workbook_rows(io.BytesIO(content), True, source), source)
     return _sheet(rows, True, source, contents)
 
 
-def _check_formulas(typed: list[Row], stored: Mapping[int, tuple[str, ...]], source: Path | None) -> None:
-    """Refuse a workbook whose formulas were never computed: a program that wrote it stored no values."""
+def check_formulas(typed: Iterable[Row], stored: Iterable[Row], source: Path | None) -> None:
+    """Refuse a workbook whose formulas were never computed: a program that wrote it stored no values.
+
+    Arguments: typed and stored, its rows with what was typed and with the values; source, for errors.
+    """
     first = None
-    for number, cells in typed:
+    for (number, cells), (_, values) in zip(typed, stored, strict=False):
         for at, cell in enumerate(cells):
             if cell.startswith("="):
-                if "".join(stored.get(number, ())[at : at + 1]):
+                if "".join(values[at : at + 1]):
                     return
                 first = first or (f"row {number}, column {_letters(at)}", cell)
     if first:
@@ -168,21 +199,32 @@ def _known_columns(line: str, separator: str, names: Collection[str]) -> tuple[i
     return sum(cell in names or split_header(cell)[0] in names for cell in cells), len(cells)
 
 
-def _workbook_rows(content: bytes, values: bool, source: Path | None) -> list[Row]:
-    """Return the rows of the first sheet that are not empty: the stored values, or what was typed."""
+def workbook_rows(file: IO[bytes], values: bool, source: Path | None) -> Iterator[Row]:
+    """Yield every row of a workbook's first sheet, empty ones too: the stored values, or what was typed.
+
+    Arguments: file, open for reading; values, which of the two; source, for errors.
+    """
     import openpyxl
 
-    try:
-        with warnings.catch_warnings():
-            warnings.simplefilter("ignore")  # of styles and extensions that say nothing of the readings
-            book = openpyxl.load_workbook(io.BytesIO(content), read_only=True, data_only=values)
-            sheet = book.worksheets[0]
-            sheet.reset_dimensions()  # or a sheet that says it is 16384 columns wide is padded to that
-            rows = [(number, _texts(row)) for number, row in enumerate(sheet.iter_rows(values_only=True), 1)]
-    except Exception:  # noqa: BLE001  # openpyxl has no error of its own: a damaged workbook raises a dozen kinds
-        problem = "this is not a readable XLSX workbook"
-        raise InputError(source, None, problem, "save the table as XLSX or CSV") from None
-    return [(number, cells) for number, cells in rows if any(cells)]
+    number, rows = 0, None
+    while True:
+        try:
+            with warnings.catch_warnings():
+                warnings.simplefilter("ignore")  # of styles and extensions that say nothing of the readings
+                if rows is None:
+                    book = openpyxl.load_workbook(file, read_only=True, data_only=values)
+                    sheet = book.worksheets[0]
+                    # or a sheet that says it is 16384 columns wide is padded to that
+                    sheet.reset_dimensions()
+                    rows = sheet.iter_rows(values_only=True)
+                row = next(rows, None)
+        except Exception:  # noqa: BLE001  # openpyxl has no error of its own: a damaged workbook raises many kinds
+            problem = "this is not a readable XLSX workbook"
+            raise InputError(source, None, problem, "save the table as XLSX or CSV") from None
+        if row is None:
+            return
+        number += 1
+        yield number, _texts(row)
 
 
 def _texts(row: Iterable[object]) -> tuple[str, ...]:

@@ -13,7 +13,7 @@ from finback import readings as readings_reader
 from finback.findings import Finding
 
 OPTION = re.compile(r"(?<![\w-])--[a-z][a-z-]*")
-FOREIGN = {"--check", "--no-deps"}  # options of other programs, should the README ever show one
+FOREIGN = {"--check", "--no-deps", "--port", "--nworkers", "--nthreads"}  # options of other programs, should the README ever show one
 CAUTIONS = ("hot", "mains", "fans", "pressure", "local codes", "licensed practice", "no certificate")
 
 
@@ -52,11 +52,11 @@ def test_the_readme_names_no_option_that_is_not_there(readme: str, commands: dic
     )
 
 
-@pytest.mark.parametrize("command", ["fit", "demo", "check"])
+@pytest.mark.parametrize("command", ["fit", "batch", "demo", "check"])
 def test_the_option_table_names_the_right_commands(
     readme: str, commands: dict[str, Any], command: str
 ) -> None:
-    rows = re.findall(r"^\| `(--[a-z]+)[^|]*\| ([^|]*)\|", readme, re.MULTILINE)
+    rows = re.findall(r"^\| `(--[a-z-]+)[^|]*\| ([^|]*)\|", readme, re.MULTILINE)
     told = {option for option, owners in rows if f"`{command}`" in owners}
     assert told == long_options(commands[command]) - {"--help"}
 
