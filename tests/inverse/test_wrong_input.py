@@ -183,7 +183,15 @@ WRONG_RIGS = [
      'convection has an exponent; leave it out, or add "free-convection" to surface_laws.'),
     (compared("laws", '["uniform"]'), '[candidates]: the key "laws" is unknown; known are surface_laws, '
      'tips, '
-     "exponent."),
+     "exponent, noise."),
+    (compared("noise", '"heavy-tailed"'), "[candidates] noise: this is no list of noises; write a list in "
+     'brackets, such as ["normal", "heavy-tailed"].'),
+    (compared("noise", "[]"), "[candidates] noise: this is no list of noises; write a list in brackets, such "
+     'as ["normal", "heavy-tailed"].'),
+    (compared("noise", '["normal", "heavy"]'), '[candidates] noise: "heavy" is no noise; write one of '
+     '"normal", "heavy-tailed".'),
+    (compared("noise", '["normal", "normal"]'), '[candidates] noise: "normal" is given twice; name each '
+     'once.'),
     # sensors
     (('"5 mm"', '"130 mm"'), '[sensors] T1 at: "130 mm" is beyond the fin, whose length is "120 mm"; write '
      'the '

@@ -22,7 +22,7 @@ sys.path.insert(0, str(Path(__file__).parents[1] / "inverse"))
 
 from rigs import ZERO, Truth, draw, exact_readings, pin_rig
 
-from finback import geometry, posing, routes
+from finback import geometry, posing, routes, tails
 from finback.parameters import Parameter
 from finback.priors import Normal, within, within_a_factor
 from finback.problem import Candidate, Problem
@@ -50,6 +50,7 @@ PRIORS = {
     "emissivity": within(0.8, 0.08, 0.0, 1.0),
     "misfit": within_a_factor(0.005, 2.5),
     "noise": within_a_factor(0.15, 1.5),
+    "calibration": Normal(0.0, 1.0),
 }
 """What truths are drawn from: tighter than the defaults, so that every one of them is a fin."""
 
@@ -78,6 +79,11 @@ FAMILIES: dict[str, tuple[Rig, Candidate]] = {
     "misfit and unstated noise": (
         _ranked(noise=None, calibration=0.0),
         Candidate("convective", True, True, misfit=True),
+    ),
+    "heavy tails": (_ranked(), Candidate("convective", True, True, heavy_tails=True)),
+    "heavy tails and unstated noise": (
+        _ranked(noise=None),
+        Candidate("convective", True, True, heavy_tails=True),
     ),
 }
 
@@ -111,6 +117,10 @@ def rank(name: str, number: int) -> dict[str, float]:
     # a misfit is a share of the excess temperature that the truth has
     true = posing.linearise(known, truth).noise if candidate.misfit else known.noise
     errors = random.multivariate_normal(np.zeros(len(predicted)), true.covariance(sigma, share))
+    if true.heavy:  # Student's t is a normal one over the root of a chi-square over its degrees of freedom
+        errors[: true.heavy] /= np.sqrt(random.chisquare(tails.FREEDOM, true.heavy) / tails.FREEDOM)
+    if known.shared is not None:
+        errors += known.shared @ truth[known.are_shared]
     names = [sensor.name for sensor in known.measured.sensors]
     readings = Readings("drawn", dict(zip(names, (predicted + errors).tolist(), strict=True)))
     problem = replace(_known(posing.pose(rig, readings, candidate)), fixed=known.fixed)
