@@ -159,6 +159,55 @@ def check(
 
 
 @app.command()
+def correlate(
+    results: Annotated[
+        Path, typer.Argument(metavar="RESULTS", help="The results of many runs, .csv, .parquet or .xlsx.")
+    ],
+    out: Annotated[Path, typer.Option("--out", metavar="DIR", help="The folder to write the result to.")],
+    rig_file: Annotated[
+        Path | None,
+        typer.Option("--rig", metavar="RIG", help="The rig file, for Nu, Re and Ra."),
+    ] = None,
+    form: Annotated[
+        str | None, typer.Option("--form", metavar="FORM", help="reynolds, rayleigh or speed; else chosen.")
+    ] = None,
+    speed: Annotated[
+        str | None, typer.Option("--speed", metavar="COLUMN", help="The column of the air's speed.")
+    ] = None,
+    speed_uncertainty: Annotated[
+        str | None,
+        typer.Option("--speed-uncertainty", metavar="SD", help='Standard uncertainty, "5 %" or "0.1 m/s".'),
+    ] = None,
+    shared_h: Annotated[
+        str | None,
+        typer.Option("--shared-h", metavar="SD", help='Part in h that all runs share, "3 %".'),
+    ] = None,
+    shared_speed: Annotated[
+        str | None,
+        typer.Option("--shared-speed", metavar="SD", help='Part in speed that all runs share, "2 %".'),
+    ] = None,
+    seed: Seed = 1,
+    quiet: Quiet = False,
+    force: Force = False,
+) -> int:
+    """Fit a law such as Nu = C Re^n Pr^(1/3) through many runs, with errors in both axes."""
+    from finback import correlate as correlating
+    from finback import rig as rig_reader
+    from finback import run_points
+    from finback.report import correlation, correlation_files
+
+    stated = run_points.parse(speed, speed_uncertainty, shared_h, shared_speed)
+    chosen = run_points.parse_form(form)
+    rig = None if rig_file is None else rig_reader.read(rig_file)
+    correlation_files.prepare(out, force)
+    found = correlating.correlate(results, rig, chosen, stated, seed)
+    page = correlation_files.write(found, out, force)
+    if not quiet:
+        print(correlation.summary(found, str(page)))
+    return 0
+
+
+@app.command()
 def demo(
     folder: Annotated[Path, typer.Argument(metavar="DIR", help="The folder to write to.")] = DEMO_FOLDER,
     name: Annotated[str, typer.Option("--rig", metavar="NAME", help="Which bundled rig to take.")] = DEMO_RIG,
