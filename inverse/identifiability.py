@@ -9,6 +9,7 @@ would leave open, g' W^-1 g, is determined too.
 """
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -27,7 +28,7 @@ NARROWED = 0.05  # of the standard deviation by the wide priors alone, to which 
 ALONE = 1.25  # a source decides alone when leaving out the other costs at most this factor in variance
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Information:
     """Information on the physical parameters at one point.
 
@@ -58,9 +59,19 @@ class Information:
         return CLEAR_OF_ZERO**2 * self.variance(gradient) <= value**2
 
     def _response(self, gradient: Array, readings: bool, stated: bool) -> Array:
-        precision = np.diag(self.default + stated * self.stated) + readings * self.readings
-        scale = 1 / np.sqrt(np.diag(precision))
-        found: Array = scale * np.linalg.solve(precision * np.outer(scale, scale), scale * gradient)
+        found: Array = self._covariances[readings, stated] @ gradient
+        return found
+
+    @cached_property
+    def _covariances(self) -> dict[tuple[bool, bool], Array]:
+        """Covariances (p, p) by whether the readings and whether stated values count."""
+        found = {}
+        for readings, stated in ((True, True), (True, False), (False, True)):
+            precision = np.diag(self.default + stated * self.stated) + readings * self.readings
+            scale = 1 / np.sqrt(np.diag(precision))
+            found[readings, stated] = np.linalg.inv(precision * np.outer(scale, scale)) * np.outer(
+                scale, scale
+            )
         return found
 
     def source(self, gradient: Array) -> DeterminedBy:

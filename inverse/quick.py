@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import candidates, checks, conclusions, expectation, fast, summaries
+from finback import candidates, checks, conclusions, expectation, fast, pareto, summaries
 from finback.estimate import CandidateScore, SamplerRecord, Summary
 from finback.findings import Finding
 from finback.readings import Readings
@@ -24,6 +24,7 @@ Array = NDArray[np.float64]
 
 DRAWS = 1000  # a chain of the average, as a candidate has that is not sampled
 FOR_A_MEDIAN = 250  # draws a chain of the best candidate without a misfit
+SMALLEST_SHARE = 0.005  # probability below which a candidate has no part in an average
 SHARE_THAT_MATTERS = 0.05
 """Probability from which a candidate's k-hats count: a third more or less of the standard deviation of one
 that has less moves the average's by less than 2 %."""
@@ -55,9 +56,9 @@ def estimate(rig: Rig, readings: Readings, seed: int, settings: Settings | None 
     checks.check_run(rig, readings)
     warm = rig.warmed(expectation.mean_temperature(rig, readings), expectation.extremes(rig, readings))
     weighed = candidates.weigh(warm, readings, seed, _silent)
-    outcomes = _outcomes(weighed, settings or Settings())
+    outcomes = _outcomes(_with_a_part(weighed), settings or Settings())
     probabilities = candidates.probabilities(outcomes)
-    outcomes, probabilities = _taken(outcomes, probabilities)
+    outcomes = _thinned(outcomes, probabilities)
     scores = tuple(
         candidates.score(outcome, float(probability), leave_out=False)
         for outcome, probability in zip(outcomes, probabilities, strict=True)
@@ -75,38 +76,81 @@ def _silent(_stage: str, _fraction: float) -> None:
     """Take what progress there is: a run of many is over before anyone could look."""
 
 
+def _shares(weighed: Sequence[Route]) -> Array:
+    """Return the probabilities of candidates."""
+    logs = np.array([route.log_weight for route in weighed])
+    shares: Array = np.exp(logs - logs.max())
+    return np.asarray(shares / shares.sum())
+
+
+def _with_a_part(weighed: Sequence[Route]) -> list[Route]:
+    """Return the candidates that have a part in an average: over all, or over those with a joint.
+
+    The best one without a misfit is among them: what heat the readings ask for is told without one.
+    """
+    shares = _shares(weighed)
+    joints = [route for route in weighed if route.point.problem.candidate.joint]
+    of_joints = dict(zip(map(id, joints), _shares(joints), strict=True)) if joints else {}
+    plain = [route for route in weighed if not route.point.problem.candidate.misfit]
+    best_plain = max(plain, key=lambda route: route.log_weight)
+    return [
+        route
+        for route, share in zip(weighed, shares, strict=True)
+        if route is best_plain or max(share, of_joints.get(id(route), 0.0)) >= SMALLEST_SHARE
+    ]
+
+
 def _outcomes(weighed: Sequence[Route], settings: Settings) -> list[Outcome]:
     """Return the outcomes, most probable first, by MCMC where the weighted draws cannot be trusted."""
-    logs = np.array([route.log_weight for route in weighed])
-    shares = np.exp(logs - logs.max())
-    shares /= shares.sum()
     outcomes = [
-        route.sampled(settings, lambda _fraction: None)
-        if _mistrusted(route, float(share))
-        else route.outcome()
-        for route, share in zip(weighed, shares, strict=True)
+        route.sampled(settings, lambda _fraction: None) if doubtful else route.outcome()
+        for route, doubtful in zip(weighed, _mistrusted(weighed, _shares(weighed)), strict=True)
     ]
     return sorted(outcomes, key=lambda outcome: -outcome.log_weight)
 
 
-def _mistrusted(route: Route, share: float) -> bool:
-    """Tell whether a candidate of this probability asks for a Markov chain."""
-    return share >= SHARE_THAT_MATTERS and route.khat > fast.TRUSTED
+def _mistrusted(weighed: Sequence[Route], shares: Array) -> list[bool]:
+    """Tell of each candidate whether it asks for a Markov chain: where the averages cannot be trusted.
+
+    The weights of a candidate that matters must be sound themselves, as its evidence is theirs.
+    """
+    found = []
+    for route, share in zip(weighed, shares, strict=True):
+        doubtful: list[str] = []
+        if share >= SHARE_THAT_MATTERS:
+            doubtful = [name for name, khat in route.khats.items() if khat > fast.TRUSTED]
+        found.append(
+            any(name == "z" or _khat_of_average(weighed, shares, name) > fast.TRUSTED for name in doubtful)
+        )
+    return found
 
 
-def _taken(outcomes: Sequence[Outcome], probabilities: Array) -> tuple[list[Outcome], Array]:
-    """Return the outcomes that have a part in the averages, with the draws that those take, and shares."""
+def _khat_of_average(weighed: Sequence[Route], shares: Array, name: str) -> float:
+    """Return the k-hat of a quantity averaged over the candidates that have it, from all their draws."""
+    having = [
+        (route, share)
+        for route, share in zip(weighed, shares, strict=True)
+        if share >= SHARE_THAT_MATTERS and name in route.quantities
+    ]
+    values = np.concatenate([route.quantities[name] for route, _ in having])
+    weights = np.concatenate(
+        [share * np.exp(route.fast.log_ratios - route.fast.evidence.log) for route, share in having]
+    )
+    away = np.abs(values - weights @ values / weights.sum())
+    return max(pareto.shape(weights), pareto.shape(weights * away), pareto.shape(weights * away * away))
+
+
+def _thinned(outcomes: Sequence[Outcome], probabilities: Array) -> list[Outcome]:
+    """Return the outcomes with as many draws as the averages take."""
     counts = summaries.deal(probabilities, DRAWS)
-    if any(outcome.problem.candidate.joint for outcome in outcomes):  # the joint's average is over these
+    if any(outcome.problem.candidate.joint for outcome in outcomes):
         counts = np.maximum(counts, summaries.deal(conclusions.given_joint(outcomes, probabilities), DRAWS))
-    if outcomes[0].problem.candidate.misfit:  # what heat the readings ask for is told without one
+    if outcomes[0].problem.candidate.misfit:
         plain = next(i for i, outcome in enumerate(outcomes) if not outcome.problem.candidate.misfit)
         counts[plain] = max(counts[plain], FOR_A_MEDIAN)
-    taken = np.flatnonzero(counts).tolist()
-    kept = []
-    for at in taken:
-        draws = outcomes[at].draws
-        kept.append(
-            replace(outcomes[at], draws=draws[:, np.linspace(0, draws.shape[1] - 1, counts[at]).astype(int)])
-        )
-    return kept, probabilities[taken] / probabilities[taken].sum()
+    counts = np.maximum(counts, 1)
+    chosen = [
+        np.linspace(0, outcome.draws.shape[1] - 1, count).astype(int)
+        for outcome, count in zip(outcomes, counts, strict=True)
+    ]
+    return [replace(o, draws=o.draws[:, at]) for o, at in zip(outcomes, chosen, strict=True)]
