@@ -10,6 +10,7 @@ would leave open, g' W^-1 g, is determined too.
 
 from dataclasses import dataclass
 from functools import cached_property
+from itertools import product
 
 import numpy as np
 from numpy.typing import NDArray
@@ -66,7 +67,7 @@ class Information:
     def _covariances(self) -> dict[tuple[bool, bool], Array]:
         """Covariances (p, p) by whether the readings and whether stated values count."""
         found = {}
-        for readings, stated in ((True, True), (True, False), (False, True)):
+        for readings, stated in product((True, False), repeat=2):
             precision = np.diag(self.default + stated * self.stated) + readings * self.readings
             scale = 1 / np.sqrt(np.diag(precision))
             found[readings, stated] = np.linalg.inv(precision * np.outer(scale, scale)) * np.outer(
