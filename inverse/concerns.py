@@ -126,19 +126,28 @@ def smooth_misfit(outcomes: Sequence[Outcome], probabilities: Sequence[float]) -
 
 
 def heavy_tails(outcomes: Sequence[Outcome], probabilities: Sequence[float]) -> tuple[Finding, ...]:
-    """Return a finding where heavy-tailed noise is more probable than a normal one."""
+    """Return a finding where heavy-tailed noise is more probable than a normal one, or is the only one.
+
+    It names the readings that are far off; the only one is told of where there are some.
+    """
     shares = [(p, o) for p, o in zip(probabilities, outcomes, strict=True) if o.problem.candidate.heavy_tails]
     probability = float(sum(p for p, _ in shares))
-    if probability <= LIKELY or len(shares) == len(outcomes):
+    if probability <= LIKELY:
         return ()
     best = shares[0][1]
     whitened, _ = best.problem.whitened(best.mode.z[None])
     away = tails.unbend(whitened[0, : best.problem.noise.heavy])
     names = [s.name for s, e in zip(best.problem.measured.sensors, away, strict=False) if abs(e) > FAR_OFF]
-    message = f"Readings along the fin scatter wider than normal noise does (probability {probability:.2g})"
+    told = []
+    if "normal" in best.problem.rig.noise:
+        told.append(f"readings along the fin scatter wider than normal noise (probability {probability:.2g})")
     if names:
-        message += f": {listed(names)} {'lies' if len(names) == 1 else 'lie'} far off the others"
-    message += ", and what is far off hardly counts: look for a loose junction, a wrong hole or channel."
+        verbs = ("lies", "counts") if len(names) == 1 else ("lie", "count")
+        told.append("{} {} far off and hardly {}".format(listed(names), *verbs))
+    if not told:
+        return ()
+    remedy = "look for a loose junction, a wrong hole or a wrong channel"
+    message = f"Noise with heavy tails: {'; '.join([*told, remedy])}."
     sensor = names[0] if len(names) == 1 else None
     return (Finding("misfit", "caution", message, sensor, {"probability": probability}),)
 

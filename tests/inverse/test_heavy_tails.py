@@ -21,6 +21,7 @@ import finback
 from finback import (
     budget,
     candidates,
+    concerns,
     conclusions,
     evidence,
     fast,
@@ -334,7 +335,7 @@ def test_a_fit_names_the_sensor_and_goes_by_the_others(estimate: finback.Estimat
     assert estimate.candidates[0].name == "convective tip, joint, heavy-tailed noise"
     (finding,) = [f for f in estimate.findings if f.code == "misfit"]
     assert finding.sensor == "T4"
-    assert '"T4" lies far off the others' in finding.message
+    assert '"T4" lies far off and hardly counts' in finding.message
     assert estimate.comparison.startswith("The readings support the convective tip, joint (")
     assert "each with normal and with heavy-tailed noise along the fin" in estimate.compared
     assert estimate.fit.p_value is None
@@ -346,6 +347,17 @@ def test_a_fit_names_the_sensor_and_goes_by_the_others(estimate: finback.Estimat
     assert by_name["T4"].residual == pytest.approx(OFF, abs=0.3)
     # the whole uncertainty of a reading, what is an unknown of its own included
     assert by_name["T8"].uncertainty > math.hypot(0.15, 0.1)
+
+
+def test_the_reading_far_off_is_named_where_nothing_else_is_compared() -> None:
+    for noise, readings, named in (
+        (BOTH[1:], spoilt(drawn(full_rig())), True),
+        (BOTH[1:], drawn(full_rig()), False),
+        (BOTH, spoilt(drawn(full_rig())), True),
+    ):
+        outcome = weigh(posing.pose(replace(full_rig(), noise=noise), readings, HEAVY)).outcome()
+        found = concerns.heavy_tails([outcome], [1.0])  # a run of many keeps those alone that have a part
+        assert [f.sensor for f in found] == ["T4"] * named
 
 
 def test_a_fit_says_as_much_as_without_the_sensor(estimate: finback.Estimate) -> None:
