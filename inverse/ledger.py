@@ -249,6 +249,8 @@ class Ledger:
                 "command goes on from there once there is room."
             ) from error
         except sqlite3.DatabaseError as error:
+            if type(error) is not sqlite3.DatabaseError:  # one of the kinds that a defect of ours would be
+                raise
             problem = f"this is no ledger of a campaign ({error})"
             raise InputError(
                 self.path, None, problem, "choose another folder, or move the file away"
