@@ -317,14 +317,14 @@ def _length_sensitivity(problem: Problem, z: Array, name: str) -> Array:
 def _by_positions(problem: Problem, z: Array) -> Array:
     """Return what one standard uncertainty of its hole's position makes of each reading [K], (n,)."""
     found = np.zeros(len(problem.measured.sensors))
-    slopes = _temperature_slopes(problem, z)
+    slopes = temperature_slopes(problem, z)
     for i, sensor in enumerate(problem.measured.sensors):
         if sensor.place == "fin":
             found[i] = slopes[i] * sensor.position_sd
     return found
 
 
-def _temperature_slopes(problem: Problem, z: Array) -> Array:
+def temperature_slopes(problem: Problem, z: Array) -> Array:
     """Return dT/dx [K/m] at the fin sensors, by a difference that stays inside the fin."""
     x = problem.measured.positions
     length = problem.rig.profile().length

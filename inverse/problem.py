@@ -180,7 +180,9 @@ class Problem:
     def _kinds(self) -> tuple[NDArray[np.intp], NDArray[np.intp], Array]:
         """Parts of the noise that are alike: where the first of each kind is, which kind each is, how many."""
         both = np.stack([self.noise.floor, self.noise.slope])
-        _, first, which, counts = np.unique(both, axis=1, return_index=True, return_inverse=True, return_counts=True)
+        _, first, which, counts = np.unique(
+            both, axis=1, return_index=True, return_inverse=True, return_counts=True
+        )
         return first, which.ravel(), counts.astype(np.float64)
 
     @cached_property
@@ -268,11 +270,15 @@ class Problem:
         n = len(self.measured.values)
         whitened, log_variances = self._whiten(self._residuals(z, predicted[:, :n]), values, sigma)
         if self.measured.bounds:
-            from scipy.special import log_ndtr
-
-            margin = (self.measured.bound_values - predicted[:, n:]) / self.measured.bound_sds
-            whitened = np.concatenate([whitened, np.sqrt(-2 * log_ndtr(margin))], axis=1)
+            whitened = np.concatenate([whitened, self.bound_residuals(predicted[:, n:])], axis=1)
         return whitened, log_variances
+
+    def bound_residuals(self, predicted: Array) -> Array:
+        """Return the whitened residuals of the heaters that only limit the heat, for predictions [W] (..., b)."""
+        from scipy.special import log_ndtr
+
+        margin = (self.measured.bound_values - predicted) / self.measured.bound_sds
+        return np.asarray(np.sqrt(-2 * log_ndtr(margin)))
 
     def _residuals(self, z: Array, predicted: Array) -> Array:
         """Return what readings are off the predicted ones (n_sets, n), less the errors that they share."""

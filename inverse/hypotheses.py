@@ -1,0 +1,358 @@
+"""Hypotheses: what may be wrong with a run, one thing or two at once, each weighed against nothing wrong.
+
+A wrong reading is no evidence about the fin: it is freed of its thermometer, by a large variance in the
+covariance, and what the other readings say of its error is then compared with what sizes such errors have. A
+swap exchanges two readings, a misfit adds the covariance of a smooth one, a cause in the fin changes what a
+parameter is beforehand. The evidence decides, with the odds of `suspects`.
+"""
+
+import math
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, replace
+from itertools import combinations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback import misfit, normals, optimum, parameters, posing, suspects
+from finback import noise as noises
+from finback.normals import Normals, Posed
+from finback.priors import Normal
+from finback.problem import LOG_TWO_PI, Candidate, Problem
+from finback.readings import Readings
+from finback.rig import Rig
+from finback.suspects import ODDS, Size, Suspect
+
+Array = NDArray[np.float64]
+
+FREE = 300.0  # K, or times a heat: the error of a reading that is freed of its thermometer, beforehand
+PAIRED = 8  # readings and swaps, the likeliest ones alone, of which two at a time are tried
+STRIDE = 4  # levels of an unknown noise from one that is tried first to the next
+HOPELESS = 15.0  # nats below the best of those, from which no other level is tried
+LEVELS = np.exp(np.arange(math.log(0.01), math.log(10.0), 0.25))  # K: an unknown noise
+MISFITS = np.array([-2.0, -1.0, 0.0, 1.0, 2.0])  # sds of the logarithm of a misfit's share
+MISFIT_SHARES = np.exp(-0.5 * np.square(MISFITS)) / np.exp(-0.5 * np.square(MISFITS)).sum()
+
+
+@dataclass(frozen=True)
+class State:
+    """A state of the fin: the causes that make it do less, none where it is healthy.
+
+    `priors`: what parameters are beforehand, by name, where that is not what the rig says of them.
+    """
+
+    causes: tuple[Suspect, ...] = ()
+    priors: Mapping[str, Normal] | None = None
+
+
+@dataclass(frozen=True)
+class Base:
+    """One candidate to weigh hypotheses about.
+
+    `problem`, without unknown noise or misfit; `covariances` (levels, n, n) by the level of the noise, with
+    their `log_shares` (levels,) beforehand; `slopes` dT/dx (n,) [K/m], 0 off the fin; `smooth` (n, n), what a
+    misfit of share 1 adds, None where none is looked for; `start` (p,); `tip`, the suspect that the tip is
+    this one, None where the rig says so or leaves it open.
+    """
+
+    problem: Problem
+    covariances: Array
+    log_shares: Array
+    slopes: Array
+    smooth: Array | None
+    start: Array
+    tip: Suspect | None = None
+
+
+@dataclass(frozen=True)
+class Hypothesis:
+    """One hypothesis and what came of it.
+
+    `suspects`, what is wrong, none for nothing; `log_weight` [nats], up to a constant; `base` and `state` it
+    belongs to; `values` (n,) and `covariance` (n, n) of the readings, `freed` numbers of readings and
+    the `sizes` of their errors, as posed; `mean` (p,) and `spread` (p, p) of the unknowns; `errors` (m,) and
+    their `error_spread` (m, m), what the freed readings are off [K, W].
+    """
+
+    suspects: tuple[Suspect, ...]
+    log_weight: float
+    base: Base
+    state: State
+    values: Array
+    covariance: Array
+    freed: tuple[int, ...]
+    sizes: tuple[Size, ...]
+    mean: Array
+    spread: Array
+    errors: Array
+    error_spread: Array
+
+    @property
+    def means(self) -> Array:
+        """Means of the unknowns beforehand (p,)."""
+        return beforehand(self.base.problem, self.state)[0]
+
+    @property
+    def sds(self) -> Array:
+        """Standard deviations of the unknowns beforehand (p,)."""
+        return beforehand(self.base.problem, self.state)[1]
+
+
+@dataclass(frozen=True, slots=True)
+class _Row:
+    """One row of a block: a state, the readings freed, exchanged or bent, a level of the noise."""
+
+    state: State
+    freed: tuple[int, ...] = ()
+    swap: Suspect | None = None
+    misfit: int | None = None
+    level: int = 0
+
+
+def base(rig: Rig, readings: Readings, candidate: Candidate, tip: Suspect | None = None) -> Base:
+    """Return a candidate to weigh hypotheses about, its noise linearised at the least-squares fit."""
+    point = optimum.fit(posing.pose(rig, readings, candidate))
+    problem, z = point.problem, point.z
+    n = len(problem.measured.values)
+    if problem.noise.estimated:
+        prior = problem.parameters[-1].prior
+        logs = -0.5 * np.square((np.log(LEVELS) - prior.mean) / prior.sd)
+        levels, log_shares = LEVELS, logs - np.log(np.exp(logs).sum())
+    else:
+        levels, log_shares = np.zeros(1), np.zeros(1)
+    covariances = np.array([problem.noise.covariance(float(level)) for level in levels])
+    slopes = np.zeros(n)
+    n_fin = len(problem.measured.positions)
+    slopes[:n_fin] = posing.temperature_slopes(problem, z)
+    smooth = None
+    if n_fin >= misfit.FEWEST_SENSORS and not problem.noise.estimated:
+        smooth = posing.smooth_covariance(problem, z)
+    physical = problem.n_physical
+    bare = replace(
+        problem,
+        parameters=problem.parameters[:physical],
+        noise=noises.build(covariances[0], np.zeros(n, dtype=bool)),
+    )
+    return Base(bare, covariances, log_shares, slopes, smooth, z[:physical], tip)
+
+
+def beforehand(problem: Problem, state: State) -> tuple[Array, Array]:
+    """Return means and standard deviations (p,) of a problem's unknowns in a state of its fin."""
+    changed = state.priors or {}
+    priors = [changed.get(parameter.name, parameter.prior) for parameter in problem.parameters]
+    return np.array([prior.mean for prior in priors]), np.array([prior.sd for prior in priors])
+
+
+def weigh(base: Base, states: Sequence[State]) -> list[Hypothesis]:
+    """Weigh every hypothesis about one candidate: no fault, one, and those pairs of two that may matter.
+
+    Arguments: base; states of the fin, the healthy one first.
+    """
+    wrong = list(_of_readings(base))
+    swaps = [each for each in wrong if each.kind == "swap"]
+    own = {name: [s for s in wrong if s.kind != "swap" and s.sensor == name] for name in _names(base)}
+    free = [(at,) for at, name in enumerate(_names(base)) if own[name]]
+    rows: list[_Row] = []
+    for state in states:
+        rows.append(_Row(state))
+        if len(state.causes) > 1:
+            continue
+        rows += [_Row(state, freed) for freed in free]
+        beside = swaps if not state.causes else [s for s in swaps if s.odds == swaps[0].odds]
+        rows += [_Row(state, swap=swap) for swap in beside]
+        if base.smooth is not None:
+            rows += [_Row(state, misfit=n) for n in range(len(MISFITS))]
+    singles = _weigh_rows(base, rows, own)
+    return singles + _weigh_rows(base, _pairs(singles, states[0]), own)
+
+
+def _names(base: Base) -> list[str]:
+    return [sensor.name for sensor in base.problem.measured.sensors]
+
+
+def _of_readings(base: Base) -> Iterator[Suspect]:
+    measured = base.problem.measured
+    pairs = zip(measured.sensors, measured.values, strict=True)
+    heats = {s.name: float(v) for s, v in pairs if s.place in ("heat", "heater") and v != 0}
+    return suspects.of_readings(base.problem.rig, measured.sensors, heats)
+
+
+def _pairs(found: Sequence[Hypothesis], healthy: State) -> list[_Row]:
+    """Return the rows with two wrong readings, or one and a swap, of those that are likeliest alone."""
+    best: dict[tuple[tuple[int, ...], Suspect | None], float] = {}
+    for each in found:
+        swap = next((s for s in each.suspects if s.kind == "swap"), None)
+        key = (each.freed, swap)
+        if each.state is healthy and key != ((), None):
+            best[key] = max(best.get(key, -np.inf), each.log_weight)
+    chosen = sorted(best, key=lambda key: -best[key])[:PAIRED]
+    rows = []
+    for (freed, swap), (others, other) in combinations(chosen, 2):
+        if swap is not None and other is not None:
+            continue
+        rows.append(_Row(healthy, tuple(sorted(freed + others)), swap or other))
+    return rows
+
+
+def _weigh_rows(base: Base, rows: Sequence[_Row], own: Mapping[str, Sequence[Suspect]]) -> list[Hypothesis]:
+    """Weigh rows at every level of the noise, but for those that a few levels have shown to be hopeless."""
+    levels = np.arange(len(base.log_shares))
+    coarse = levels[::STRIDE]
+    found = _at_levels(base, rows, coarse, own)
+    if len(coarse) == len(levels):
+        return [each for many in found for each in many]
+    heights = [max((each.log_weight for each in many), default=-np.inf) for many in found]
+    kept = [row for row, height in zip(rows, heights, strict=True) if height > max(heights) - HOPELESS]
+    return [each for many in _at_levels(base, kept, levels, own) for each in many]
+
+
+def _at_levels(
+    base: Base, rows: Sequence[_Row], levels: NDArray[np.intp], own: Mapping[str, Sequence[Suspect]]
+) -> list[list[Hypothesis]]:
+    """Return the hypotheses of each row, at each of some levels of the noise."""
+    every = [replace(row, level=int(level)) for row in rows for level in levels]
+    if not every:
+        return []
+    posed = _pose(base, every)
+    fitted = normals.fit(base.problem, posed, base.start)
+    found: list[list[Hypothesis]] = [[] for _ in rows]
+    for number, row in enumerate(every):
+        found[number // len(levels)] += _hypotheses(base, row, posed, fitted, number, own)
+    return found
+
+
+def _pose(base: Base, rows: Sequence[_Row]) -> Posed:
+    names = _names(base)
+    free = _free(base)
+    values = np.tile(base.problem.measured.values, (len(rows), 1))
+    covariances = base.covariances[[row.level for row in rows]]
+    before: dict[int, tuple[Array, Array]] = {}
+    for number, row in enumerate(rows):
+        if row.swap is not None:
+            pair = [names.index(name) for name in (row.swap.sensor, row.swap.other) if name is not None]
+            values[number, pair] = values[number, pair[::-1]]
+        for at in row.freed:
+            covariances[number, at, at] += free[at] ** 2
+        if row.misfit is not None:
+            covariances[number] += _share(row.misfit) ** 2 * base.smooth
+        before.setdefault(id(row.state), beforehand(base.problem, row.state))
+    means, sds = (np.array([before[id(row.state)][i] for row in rows]) for i in (0, 1))
+    return Posed(values, covariances, means, sds)
+
+
+def _share(node: int) -> float:
+    prior = parameters.DEFAULT_PRIORS["misfit"][1]
+    return math.exp(prior.mean + MISFITS[node] * prior.sd)
+
+
+def _free(base: Base) -> Array:
+    """Return the error beforehand (n,) of each reading that is freed of its thermometer [K, W]."""
+    measured = base.problem.measured
+    return np.array(
+        [
+            FREE if sensor.reads_temperature else FREE * abs(value)
+            for sensor, value in zip(measured.sensors, measured.values, strict=True)
+        ]
+    )
+
+
+def _hypotheses(
+    base: Base,
+    row: _Row,
+    posed: Posed,
+    fitted: Normals,
+    number: int,
+    own: Mapping[str, Sequence[Suspect]],
+) -> Iterator[Hypothesis]:
+    """Yield the hypotheses of one row: each kind of error that its freed readings may have."""
+    log_weight = float(fitted.log_evidence[number] + base.log_shares[row.level])
+    wrong = row.state.causes
+    if base.tip is not None:
+        wrong = (*wrong, base.tip)
+    if row.swap is not None:
+        wrong = (*wrong, row.swap)
+    if row.misfit is not None:
+        wrong = (*wrong, SMOOTH)
+        log_weight += math.log(MISFIT_SHARES[row.misfit])
+    log_weight += sum(math.log(suspect.odds) for suspect in wrong)
+    names = _names(base)
+    mean, spread = fitted.modes[number], fitted.spreads[number]
+    made = (base, row.state, posed.values[number], posed.covariances[number])
+    if not row.freed:
+        yield Hypothesis(wrong, log_weight, *made, (), (), mean, spread, np.zeros(0), np.zeros((0, 0)))
+        return
+    freed, sd = list(row.freed), _free(base)[list(row.freed)]
+    errors, covariance, with_unknowns = fitted.freed(number, freed, sd)
+    seen = np.linalg.inv(
+        np.linalg.inv(covariance) - np.diag(1 / np.square(sd))
+    )  # by the other readings alone
+    told = seen @ np.linalg.solve(covariance, errors)
+    log_weight -= _log_normal(told, seen + np.diag(np.square(sd)))
+    for kinds in _products([own[names[at]] for at in freed]):
+        sizes = tuple(_in_kelvin(base, suspect, at) for suspect, at in zip(kinds, freed, strict=True))
+        log_size, error, error_spread = _sized(told, seen, sizes)
+        gain = with_unknowns @ np.linalg.inv(covariance)
+        yield Hypothesis(
+            (*wrong, *kinds),
+            log_weight + log_size + sum(math.log(suspect.odds) for suspect in kinds),
+            *made,
+            row.freed,
+            sizes,
+            mean + gain @ (error - errors),
+            spread + gain @ (error_spread - covariance) @ gain.T,
+            error,
+            error_spread,
+        )
+
+
+def _in_kelvin(base: Base, suspect: Suspect, at: int) -> Size:
+    assert suspect.size is not None
+    return suspect.size.scaled(base.slopes[at]) if suspect.kind == "shift" else suspect.size
+
+
+def _products(choices: Sequence[Sequence[Suspect]]) -> Iterator[tuple[Suspect, ...]]:
+    if not choices:
+        yield ()
+        return
+    for first in choices[0]:
+        for rest in _products(choices[1:]):
+            yield (first, *rest)
+
+
+def _sized(told: Array, seen: Array, sizes: Sequence[Size]) -> tuple[float, Array, Array]:
+    """Return the log probability of errors as other readings tell them (m,), and what they are with sizes.
+
+    Arguments: told (m,) and seen (m, m), mean and covariance by the other readings; sizes, beforehand. The
+    sizes of two errors make a grid of normal distributions, each combined with what the readings tell.
+    """
+    grids = np.meshgrid(*[np.arange(len(size.shares)) for size in sizes], indexing="ij")
+    pairs = [(size, grid.ravel()) for size, grid in zip(sizes, grids, strict=True)]
+    away = told - np.stack([size.means[at] for size, at in pairs], axis=-1)
+    variances = np.stack([np.square(size.sds[at]) for size, at in pairs], axis=-1)
+    shares = np.prod([size.shares[at] for size, at in pairs], axis=0)
+    if len(sizes) == 1:
+        gains = seen / (seen + variances[:, None])
+        dets = seen[0] + variances[:, 0]
+        squares = np.square(away[:, 0]) / dets
+    else:
+        both = np.linalg.inv(seen + variances[:, :, None] * np.eye(len(sizes)))
+        gains, dets = seen @ both, 1 / np.linalg.det(both)
+        squares = np.einsum("cm,cmk,ck->c", away, both, away)
+    logs = np.log(shares) - 0.5 * (squares + np.log(dets) + len(sizes) * LOG_TWO_PI)
+    highest = float(logs.max())
+    weights = np.exp(logs - highest)
+    total = float(weights.sum())
+    weights /= total
+    pulled = told - np.einsum("cmk,ck->cm", gains, away)
+    error = weights @ pulled
+    apart = pulled - error
+    spread = np.einsum("c,cmn->mn", weights, seen - gains @ seen) + apart.T @ (weights[:, None] * apart)
+    return highest + math.log(total), error, spread
+
+
+def _log_normal(away: Array, covariance: Array) -> float:
+    squares = float(away @ np.linalg.solve(covariance, away))
+    return -0.5 * (squares + float(np.linalg.slogdet(2 * math.pi * covariance)[1]))
+
+
+SMOOTH = Suspect("misfit", ODDS["misfit"])
