@@ -132,7 +132,7 @@ class SamplerRecord:
 class FitQuality:
     """Residuals of the best candidate [K or W] by sensor; chi-square, its degrees of freedom and p-value.
 
-    p_value is None where the noise was estimated from the same residuals.
+    p_value is None where the noise was estimated from the same residuals, or has heavy tails.
     """
 
     residuals: Mapping[str, float]

@@ -194,16 +194,18 @@ def _scales_with_sigma(problem: Problem) -> bool:
 def _matching_sigma(problem: Problem, residuals: Array, sigma: float, freedom: int) -> float:
     """Return the sigma [K] at which chi-square equals the degrees of freedom, within given limits.
 
-    Readings with heavy tails count by their weights at the sigma [K] that the residuals are whitened with.
+    Readings with heavy tails count by their weights. The residuals are whitened at the given `sigma` [K].
     """
     from scipy.optimize import brentq
 
     n = len(problem.measured.values)
-    squares = tails.counted(residuals[:n], problem.noise.heavy) * problem.noise.variances(sigma)
+    heavy = problem.noise.heavy
+    squares = tails.squares(residuals[:n], heavy) * problem.noise.variances(sigma)
     rest = float(np.square(residuals[n + len(problem.measured.bounds) :]).sum())
 
     def excess(log_sigma: float) -> float:
-        return float((squares / problem.noise.variances(math.exp(log_sigma))).sum()) + rest - max(freedom, 1)
+        scaled = squares / problem.noise.variances(math.exp(log_sigma))
+        return float(tails.counted(scaled, heavy).sum()) + rest - max(freedom, 1)
 
     low, high = math.log(SMALLEST_SIGMA), math.log(LARGEST_SIGMA)
     if excess(low) <= 0:

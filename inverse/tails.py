@@ -49,16 +49,19 @@ def bend(scaled: Array, heavy: int) -> Array:
     return np.concatenate([bent, scaled[:, heavy:]], axis=1)
 
 
-def counted(bent: Array, heavy: int) -> Array:
-    """Return the squares of whitened residuals (n,), as they count in an estimate of the scale.
+def squares(whitened: Array, heavy: int) -> Array:
+    """Return the squares (n,) of residuals over their scales, the first `heavy` of which are given as w."""
+    return np.square(np.concatenate([unbend(whitened[:heavy]), whitened[heavy:]]))
+
+
+def counted(squares: Array, heavy: int) -> Array:
+    """Return the squares (n,) of residuals over their scales as they count in an estimate of the scale.
 
     Those of the first `heavy` are e² times the weight (nu + 1)/(nu + e²), one on average as for normal noise
     and never above nu + 1: at the most probable scale they add up to their number.
     """
-    squares = np.square(bent)
-    own = np.square(unbend(bent[:heavy]))
-    squares[:heavy] = (FREEDOM + 1) * own / (FREEDOM + own)
-    return squares
+    own = squares[:heavy]
+    return np.concatenate([(FREEDOM + 1) * own / (FREEDOM + own), squares[heavy:]])
 
 
 def unbend(bent: Array) -> Array:

@@ -8,6 +8,7 @@ from pathlib import PurePath
 
 from finback.estimate import CandidateScore, Estimate, Expanded, ReadingFit, Sensitivity, Summary
 from finback.findings import Finding
+from finback.problem import HEAVY_TAILS
 from finback.report import comparison, method, phrases, shares
 from finback.report.comparison import Comparison
 from finback.report.method import Equation
@@ -360,6 +361,8 @@ def _fit(estimate: Estimate) -> str:
         return f"{text}, p = {fit.p_value:.2g}."
     if fit.noise is not None:
         return f"{text}; no test, since the noise of a reading, {fit.noise:.2g} K, was estimated from them."
+    if HEAVY_TAILS in estimate.candidates[0].name:
+        return f"{text}; no test, since readings with heavy tails do not add up to that distribution."
     return f"{text}."
 
 

@@ -165,7 +165,7 @@ def test_bending_its_slope_and_its_information() -> None:
     even = t.ppf((np.arange(200_000) + 0.5) / 200_000, NU)
     bent = tails.bend(even[None], len(even))[0]
     assert np.mean(tails.widening(bent) ** -2) == pytest.approx((NU + 1) / (NU + 3), rel=1e-4)
-    assert np.mean(tails.counted(bent, len(bent))) == pytest.approx(1.0, rel=1e-4)
+    assert np.mean(tails.counted(tails.squares(bent, len(bent)), len(bent))) == pytest.approx(1.0, rel=1e-4)
     score = digamma((NU + 1) / 2) - digamma(NU / 2)
     assert np.mean(bent**2) == pytest.approx((NU + 1) * score, rel=1e-3)
 
@@ -376,6 +376,7 @@ def test_the_report_and_the_json_hold_it(estimate: finback.Estimate, tmp_path) -
     page = (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
     assert "heavy-tailed noise: the errors" in page
     assert "or with heavy tails" in page
+    assert "no test, since readings with heavy tails" in page
     document = json.loads((tmp_path / "out" / "estimate.json").read_text(encoding="utf-8"))
     assert document["candidates"][0]["name"].endswith("heavy-tailed noise")
     assert document["fit"]["p_value"] is None
