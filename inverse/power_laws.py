@@ -38,6 +38,9 @@ class Law(Protocol):
     def log_prior(self, z: Array) -> Array:
         """Return the log density beforehand, (n_sets, p) -> (n_sets,)."""
 
+    def allowed(self, z: Array) -> NDArray[np.bool_]:
+        """Tell which coordinates (n_sets, p) are those of a law that can be."""
+
     def starts(self, level: float, slope: float) -> Array:
         """Return coordinates to start from (n, p), for a level and a slope of ln y at the pivot."""
 
@@ -67,6 +70,10 @@ class PowerLaw:
         found: Array = -0.5 * np.square((z[:, 1] - EXPONENT) / EXPONENT_SPREAD)
         return found
 
+    def allowed(self, z: Array) -> NDArray[np.bool_]:
+        """Tell that all are."""
+        return np.ones(len(z), dtype=np.bool_)
+
     def starts(self, level: float, slope: float) -> Array:
         """Return the one start there is."""
         return np.array([[level, slope]])
@@ -81,54 +88,51 @@ class PowerLaw:
 
 
 class OffsetLaw:
-    """y = a + b xⁿ; coordinates ln y at the pivot, the logit of the share of b xⁿ in it, and ln n.
+    """y = a + b xⁿ; coordinates ln y at the pivot, the share of a in it, and ln n.
 
     King's form of a body in a stream, with a what it loses in still air. The share is even between 0 and 1
-    beforehand.
+    beforehand. As a coordinate it may be negative, which keeps a posterior regular whose a is about nothing;
+    such draws are not `allowed`.
     """
 
     names = ("a", "b", "n")
 
     def value(self, z: Array, xi: Array) -> Array:
         """Return ln y."""
-        share = _share(z)[:, None, None]
-        found: Array = z[:, 0, None, None] + np.log1p(share * np.expm1(np.exp(z[:, 2, None, None]) * xi))
+        rising = (1 - z[:, 1, None, None]) * np.expm1(np.exp(z[:, 2, None, None]) * xi)
+        found: Array = z[:, 0, None, None] + np.log1p(rising)
         return found
 
     def slope(self, z: Array, xi: Array) -> Array:
         """Return n times the share of b xⁿ in y."""
-        n, share = np.exp(z[:, 2, None, None]), _share(z)[:, None, None]
-        rising = share * np.exp(n * xi)
-        found: Array = n * rising / (1 - share + rising)
+        n, still = np.exp(z[:, 2, None, None]), z[:, 1, None, None]
+        rising = (1 - still) * np.exp(n * xi)
+        found: Array = n * rising / (still + rising)
         return found
 
     def log_prior(self, z: Array) -> Array:
-        """Return the log density beforehand, with the logit's slope."""
-        share = _share(z)
-        even = np.log(share) + np.log1p(-share)
-        found: Array = even - 0.5 * np.square((z[:, 2] - np.log(OFFSET_EXPONENT)) / OFFSET_SPREAD)
+        """Return the log density beforehand."""
+        found: Array = -0.5 * np.square((z[:, 2] - np.log(OFFSET_EXPONENT)) / OFFSET_SPREAD)
+        return found
+
+    def allowed(self, z: Array) -> NDArray[np.bool_]:
+        """Tell where neither a nor b is negative."""
+        found: NDArray[np.bool_] = (z[:, 1] >= 0) & (z[:, 1] <= 1)
         return found
 
     def starts(self, level: float, slope: float) -> Array:
         """Return starts with a small, a middling and a large offset."""
-        shares = np.array([0.9, 0.6, 0.3])
-        exponents = np.clip(max(slope, 0.05) / shares, 0.1, 3.0)
-        return np.stack([np.full(3, level), np.log(shares / (1 - shares)), np.log(exponents)], axis=1)
+        shares = np.array([0.05, 0.3, 0.6])
+        exponents = np.clip(max(slope, 0.05) / (1 - shares), 0.1, 3.0)
+        return np.stack([np.full(3, level), shares, np.log(exponents)], axis=1)
 
     def constants(self, z: Array, pivot: float) -> Mapping[str, Array]:
         """Return a, b and n."""
-        n, share, level = np.exp(z[:, 2]), _share(z), np.exp(z[:, 0])
-        return {"a": level * (1 - share), "b": level * share * np.exp(-n * pivot), "n": n}
+        n, still, level = np.exp(z[:, 2]), z[:, 1], np.exp(z[:, 0])
+        return {"a": level * still, "b": level * (1 - still) * np.exp(-n * pivot), "n": n}
 
     def moved(self, z: Array, along: Array, up: Array) -> Array:
         """Return the law moved: along x the rising part alone changes."""
-        share = _share(z)
-        rising, still = share * np.exp(-np.exp(z[:, 2]) * along), 1 - share
+        still, rising = z[:, 1], (1 - z[:, 1]) * np.exp(-np.exp(z[:, 2]) * along)
         total = still + rising
-        return np.stack([z[:, 0] + np.log(total) + up, np.log(rising / still), z[:, 2]], axis=1)
-
-
-def _share(z: Array) -> Array:
-    """Return the share of b xⁿ at the pivot, clear of 0 and 1."""
-    found: Array = np.clip(1 / (1 + np.exp(-z[:, 1])), 1e-12, 1 - 1e-12)
-    return found
+        return np.stack([z[:, 0] + np.log(total) + up, still / total, z[:, 2]], axis=1)

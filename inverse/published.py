@@ -25,6 +25,9 @@ SLOWEST, FASTEST, SPEEDS = 0.01, 100.0, 400
 """Speeds [m/s] among which the implied one is looked for, and how many are tried; between them by
 logarithms."""
 
+STEP = 0.02
+"""In ln Re, for the slope of a correlation."""
+
 
 @dataclass(frozen=True, slots=True)
 class Compared:
@@ -172,6 +175,7 @@ def implied_speeds(typical: Typical, h: Array, h_sd: Array, conductivity: Array,
     rising = np.concatenate([[True], np.diff(y) > 0])
     found = np.interp(wanted, y[rising], x[rising], left=np.nan, right=np.nan)
     speed = np.exp(found) * viscosity / place.length
-    power = np.interp(found, x[rising], np.gradient(y[rising], x[rising]))
+    up, down = (np.interp(found + step, x[rising], y[rising]) for step in (STEP, -STEP))
+    power = (up - down) / (2 * STEP)
     scatter = float(np.hypot(outcomes[0].nusselt.scatter, typical.body.scatter))
     return Implied(key, outcomes[0].nusselt.name, speed, speed * np.hypot(h_sd / h, scatter) / power)

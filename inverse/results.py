@@ -10,8 +10,9 @@ import io
 import re
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import islice
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import IO, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,9 +23,6 @@ from finback.quantity import Dimension, is_temperature_scale, scale
 from finback.table import SEPARATORS, parse_workbook, split_header
 from finback.wording import nearest, plain, quoted
 
-if TYPE_CHECKING:
-    import pandas as pd
-
 Array = NDArray[np.float64]
 
 BLOCK = 50_000
@@ -34,6 +32,7 @@ START = 1_000_000
 """Bytes of a text file from which its header is read."""
 
 _EXCEL_SEPARATOR = re.compile(r"sep=([,;\t])\s*", re.IGNORECASE)
+_COMMA = re.compile(r"[+-]?\d*,\d+(?:[eE][+-]?\d+)?")
 _BINARY = re.compile(r"[\x00-\x08\x0e-\x1f]")
 
 PER_CENT = "%"
@@ -162,8 +161,6 @@ def _text(
     path: Path, start: bytes, wanted: Sequence[Wanted]
 ) -> tuple[tuple[_Found, ...], Iterator[Mapping[str, Sequence[Any]]]]:
     """Return the columns of a text file and its blocks, each column of cells by its key."""
-    import pandas as pd
-
     separator, cells, encoding, skipped, first = _layout(path, start, wanted)
     if not first:
         layout = "write a header and below it one row a run"
@@ -171,34 +168,48 @@ def _text(
     found = _find(path, cells, wanted)
     units = _units(found, first)
     found = tuple(_Found(one.wanted, one.index, one.header, units.get(one.index, one.unit)) for one in found)
-    reader = pd.read_csv(
-        path, sep=separator, header=None, names=range(len(cells)), index_col=False,
-        usecols=[one.index for one in found], skiprows=skipped + bool(units), dtype=str,
-        keep_default_na=False, na_filter=False, encoding=encoding, encoding_errors="replace",
-        chunksize=BLOCK, on_bad_lines="error",
-    )  # fmt: skip
 
     def blocks() -> Iterator[Mapping[str, Sequence[Any]]]:
-        try:
-            with reader:
-                for frame in reader:
-                    yield {one.wanted.key: _clean(frame[one.index], separator != ",") for one in found}
-        except pd.errors.ParserError as error:
-            problem = "a row cannot be split into cells"
-            told = re.search(r"line (\d+)", str(error))
-            place = f"row {told[1]}" if told else None
-            raise InputError(path, place, problem, "write as many cells as the header has") from None
+        with path.open(encoding=encoding, errors="replace", newline="") as file:
+            for _ in range(skipped):
+                file.readline()
+            rows = _rows(path, file, separator, len(cells), skipped)
+            if units:
+                next(rows)
+            while block := list(islice(rows, BLOCK)):
+                yield {
+                    one.wanted.key: _clean([row[one.index] for row in block], separator != ",")
+                    for one in found
+                }
 
     return found, blocks()
 
 
-def _clean(column: "pd.Series[str]", decimal_comma: bool) -> Sequence[str]:
+def _rows(path: Path, file: IO[str], separator: str, width: int, skipped: int) -> Iterator[list[str]]:
+    """Yield the rows below a header that are not empty, as wide as it; `skipped`, the lines above them."""
+    remedy = "write as many as the header has; close every quotation mark"
+    reader = csv.reader(file, delimiter=separator, strict=True)
+    try:
+        for row in reader:
+            if len(row) < width:
+                if not any(row):
+                    continue
+                row += [""] * (width - len(row))
+            elif len(row) > width and any(cell.strip() for cell in row[width:]):
+                place = f"line {skipped + reader.line_num}"
+                raise InputError(path, place, f"{len(row)} cells, and the header has {width}", remedy)
+            yield row
+    except csv.Error:
+        place = f"line {skipped + reader.line_num}"
+        raise InputError(path, place, "this row cannot be split into cells", remedy) from None
+
+
+def _clean(cells: Sequence[str], decimal_comma: bool) -> Sequence[str]:
     """Return cells without blanks around them, with points for decimal commas."""
-    stripped = column.fillna("").str.strip().str.replace("−", "-")
-    if decimal_comma:
-        comma = stripped.str.fullmatch(r"[+-]?\d*,\d+(?:[eE][+-]?\d+)?")
-        stripped = stripped.where(~comma, stripped.str.replace(",", ".", regex=False))
-    return list(stripped)
+    stripped = [cell.strip().replace("−", "-") for cell in cells]
+    if not decimal_comma:
+        return stripped
+    return [cell.replace(",", ".") if _COMMA.fullmatch(cell) else cell for cell in stripped]
 
 
 def _layout(
@@ -285,11 +296,8 @@ def _workbook(
 
 
 def _schema(path: Path) -> list[str]:
-    try:
-        from pyarrow import parquet
-    except ImportError:
-        problem = "reading Parquet needs the library pyarrow, which is not installed"
-        raise InputError(path, None, problem, "install it, or give results.csv") from None
+    from pyarrow import parquet
+
     try:
         return list(parquet.read_schema(path).names)
     except Exception:  # noqa: BLE001  # pyarrow raises a handful of its own kinds for a damaged file
