@@ -81,7 +81,7 @@ LIBRARIES = {
     "matplotlib": {"finback.report.figures", "finback.report.correlation_figure"},
     "openpyxl": {"finback.table"},
     "pint": {"finback.quantity"},
-    "pyarrow": {"finback.campaign_table"},
+    "pyarrow": {"finback.campaign_table", "finback.results"},
     "pydantic": {"finback.rig_file"},
     "typer": {"finback.cli"},
 }

@@ -158,7 +158,7 @@ def test_a_table_by_hand_with_other_units_says_the_same(tmp_path: Path) -> None:
     two = correlate(other, stated=Stated(speed="Geschw. ähnlich"))
     assert one.form == two.form == "speed"
     for mine, theirs in ((one.x, two.x), (one.y, two.y), (one.x_sd, two.x_sd), (one.y_sd, two.y_sd)):
-        assert theirs == pytest.approx(mine, rel=1e-7)
+        assert theirs == pytest.approx(mine, rel=1e-6)  # Btu are of 1055.056 or of 1055.05585 J
     for name, constant in one.constants.items():  # drawn, so that rounding moves them a little
         assert abs(two.constants[name].mean - constant.mean) < 0.05 * constant.sd
 
