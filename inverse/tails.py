@@ -51,7 +51,8 @@ def bend(scaled: Array, heavy: int) -> Array:
 
 def squares(whitened: Array, heavy: int) -> Array:
     """Return the squares (n,) of residuals over their scales, the first `heavy` of which are given as w."""
-    return np.square(np.concatenate([unbend(whitened[:heavy]), whitened[heavy:]]))
+    residuals = np.concatenate([unbend(whitened[:heavy]), whitened[heavy:]])
+    return np.asarray(np.square(residuals))
 
 
 def counted(squares: Array, heavy: int) -> Array:
