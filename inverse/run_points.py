@@ -20,7 +20,7 @@ from finback.models.air import AirProperties
 from finback.quantity import Quantity
 from finback.results import Results, Wanted
 from finback.rig import Rig
-from finback.wording import quoted
+from finback.wording import listed, quoted
 
 Array = NDArray[np.float64]
 Form = Literal["reynolds", "rayleigh", "speed"]
@@ -126,6 +126,7 @@ def wanted(speed: str | None) -> tuple[Wanted, ...]:
     names = SPEEDS if speed is None else (speed,)
     return (
         Wanted("status", ("status",)),
+        Wanted("rig", ("rig",)),
         Wanted("h", ("h_median", "h"), "coefficient", "W/(m^2 K)"),
         Wanted("h_sd", ("h_sd",), "coefficient", "W/(m^2 K)", sd=True),
         Wanted("h_low", ("h_low95",), "coefficient", "W/(m^2 K)"),
@@ -179,7 +180,9 @@ def place(table: Results, form: Form, rig: Rig | None, stated: Stated) -> RunPoi
         _need_speed(table, stated)
     body = None if rig is None else groups.body(rig, driven=form != "rayleigh")
     findings: list[Finding] = []
-    kept, left_out = _sift(table, form, dimensionless, body is not None and not dimensionless, stated)
+    title = None if rig is None else rig.title
+    findings += _of_rigs(table, title)
+    kept, left_out = _sift(table, form, dimensionless, body is not None and not dimensionless, stated, title)
     numbers = {name: values[kept] for name, values in numbers.items()}
     _check_count(table, len(kept), left_out)
     warm, beside = None, None
@@ -232,7 +235,7 @@ def _warm(table: Results, numbers: Mapping[str, Array], n: int, body: Body) -> W
 
 
 def _sift(
-    table: Results, form: Form, dimensionless: bool, warm: bool, stated: Stated
+    table: Results, form: Form, dimensionless: bool, warm: bool, stated: Stated, title: str | None
 ) -> tuple[NDArray[np.intp], dict[str, int]]:
     """Return the places of the runs that can be used, and how many cannot by reason, the first that holds."""
     numbers, n = table.numbers, len(table)
@@ -251,6 +254,8 @@ def _sift(
     if "status" in table.text:
         status = np.array([cell.strip().casefold() == "failed" for cell in table.text["status"]], dtype=bool)
         drop("the run failed", status)
+    if title is not None and title in table.text.get("rig", ()):
+        drop("of another rig", np.array([cell.strip() != title for cell in table.text["rig"]], dtype=bool))
     if dimensionless:
         group = "Re" if form == "reynolds" else "Ra"
         drop("no Nu", lacks("Nu"))
@@ -445,6 +450,17 @@ def _of_errors(sx: Array, form: Form) -> Iterator[Finding]:
             "says."
         )
         yield Finding("assumed", "caution", message, evidence={"key": "speed_sd", "value": float(sx.max())})
+
+
+def _of_rigs(table: Results, title: str | None) -> Iterator[Finding]:
+    """Yield that the runs are of several rigs, where it is not clear which are meant."""
+    rigs = dict.fromkeys(cell.strip() for cell in table.text.get("rig", ()) if cell.strip())
+    if len(rigs) > 1 and title not in rigs:
+        message = (
+            f"The runs are of {len(rigs)} rigs ({listed(rigs, 3)}), and are all taken as of one: give the "
+            "rig of that title (--rig)."
+        )
+        yield Finding("assumed", "caution", message, evidence={"key": "rig"})
 
 
 def _of_shared(stated: Stated, form: Form, sx: Array) -> Iterator[Finding]:

@@ -139,6 +139,19 @@ def test_runs_that_failed_or_lack_a_number_are_left_out_and_counted(tmp_path: Pa
     assert same.constants == found.constants
 
 
+def test_of_several_rigs_the_runs_of_the_one_given_are_taken(tmp_path: Path, table: Path) -> None:
+    strange = [
+        row | {"run": f"other {i}", "h_median": "90", "rig": "Another"} for i, row in enumerate(rows())
+    ]
+    both = [row | {"rig": "Invented pin"} for row in rows()] + strange
+    path = write(tmp_path / "both.csv", both)
+    found = correlate(path, rig_of(), stated=STATED)
+    assert found.left_out == {"of another rig": 24}
+    assert found.constants == correlate(table, rig_of(), stated=STATED).constants
+    told = [finding.message for finding in correlate(path, stated=STATED).findings]
+    assert any("of 2 rigs" in message for message in told)
+
+
 def test_a_table_by_hand_with_other_units_says_the_same(tmp_path: Path) -> None:
     speed, h = hilpert_runs()
     straight = tmp_path / "si.csv"
