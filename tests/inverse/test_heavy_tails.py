@@ -258,7 +258,7 @@ def test_evidence_and_posterior_against_quadrature(gridded: tuple) -> None:
         route.proposal,
         route.fast.efficiency,
         np.random.SeedSequence(2),
-        Settings(),
+        Settings() if off == 1.0 else QUICK,
         lambda _: None,
     )
     bridged = evidence.bridge(problem.log_density, chain, np.random.SeedSequence(3))
@@ -358,6 +358,15 @@ def test_the_reading_far_off_is_named_where_nothing_else_is_compared() -> None:
         outcome = weigh(posing.pose(replace(full_rig(), noise=noise), readings, HEAVY)).outcome()
         found = concerns.heavy_tails([outcome], [1.0])  # a run of many keeps those alone that have a part
         assert [f.sensor for f in found] == ["T4"] * named
+
+
+def test_a_fit_with_heavy_tails_alone() -> None:
+    estimate = finback.fit(replace(full_rig(), noise=BOTH[1:]), drawn(full_rig()), settings=QUICK)
+    assert {each.name.rpartition(", ")[2] for each in estimate.candidates} == {"heavy-tailed noise"}
+    assert "each with heavy-tailed noise along the fin" in estimate.compared
+    assert "misfit" not in {finding.code for finding in estimate.findings}
+    h = estimate.parameters["h"]
+    assert h.low95 < 45.0 < h.high95
 
 
 def test_a_fit_says_as_much_as_without_the_sensor(estimate: finback.Estimate) -> None:
