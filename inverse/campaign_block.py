@@ -139,12 +139,22 @@ def _contents(found: Any) -> dict[str, Any]:
         },
         "best": [best.name, _rounded(best.probability)],
         "findings": [[f.code, f.severity, f.sensor, f.message] for f in found.findings],
+        "residuals": {
+            row.sensor: [_short(row.residual), _short(row.residual / row.uncertainty)]
+            for row in found.table
+            if row.excluded is None and row.uncertainty > 0
+        },
         "sampled": found.sampler.ess_min is not None,
     }
 
 
 def _rounded(value: float | None) -> float | None:
     return None if value is None else float(f"{value:.{DIGITS}g}")
+
+
+def _short(value: float) -> float:
+    """Return a residual with four figures: it is for averages over runs."""
+    return float(f"{value:.4g}")
 
 
 def _json(contents: Mapping[str, Any]) -> str:

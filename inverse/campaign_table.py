@@ -9,42 +9,26 @@ import csv
 import json
 import os
 import tempfile
-from collections import Counter
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import ExitStack, contextmanager
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import finback
 from finback.analysis import PARAMETERS
 from finback.campaign import LEDGER, Campaign, Source
+from finback.campaign_digest import FIGURES, Digest
 from finback.derived import DERIVED
 from finback.errors import ComputationError, InputError
 from finback.ledger import Entry, Ledger
 from finback.summaries import describe
 from finback.table import to_number
 
-CSV, PARQUET, ABOUT = "results.csv", "results.parquet", "campaign.json"
-FIGURES = ("median", "sd", "low95", "high95")
-ALWAYS = ("h", "k", "joint")
-"""Quantities that have their columns even where no run tells them."""
+CSV, PARQUET, ABOUT, REPORT = OURS = ("results.csv", "results.parquet", "campaign.json", "report.html")
 FIRST, LAST = ("run", "status"), ("best_candidate", "best_probability", "findings", "message", "rig")
 ROWS = 5000  # of a row group of the parquet file
 PENDING = "it was not computed"
-
-
-@dataclass
-class Tally:
-    """What was counted in a first pass: runs by status, findings by code, quantities, and numeric columns."""
-
-    runs: int = 0
-    statuses: Counter[str] = field(default_factory=Counter)
-    findings: Counter[str] = field(default_factory=Counter)
-    by_source: Counter[int] = field(default_factory=Counter)
-    sampled: int = 0
-    quantities: set[str] = field(default_factory=lambda: set(ALWAYS))
-    texts: set[str] = field(default_factory=set)
 
 
 @dataclass(frozen=True)
@@ -83,7 +67,7 @@ def prepare(folder: Path, force: bool = False) -> None:
     Raises InputError where it holds results without their ledger, which would be lost, or cannot be written.
     """
     ledger = folder / LEDGER
-    earlier = [name for name in (CSV, PARQUET, ABOUT) if os.path.lexists(folder / name)]
+    earlier = [name for name in OURS if os.path.lexists(folder / name)]
     if earlier and not ledger.exists() and not force:
         problem = f"already holds {earlier[0]}, and no ledger that it is from"
         raise InputError(folder, None, problem, "choose another folder, or overwrite with --force")
@@ -100,45 +84,33 @@ def prepare(folder: Path, force: bool = False) -> None:
         raise InputError(folder, None, problem, "give a folder that can be written") from error
 
 
-def write(campaign: Campaign) -> Tally:
-    """Write results.csv, results.parquet and campaign.json of a campaign into its folder.
+def write(campaign: Campaign) -> Digest:
+    """Write results.csv, results.parquet, campaign.json and report.html of a campaign into its folder.
 
-    Returns what was counted. Raises ComputationError where they cannot be written; earlier ones then stay.
+    Returns the digest of it. Raises ComputationError where they cannot be written; earlier ones then stay.
     """
+    from finback.report import campaign_page
+
     folder = campaign.folder
     with Ledger(folder / LEDGER) as ledger:
-        tally = _count(ledger, campaign.sources)
-        columns = _columns(campaign.sources, tally)
-        with _written(folder, (CSV, PARQUET, ABOUT)) as (csv_file, parquet_file, about):
+        digest = Digest(campaign.sources).add_all(ledger.entries(as_read=True))
+        columns = _columns(campaign.sources, digest)
+        with _written(folder, OURS) as (csv_file, parquet_file, about, report):
             _write_tables(ledger, campaign.sources, columns, csv_file, parquet_file)
-            contents = json.dumps(_about(campaign, columns, tally), ensure_ascii=False, indent=2)
+            contents = json.dumps(_about(campaign, columns, digest), ensure_ascii=False, indent=2)
             about.write_text(contents + "\n", encoding="utf-8", newline="\n")
-    return tally
+            page = campaign_page.render(campaign, digest, ledger)
+            report.write_text(page, encoding="utf-8", newline="\n")
+    return digest
 
 
-def _count(ledger: Ledger, sources: Sequence[Source]) -> Tally:
-    tally = Tally()
-    for entry in ledger.entries(as_read=True):
-        source, result = sources[entry.source], entry.result or {}
-        tally.runs += 1
-        tally.by_source[entry.source] += 1
-        tally.statuses[result.get("status", "failed")] += 1
-        tally.findings.update({code for code, *_ in result.get("findings", ())})
-        tally.sampled += bool(result.get("sampled"))
-        tally.quantities.update(result.get("quantities", ()))
-        for name, cell in zip(source.extra, entry.extra, strict=True):
-            if cell and name not in tally.texts and to_number(cell, source.table.decimal_comma) is None:
-                tally.texts.add(name)
-    return tally
-
-
-def _columns(sources: Sequence[Source], tally: Tally) -> Columns:
+def _columns(sources: Sequence[Source], digest: Digest) -> Columns:
     known = (*PARAMETERS, *DERIVED)
-    quantities = tuple(name for name in known if name in tally.quantities)
+    quantities = tuple(name for name in known if name in digest.quantities)
     extra = tuple(dict.fromkeys(name for source in sources for name in source.extra))
     ours = {*FIRST, *LAST, *(f"{name}_{figure}" for name in quantities for figure in FIGURES)}
     shown = tuple(f"{name} (readings)" if name in ours else name for name in extra)
-    return Columns(quantities, extra, shown, frozenset(set(extra) - tally.texts))
+    return Columns(quantities, extra, shown, frozenset(set(extra) - digest.texts))
 
 
 def _write_tables(
@@ -231,15 +203,15 @@ def _text(value: Any) -> str:
     return repr(value) if isinstance(value, float) else str(value)
 
 
-def _about(campaign: Campaign, columns: Columns, tally: Tally) -> dict[str, Any]:
+def _about(campaign: Campaign, columns: Columns, digest: Digest) -> dict[str, Any]:
     rigs = {source.rig.sha256: source.rig for source in campaign.sources}
     return {
         "finback": finback.__version__,
         "seed": campaign.seed,
-        "runs": tally.runs,
-        "status": {name: tally.statuses[name] for name in ("ok", "caution", "failed")},
-        "sampled": tally.sampled,
-        "findings": dict(sorted(tally.findings.items())),
+        "runs": digest.runs,
+        "status": {name: digest.statuses[name] for name in ("ok", "caution", "failed")},
+        "sampled": digest.sampled,
+        "findings": dict(sorted(digest.findings.items())),
         "rigs": [
             {
                 "title": rig.title,
@@ -250,7 +222,7 @@ def _about(campaign: Campaign, columns: Columns, tally: Tally) -> dict[str, Any]
             for rig in rigs.values()
         ],
         "readings": [
-            {"file": source.label, "sha256": source.table.sha256, "runs": tally.by_source[number]}
+            {"file": source.label, "sha256": source.table.sha256, "runs": digest.by_source[number]}
             for number, source in enumerate(campaign.sources)
         ],
         "units": columns.units,

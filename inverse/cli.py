@@ -129,10 +129,10 @@ def batch(
             keep_posteriors=keep_posteriors,
             progress=progress,
         )
-    tally = campaign_table.write(done)
+    digest = campaign_table.write(done)
     if not quiet:
-        print(campaign_terminal.summary(done, tally))
-    return 0 if tally.runs > tally.statuses["failed"] else 1
+        print(campaign_terminal.summary(done, digest))
+    return 0 if digest.runs > digest.statuses["failed"] else 1
 
 
 @app.command()

@@ -33,6 +33,11 @@ CREATE TABLE IF NOT EXISTS runs (
 CREATE INDEX IF NOT EXISTS runs_by_name ON runs (name, source);
 """
 
+SELECT = (
+    "SELECT id, shown, source, row, extra, runs.key, result, refused FROM runs "
+    "LEFT JOIN results ON refused IS NULL AND results.key = runs.key"
+)
+
 
 @dataclass(frozen=True, slots=True)
 class PlannedRun:
@@ -65,11 +70,13 @@ class Pending:
 
 @dataclass(frozen=True, slots=True)
 class Entry:
-    """A run with its result: `shown`, its name in tables; `source`, `row`, where it stands; `extra`; `key`.
+    """A run with its result.
 
+    `number` in the plan; `shown`, its name in tables; `source` and `row`, where it stands; `extra`; `key`.
     `result` is None where there is none yet; `refused` says why there never will be one.
     """
 
+    number: int
     shown: str
     source: int
     row: int
@@ -206,12 +213,12 @@ class Ledger:
         """Yield every run with its result: by name as people count, or as they were read."""
         order = "source, row" if as_read else "place, shown, extra, source, row"
         with self._told():
-            for shown, source, row, extra, key, result, refused in self._base.execute(
-                "SELECT shown, source, row, extra, runs.key, result, refused FROM runs "  # noqa: S608  # no user text
-                f"LEFT JOIN results ON refused IS NULL AND results.key = runs.key ORDER BY {order}"
-            ):
-                found = None if result is None else json.loads(result)
-                yield Entry(shown, source, row, tuple(json.loads(extra)), key, found, refused)
+            yield from map(_entry, self._base.execute(f"{SELECT} ORDER BY {order}"))
+
+    def entry(self, number: int) -> Entry:
+        """Return one run with its result by its number in the plan."""
+        with self._told():
+            return _entry(self._base.execute(f"{SELECT} WHERE id = ?", (number,)).fetchone())
 
     def _about(self, name: str, otherwise: str | None = None) -> str | None:
         """Return what the ledger says of itself; put in what it should say where it says nothing."""
@@ -260,6 +267,12 @@ class Ledger:
 def place_of(name: str) -> str:
     """Return what orders names as people count: "run 9" before "run 10", capitals aside."""
     return re.sub(r"[0-9]+", lambda digits: digits[0].lstrip("0").rjust(DIGITS, "0"), name.casefold())
+
+
+def _entry(row: tuple[int, str, int, int, str, bytes, str | None, str | None]) -> Entry:
+    number, shown, source, at, extra, key, result, refused = row
+    found = None if result is None else json.loads(result)
+    return Entry(number, shown, source, at, tuple(json.loads(extra)), key, found, refused)
 
 
 def _text(cells: Sequence[str]) -> str:

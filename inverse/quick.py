@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from finback import candidates, checks, conclusions, expectation, fast, pareto, summaries
-from finback.estimate import CandidateScore, SamplerRecord, Summary
+from finback.estimate import CandidateScore, ReadingFit, SamplerRecord, Summary
 from finback.findings import Finding
 from finback.readings import Readings
 from finback.rig import Rig
@@ -35,14 +35,15 @@ class QuickResult:
     """What one run came to.
 
     `found`: summaries by name, without least squares; `scores`: candidates that matter, best first;
-    `findings`, without those that hold for every run of the rig; `sampler`; `mixture`: the averaged draws, SI
-    units.
+    `findings`, without those that hold for every run of the rig; `table`: the readings beside the best
+    candidate; `sampler`; `mixture`: the averaged draws, SI units.
     """
 
     status: str
     found: Mapping[str, Summary]
     scores: tuple[CandidateScore, ...]
     findings: tuple[Finding, ...]
+    table: tuple[ReadingFit, ...]
     sampler: SamplerRecord
     mixture: Mixture
 
@@ -68,8 +69,15 @@ def estimate(rig: Rig, readings: Readings, seed: int, settings: Settings | None 
     found = conclusions.summarise(outcomes, probabilities, evaluated, mixture, least_squares=False)
     sampler = conclusions.sampler_record(outcomes, seed)
     concluded = conclusions.draw(warm, readings, outcomes, scores, evaluated, found, sampler)
-    own = tuple(finding for finding in concluded.findings if finding not in warm.assumed)
-    return QuickResult(concluded.status, found, scores, own, sampler, mixture)
+    own = tuple(finding for finding in concluded.findings if not _of_every_run(finding, warm))
+    return QuickResult(concluded.status, found, scores, own, concluded.table, sampler, mixture)
+
+
+def _of_every_run(finding: Finding, rig: Rig) -> bool:
+    """Tell whether a finding holds for every run of a rig: what it assumes, and no joint without a plate."""
+    if finding.evidence.get("quantity") in summaries.OF_THE_JOINT:
+        return not rig.sensors_on("plate")
+    return finding in rig.assumed
 
 
 def _silent(_stage: str, _fraction: float) -> None:

@@ -1,12 +1,12 @@
 """The terminal summary of a campaign: plain text within 80 columns."""
 
 from finback.campaign import Campaign
-from finback.campaign_table import CSV, Tally
+from finback.campaign_digest import Digest
 from finback.report import phrases
 from finback.report.terminal import wrap
 
 
-def summary(campaign: Campaign, tally: Tally) -> str:
+def summary(campaign: Campaign, digest: Digest) -> str:
     """Return what a campaign came to, and where its tables lie.
 
     Lines hold at most 79 columns, except paths, which stay in one piece.
@@ -15,14 +15,17 @@ def summary(campaign: Campaign, tally: Tally) -> str:
     computed = campaign.runs - campaign.found
     rate = f", {computed / campaign.seconds:.3g} a second" if computed and campaign.seconds > 0 else ""
     lines = [line for title in titles for line in wrap(title)]
-    told = ", ".join(f"{tally.statuses[name]} {name}" for name in ("ok", "caution", "failed"))
-    lines += ["", *wrap(f"{tally.runs} runs: {told}")]
+    told = ", ".join(f"{digest.statuses[name]} {name}" for name in ("ok", "caution", "failed"))
+    lines += ["", *wrap(f"{digest.runs} runs: {told}")]
     earlier = f"{campaign.found} were in the ledger, " if campaign.found else ""
     lines += wrap(f"{earlier}{computed} computed in {campaign.seconds:.3g} s{rate}", "  ", "  ")
-    if tally.sampled:
-        lines += wrap(f"{tally.sampled} needed a Markov chain", "  ", "  ")
-    if tally.findings:
+    if digest.sampled:
+        lines += wrap(f"{digest.sampled} needed a Markov chain", "  ", "  ")
+    if digest.findings:
         lines += ["", "Findings"]
-        for code, count in sorted(tally.findings.items(), key=lambda item: (-item[1], item[0])):
+        for code, count in sorted(digest.findings.items(), key=lambda item: (-item[1], item[0])):
             lines.append(f"  {count:>8}  {code}")
-    return "\n".join([*lines, "", f"Table  {phrases.clean(str(campaign.folder / CSV), 1000)}"])
+    files = (("Table ", "results.csv"), ("Report", "report.html"))
+    return "\n".join(
+        [*lines, "", *(f"{name}  {phrases.clean(str(campaign.folder / file), 1000)}" for name, file in files)]
+    )

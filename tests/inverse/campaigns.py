@@ -36,6 +36,7 @@ Q = { on = "heat", noise = "3 %", calibration = "1 %" }
 """
 SENSORS = ("T1", "T2", "T3", "T4", "TA", "Q")
 KILLER = "the run that kills"
+NOTHING = '{"status":"ok","quantities":{},"best":["none",1.0],"findings":[],"residuals":{},"sampled":false}'
 
 
 @cache
@@ -104,7 +105,7 @@ def compute(
 
 def pretend(block: Block) -> Answer:
     """Answer a block at once, with nothing in it but that all is well."""
-    return Answer(tuple(Record(key, '{"status":"ok"}') for key, _, _ in block.runs), 0.001 * len(block.runs))
+    return Answer(tuple(Record(key, NOTHING) for key, _, _ in block.runs), 0.001 * len(block.runs))
 
 
 def deadly(block: Block) -> Answer:
