@@ -24,7 +24,7 @@ LEAST_RUNS = 5
 """Runs from which a law with scatter is fitted."""
 
 OUTLYING = 0.02
-"""Share of runs that is taken beforehand to be outlying: one in fifty."""
+"""Share of runs that is taken beforehand to be outlying: one in fifty, as surely as fifty runs tell it."""
 
 OUTLYING_SPREAD = float(np.log(2.0))
 """Standard deviation in ln y that an outlying run has in addition: it is wrong by a factor of two."""
@@ -48,6 +48,9 @@ which is a small part of what the errors of x do."""
 WEIGHED_UP_TO = 5000
 """Runs up to which draws are weighed; a posterior of more is taken as normal about its mode, with an error of
 the order of one over the number of runs."""
+
+ROUNDS, SETTLED = 6, 0.05
+"""Rounds in which the share of outlying runs is looked for, and the relative change that ends them."""
 
 STEPS = 300
 """Rounds of expectation and maximisation."""
@@ -136,9 +139,11 @@ def fit(law: Law, points: Points, random: np.random.Generator) -> Fit:
     start, root = target.start()
     few = _thinned(centred, random)
     if few is not None:  # most of the way on a few thousand runs
-        near = laplace.find_mode(_Target(law, few, target.settled).log_density, start, root)
+        some = _Target(law, few, target.settled)
+        near = some.settle(start, root)
+        target.outlying = some.outlying
         start, root = near.z, near.root * np.sqrt(len(few) / len(points))
-    mode = laplace.find_mode(target.log_density, start, root)
+    mode = target.settle(start, root)
     if len(points) > WEIGHED_UP_TO:
         z, khat = _normal_draws(target, mode, random), None
     else:
@@ -209,6 +214,7 @@ class _Target:
     def __init__(self, law: Law, points: Points, settled: tuple[Spread, float, float] | None = None) -> None:
         self.law, self.points = law, points
         self.of_law = len(law.names)
+        self.outlying = OUTLYING
         self.exact = not points.sx.any()
         spread, place, scale = _spread(points) if settled is None else settled
         self.spread, self.place, self.scale = spread, place, scale
@@ -267,6 +273,21 @@ class _Target:
         lengths += [self.scale / np.sqrt(len(x)), 1 / np.sqrt(2 * len(x))] if self.free else []
         return best, np.diag(lengths)
 
+    def settle(self, start: Array, root: Array) -> Mode:
+        """Return the mode, once the share of outlying runs is what the runs and its prior make it.
+
+        Expectation and maximisation: the share is the mean of its posterior given each run's probability.
+        """
+        mode = laplace.find_mode(self.log_density, start, root)
+        for _ in range(ROUNDS):
+            before = self.outlying
+            expected = float(self.judge(mode.z[None])[0].sum())
+            self.outlying = (1 + expected) / (len(self.points) + 1 / OUTLYING)
+            mode = laplace.find_mode(self.log_density, mode.z, mode.root)
+            if abs(self.outlying / before - 1) < SETTLED:
+                break
+        return mode
+
     def log_density(self, z: Array) -> Array:
         """Return the log density of a block (n_sets, p) -> (n_sets,)."""
         n, parts = len(self.points), len(self.spread.centres) if self.free else 1
@@ -297,8 +318,8 @@ class _Target:
         logs, value, variance = self._predicted(z, some)
         squares = np.square(self.points.y[some, None] - value)
         wide = variance + OUTLYING_SPREAD**2
-        regular = np.log1p(-OUTLYING) - 0.5 * (squares / variance + np.log(variance) + LOG_2PI)
-        outlying = np.log(OUTLYING) - 0.5 * (squares / wide + np.log(wide) + LOG_2PI)
+        regular = np.log1p(-self.outlying) - 0.5 * (squares / variance + np.log(variance) + LOG_2PI)
+        outlying = np.log(self.outlying) - 0.5 * (squares / wide + np.log(wide) + LOG_2PI)
         return logs, regular, outlying
 
     def _predicted(self, z: Array, some: slice) -> tuple[Array, Array, Array]:

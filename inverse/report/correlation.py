@@ -37,7 +37,6 @@ class Published:
     ratio: str
     interval: str
     ends: str
-    scatter: str
     verdict: str
 
 
@@ -205,8 +204,7 @@ def _published(found: Correlation) -> tuple[Published, ...]:
                 name=one.name,
                 ratio=f"{one.ratio:.2f}",
                 interval=f"{one.low95:.2f} to {one.high95:.2f}",
-                ends=f"{one.ratio_low:.2f} at the low end, {one.ratio_high:.2f} at the high one",
-                scatter=f"{100 * one.scatter:.0f} %",
+                ends=f"{one.ratio_low:.2f} at the low end, {one.ratio_high:.2f} at the high",
                 verdict=verdict,
             )
         )

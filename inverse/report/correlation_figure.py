@@ -30,7 +30,7 @@ from finback.report.layout import WIDTH
 Array = NDArray[np.float64]
 
 NAME = "correlation"
-MOST_WITH_BARS = 300
+MOST_WITH_BARS = 80
 """Runs up to which each has its error bars."""
 
 MOST_DRAWN = 5000
@@ -84,16 +84,27 @@ def _draw_law(axes: Axes, below: Axes, found: Correlation) -> None:
     own: dict[str, Any] = {"color": SKY, "alpha": 0.6, "linewidth": 0}
     axes.fill_between(band.x, band.new_low95, band.new_high95, label="95 % of new runs", **new)
     axes.fill_between(band.x, band.low95, band.high95, label="95 % band of the law", **own)
-    axes.plot(band.x, band.median, color=BLUE, linewidth=1.5, label="law, median")
+    line: dict[str, Any] = {"color": BLUE, "linewidth": 1.5, "zorder": _above(found)}
+    axes.plot(band.x, band.median, label="law, median", **line)
     below.fill_between(band.x, band.new_low95 / band.median, band.new_high95 / band.median, **new)
     below.fill_between(band.x, band.low95 / band.median, band.high95 / band.median, **own)
-    below.axhline(1.0, color=BLUE, linewidth=1.2)
+    below.axhline(1.0, **line)
+
+
+def _above(found: Correlation) -> int:
+    """Return the layer of the lines: below the runs while these can be told apart, else above them."""
+    return 2 if len(found.x) <= MOST_WITH_BARS else 4
 
 
 def _draw_published(axes: Axes, below: Axes, found: Correlation) -> None:
     for one, (colour, dashes) in zip(found.compared, LINES, strict=False):
         curve = found.curves[one.correlation]
-        style: dict[str, Any] = {"color": colour, "linestyle": dashes, "linewidth": 1.2}
+        style: dict[str, Any] = {
+            "color": colour,
+            "linestyle": dashes,
+            "linewidth": 1.2,
+            "zorder": _above(found),
+        }
         axes.plot(found.curve_x, curve, label=one.name.partition(",")[0], **style)
         below.plot(found.curve_x, curve / found.band.median, **style)
 
@@ -113,7 +124,7 @@ def _draw_runs(axes: Axes, below: Axes, found: Correlation) -> None:
         if not len(some):
             continue
         style: dict[str, Any] = {"fmt": marker, "color": colour, "label": label}
-        style["markersize"] = (4 if marker == "o" else 7) if bars else (1.5 if marker == "o" else 4)
+        style["markersize"] = (4 if marker == "o" else 7) if bars else (2 if marker == "o" else 5)
         style |= {"elinewidth": 0.7, "ecolor": FAINT if marker == "o" else colour, "zorder": 3}
         spans: dict[str, Any] = {}
         up: dict[str, Any] = {}

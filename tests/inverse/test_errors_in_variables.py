@@ -52,7 +52,7 @@ def by_quadrature(law: Law, points: Points, z: np.ndarray, spread: Spread) -> fl
         )
         value = law.value(np.array([of_law]), xi[None, :, None])[0, :, 0]
         error = np.hypot(sy, np.exp(log_scatter))
-        regular = (1 - OUTLYING) * norm.pdf(y, value, error)
+        regular = (1 - OUTLYING) * norm.pdf(y, value, error)  # before the runs have told the share
         outlying = OUTLYING * norm.pdf(y, value, np.hypot(error, OUTLYING_SPREAD))
         total += np.log(np.trapezoid(known * norm.pdf(x, xi, sx) * (regular + outlying), xi))
     return total
@@ -114,7 +114,8 @@ def test_without_errors_along_x_it_is_bayesian_linear_regression() -> None:
 def hierarchy(law: Law, points: Points, steps: int, seed: int) -> np.ndarray:
     """Draw from the whole hierarchical model by emcee, each true abscissa an unknown of its own.
 
-    Returns draws (n, p) of the law's coordinates, ln scatter, place and ln scale.
+    The share of outlying runs is unknown as well. Returns draws (n, p) of the law's coordinates, ln scatter,
+    place and ln scale.
     """
     import emcee
 
@@ -122,26 +123,31 @@ def hierarchy(law: Law, points: Points, steps: int, seed: int) -> np.ndarray:
 
     def log_density(block: np.ndarray) -> np.ndarray:
         z, log_scatter, place, log_scale = block[:, :p], block[:, p], block[:, p + 1], block[:, p + 2]
-        xi = points.x + points.sx * block[:, p + 3 :]
-        with np.errstate(invalid="ignore"):
-            value = law.value(z, xi[:, :, None])[:, :, 0]
+        odds = block[:, p + 3, None]  # of a run to be outlying, whose share has the prior 50 (1 - q)^49
+        log_out, log_in = -np.log1p(np.exp(-odds)), -np.log1p(np.exp(odds))
+        xi = points.x + points.sx * block[:, p + 4 :]
+        z = np.where(law.allowed(z)[:, None], z, start[:p])  # weighs nothing, see below
+        value = law.value(z, xi[:, :, None])[:, :, 0]
         error = np.sqrt(points.sy**2 + np.exp(2 * log_scatter)[:, None])
         wide = np.sqrt(error**2 + OUTLYING_SPREAD**2)
         away = points.y - value
-        regular = np.log(1 - OUTLYING) - 0.5 * (away / error) ** 2 - np.log(error)
-        outlying = np.log(OUTLYING) - 0.5 * (away / wide) ** 2 - np.log(wide)
+        regular = log_in - 0.5 * (away / error) ** 2 - np.log(error)
+        outlying = log_out - 0.5 * (away / wide) ** 2 - np.log(wide)
         known = -0.5 * ((xi - place[:, None]) / np.exp(log_scale)[:, None]) ** 2 - log_scale[:, None]
-        read = -0.5 * np.square(block[:, p + 3 :])
+        read = -0.5 * np.square(block[:, p + 4 :])
         each = (np.logaddexp(regular, outlying) + known + read).sum(axis=1)
-        found = each + law.log_prior(z) + log_scatter + log_scale
-        return np.where(np.isfinite(found) & law.allowed(z), found, -np.inf)
+        share = log_out[:, 0] + (1 / OUTLYING) * log_in[:, 0]
+        found = each + share + law.log_prior(z) + log_scatter + log_scale
+        return np.where(np.isfinite(found) & law.allowed(block[:, :p]), found, -np.inf)
 
     random = np.random.default_rng(seed)
-    walkers = 4 * (p + 3 + runs)
+    walkers = 4 * (p + 4 + runs)
     start, root = _Target(law, points).start()
-    start = np.concatenate([start, np.zeros(runs)])
-    spread = np.concatenate([np.diag(root), np.full(runs, 0.5)])
+    start = np.concatenate([start, [-4.0], np.zeros(runs)])
+    spread = np.concatenate([np.diag(root), np.full(1 + runs, 0.5)])
     first = start + 0.3 * spread * random.standard_normal((walkers, len(start)))
+    if isinstance(law, OffsetLaw):
+        first[:, 1] = 0.1 + 0.3 * random.random(walkers)
     moves = [(emcee.moves.DEMove(), 0.9), (emcee.moves.DEMove(gamma0=1.0), 0.1)]
     sampler = emcee.EnsembleSampler(walkers, len(start), log_density, vectorize=True, moves=moves)
     sampler.random_state = np.random.RandomState(seed).get_state()
@@ -208,6 +214,17 @@ def test_a_run_that_is_wrong_is_named_and_hardly_moves_the_law() -> None:
     assert np.exp(found.residual[11] - clean.residual[11]) == pytest.approx(1.6, rel=0.05)
     before, after = constants(clean)["n"], constants(found)["n"]
     assert abs(after.mean() - before.mean()) < before.std()
+
+
+def test_of_many_runs_the_share_of_outlying_ones_is_learnt() -> None:
+    clean = draw(13, 4000)
+    assert (fitted(PowerLaw(), clean).outlying > 0.5).sum() <= 1
+    random = np.random.default_rng([24])
+    wrong = random.random(4000) < 0.1
+    y = np.where(wrong, clean.y + OUTLYING_SPREAD * random.standard_normal(4000), clean.y)
+    found = fitted(PowerLaw(), Points(clean.x, y, clean.sx, clean.sy)).outlying
+    assert found.mean() == pytest.approx(wrong.mean(), rel=0.1)
+    assert wrong[found > 0.9].mean() > 0.98
 
 
 def test_hardly_a_run_is_named_where_none_is_wrong() -> None:
