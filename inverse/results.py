@@ -35,6 +35,9 @@ _EXCEL_SEPARATOR = re.compile(r"sep=([,;\t])\s*", re.IGNORECASE)
 _COMMA = re.compile(r"[+-]?\d*,\d+(?:[eE][+-]?\d+)?")
 _BINARY = re.compile(r"[\x00-\x08\x0e-\x1f]")
 
+LONGEST_SYMBOL = 2
+"""Letters of a name whose capitals matter."""
+
 PER_CENT = "%"
 
 
@@ -145,13 +148,16 @@ def _find(path: Path, cells: Sequence[str], wanted: Sequence[Wanted]) -> tuple[_
         for name in each.names:
             places = [i for i, (bare, _) in enumerate(split) if bare == name]
             places = places or [i for i, cell in enumerate(cells) if cell.strip() == name]
-            places = places or [i for i, (bare, _) in enumerate(split) if bare.casefold() == name.casefold()]
+            if not places and len(name) > LONGEST_SYMBOL:  # "nu" is not "Nu"
+                places = [i for i, (bare, _) in enumerate(split) if bare.casefold() == name.casefold()]
             if len(places) > 1:
                 problem = f"there are {len(places)} columns {quoted(name)}"
                 raise InputError(path, None, problem, "keep one, or give the others names of their own")
             if places:
                 cell = cells[places[0]].strip()
-                unit = None if cell == name else split[places[0]][1]
+                unit = split[places[0]][1]
+                if cell == name and unit is not None and not _is_unit(unit):
+                    unit = None  # what stands in brackets belongs to the name
                 found.append(_Found(each, places[0], cell, unit))
                 break
     return tuple(found)

@@ -137,7 +137,7 @@ def wanted(speed: str | None) -> tuple[Wanted, ...]:
         Wanted("base", ("base_temperature_median", "base_temperature"), "temperature", "degC"),
         Wanted("base_sd", ("base_temperature_sd",), "temperature difference", "K"),
         Wanted("air_sd", ("air_sd",), "temperature difference", "K"),
-        Wanted("surface", ("surface_temperature", "surface"), "temperature", "degC"),
+        Wanted("surface", ("surface_temperature",), "temperature", "degC"),
         Wanted("efficiency", ("efficiency_median", "efficiency"), "number"),
         *(Wanted(name, (name,), "number") for name in ("Nu", "Re", "Ra", "Pr")),
         *(Wanted(f"{name}_sd", (f"{name}_sd",), "number", sd=True) for name in ("Nu", "Re", "Ra")),

@@ -193,6 +193,22 @@ def test_workbook_and_parquet_say_what_the_csv_file_says(tmp_path: Path, table: 
         assert found.constants == expected.constants
 
 
+def test_a_column_may_be_named_with_its_unit_or_with_brackets_of_its_own(tmp_path: Path) -> None:
+    base = correlate(write(tmp_path / "si.csv", rows()), rig_of(), stated=STATED)
+    feet = [
+        {k: v for k, v in row.items() if k != "speed [m/s]"}
+        | {"U (hot wire)": row["speed [m/s]"], "U [ft/s]": float(str(row["speed [m/s]"])) / 0.3048, "nu": 9.9}
+        for row in rows()
+    ]
+    path = write(tmp_path / "feet.csv", feet)
+    with pytest.raises(InputError, match='there are 2 columns "U"'):
+        correlate(path, rig_of(), stated=replace(STATED, speed="U"))
+    for column in ("U (hot wire)", "U [ft/s]"):
+        found = correlate(path, rig_of(), stated=replace(STATED, speed=column))
+        assert found.form == "reynolds"
+        assert found.x == pytest.approx(base.x, rel=1e-5)
+
+
 def test_two_hundred_columns_change_nothing(tmp_path: Path, table: Path) -> None:
     wide = [row | {f"note {i}": 'x, "y"' for i in range(200)} for row in rows()]
     found = correlate(write(tmp_path / "wide.csv", wide), rig_of(), stated=STATED)
