@@ -192,6 +192,7 @@ def correlate(
 ) -> int:
     """Fit a law such as Nu = C Re^n Pr^(1/3) through many runs, with errors in both axes."""
     from finback import correlate as correlating
+    from finback import results as results_reader
     from finback import rig as rig_reader
     from finback import run_points
     from finback.report import correlation, correlation_files
@@ -199,6 +200,7 @@ def correlate(
     stated = run_points.parse(speed, speed_uncertainty, shared_h, shared_speed)
     chosen = run_points.parse_form(form)
     rig = None if rig_file is None else rig_reader.read(rig_file)
+    results_reader.header(results)  # before a folder is made for what cannot be read
     correlation_files.prepare(out, force)
     found = correlating.correlate(results, rig, chosen, stated, seed)
     page = correlation_files.write(found, out, force)
