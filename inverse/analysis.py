@@ -1,14 +1,11 @@
 """The main job: one run of one rig to an estimate. What `finback fit` does is one call of `fit` here."""
 
-import sys
 from collections.abc import Callable, Sequence
-from importlib.metadata import version
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
-import finback
 from finback import (
     budget,
     candidates,
@@ -17,12 +14,14 @@ from finback import (
     conclusions,
     derived,
     expectation,
+    faults,
     sensitivity,
     summaries,
 )
 from finback import readings as readings_file
 from finback import rig as rig_file
-from finback.estimate import Draws, Estimate, ProfileBand, Provenance
+from finback.estimate import Draws, Estimate, ProfileBand, provenance
+from finback.findings import Finding
 from finback.readings import Readings
 from finback.rig import Rig
 from finback.routes import Outcome
@@ -34,7 +33,6 @@ Progress = Callable[[str, float], None]
 BAND_DRAWS = 1000
 BAND_POINTS = 121
 PRIOR_DRAWS = 4000
-PACKAGES = ("numpy", "scipy", "emcee", "arviz", "pandas", "matplotlib")
 PARAMETERS = (
     *("h", "k", "joint", "plate", "air", "tip_temperature", "exponent", "rise", "emissivity", "surroundings"),
     *("bare_area", "loss", "loss_coefficient", "misfit", "noise"),
@@ -49,12 +47,15 @@ def fit(
     seed: int = 1,
     progress: Progress | None = None,
     settings: Settings | None = None,
+    as_read: bool = False,
 ) -> Estimate:
     """Estimate h, k and the joint of one run, with the model that the readings support.
 
     Arguments: rig, a `Rig` or the path of a rig.toml; readings, the `Readings` of one run or the path of a
     .csv or .xlsx; run, which one, where the file has several; seed of the random draws: the same seed gives
-    the same result; progress, called with a stage and the fraction done; settings of the sampler.
+    the same result; progress, called with a stage and the fraction done; settings of the sampler;
+    as_read, whether every reading counts as it stands: readings that are surely wrong are set aside
+    otherwise, and that is said.
 
     Returns an `Estimate`. Raises InputError, with a sentence for the user, when the input is wrong. A sampler
     that does not converge is a finding of the result, not an error.
@@ -66,12 +67,17 @@ def fit(
     checks.check_run(rig, readings)
     rig = rig.warmed(expectation.mean_temperature(rig, readings), expectation.extremes(rig, readings))
     progress = progress or (lambda _stage, _fraction: None)
+    progress("looking for wrong readings", 0.0)
+    looked = faults.search(rig, readings, aside=not as_read)
+    rig, readings = looked.rig, looked.readings
     outcomes = candidates.compare(rig, readings, seed, progress, settings)
     progress("summing up", 0.95)
-    return _assemble(rig, readings, outcomes, seed)
+    return _assemble(rig, readings, outcomes, seed, looked.findings)
 
 
-def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: int) -> Estimate:
+def _assemble(
+    rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: int, wrong: Sequence[Finding]
+) -> Estimate:
     probabilities = candidates.probabilities(outcomes)
     scores = tuple(candidates.score(o, float(p)) for o, p in zip(outcomes, probabilities, strict=True))
     evaluated = [conclusions.quantities(outcome) for outcome in outcomes]
@@ -79,7 +85,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
     found = conclusions.summarise(outcomes, probabilities, evaluated, mixture)
     origin = budget.collect(outcomes, probabilities, evaluated, found)
     sampler = conclusions.sampler_record(outcomes, seed)
-    concluded = conclusions.draw(rig, readings, outcomes, scores, evaluated, found, sampler)
+    concluded = conclusions.draw(rig, readings, outcomes, scores, evaluated, found, sampler, wrong)
     return Estimate(
         rig=rig,
         readings=readings,
@@ -100,7 +106,7 @@ def _assemble(rig: Rig, readings: Readings, outcomes: Sequence[Outcome], seed: i
         sampler=sampler,
         findings=concluded.findings,
         priors=_priors(outcomes[0]),
-        provenance=_provenance(rig, readings),
+        provenance=provenance(rig, readings),
         expected=concluded.expected,
         implied_speed=concluded.implied_speed,
         budget=origin.lines,
@@ -167,14 +173,3 @@ def _priors(best: Outcome) -> tuple[str, ...]:
         source = "by the readings" if name == "reference_excess" else "exactly (stated)"
         lines.append(f"{label}: {value:.6g} {unit} {source}")
     return tuple(lines)
-
-
-def _provenance(rig: Rig, readings: Readings) -> Provenance:
-    files = [(rig.source, rig.sha256), (readings.source, readings.sha256)]
-    if rig.shape_file is not None:
-        files.append((rig.shape_file.source, rig.shape_file.sha256))
-    inputs = {source.name: digest for source, digest in files if source is not None and digest is not None}
-    versions = {"python": ".".join(map(str, sys.version_info[:3]))} | {
-        name: version(name) for name in PACKAGES
-    }
-    return Provenance(finback.__version__, versions, inputs)

@@ -48,18 +48,18 @@ def collect(
     best: Outcome,
     smooth: Finding | None = None,
     heat: float | None = None,
-    heavy: Sequence[Finding] = (),
+    wrong: Sequence[Finding] = (),
 ) -> tuple[Finding, ...]:
     """Return the findings of a fit, gravest first.
 
-    `smooth` is what was found of a smooth misfit, `heat` [W] what would flow without one, `heavy` what was
-    found of heavy tails.
+    `smooth` is what was found of a smooth misfit, `heat` [W] what would flow without one, `wrong` what was
+    found of readings that are wrong.
     """
     explained = smooth is not None and not best.problem.candidate.misfit
     everything = [
         *_undetermined(rig, found, best),
         *([] if smooth is None else [smooth]),
-        *heavy,
+        *wrong,
         *([] if explained else _misfit(quality)),
         *_validity(found),
         *_thermocouples(best),

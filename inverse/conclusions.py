@@ -55,12 +55,13 @@ def draw(
     evaluated: Sequence[Mapping[str, Array]],
     found: Mapping[str, Summary],
     sampler: SamplerRecord,
+    wrong: Sequence[Finding] = (),
 ) -> Conclusions:
     """Draw the conclusions of a run.
 
     Arguments: rig, as warm as the run; readings; outcomes, most probable first; scores, with their
     probabilities; evaluated, the quantities of their draws; found, the summaries by `summarise`; sampler, how
-    the draws were made.
+    the draws were made; wrong, what was found of readings that are wrong.
     """
     best = outcomes[0]
     table = fitted_readings(best)
@@ -70,7 +71,7 @@ def draw(
     smooth = concerns.smooth_misfit(outcomes, [score.probability for score in scores])
     heavy = concerns.heavy_tails(outcomes, [score.probability for score in scores])
     findings = (
-        *concerns.collect(rig, found, quality, sampler, best, smooth, heat, heavy),
+        *concerns.collect(rig, found, quality, sampler, best, smooth, heat, (*wrong, *heavy)),
         *beyond,
         *concerns.scored(scores),
     )

@@ -1,15 +1,18 @@
 """Estimates: what a fit found, frozen, with its status and where it came from."""
 
 import math
+import sys
 import textwrap
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass, field
 from html import escape
+from importlib.metadata import version
 from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
+import finback
 from finback.expectation import Expected, ImpliedSpeed
 from finback.findings import Finding
 from finback.models.constants import ZERO_CELSIUS
@@ -244,17 +247,17 @@ class Estimate:
             "status": self.status,
             "parameters": {name: _numbers(summary) for name, summary in self.parameters.items()},
             "derived": {name: _numbers(summary) for name, summary in self.derived.items()},
-            "candidates": [_rounded(asdict(score)) for score in self.candidates],
-            "fit": _rounded(asdict(self.fit)),
-            "sampler": _rounded(asdict(self.sampler)),
-            "budget": [_rounded(asdict(line)) for line in self.budget],
+            "candidates": [rounded(asdict(score)) for score in self.candidates],
+            "fit": rounded(asdict(self.fit)),
+            "sampler": rounded(asdict(self.sampler)),
+            "budget": [rounded(asdict(line)) for line in self.budget],
             "findings": [
                 {"code": f.code, "severity": f.severity, "sensor": f.sensor, "message": f.message}
                 for f in self.findings
             ],
             "expanded": {name: self._expanded(name) for name in self.expanded},
-            "improvement": None if self.improvement is None else _rounded(asdict(self.improvement)),
-            "sensitivity": None if self.sensitivity is None else _rounded(asdict(self.sensitivity)),
+            "improvement": None if self.improvement is None else rounded(asdict(self.improvement)),
+            "sensitivity": None if self.sensitivity is None else rounded(asdict(self.sensitivity)),
             **self._expectations(),
             "provenance": asdict(self.provenance),
         }
@@ -262,17 +265,17 @@ class Estimate:
     def _expanded(self, name: str) -> dict[str, Any]:
         """Return value ± U of a quantity as estimate.json has it."""
         unit = {**self.parameters, **self.derived}[name].unit
-        return {"unit": unit, **_rounded(asdict(self.expanded[name]))}
+        return {"unit": unit, **rounded(asdict(self.expanded[name]))}
 
     def _expectations(self) -> dict[str, Any]:
         """Return what estimate.json says of a healthy fin, nothing where nothing is known of one."""
         found: dict[str, Any] = {}
         if self.expected is not None:
-            found["expected"] = _rounded(_of_expected(self.expected))
+            found["expected"] = rounded(_of_expected(self.expected))
         if self.implied_speed is not None:
             implied = asdict(self.implied_speed)
             shown = {"value": implied.pop("speed"), "sd": implied.pop("sd"), "unit": "m/s", **implied}
-            found["implied_speed"] = _rounded(shown)
+            found["implied_speed"] = rounded(shown)
         return found
 
     def to_tree(self) -> Any:
@@ -330,11 +333,14 @@ class Estimate:
 SHOWN = ("h", "k", "joint", "h_over_k", "base_temperature", "heat", "efficiency")
 """What an estimate shows of itself, in this order."""
 
+PACKAGES = ("numpy", "scipy", "emcee", "arviz", "pandas", "matplotlib")
+"""Libraries whose versions stand in a result."""
+
 DIGITS = 10  # significant ones in estimate.json: more than any number here has, fewer than rounding leaves
 
 
 def _numbers(summary: Summary) -> dict[str, Any]:
-    found = _rounded(asdict(summary))
+    found = rounded(asdict(summary))
     return {name: value for name, value in found.items() if name not in ("name", "label")}
 
 
@@ -358,12 +364,24 @@ def _of_expected(expected: Expected) -> dict[str, Any]:
     }
 
 
-def _rounded(value: Any) -> Any:
+def rounded(value: Any) -> Any:
     """Return nested values with floats rounded to DIGITS; a nan would be a defect and is refused."""
     if isinstance(value, Mapping):
-        return {name: _rounded(each) for name, each in value.items()}
+        return {name: rounded(each) for name, each in value.items()}
     if isinstance(value, float):
         if not math.isfinite(value):
             raise ValueError(f"{value} is no result")
         return float(f"{value:.{DIGITS}g}")
     return value
+
+
+def provenance(rig: Rig, readings: Readings) -> Provenance:
+    """Return where a result of a run comes from: versions, and what its files hold."""
+    files = [(rig.source, rig.sha256), (readings.source, readings.sha256)]
+    if rig.shape_file is not None:
+        files.append((rig.shape_file.source, rig.shape_file.sha256))
+    inputs = {source.name: digest for source, digest in files if source is not None and digest is not None}
+    versions = {"python": ".".join(map(str, sys.version_info[:3]))} | {
+        name: version(name) for name in PACKAGES
+    }
+    return Provenance(finback.__version__, versions, inputs)

@@ -28,6 +28,7 @@ Key = tuple[str, str | None, str | None]
 SURE = 0.9  # probability from which a reading is set aside
 LIKELY = 0.5  # and above which it is said that it is wrong
 ALSO = 0.1  # share of that, from which another kind of error is named beside the likeliest
+SCATTER = ""  # stands for all sensors along the fin
 WORTH_A_LOOK = 3.0  # nats that one fault would have to gain at the fit, by linear algebra
 
 
@@ -36,14 +37,19 @@ class Suspicion:
     """How probable it is that something is wrong, alone or with another thing.
 
     `suspect`; `probability`; `error` [K, W] of its reading and the standard uncertainty `sd` of that, both 0
-    where it has none; `base`, the likeliest candidate with it.
+    where it has none; `best`, the likeliest hypothesis with it.
     """
 
     suspect: Suspect
     probability: float
     error: float
     sd: float
-    base: Base
+    best: Hypothesis
+
+    @property
+    def base(self) -> Base:
+        """The likeliest candidate with it."""
+        return self.best.base
 
     @property
     def shift(self) -> float | None:
@@ -60,27 +66,45 @@ class Suspicion:
 
 @dataclass(frozen=True)
 class Search:
-    """What was found: `suspicions`, likeliest first; `readings` to go on with; `findings`."""
+    """What was found: `suspicions`, likeliest first; `rig` and `readings` to go on with; `findings`."""
 
     suspicions: tuple[Suspicion, ...]
+    rig: Rig
     readings: Readings
     findings: tuple[Finding, ...]
 
 
-def search(rig: Rig, readings: Readings) -> Search:
+def search(rig: Rig, readings: Readings, *, aside: bool = True) -> Search:
     """Look for wrong readings in a run, and return the readings without those that are surely wrong.
 
-    Arguments: rig; readings, checked against it. What is set aside keeps its reason; where too few readings
-    would be left, nothing is.
+    Arguments: rig; readings, checked against it; aside, whether any are to be set aside. What is set aside
+    keeps its reason. Nothing is where too few readings would be left, or where the rig asks for noise with
+    heavy tails, which makes little of a wrong reading by itself.
     """
-    chosen = candidates.enumerate_candidates(rig, readings)
-    chosen = tuple(each for each in chosen if not each.heavy_tails)
+    chosen = candidates.enumerate_candidates(replace(rig, noise=("normal",)), readings)
     problems = candidates.affordable([posing.pose(rig, readings, each) for each in chosen])
     bases = [hypotheses.base(rig, readings, problem.candidate) for problem in problems]
     found = [each for base in bases for each in hypotheses.weigh(base, [State()])]
-    suspicions = tuple(_suspicions(found, probabilities(found)))
-    clean, changed = _without(rig, readings, suspicions)
-    return Search(suspicions, clean, tuple(_findings(suspicions, changed)))
+    suspicions = tuple(suspicions_of(found))
+    clean, changed = readings, {}
+    if aside and "heavy-tailed" not in rig.noise:
+        clean, changed = _without(rig, readings, suspicions)
+        scattered = [each for each in suspicions if each.suspect.kind == "scatter"]
+        if scattered and scattered[0].probability >= SURE:
+            rig = _noise_unstated(rig)
+            changed = {**changed, SCATTER: "the noise is estimated from them instead"}
+    return Search(suspicions, rig, clean, tuple(findings(suspicions, changed)))
+
+
+def _noise_unstated(rig: Rig) -> Rig:
+    """Return a rig whose thermometers along the fin scatter as they do, and not as is stated."""
+    return replace(
+        rig,
+        sensors={
+            name: replace(sensor, noise=None, noise_relative=None) if sensor.place == "fin" else sensor
+            for name, sensor in rig.sensors.items()
+        },
+    )
 
 
 def is_suspicious(point: LeastSquares) -> bool:
@@ -120,9 +144,10 @@ def key(suspect: Suspect) -> Key:
     return suspect.kind, suspect.sensor, suspect.other
 
 
-def _suspicions(found: Sequence[Hypothesis], shares: Array) -> list[Suspicion]:
+def suspicions_of(found: Sequence[Hypothesis]) -> list[Suspicion]:
     """Return each suspect with the probability of all hypotheses that it is part of, likeliest first."""
-    with_it: dict[Key, list[tuple[float, Suspect, float, float, Base]]] = {}
+    shares = probabilities(found)
+    with_it: dict[Key, list[tuple[float, Suspect, float, float, Hypothesis]]] = {}
     for each, share in zip(found, shares.tolist(), strict=True):
         names = [sensor.name for sensor in each.base.problem.measured.sensors]
         errors = dict(zip([names[at] for at in each.freed], range(len(each.freed)), strict=True))
@@ -130,7 +155,7 @@ def _suspicions(found: Sequence[Hypothesis], shares: Array) -> list[Suspicion]:
             at = errors.get(suspect.sensor or "") if suspect.kind != "swap" else None
             error = 0.0 if at is None else float(each.errors[at])
             variance = 0.0 if at is None else float(each.error_spread[at, at])
-            with_it.setdefault(key(suspect), []).append((share, suspect, error, variance, each.base))
+            with_it.setdefault(key(suspect), []).append((share, suspect, error, variance, each))
     suspicions = []
     for parts in with_it.values():
         weights = np.array([part[0] for part in parts])
@@ -179,7 +204,8 @@ def _without(
     return clean, done
 
 
-def _findings(suspicions: Sequence[Suspicion], done: Mapping[str, str]) -> list[Finding]:
+def findings(suspicions: Sequence[Suspicion], done: Mapping[str, str]) -> list[Finding]:
+    """Return the findings of what is likely wrong; `done`, by sensor, what was done about it."""
     found = []
     for name, own in _of_sensors(suspicions).items():
         total = sum(each.probability for each in own)
@@ -188,6 +214,8 @@ def _findings(suspicions: Sequence[Suspicion], done: Mapping[str, str]) -> list[
     for each in suspicions:
         if each.suspect.kind == "swap" and each.probability > LIKELY:
             found.append(_of_swap(each, done.get(each.suspect.sensor or "")))
+        elif each.suspect.kind == "scatter" and each.probability > LIKELY:
+            found.append(_of_scatter(each, done.get(SCATTER)))
     return found
 
 
@@ -195,20 +223,20 @@ def _of_reading(name: str, own: Sequence[Suspicion], total: float, done: str | N
     """Return the finding of a reading that is likely wrong, and one for another way in which it may be."""
     first = own[0]
     ending = f"; {done}" if done else ""
-    message = f"{_in_words(first)} (probability {_shown(total)})"
+    message = f"{in_words(first)} (probability {_shown(total)})"
     evidence = {"probability": total, "error": first.error, "sd": first.sd}
     also = [each for each in own[1:] if each.probability > ALSO * total]
     if also:
         message += f"; the readings cannot tell that from this: {_named(also[0])}"
     found = [Finding(first.suspect.code, _severity(total), f"{message}{ending}.", name, evidence)]
     for each in also:
-        message = f"{_in_words(each)} (probability {_shown(each.probability)})."
+        message = f"{in_words(each)} (probability {_shown(each.probability)})."
         evidence = {"probability": each.probability, "error": each.error, "sd": each.sd}
         found.append(Finding(each.suspect.code, "note", message, name, evidence))
     return found
 
 
-def _in_words(each: Suspicion) -> str:
+def in_words(each: Suspicion) -> str:
     """Return what is wrong with a reading, how far it is off and what else would do the same."""
     name, error = each.suspect.sensor, f"{abs(each.error):.2g} ± {each.sd:.1g} K"
     higher = "higher" if each.error > 0 else "lower"
@@ -261,6 +289,20 @@ def _of_swap(each: Suspicion, done: str | None) -> Finding:
     )
     evidence = {"probability": each.probability}
     return Finding(each.suspect.code, _severity(each.probability), message, each.suspect.sensor, evidence)
+
+
+def _of_scatter(each: Suspicion, done: str | None) -> Finding:
+    best, fin = each.best, len(each.base.problem.measured.positions)
+    residuals = (best.values - best.base.problem.predict(best.mean[None])[0, : len(best.values)])[:fin]
+    scatter = float(np.sqrt(np.mean(np.square(residuals))))
+    stated = math.sqrt(float(np.trace(best.base.scatter) / fin)) if best.base.scatter is not None else 0.0
+    ending = f"; {done}" if done else ""
+    message = (
+        f"The thermometers along the fin scatter by {scatter:.2g} K about every model, where {stated:.2g} K "
+        f"is stated of them and their holes (probability {_shown(each.probability)}){ending}."
+    )
+    evidence = {"probability": each.probability, "scatter": scatter}
+    return Finding(each.suspect.code, "caution", message, evidence=evidence)
 
 
 def _severity(probability: float) -> Severity:

@@ -26,15 +26,16 @@ from finback.suspects import ODDS, Size, Suspect
 Array = NDArray[np.float64]
 
 FREE = 300.0  # K, or times a heat: the error of a reading that is freed of its thermometer, beforehand
+LEAST_TOLD = 1e-4  # of what is known of such an error beforehand
 PAIRED = 8  # readings and swaps, the likeliest ones alone, of which two at a time are tried
 STRIDE = 4  # levels of an unknown noise from one that is tried first to the next
 HOPELESS = 15.0  # nats below the best of those, from which no other level is tried
 LEVELS = np.exp(np.arange(math.log(0.01), math.log(10.0), 0.25))  # K: an unknown noise
-MISFITS = np.array([-2.0, -1.0, 0.0, 1.0, 2.0])  # sds of the logarithm of a misfit's share
-MISFIT_SHARES = np.exp(-0.5 * np.square(MISFITS)) / np.exp(-0.5 * np.square(MISFITS)).sum()
+NODES = np.array([-2.0, -1.0, 0.0, 1.0, 2.0])  # sds of the logarithm of a misfit or a scatter
+NODE_SHARES = np.exp(-0.5 * np.square(NODES)) / np.exp(-0.5 * np.square(NODES)).sum()
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class State:
     """A state of the fin: the causes that make it do less, none where it is healthy.
 
@@ -51,7 +52,8 @@ class Base:
 
     `problem`, without unknown noise or misfit; `covariances` (levels, n, n) by the level of the noise, with
     their `log_shares` (levels,) beforehand; `slopes` dT/dx (n,) [K/m], 0 off the fin; `smooth` (n, n), what a
-    misfit of share 1 adds, None where none is looked for; `start` (p,); `tip`, the suspect that the tip is
+    misfit of share 1 adds, and `scatter` (n, n), what each reading along the fin has of its own, None where
+    neither is looked for; `start` (p,); `tip`, the suspect that the tip is
     this one, None where the rig says so or leaves it open.
     """
 
@@ -60,6 +62,7 @@ class Base:
     log_shares: Array
     slopes: Array
     smooth: Array | None
+    scatter: Array | None
     start: Array
     tip: Suspect | None = None
 
@@ -68,14 +71,16 @@ class Base:
 class Hypothesis:
     """One hypothesis and what came of it.
 
-    `suspects`, what is wrong, none for nothing; `log_weight` [nats], up to a constant; `base` and `state` it
-    belongs to; `values` (n,) and `covariance` (n, n) of the readings, `freed` numbers of readings and
-    the `sizes` of their errors, as posed; `mean` (p,) and `spread` (p, p) of the unknowns; `errors` (m,) and
-    their `error_spread` (m, m), what the freed readings are off [K, W].
+    `suspects`, what is wrong, none for nothing; `log_weight` [nats], up to a constant, of which `log_prior`
+    is from before the readings; `base` and `state` it belongs to; `values` (n,) and `covariance` (n, n) of
+    the readings, `freed` numbers of readings and the `sizes` of their errors, as posed; `mean` (p,) and
+    `spread` (p, p) of the unknowns; `errors` (m,) and their `error_spread` (m, m), what the freed readings
+    are off [K, W].
     """
 
     suspects: tuple[Suspect, ...]
     log_weight: float
+    log_prior: float
     base: Base
     state: State
     values: Array
@@ -100,12 +105,13 @@ class Hypothesis:
 
 @dataclass(frozen=True, slots=True)
 class _Row:
-    """One row of a block: a state, the readings freed, exchanged or bent, a level of the noise."""
+    """One row of a block: a state, the readings freed, exchanged, bent or scattered, a level of the noise."""
 
     state: State
     freed: tuple[int, ...] = ()
     swap: Suspect | None = None
     misfit: int | None = None
+    scatter: int | None = None
     level: int = 0
 
 
@@ -124,16 +130,22 @@ def base(rig: Rig, readings: Readings, candidate: Candidate, tip: Suspect | None
     slopes = np.zeros(n)
     n_fin = len(problem.measured.positions)
     slopes[:n_fin] = posing.temperature_slopes(problem, z)
-    smooth = None
+    smooth = scatter = None
     if n_fin >= misfit.FEWEST_SENSORS and not problem.noise.estimated:
         smooth = posing.smooth_covariance(problem, z)
+        own = sum(
+            np.square(source.effect).sum(axis=1)
+            for source in posing.error_sources(problem, z, 0.0)
+            if source.kind in ("noise", "position") and source.place == "fin"
+        )
+        scatter = np.diag(np.broadcast_to(own, (n,)))
     physical = problem.n_physical
     bare = replace(
         problem,
         parameters=problem.parameters[:physical],
         noise=noises.build(covariances[0], np.zeros(n, dtype=bool)),
     )
-    return Base(bare, covariances, log_shares, slopes, smooth, z[:physical], tip)
+    return Base(bare, covariances, log_shares, slopes, smooth, scatter, z[:physical], tip)
 
 
 def beforehand(problem: Problem, state: State) -> tuple[Array, Array]:
@@ -161,9 +173,13 @@ def weigh(base: Base, states: Sequence[State]) -> list[Hypothesis]:
         beside = swaps if not state.causes else [s for s in swaps if s.odds == swaps[0].odds]
         rows += [_Row(state, swap=swap) for swap in beside]
         if base.smooth is not None:
-            rows += [_Row(state, misfit=n) for n in range(len(MISFITS))]
+            rows += [_Row(state, misfit=n) for n in range(len(NODES))]
+        if base.scatter is not None:
+            rows += [_Row(state, scatter=n) for n in range(len(NODES))]
     singles = _weigh_rows(base, rows, own)
-    return singles + _weigh_rows(base, _pairs(singles, states[0]), own)
+    heights = [max((each.log_weight for each in many), default=-np.inf) for many in singles]
+    pairs = _weigh_rows(base, _pairs(list(zip(rows, heights, strict=True)), states[0]), own)
+    return [each for many in singles + pairs for each in many]
 
 
 def _names(base: Base) -> list[str]:
@@ -177,33 +193,43 @@ def _of_readings(base: Base) -> Iterator[Suspect]:
     return suspects.of_readings(base.problem.rig, measured.sensors, heats)
 
 
-def _pairs(found: Sequence[Hypothesis], healthy: State) -> list[_Row]:
-    """Return the rows with two wrong readings, or one and a swap, of those that are likeliest alone."""
-    best: dict[tuple[tuple[int, ...], Suspect | None], float] = {}
-    for each in found:
-        swap = next((s for s in each.suspects if s.kind == "swap"), None)
-        key = (each.freed, swap)
-        if each.state is healthy and key != ((), None):
-            best[key] = max(best.get(key, -np.inf), each.log_weight)
-    chosen = sorted(best, key=lambda key: -best[key])[:PAIRED]
+def _pairs(found: Sequence[tuple[_Row, float]], healthy: State) -> list[_Row]:
+    """Return the rows with two things wrong at once, of those that are likeliest alone."""
+    best: dict[_Row, float] = {}
+    for row, height in found:
+        if row.state is healthy and row != _Row(healthy):
+            alike = replace(row, misfit=row.misfit and 0, scatter=row.scatter and 0)
+            best[alike] = max(best.get(alike, -np.inf), height)
+    chosen = sorted(best, key=lambda row: -best[row])[:PAIRED]
     rows = []
-    for (freed, swap), (others, other) in combinations(chosen, 2):
-        if swap is not None and other is not None:
+    for first, second in combinations(chosen, 2):
+        if first.swap is not None and second.swap is not None:
             continue
-        rows.append(_Row(healthy, tuple(sorted(freed + others)), swap or other))
+        both = _Row(healthy, tuple(sorted(first.freed + second.freed)), first.swap or second.swap)
+        bent = first.misfit is not None or second.misfit is not None
+        scattered = first.scatter is not None or second.scatter is not None
+        if bent and scattered:
+            continue
+        nodes = range(len(NODES)) if bent or scattered else (None,)
+        rows += [replace(both, misfit=n if bent else None, scatter=n if scattered else None) for n in nodes]
     return rows
 
 
-def _weigh_rows(base: Base, rows: Sequence[_Row], own: Mapping[str, Sequence[Suspect]]) -> list[Hypothesis]:
+def _weigh_rows(
+    base: Base, rows: Sequence[_Row], own: Mapping[str, Sequence[Suspect]]
+) -> list[list[Hypothesis]]:
     """Weigh rows at every level of the noise, but for those that a few levels have shown to be hopeless."""
     levels = np.arange(len(base.log_shares))
     coarse = levels[::STRIDE]
     found = _at_levels(base, rows, coarse, own)
     if len(coarse) == len(levels):
-        return [each for many in found for each in many]
+        return found
     heights = [max((each.log_weight for each in many), default=-np.inf) for many in found]
-    kept = [row for row, height in zip(rows, heights, strict=True) if height > max(heights) - HOPELESS]
-    return [each for many in _at_levels(base, kept, levels, own) for each in many]
+    kept = [n for n, height in enumerate(heights) if height > max(heights) - HOPELESS]
+    weighed = _at_levels(base, [rows[n] for n in kept], levels, own)
+    for n, many in zip(kept, weighed, strict=True):
+        found[n] = many
+    return found
 
 
 def _at_levels(
@@ -223,7 +249,7 @@ def _at_levels(
 
 def _pose(base: Base, rows: Sequence[_Row]) -> Posed:
     names = _names(base)
-    free = _free(base)
+    free = free_errors(base)
     values = np.tile(base.problem.measured.values, (len(rows), 1))
     covariances = base.covariances[[row.level for row in rows]]
     before: dict[int, tuple[Array, Array]] = {}
@@ -235,6 +261,8 @@ def _pose(base: Base, rows: Sequence[_Row]) -> Posed:
             covariances[number, at, at] += free[at] ** 2
         if row.misfit is not None:
             covariances[number] += _share(row.misfit) ** 2 * base.smooth
+        if row.scatter is not None:
+            covariances[number] += _times(row.scatter) ** 2 * base.scatter
         before.setdefault(id(row.state), beforehand(base.problem, row.state))
     means, sds = (np.array([before[id(row.state)][i] for row in rows]) for i in (0, 1))
     return Posed(values, covariances, means, sds)
@@ -242,10 +270,14 @@ def _pose(base: Base, rows: Sequence[_Row]) -> Posed:
 
 def _share(node: int) -> float:
     prior = parameters.DEFAULT_PRIORS["misfit"][1]
-    return math.exp(prior.mean + MISFITS[node] * prior.sd)
+    return math.exp(prior.mean + NODES[node] * prior.sd)
 
 
-def _free(base: Base) -> Array:
+def _times(node: int) -> float:
+    return suspects.SCATTER * suspects.SCATTER_FACTOR ** float(NODES[node])
+
+
+def free_errors(base: Base) -> Array:
     """Return the error beforehand (n,) of each reading that is freed of its thermometer [K, W]."""
     measured = base.problem.measured
     return np.array(
@@ -265,7 +297,8 @@ def _hypotheses(
     own: Mapping[str, Sequence[Suspect]],
 ) -> Iterator[Hypothesis]:
     """Yield the hypotheses of one row: each kind of error that its freed readings may have."""
-    log_weight = float(fitted.log_evidence[number] + base.log_shares[row.level])
+    log_prior = float(base.log_shares[row.level])
+    evidence = float(fitted.log_evidence[number])
     wrong = row.state.causes
     if base.tip is not None:
         wrong = (*wrong, base.tip)
@@ -273,28 +306,32 @@ def _hypotheses(
         wrong = (*wrong, row.swap)
     if row.misfit is not None:
         wrong = (*wrong, SMOOTH)
-        log_weight += math.log(MISFIT_SHARES[row.misfit])
-    log_weight += sum(math.log(suspect.odds) for suspect in wrong)
+        log_prior += math.log(NODE_SHARES[row.misfit])
+    if row.scatter is not None:
+        wrong = (*wrong, SCATTERED)
+        log_prior += math.log(NODE_SHARES[row.scatter])
+    log_prior += sum(math.log(suspect.odds) for suspect in wrong)
     names = _names(base)
     mean, spread = fitted.modes[number], fitted.spreads[number]
     made = (base, row.state, posed.values[number], posed.covariances[number])
     if not row.freed:
-        yield Hypothesis(wrong, log_weight, *made, (), (), mean, spread, np.zeros(0), np.zeros((0, 0)))
+        weights = (log_prior + evidence, log_prior)
+        yield Hypothesis(wrong, *weights, *made, (), (), mean, spread, np.zeros(0), np.zeros((0, 0)))
         return
-    freed, sd = list(row.freed), _free(base)[list(row.freed)]
+    freed, sd = list(row.freed), free_errors(base)[list(row.freed)]
     errors, covariance, with_unknowns = fitted.freed(number, freed, sd)
-    seen = np.linalg.inv(
-        np.linalg.inv(covariance) - np.diag(1 / np.square(sd))
-    )  # by the other readings alone
+    seen = _by_others(covariance, sd)
     told = seen @ np.linalg.solve(covariance, errors)
-    log_weight -= _log_normal(told, seen + np.diag(np.square(sd)))
+    evidence -= _log_normal(told, seen + np.diag(np.square(sd)))
     for kinds in _products([own[names[at]] for at in freed]):
         sizes = tuple(_in_kelvin(base, suspect, at) for suspect, at in zip(kinds, freed, strict=True))
         log_size, error, error_spread = _sized(told, seen, sizes)
+        log_kinds = log_prior + sum(math.log(suspect.odds) for suspect in kinds)
         gain = with_unknowns @ np.linalg.inv(covariance)
         yield Hypothesis(
             (*wrong, *kinds),
-            log_weight + log_size + sum(math.log(suspect.odds) for suspect in kinds),
+            log_kinds + evidence + log_size,
+            log_kinds,
             *made,
             row.freed,
             sizes,
@@ -303,6 +340,18 @@ def _hypotheses(
             error,
             error_spread,
         )
+
+
+def _by_others(covariance: Array, sd: Array) -> Array:
+    """Return what the other readings alone leave open of errors (m, m), given their covariance with a prior.
+
+    What they say nothing of stays finite: wider than that prior, and no more.
+    """
+    scale = 1 / sd
+    told = np.linalg.inv(covariance / np.outer(sd, sd)) - np.eye(len(sd))
+    weights, axes = np.linalg.eigh((told + told.T) / 2)
+    root = axes / np.sqrt(np.maximum(weights, LEAST_TOLD))
+    return np.asarray((root @ root.T) / np.outer(scale, scale))
 
 
 def _in_kelvin(base: Base, suspect: Suspect, at: int) -> Size:
@@ -325,11 +374,8 @@ def _sized(told: Array, seen: Array, sizes: Sequence[Size]) -> tuple[float, Arra
     Arguments: told (m,) and seen (m, m), mean and covariance by the other readings; sizes, beforehand. The
     sizes of two errors make a grid of normal distributions, each combined with what the readings tell.
     """
-    grids = np.meshgrid(*[np.arange(len(size.shares)) for size in sizes], indexing="ij")
-    pairs = [(size, grid.ravel()) for size, grid in zip(sizes, grids, strict=True)]
-    away = told - np.stack([size.means[at] for size, at in pairs], axis=-1)
-    variances = np.stack([np.square(size.sds[at]) for size, at in pairs], axis=-1)
-    shares = np.prod([size.shares[at] for size, at in pairs], axis=0)
+    shares, means, variances = _grid(sizes)
+    away = told - means
     if len(sizes) == 1:
         gains = seen / (seen + variances[:, None])
         dets = seen[0] + variances[:, 0]
@@ -350,9 +396,33 @@ def _sized(told: Array, seen: Array, sizes: Sequence[Size]) -> tuple[float, Arra
     return highest + math.log(total), error, spread
 
 
+def sizes_together(told: Array, seen: Array, sizes: Sequence[Size]) -> Array:
+    """Return the log probability of errors (n_sets, m) with sizes, seen with a covariance (m, m)."""
+    shares, means, variances = _grid(sizes)
+    both = seen + variances[:, :, None] * np.eye(len(sizes))
+    logs = np.log(shares) - 0.5 * (np.linalg.slogdet(both)[1] + len(sizes) * LOG_TWO_PI)
+    whiten = np.linalg.inv(np.linalg.cholesky(both))
+    whitened = told @ whiten.transpose(0, 2, 1) - np.einsum("cmk,ck->cm", whiten, means)[:, None]
+    logs = logs[:, None] - 0.5 * np.square(whitened).sum(axis=-1)
+    highest = logs.max(axis=0)
+    return np.asarray(highest + np.log(np.exp(logs - highest).sum(axis=0)))
+
+
+def _grid(sizes: Sequence[Size]) -> tuple[Array, Array, Array]:
+    """Return the sizes of several errors as normal distributions: shares (c,), means, variances (c, m)."""
+    grids = np.meshgrid(*[np.arange(len(size.shares)) for size in sizes], indexing="ij")
+    pairs = [(size, grid.ravel()) for size, grid in zip(sizes, grids, strict=True)]
+    return (
+        np.prod([size.shares[at] for size, at in pairs], axis=0),
+        np.stack([size.means[at] for size, at in pairs], axis=-1),
+        np.stack([np.square(size.sds[at]) for size, at in pairs], axis=-1),
+    )
+
+
 def _log_normal(away: Array, covariance: Array) -> float:
     squares = float(away @ np.linalg.solve(covariance, away))
     return -0.5 * (squares + float(np.linalg.slogdet(2 * math.pi * covariance)[1]))
 
 
 SMOOTH = Suspect("misfit", ODDS["misfit"])
+SCATTERED = Suspect("scatter", ODDS["scatter"])

@@ -27,6 +27,7 @@ POSITIVE = (*LIMITED, "h_over_k")
 """Quantities that are more than a limit only where they lie clear of zero."""
 SCATTER = ("misfit", "noise")
 """What no physical parameter changes."""
+AT_LIMIT = 0.01  # of all draws: those next to a limit, which say what all else is there
 ONE_SIDED = 0.95  # probability of a limit where only a limit exists
 BEYOND = 3.0  # times its limit: where a quantity would have been seen, if the limit is the readings'
 
@@ -155,7 +156,8 @@ class Judge:
         columns = [i for i, parameter in enumerate(problem.names) if parameter in LIMITED[name]]
         flat = self.outcome.draws.reshape(-1, self.outcome.draws.shape[-1])
         known = sum(float(np.log(problem.fixed[part])) for part in LIMITED[name] if part in problem.fixed)
-        at = flat[int(np.argmin(np.abs(flat[:, columns].sum(axis=1) + known - np.log(limit))))].copy()
+        away = np.abs(flat[:, columns].sum(axis=1) + known - np.log(limit))
+        at = flat[np.argsort(away)[: max(1, int(AT_LIMIT * len(flat)))]].mean(axis=0)
         at[columns[-1]] += np.log(BEYOND)
         sigma = float(np.exp(at[-1])) if problem.noise.estimated else self.outcome.point.sigma
         there = identifiability.information(problem, at, sigma)

@@ -17,7 +17,9 @@ from numpy.typing import NDArray
 from finback.rig import Rig, Sensor
 
 Array = NDArray[np.float64]
-Kind = Literal["offset", "shift", "swap", "air", "heat", "joint", "k", "h", "emissivity", "tip", "misfit"]
+Kind = Literal[
+    "offset", "shift", "swap", "air", "heat", "joint", "k", "h", "emissivity", "tip", "misfit", "scatter"
+]
 
 CODES: Mapping[Kind, str] = {
     "offset": "sensor-outlier",
@@ -31,6 +33,7 @@ CODES: Mapping[Kind, str] = {
     "emissivity": "low-convection",
     "tip": "misfit",
     "misfit": "misfit",
+    "scatter": "misfit",
 }
 """The finding that speaks of each kind: a fin that radiates less than it should is one that the air cools
 less, and one whose tip is not as drawn is one that no model of the rig fits."""
@@ -47,6 +50,7 @@ ODDS: Mapping[Kind, float] = {
     "emissivity": 0.04,
     "tip": 0.04,
     "misfit": 0.05,
+    "scatter": 0.12,
 }
 """Of each kind against nothing wrong at all, before the readings. The odds of a kind are shared out over the
 sensors that it may concern."""
@@ -60,6 +64,8 @@ LARGEST_SHIFT = 0.1  # of the fin's length: what a shift is at the median on a s
 AIR, AIR_FACTOR = 2.0, 1.8  # K; read where the fin's air is not, or in the sun of the fin
 HEAT, HEAT_FACTOR = 0.15, 1.7  # of the reading; leads, insulation, the back of the heater
 LOST = 0.9  # of wrong heats, those that read more than goes into the fin
+
+SCATTER, SCATTER_FACTOR = 3.0, 1.8  # times what is stated of a fin's thermometers, where that is too little
 
 CHANGES: Mapping[str, tuple[float, float]] = {
     "joint": (math.log(5.0), math.log(1.7)),

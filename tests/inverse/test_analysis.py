@@ -369,11 +369,14 @@ def test_a_thick_fin_is_flagged() -> None:
     assert "thick-fin" not in codes(dataset("bench-pin"))
 
 
-def test_a_wrong_reading_is_a_misfit() -> None:
+def test_a_wrong_reading_is_set_aside_and_a_misfit_where_it_counts_as_read() -> None:
     rig = pin_rig(conductivity=STATED_K, tip="convective")
     readings, _ = draw(rig, TRUTH, np.random.default_rng(1))
     wrong = Readings("r", {**readings.values, "T4": readings.values["T4"] + 3.0})
-    assert "misfit" in codes(finback.fit(rig, wrong, seed=1))
+    found = finback.fit(rig, wrong, seed=1)
+    assert {"sensor-outlier"} == codes(found) - {"assumed", "position-shift"}
+    assert [row.sensor for row in found.table if row.excluded] == ["T4"]
+    assert "misfit" in codes(finback.fit(rig, wrong, seed=1, as_read=True))
     aside = Readings("r", wrong.values, excluded={"T4": "reads 3 K too high"})
     estimate = finback.fit(rig, aside, seed=1)
     assert "misfit" not in codes(estimate)

@@ -207,7 +207,8 @@ def test_an_h_that_varies_is_a_misfit_and_widens_the_answer() -> None:
 def test_one_wrong_sensor_is_a_misfit_and_the_finding_thinks_of_it() -> None:
     rig = pin_rig(tip="convective", conductivity=STATED_K)
     exact = exact_readings(rig).values
-    estimate = finback.fit(rig, Readings("r", exact | {"T4": exact["T4"] + 6.0}), settings=QUICK)
+    wrong = Readings("r", exact | {"T4": exact["T4"] + 6.0})
+    estimate = finback.fit(rig, wrong, settings=QUICK, as_read=True)
     assert any("a sensor that is wrong" in f.message for f in estimate.findings if f.code == "misfit")
 
 
