@@ -459,6 +459,20 @@ def test_names_and_titles_are_escaped_and_harmless(tmp_path: Path) -> None:
     assert "\u202e" not in correlation.summary(correlate(path))
 
 
+def test_many_runs_are_drawn_without_bars_and_few_laws_in_range_without_lines(tmp_path: Path) -> None:
+    many = rows(400)
+    many[9] |= {"h_median": "400", "h_low95": "380", "h_high95": "420"}
+    out = tmp_path / "result"
+    path = write(tmp_path / "many.csv", many)
+    assert cli.run(["correlate", str(path), "--speed-uncertainty", "5 %", "--out", str(out), "--quiet"]) == 0
+    image = (out / "figures" / "correlation.png").read_bytes()
+    assert image.startswith(b"\x89PNG")
+    document = json.loads((out / "correlation.json").read_text(encoding="utf-8"))
+    assert [one["run"] for one in document["outliers"]] == ['run 9, "cold"']
+    assert document["published"]["compared"] == []
+    assert "no rig tells" in document["published"]["not_compared"]
+
+
 @pytest.mark.slow
 def test_a_million_runs_are_correlated_in_little_memory(tmp_path: Path) -> None:
     import subprocess
