@@ -51,7 +51,7 @@ def weigh(hypothesis: Hypothesis, seed: np.random.SeedSequence) -> Weighed:
 
 def log_density(hypothesis: Hypothesis) -> LogDensity:
     """Return ln p(readings, z) of a hypothesis, as a function of a block (n_sets, p) -> (n_sets,)."""
-    problem, freed = hypothesis.base.problem, list(hypothesis.freed)
+    problem, freed, bounded = hypothesis.base.problem, list(hypothesis.freed), hypothesis.bounded
     n = len(hypothesis.values)
     kept = [at for at in range(n) if at not in freed]
     spreads = np.sqrt(np.diag(hypothesis.error_spread))
@@ -63,7 +63,7 @@ def log_density(hypothesis: Hypothesis) -> LogDensity:
     left = covariance[np.ix_(freed, freed)] - covariance[np.ix_(freed, kept)] @ back
     constant = -float(np.log(np.diag(lower)).sum()) - 0.5 * len(kept) * LOG_TWO_PI
     means, sds = hypothesis.means, hypothesis.sds
-    sizes = [_near(*each) for each in zip(hypothesis.sizes, hypothesis.errors, spreads, strict=True)]
+    sizes = [near(*each) for each in zip(hypothesis.sizes, hypothesis.errors, spreads, strict=True)]
     constant -= float(np.log(sds).sum()) + 0.5 * len(sds) * LOG_TWO_PI
 
     def density(z: Array) -> Array:
@@ -71,7 +71,8 @@ def log_density(hypothesis: Hypothesis) -> LogDensity:
         residuals = hypothesis.values - predicted[:, :n]
         squares = np.square(residuals[:, kept] @ whiten.T).sum(axis=1)
         squares += np.square((z - means) / sds).sum(axis=1)
-        squares += np.square(problem.bound_residuals(predicted[:, n:])).sum(axis=1)
+        if bounded:
+            squares += np.square(problem.bound_residuals(predicted[:, n:])).sum(axis=1)
         found = constant - 0.5 * squares
         if freed:
             found = found + sizes_together(residuals[:, freed] - residuals[:, kept] @ back, left, sizes)
@@ -80,7 +81,7 @@ def log_density(hypothesis: Hypothesis) -> LogDensity:
     return density
 
 
-def _near(size: Size, error: float, spread: float) -> Size:
+def near(size: Size, error: float, spread: float) -> Size:
     """Return what of a size may matter to an error that is known to a spread: the rest costs time alone."""
     far = np.abs(size.means - error) > FAR * np.sqrt(np.square(size.sds) + spread**2)
     kept = ~far if not far.all() else np.ones_like(far)

@@ -36,8 +36,8 @@ from finback.suspects import ODDS, Suspect
 Array = NDArray[np.float64]
 Progress = Callable[[str, float], None]
 
-WORTH_DRAWS = 0.003  # probability from which a hypothesis is weighed by draws of its exact density
-MOST_DRAWN = 24  # hypotheses, the likeliest ones
+WORTH_DRAWS = 0.01  # probability from which a hypothesis is weighed by draws of its exact density
+MOST_DRAWN = 12  # hypotheses, the likeliest ones
 SHOWN = 0.02  # probability from which a cause is listed
 COSTED = 0.05  # and from which what it costs is shown
 OPEN = 0.15  # probability from which a cause is among those that cannot be told apart

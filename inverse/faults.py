@@ -209,7 +209,8 @@ def findings(suspicions: Sequence[Suspicion], done: Mapping[str, str]) -> list[F
     found = []
     for name, own in _of_sensors(suspicions).items():
         total = sum(each.probability for each in own)
-        if total > LIKELY:
+        limits = any(name == sensor.name for sensor in own[0].base.problem.measured.bounds)
+        if total > LIKELY and not limits:  # of an impossible heat the fit itself says how much it is
             found += _of_reading(name, own, total, done.get(name))
     for each in suspicions:
         if each.suspect.kind == "swap" and each.probability > LIKELY:
@@ -252,6 +253,8 @@ def in_words(each: Suspicion) -> str:
             f"The profile speaks of air at {profile:.1f} ± {each.sd:.1g} °C, and {name} reads "
             f"{abs(each.error):.2g} K {'more' if each.error > 0 else 'less'}"
         )
+    if any(name == sensor.name for sensor in each.base.problem.measured.bounds):
+        return f"More heat flows than {name} supplies: it is not all that heats the fin, or reads too little"
     more = "more" if each.error > 0 else "less"
     return f"{name} reads {format_number(abs(each.error))} ± {each.sd:.1g} W {more} than flows into the fin"
 

@@ -29,6 +29,8 @@ FREE = 300.0  # K, or times a heat: the error of a reading that is freed of its 
 LEAST_TOLD = 1e-4  # of what is known of such an error beforehand
 PAIRED = 8  # readings and swaps, the likeliest ones alone, of which two at a time are tried
 STRIDE = 4  # levels of an unknown noise from one that is tried first to the next
+FAINT = 16.0  # nats below the best, from which a row is not worked out
+SLIGHTEST = 0.05  # K, W: of an error's size, below which no reading tells it from none
 HOPELESS = 15.0  # nats below the best of those, from which no other level is tried
 LEVELS = np.exp(np.arange(math.log(0.01), math.log(10.0), 0.25))  # K: an unknown noise
 NODES = np.array([-2.0, -1.0, 0.0, 1.0, 2.0])  # sds of the logarithm of a misfit or a scatter
@@ -93,6 +95,12 @@ class Hypothesis:
     error_spread: Array
 
     @property
+    def bounded(self) -> bool:
+        """Whether heaters limit the heat, what they read being right."""
+        heaters = {sensor.name for sensor in self.base.problem.measured.bounds}
+        return not any(suspect.kind == "heat" and suspect.sensor in heaters for suspect in self.suspects)
+
+    @property
     def means(self) -> Array:
         """Means of the unknowns beforehand (p,)."""
         return beforehand(self.base.problem, self.state)[0]
@@ -112,7 +120,16 @@ class _Row:
     swap: Suspect | None = None
     misfit: int | None = None
     scatter: int | None = None
+    heater: Suspect | None = None
     level: int = 0
+
+
+@dataclass(frozen=True, slots=True)
+class _Weighed:
+    """The hypotheses of one row at its levels that are not hopeless; `height`, of the best or a bound."""
+
+    found: list[Hypothesis]
+    height: float
 
 
 def base(rig: Rig, readings: Readings, candidate: Candidate, tip: Suspect | None = None) -> Base:
@@ -162,6 +179,7 @@ def weigh(base: Base, states: Sequence[State]) -> list[Hypothesis]:
     """
     wrong = list(_of_readings(base))
     swaps = [each for each in wrong if each.kind == "swap"]
+    heaters = [Suspect("heat", ODDS["heat"], each.name) for each in base.problem.measured.bounds[:1]]
     own = {name: [s for s in wrong if s.kind != "swap" and s.sensor == name] for name in _names(base)}
     free = [(at,) for at, name in enumerate(_names(base)) if own[name]]
     rows: list[_Row] = []
@@ -172,14 +190,15 @@ def weigh(base: Base, states: Sequence[State]) -> list[Hypothesis]:
         rows += [_Row(state, freed) for freed in free]
         beside = swaps if not state.causes else [s for s in swaps if s.odds == swaps[0].odds]
         rows += [_Row(state, swap=swap) for swap in beside]
+        rows += [_Row(state, heater=each) for each in heaters]
         if base.smooth is not None:
             rows += [_Row(state, misfit=n) for n in range(len(NODES))]
         if base.scatter is not None:
             rows += [_Row(state, scatter=n) for n in range(len(NODES))]
     singles = _weigh_rows(base, rows, own)
-    heights = [max((each.log_weight for each in many), default=-np.inf) for many in singles]
-    pairs = _weigh_rows(base, _pairs(list(zip(rows, heights, strict=True)), states[0]), own)
-    return [each for many in singles + pairs for each in many]
+    ranked = [(row, each.height) for row, each in zip(rows, singles, strict=True)]
+    pairs = _weigh_rows(base, _pairs(ranked, states[0]), own)
+    return [each for many in singles + pairs for each in many.found]
 
 
 def _names(base: Base) -> list[str]:
@@ -210,22 +229,21 @@ def _pairs(found: Sequence[tuple[_Row, float]], healthy: State) -> list[_Row]:
         scattered = first.scatter is not None or second.scatter is not None
         if bent and scattered:
             continue
+        both = replace(both, heater=first.heater or second.heater)
         nodes = range(len(NODES)) if bent or scattered else (None,)
         rows += [replace(both, misfit=n if bent else None, scatter=n if scattered else None) for n in nodes]
     return rows
 
 
-def _weigh_rows(
-    base: Base, rows: Sequence[_Row], own: Mapping[str, Sequence[Suspect]]
-) -> list[list[Hypothesis]]:
+def _weigh_rows(base: Base, rows: Sequence[_Row], own: Mapping[str, Sequence[Suspect]]) -> list[_Weighed]:
     """Weigh rows at every level of the noise, but for those that a few levels have shown to be hopeless."""
     levels = np.arange(len(base.log_shares))
     coarse = levels[::STRIDE]
     found = _at_levels(base, rows, coarse, own)
     if len(coarse) == len(levels):
         return found
-    heights = [max((each.log_weight for each in many), default=-np.inf) for many in found]
-    kept = [n for n, height in enumerate(heights) if height > max(heights) - HOPELESS]
+    highest = max((each.height for each in found), default=0.0)
+    kept = [n for n, each in enumerate(found) if each.height > highest - HOPELESS]
     weighed = _at_levels(base, [rows[n] for n in kept], levels, own)
     for n, many in zip(kept, weighed, strict=True):
         found[n] = many
@@ -234,16 +252,43 @@ def _weigh_rows(
 
 def _at_levels(
     base: Base, rows: Sequence[_Row], levels: NDArray[np.intp], own: Mapping[str, Sequence[Suspect]]
-) -> list[list[Hypothesis]]:
+) -> list[_Weighed]:
     """Return the hypotheses of each row, at each of some levels of the noise."""
     every = [replace(row, level=int(level)) for row in rows for level in levels]
     if not every:
         return []
     posed = _pose(base, every)
     fitted = normals.fit(base.problem, posed, base.start)
+    bounds = _bounds(base, every, fitted, own)
     found: list[list[Hypothesis]] = [[] for _ in rows]
-    for number, row in enumerate(every):
-        found[number // len(levels)] += _hypotheses(base, row, posed, fitted, number, own)
+    best = -np.inf
+    for number in np.argsort(-bounds).tolist():
+        if bounds[number] < best - FAINT:
+            break
+        own_of_row = list(_hypotheses(base, every[number], posed, fitted, number, own))
+        found[number // len(levels)] += own_of_row
+        best = max(best, *(each.log_weight for each in own_of_row))
+    highest = bounds.reshape(len(rows), len(levels)).max(axis=1)
+    return [
+        _Weighed(many, max((each.log_weight for each in many), default=float(bound)))
+        for many, bound in zip(found, highest, strict=True)
+    ]
+
+
+def _bounds(base: Base, rows: Sequence[_Row], fitted: Normals, own: Mapping[str, Sequence[Suspect]]) -> Array:
+    """Return what the log weight of each row's hypotheses can be at the most (n_rows,)."""
+    names, free = _names(base), free_errors(base)
+    log_odds = {name: math.log(max((s.odds for s in kinds), default=1.0)) for name, kinds in own.items()}
+    narrowest = {
+        name: min((float(_in_kelvin(base, s, names.index(name)).sds.min()) for s in kinds), default=1.0)
+        for name, kinds in own.items()
+    }
+    found = fitted.log_evidence.copy()
+    for number, row in enumerate(rows):
+        found[number] += base.log_shares[row.level] + _log_prior(base, row)
+        for at in row.freed:  # a wide normal gives way to a size, which is nowhere denser than its narrowest
+            density = max(narrowest[names[at]], SLIGHTEST)
+            found[number] += log_odds[names[at]] + math.log(free[at] / density)
     return found
 
 
@@ -265,7 +310,8 @@ def _pose(base: Base, rows: Sequence[_Row]) -> Posed:
             covariances[number] += _times(row.scatter) ** 2 * base.scatter
         before.setdefault(id(row.state), beforehand(base.problem, row.state))
     means, sds = (np.array([before[id(row.state)][i] for row in rows]) for i in (0, 1))
-    return Posed(values, covariances, means, sds)
+    bounded = np.array([float(row.heater is None) for row in rows])
+    return Posed(values, covariances, means, sds, bounded)
 
 
 def _share(node: int) -> float:
@@ -288,6 +334,25 @@ def free_errors(base: Base) -> Array:
     )
 
 
+def _wrong(base: Base, row: _Row) -> tuple[Suspect, ...]:
+    """Return what is wrong by a row, but for the readings that it frees."""
+    found = [*row.state.causes]
+    found += [] if base.tip is None else [base.tip]
+    found += [] if row.swap is None else [row.swap]
+    found += [] if row.heater is None else [row.heater]
+    found += [] if row.misfit is None else [SMOOTH]
+    found += [] if row.scatter is None else [SCATTERED]
+    return tuple(found)
+
+
+def _log_prior(base: Base, row: _Row) -> float:
+    """Return the log probability beforehand of a row, but for its level and the readings that it frees."""
+    found = sum(math.log(suspect.odds) for suspect in _wrong(base, row))
+    for node in (row.misfit, row.scatter):
+        found += 0.0 if node is None else math.log(NODE_SHARES[node])
+    return found
+
+
 def _hypotheses(
     base: Base,
     row: _Row,
@@ -297,20 +362,9 @@ def _hypotheses(
     own: Mapping[str, Sequence[Suspect]],
 ) -> Iterator[Hypothesis]:
     """Yield the hypotheses of one row: each kind of error that its freed readings may have."""
-    log_prior = float(base.log_shares[row.level])
+    log_prior = float(base.log_shares[row.level]) + _log_prior(base, row)
     evidence = float(fitted.log_evidence[number])
-    wrong = row.state.causes
-    if base.tip is not None:
-        wrong = (*wrong, base.tip)
-    if row.swap is not None:
-        wrong = (*wrong, row.swap)
-    if row.misfit is not None:
-        wrong = (*wrong, SMOOTH)
-        log_prior += math.log(NODE_SHARES[row.misfit])
-    if row.scatter is not None:
-        wrong = (*wrong, SCATTERED)
-        log_prior += math.log(NODE_SHARES[row.scatter])
-    log_prior += sum(math.log(suspect.odds) for suspect in wrong)
+    wrong = _wrong(base, row)
     names = _names(base)
     mean, spread = fitted.modes[number], fitted.spreads[number]
     made = (base, row.state, posed.values[number], posed.covariances[number])
@@ -376,23 +430,19 @@ def _sized(told: Array, seen: Array, sizes: Sequence[Size]) -> tuple[float, Arra
     """
     shares, means, variances = _grid(sizes)
     away = told - means
-    if len(sizes) == 1:
-        gains = seen / (seen + variances[:, None])
-        dets = seen[0] + variances[:, 0]
-        squares = np.square(away[:, 0]) / dets
-    else:
-        both = np.linalg.inv(seen + variances[:, :, None] * np.eye(len(sizes)))
-        gains, dets = seen @ both, 1 / np.linalg.det(both)
-        squares = np.einsum("cm,cmk,ck->c", away, both, away)
-    logs = np.log(shares) - 0.5 * (squares + np.log(dets) + len(sizes) * LOG_TWO_PI)
+    both = np.linalg.inv(seen + variances[:, :, None] * np.eye(len(sizes)))
+    pulls = np.einsum("cmk,ck->cm", both, away)
+    logs = np.log(shares) + 0.5 * (np.log(np.linalg.det(both)) - (away * pulls).sum(axis=1))
+    logs -= 0.5 * len(sizes) * LOG_TWO_PI
     highest = float(logs.max())
     weights = np.exp(logs - highest)
     total = float(weights.sum())
     weights /= total
-    pulled = told - np.einsum("cmk,ck->cm", gains, away)
+    pulled = means + variances * pulls
     error = weights @ pulled
     apart = pulled - error
-    spread = np.einsum("c,cmn->mn", weights, seen - gains @ seen) + apart.T @ (weights[:, None] * apart)
+    left = variances[:, :, None] * (np.eye(len(sizes)) - both * variances[:, None, :])
+    spread = np.einsum("c,cmn->mn", weights, left) + apart.T @ (weights[:, None] * apart)
     return highest + math.log(total), error, spread
 
 

@@ -21,11 +21,11 @@ from finback.rig import Rig, Sensor
 Array = NDArray[np.float64]
 
 SAMPLES = 300  # readings drawn for each
-KEPT = 60  # hypotheses, the likeliest ones
+KEPT = 40  # hypotheses, the likeliest ones
 LEAST = 1e-4  # probability of one that is kept
 OPEN_LEVEL = 1e3  # K; of a temperature that nobody knows beforehand
 DIFFERENCE = 1e-4
-PLACES = 12  # along the fin, for another hole
+PLACES = 8  # along the fin, for another hole
 APART = 0.04  # of the length, that another hole keeps from those there are
 HIGHER = 1.6  # times the excess temperature of the plate, as a second level
 AVERAGED = 0.25  # noise of an air reading after a longer average

@@ -28,12 +28,17 @@ CREEPING = 1e-4  # nats gained by a step, below which a mode that lies far out i
 
 @dataclass(frozen=True, slots=True)
 class Posed:
-    """Hypotheses about a problem: `values` (H, n) [K, W], `covariances` (H, n, n), `means`, `sds` (H, p)."""
+    """Hypotheses about a problem.
+
+    `values` (H, n) [K, W], `covariances` (H, n, n), `means`, `sds` (H, p); `bounded` (H,): 1 where heaters
+    limit the heat, 0 where what they read is wrong.
+    """
 
     values: Array
     covariances: Array
     means: Array
     sds: Array
+    bounded: Array
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,7 +83,7 @@ def fit(problem: Problem, posed: Posed, start: Array) -> Normals:
     z = np.array(np.broadcast_to(start, posed.means.shape))
     widths = np.minimum(DIFFERENCE * posed.sds, LARGEST_DIFFERENCE)
     active = np.arange(len(z))
-    residuals, slopes, bounds, bound_slopes = _linearise(problem, posed.values, z, widths)
+    residuals, slopes, bounds, bound_slopes = _linearise(problem, posed.values, z, widths, posed.bounded)
     costs = _costs(residuals, bounds, precisions, z - posed.means, weights)
     for _ in range(MAX_STEPS):
         at = active
@@ -103,7 +108,7 @@ def fit(problem: Problem, posed: Posed, start: Array) -> Normals:
             break
         z[moved] = trials[better, best[better]]
         costs[moved] = lowest[better]
-        fresh = _linearise(problem, posed.values[moved], z[moved], widths[moved])
+        fresh = _linearise(problem, posed.values[moved], z[moved], widths[moved], posed.bounded[moved])
         residuals[moved], slopes[moved], bounds[moved], bound_slopes[moved] = fresh
         active = at[gains > CREEPING]
         if not len(active):
@@ -147,19 +152,21 @@ def _trial_costs(
     n = len(problem.measured.values)
     predicted = problem.predict(trials.reshape(-1, p)).reshape(count, tried, -1)
     residuals = posed.values[at, None] - predicted[..., :n]
-    bounds = problem.bound_residuals(predicted[..., n:])
+    bounds = problem.bound_residuals(predicted[..., n:]) * posed.bounded[at, None, None]
     away = trials - posed.means[at, None]
     return _costs(residuals, bounds, precisions[at, None], away, weights[at, None])
 
 
-def _linearise(problem: Problem, values: Array, z: Array, widths: Array) -> tuple[Array, Array, Array, Array]:
+def _linearise(
+    problem: Problem, values: Array, z: Array, widths: Array, bounded: Array
+) -> tuple[Array, Array, Array, Array]:
     """Return residuals (H, n) and slopes of the predictions (H, n, p), the same of heaters' bounds."""
     count, p = z.shape
     n = values.shape[1]
     unit = np.concatenate([np.zeros((1, p)), np.eye(p), -np.eye(p)])
     block = z[:, None] + unit * widths[:, None]
     predicted = problem.predict(block.reshape(-1, p)).reshape(count, 2 * p + 1, -1)
-    bounds = problem.bound_residuals(predicted[..., n:])
+    bounds = problem.bound_residuals(predicted[..., n:]) * bounded[:, None, None]
     both = np.concatenate([predicted[..., :n], bounds], axis=-1)
     slopes = (both[:, 1 : p + 1] - both[:, p + 1 :]).transpose(0, 2, 1) / (2 * widths[:, None])
     return values - both[:, 0, :n], slopes[:, :n], bounds[:, 0], slopes[:, n:]

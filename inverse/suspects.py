@@ -40,17 +40,17 @@ less, and one whose tip is not as drawn is one that no model of the rig fits."""
 
 ODDS: Mapping[Kind, float] = {
     "offset": 0.12,
-    "shift": 0.08,
-    "swap": 0.06,
+    "shift": 0.10,
+    "swap": 0.08,
     "air": 0.10,
-    "heat": 0.08,
-    "joint": 0.15,
-    "k": 0.08,
-    "h": 0.15,
+    "heat": 0.10,
+    "joint": 0.12,
+    "k": 0.10,
+    "h": 0.12,
     "emissivity": 0.04,
-    "tip": 0.04,
-    "misfit": 0.05,
-    "scatter": 0.12,
+    "tip": 0.03,
+    "misfit": 0.04,
+    "scatter": 0.08,
 }
 """Of each kind against nothing wrong at all, before the readings. The odds of a kind are shared out over the
 sensors that it may concern."""
@@ -58,11 +58,11 @@ sensors that it may concern."""
 NEIGHBOURS = 0.8
 """Of all swaps, those of two sensors that lie side by side."""
 
-OFFSET, OFFSET_FACTOR = 2.0, 2.2  # K; a probe of another type, a bad junction or reference
-SHIFT, SHIFT_FACTOR = 3e-3, 1.8  # m; a hole at the wrong mark
+OFFSET, OFFSET_FACTOR = 2.0, 2.0  # K; a probe of another type, a bad junction or reference
+SHIFT, SHIFT_FACTOR = 3e-3, 1.6  # m; a hole at the wrong mark
 LARGEST_SHIFT = 0.1  # of the fin's length: what a shift is at the median on a short fin
-AIR, AIR_FACTOR = 2.0, 1.8  # K; read where the fin's air is not, or in the sun of the fin
-HEAT, HEAT_FACTOR = 0.15, 1.7  # of the reading; leads, insulation, the back of the heater
+AIR, AIR_FACTOR = 2.0, 1.7  # K; read where the fin's air is not, or in the sun of the fin
+HEAT, HEAT_FACTOR = 0.15, 1.6  # of the reading; leads, insulation, the back of the heater
 LOST = 0.9  # of wrong heats, those that read more than goes into the fin
 
 SCATTER, SCATTER_FACTOR = 3.0, 1.8  # times what is stated of a fin's thermometers, where that is too little
@@ -70,7 +70,7 @@ SCATTER, SCATTER_FACTOR = 3.0, 1.8  # times what is stated of a fin's thermomete
 CHANGES: Mapping[str, tuple[float, float]] = {
     "joint": (math.log(5.0), math.log(1.7)),
     "k": (math.log(0.75), 0.10),
-    "h": (math.log(0.70), 0.15),
+    "h": (math.log(0.70), 0.12),
     "emissivity": (-1.5, 0.7),
 }
 """What a cause does to the coordinate of its parameter: by how much it moves, and the spread of that. A joint
