@@ -23,7 +23,7 @@ from finback.campaign_workers import Cluster, Dispatcher, Pool, Processes
 from finback.columns import Columns
 from finback.errors import ComputationError, InputError, StoppedError
 from finback.ledger import Ledger, Pending, PlannedRun
-from finback.readings import cell_of, is_run_name
+from finback.readings import is_run_name
 from finback.readings_stream import TableFile
 from finback.rig import Rig
 
@@ -58,17 +58,19 @@ class Source:
 
     def planned(self, number: int, seed: int) -> Iterator[PlannedRun]:
         """Yield the runs of the table, those that cannot be computed with the reason."""
-        columns, identity = self.table.columns, self.identity(seed)
+        columns, identity, width = self.table.columns, self.identity(seed), self.table.width
+        own = tuple(columns.extra.values())
         for count, row in enumerate(self.table.rows(), start=1):
-            name = str(count) if columns.run is None else cell_of(row, columns.run)
-            cells = tuple(cell_of(row, column.index) for column in columns.sensors)
-            extra = tuple(cell_of(row, at) for at in columns.extra.values())
+            whole = row[1] + ("",) * (width - len(row[1]))
+            name = str(count) if columns.run is None else whole[columns.run]
+            cells = tuple([whole[column.index] for column in columns.sensors])
+            extra = tuple([whole[at] for at in own])
             key = hashlib.blake2b(json.dumps([identity, name, cells]).encode(), digest_size=16).digest()
             refused = None
             if not is_run_name(name):
                 refused = "this run has no proper name; write one of 1 to 120 printable characters"
                 name = _made_harmless(name)
-            elif any(row[1][self.table.width :]):
+            elif any(whole[width:]):
                 refused = "its row has more cells than the header; write one cell a column"
             yield PlannedRun(number, row[0], name, key, cells, extra, refused)
 
@@ -251,8 +253,8 @@ def processes(workers: int) -> Pool:
     return Processes(workers)
 
 
-def cluster(address: str) -> Pool:
-    """Return the workers of a dask cluster, by the address of its scheduler.
+def cluster(address: str, patience: float = 10.0) -> Pool:
+    """Return the workers of a dask cluster, by the address of its scheduler and the seconds to wait for it.
 
     Raises InputError where dask is not installed or nobody answers.
     """
@@ -266,7 +268,7 @@ def cluster(address: str) -> Pool:
         raise InputError(None, "--scheduler", problem, remedy) from None
     try:
         client: Any = distributed.Client  # whose types are no strict ones
-        return Cluster(client(address, timeout=10, set_as_default=False))
+        return Cluster(client(address, timeout=patience, set_as_default=False))
     except (OSError, ValueError, TimeoutError) as error:
         problem = f"no scheduler answers at {address} ({' '.join(str(error).split())[:120]})"
         raise InputError(

@@ -29,6 +29,7 @@ STEADY = ("k", "joint")
 GRAVITY = {"note": 0, "caution": 1, "fault": 2}
 SPEED = re.compile(r"speed|velocity|flow|wind|\brpm\b|reynolds|\bfan\b", re.IGNORECASE)
 """What the name of a column may hold that h is looked at against."""
+_PLAIN = re.compile(r"[0-9.eE+\-\n]*")
 FEWEST = 10  # runs of which a drift is asked
 DRIFTS = 0.01  # p-value below which there is said to be one
 TENTH = 10  # the first and the last part of the runs that a drift is measured by
@@ -96,6 +97,7 @@ class Digest:
         default_factory=lambda: {name: (array("d"), array("d")) for name in ALWAYS}
     )
     speeds: "array[float]" = field(default_factory=lambda: array("d"))
+    _numeric: dict[int, list[tuple[int, str]]] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         named = (name for source in self.sources for name in source.extra if SPEED.search(name))
@@ -139,16 +141,28 @@ class Digest:
         return self.sensors.setdefault((source.rig.title, name), SensorRecord())
 
     def _note_own_columns(self, source: Source, entry: Entry) -> None:
-        speed = math.nan
-        for name, cell in zip(source.extra, entry.extra, strict=True):
-            if not cell or name in self.texts:
-                continue
-            number = to_number(cell, source.table.decimal_comma)
-            if number is None:
+        """Look whether the table's own columns hold numbers alone, and take the speed if there is one."""
+        if entry.source not in self._numeric:
+            known = enumerate(source.extra)
+            self._numeric[entry.source] = [(at, name) for at, name in known if name not in self.texts]
+        cells = "\n".join([entry.extra[at] for at, _ in self._numeric[entry.source]])
+        if not _all_numbers(cells.replace(",", ".") if source.table.decimal_comma else cells):
+            self._look_closer(source, entry)
+        speed = None
+        if self.speed_column in source.extra:
+            cell = entry.extra[source.extra.index(self.speed_column)]
+            speed = to_number(cell, source.table.decimal_comma)
+        self.speeds.append(math.nan if speed is None else speed)
+
+    def _look_closer(self, source: Source, entry: Entry) -> None:
+        kept = []
+        for at, name in self._numeric[entry.source]:
+            cell = entry.extra[at]
+            if cell and to_number(cell, source.table.decimal_comma) is None:
                 self.texts.add(name)
-            elif name == self.speed_column:
-                speed = number
-        self.speeds.append(speed)
+            else:
+                kept.append((at, name))
+        self._numeric[entry.source] = kept
 
     def _note_failure(self, source: Source, entry: Entry) -> None:
         reason = entry.refused or (entry.result or {}).get("reason", "it was not computed")
@@ -224,6 +238,18 @@ class Digest:
         gravities = np.nan_to_num(np.asarray(self.gravities), nan=-1.0)
         far = (self.departures() >= FAR) & (gravities >= 0)
         return int(((gravities >= GRAVITY["caution"]) | far).sum())
+
+
+def _all_numbers(lines: str) -> bool:
+    """Tell quickly whether every line is a number or empty; False where it takes a closer look."""
+    if not _PLAIN.fullmatch(lines):
+        return False
+    try:
+        for line in lines.split("\n"):
+            float(line or "0")
+    except ValueError:
+        return False
+    return True
 
 
 def _ranks(values: Array) -> Array:

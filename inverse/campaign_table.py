@@ -120,6 +120,7 @@ def _write_tables(
     from pyarrow import parquet
 
     schema = _schema(columns)
+    are_numbers = [name in columns.numeric for name in columns.extra]
     with ExitStack() as stack:
         text = stack.enter_context(csv_path.open("w", encoding="utf-8", newline=""))
         rows = csv.writer(text, lineterminator="\n")
@@ -128,8 +129,10 @@ def _write_tables(
         group: list[list[Any]] = []
         for entry in ledger.entries():
             row = _row(entry, sources[entry.source], columns)
-            rows.writerow(map(_text, row))
-            group.append(_typed(row, sources[entry.source], columns))
+            source = sources[entry.source]
+            own = _own(entry, source, columns)
+            rows.writerow([*map(_text, row), *own])
+            group.append([*row, *_typed(own, source.table.decimal_comma, are_numbers)])
             if len(group) == ROWS:
                 writer.write_table(_table(pa, group, schema))
                 group.clear()
@@ -166,7 +169,7 @@ def _schema(columns: Columns) -> Any:
 
 
 def _row(entry: Entry, source: Source, columns: Columns) -> list[Any]:
-    """Return one row: numbers, texts, None for what is not there; the tables' own cells as they stand."""
+    """Return one row without the table's own cells: numbers, texts, None for what is not there."""
     result = entry.result or {"status": "failed", "reason": entry.refused or PENDING}
     quantities: Mapping[str, list[float | None]] = result.get("quantities", {})
     nothing: list[float | None] = [None] * len(FIGURES)
@@ -182,19 +185,30 @@ def _row(entry: Entry, source: Source, columns: Columns) -> list[Any]:
         or None
     )
     row.append(source.rig.title)
-    own = dict(zip(source.extra, entry.extra, strict=True))
-    row += [own.get(name) or None for name in columns.extra]
     return row
 
 
-def _typed(row: Sequence[Any], source: Source, columns: Columns) -> list[Any]:
-    """Return a row as the parquet file has it: the tables' own numbers as numbers."""
-    start = len(row) - len(columns.extra)
-    own = [
-        to_number(cell, source.table.decimal_comma) if cell and name in columns.numeric else cell
-        for name, cell in zip(columns.extra, row[start:], strict=True)
+def _own(entry: Entry, source: Source, columns: Columns) -> Sequence[str]:
+    """Return the table's own cells, as they stand, in the order of all tables' own columns."""
+    if source.extra == columns.extra:
+        return entry.extra
+    cells = dict(zip(source.extra, entry.extra, strict=True))
+    return [cells.get(name, "") for name in columns.extra]
+
+
+def _typed(own: Sequence[str], decimal_comma: bool, are_numbers: Sequence[bool]) -> list[Any]:
+    """Return the tables' own cells as the parquet file has them: numbers as numbers, nothing for nothing."""
+    return [
+        (_number(cell, decimal_comma) if number else cell) if cell else None
+        for cell, number in zip(own, are_numbers, strict=True)
     ]
-    return [*row[:start], *own]
+
+
+def _number(cell: str, decimal_comma: bool) -> float | None:
+    try:
+        return float(cell)  # known to be a number: this is only the quicker way
+    except ValueError:
+        return to_number(cell, decimal_comma)
 
 
 def _text(value: Any) -> str:
@@ -234,6 +248,9 @@ def _written(folder: Path, names: Sequence[str]) -> Iterator[list[Path]]:
     """Yield temporary paths that are moved to these names when all are whole; a failure leaves nothing."""
     temporary: list[Path] = []
     try:
+        for name in names:
+            for left in folder.glob(f".{name}.*"):  # by a process that was killed while it wrote
+                left.unlink()
         for name in names:
             handle, made = tempfile.mkstemp(prefix=f".{name}.", dir=folder)
             os.close(handle)

@@ -14,8 +14,9 @@ import pytest
 from campaigns import KILLER, SENSORS, Doomed, Here, compute, deadly, dying_once, pretend, rows, text, write
 
 import finback
-from finback import campaign, campaign_table, cli
-from finback.errors import InputError, StoppedError
+from finback import campaign, campaign_block, campaign_table, cli
+from finback.campaign_block import Answer, Block
+from finback.errors import ComputationError, InputError, StoppedError
 from finback.ledger import Ledger
 
 RUNS = 12
@@ -267,6 +268,39 @@ def test_a_wrong_command_line_is_a_sentence(
     monkeypatch.chdir(tmp_path)
     assert cli.run(["batch", *given, "--out", "out"]) == 2
     assert sentence in capsys.readouterr().err
+
+
+def test_a_table_that_vanishes_is_a_sentence_and_its_return_goes_on(clean: bytes, tmp_path: Path) -> None:
+    paths, out = write(tmp_path, readings=text(rows(RUNS))), tmp_path / "out"
+    sources = campaign.read(paths)
+    paths[1].rename(tmp_path / "away.csv")
+    out.mkdir()
+    with pytest.raises(InputError, match=r"readings\.csv: there is no such file"):
+        campaign.run(sources, out, pool=Here())
+    (tmp_path / "away.csv").rename(paths[1])
+    assert compute(paths, out) == clean
+
+
+def test_a_table_that_vanishes_under_way_is_not_missed(clean: bytes, tmp_path: Path) -> None:
+    paths, out = write(tmp_path, readings=text(rows(RUNS))), tmp_path / "out"
+
+    def remove(block: Block) -> Answer:
+        paths[1].unlink(missing_ok=True)
+        return campaign_block.compute(block)
+
+    assert compute(paths, out, Here(remove), block=3) == clean
+
+
+def test_tables_that_cannot_be_written_leave_the_ledger(clean: bytes, tmp_path: Path) -> None:
+    paths, out = write(tmp_path, readings=text(rows(RUNS))), tmp_path / "out"
+    (out / "results.csv").mkdir(parents=True)
+    with pytest.raises(ComputationError, match="the tables cannot be written"):
+        compute(paths, out)
+    assert sorted(each.name for each in out.iterdir()) == ["ledger.sqlite", "results.csv"]
+    (out / "results.csv").rmdir()
+    pool = Here()
+    assert compute(paths, out, pool) == clean
+    assert pool.computed == 0
 
 
 def test_the_folder_of_another_campaign_is_left_alone(tmp_path: Path) -> None:
