@@ -6,7 +6,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from campaigns import RIG, TRUTH, draw
+from hilpert_campaigns import RIG, TRUTH, draw
 
 from finback.correlate import correlate
 from finback.quantity import Quantity
