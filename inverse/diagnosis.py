@@ -6,8 +6,9 @@ fin, each fault of the measurement and pairs of them are weighed against each ot
 what to measure next from what they predict (`next_measurements`).
 """
 
+import math
 import zlib
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -42,6 +43,7 @@ SHOWN = 0.02  # probability from which a cause is listed
 COSTED = 0.05  # and from which what it costs is shown
 OPEN = 0.15  # probability from which a cause is among those that cannot be told apart
 CLEAR = 0.8  # and from which nothing is left to tell
+UNSEEN_JOINT = Suspect("joint", ODDS["joint"])
 TIPS: tuple[TipName, ...] = ("adiabatic", "convective", "fixed")
 HEALTHY = "healthy"
 
@@ -51,7 +53,8 @@ class Cause:
     """One answer to why the fin does less than it should, or reads as if it did.
 
     `code` of its finding; `name` in words; `sensor` it concerns, if any; `probability` that it is so, alone
-    or with another; `message`; `heat_recovered` and `base_temperature_change`, what putting it right brings.
+    or with another; `message`; `heat_recovered` and `base_temperature_change`, what putting it right brings,
+    None where nothing tells.
     """
 
     code: str
@@ -59,8 +62,8 @@ class Cause:
     sensor: str | None
     probability: float
     message: str
-    heat_recovered: Interval
-    base_temperature_change: Interval
+    heat_recovered: Interval | None
+    base_temperature_change: Interval | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -156,6 +159,8 @@ def diagnose(
     weighed = _drawn(found, np.random.SeedSequence([seed, zlib.crc32(readings.run.encode())]))
     every = [one.hypothesis for one in weighed.values()]
     every += [each for each in found if id(each) not in weighed]
+    if not reads_plate:
+        every += list(_unseen(every))
     suspicions = faults.suspicions_of(every)
     progress("what it costs", 0.7)
     return _assemble(warm, readings, known, every, list(weighed.values()), suspicions, seed)
@@ -220,6 +225,19 @@ def _drawn(found: Sequence[Hypothesis], seed: np.random.SeedSequence) -> Mapping
     }
 
 
+def _unseen(found: Sequence[Hypothesis]) -> Iterator[Hypothesis]:
+    """Yield each hypothesis once more with a bad joint, which nothing reads: it stays as likely as it was."""
+    for each in found:
+        if len(each.suspects) < 2:
+            odds = math.log(UNSEEN_JOINT.odds)
+            yield replace(
+                each,
+                suspects=(*each.suspects, UNSEEN_JOINT),
+                log_weight=each.log_weight + odds,
+                log_prior=each.log_prior + odds,
+            )
+
+
 def _assemble(
     rig: Rig,
     readings: Readings,
@@ -274,6 +292,9 @@ def _with(suspicion: Suspicion, parts: Parts) -> list[tuple[float, Weighed, Effe
 def _cause(suspicion: Suspicion, known: Healthy, parts: Parts) -> Cause | None:
     """Return a cause with what putting it right brings, None where no hypothesis with it was drawn."""
     own = _with(suspicion, parts)
+    if suspicion.suspect is UNSEEN_JOINT:
+        message = "Nothing reads the plate, so the joint stays as likely to be bad as on any such rig."
+        return Cause("joint", NAMES["joint"], None, suspicion.probability, message, None, None)
     if not own:
         return None
     wanted = faults.key(suspicion.suspect)
@@ -377,13 +398,14 @@ def _together(every: Sequence[Hypothesis], shares: Array) -> list[Together]:
 
 def _cannot_tell(causes: Sequence[Cause]) -> list[str]:
     """Return a sentence where several causes remain that the readings do not tell apart."""
-    if causes[0].probability >= CLEAR:
-        return []
+    found = []
+    if any(cause.code == "joint" and cause.heat_recovered is None for cause in causes):
+        found.append("Nothing reads the plate, so a bad joint cannot be told from a healthy one.")
     rivals = [cause for cause in causes if cause.probability >= OPEN]
-    if len(rivals) < 2:
-        return []
-    named = " and ".join(f"{cause.name} ({cause.probability:.2f})" for cause in rivals)
-    return [f"These readings cannot tell apart: {named}."]
+    if causes[0].probability < CLEAR and len(rivals) > 1:
+        named = " and ".join(f"{cause.name} ({cause.probability:.2f})" for cause in rivals)
+        found.append(f"These readings cannot tell apart: {named}.")
+    return found
 
 
 def _plain(value: Any) -> Any:

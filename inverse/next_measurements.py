@@ -17,6 +17,7 @@ from finback.faults import key
 from finback.hypotheses import Hypothesis
 from finback.models import Solution, solve
 from finback.rig import Rig, Sensor
+from finback.suspects import CHANGES
 
 Array = NDArray[np.float64]
 
@@ -24,6 +25,8 @@ SAMPLES = 300  # readings drawn for each
 KEPT = 40  # hypotheses, the likeliest ones
 LEAST = 1e-4  # probability of one that is kept
 OPEN_LEVEL = 1e3  # K; of a temperature that nobody knows beforehand
+LEVEL = 1.0  # times the excess temperature, that a second level may differ from what is asked for
+USUAL_TEMPERATURE = 350.0  # K, at which a calibration in per cent or by class is taken
 DIFFERENCE = 1e-4
 PLACES = 8  # along the fin, for another hole
 APART = 0.04  # of the length, that another hole keeps from those there are
@@ -33,6 +36,8 @@ USUAL_NOISE = 0.2  # K, of a thermometer where the rig leaves noise out
 HEAT_NOISE = 0.03  # of a heat reading that is added
 USUAL_JOINT = 1e-4  # m² K/W, where the rig does not say what a healthy one has
 JOINT_SPREAD = math.log(2.0)
+PLATE = "plate thermocouple"
+NEARLY = 0.7  # of the best gain, from which what nothing reads at all comes first
 WORTH = 0.005  # bits from which a measurement is listed
 NARROWER = 0.97  # or the sd of h by which it is
 
@@ -88,6 +93,8 @@ def rank(rig: Rig, found: Sequence[Hypothesis], seed: np.random.SeedSequence) ->
         if gain > WORTH or ratio < NARROWER:
             listed.append(NextMeasurement(option.what, gain, _message(option.words, gain, ratio), ratio))
     listed.sort(key=lambda each: (-round(each.expected_gain, 3), each.h_sd_ratio))
+    best = listed[0].expected_gain if listed else 0.0
+    listed.sort(key=lambda each: each.what != PLATE or each.expected_gain < NEARLY * best)
     return tuple(_one_hole(listed))
 
 
@@ -169,9 +176,9 @@ def _options(rig: Rig, kept: Sequence[Hypothesis], weights: Array) -> Iterator[_
     problem = kept[0].base.problem
     read = {sensor.place for sensor in problem.measured.sensors} | set(problem.fixed)
     fin = [sensor for sensor in problem.measured.sensors if sensor.place == "fin"]
-    noise = _noise(fin[0])
+    noise = math.hypot(_noise(fin[0]), _calibration(fin[0]))
     if "plate" not in read:
-        yield _Option("plate thermocouple", "A thermocouple on the plate, beside the base", _plate(noise))
+        yield _Option(PLATE, "A thermocouple on the plate, beside the base", _plate(noise))
     if not any(map(rig.tells_heat, read)):
         yield _Option("heat flow", "The heat into the fin, to 3 %", _heat)
     for sensor in problem.measured.sensors:
@@ -203,6 +210,10 @@ def _options(rig: Rig, kept: Sequence[Hypothesis], weights: Array) -> Iterator[_
 
 def _noise(sensor: Sensor) -> float:
     return USUAL_NOISE if sensor.noise is None else max(sensor.noise, 1e-3)
+
+
+def _calibration(sensor: Sensor) -> float:
+    return sensor.calibration_at(USUAL_TEMPERATURE)
 
 
 def _suspected(
@@ -244,14 +255,18 @@ def _plate(noise: float) -> Callable[[Hypothesis], Predicted]:
     """Predict a plate that nobody read: as much hotter than the base as a joint makes it."""
 
     def predict(hypothesis: Hypothesis) -> Predicted:
+        bad = any(suspect.kind == "joint" for suspect in hypothesis.suspects)
+        shift, spread = CHANGES["joint"] if bad else (0.0, 0.0)
+        resistance = USUAL_JOINT * math.exp(shift)
+
         def plate(z: Array) -> Array:
             solution = _fin(hypothesis, _values(hypothesis, z), np.zeros(0))
             area = float(hypothesis.base.problem.rig.profile().area(np.zeros(1))[0])
-            drop = USUAL_JOINT * solution.base_heat / area
+            drop = resistance * solution.base_heat / area
             return np.stack([solution.base_temperature + drop, drop], axis=1)
 
         both, slopes = _with_slopes(hypothesis, plate)
-        own = noise**2 + (both[1] * JOINT_SPREAD) ** 2
+        own = noise**2 + (both[1] * math.hypot(JOINT_SPREAD, spread)) ** 2
         return Predicted(both[:1], slopes[:1], np.array([[own]]))
 
     return predict
@@ -292,7 +307,7 @@ def _hole(place: float, like: Sensor) -> Callable[[Hypothesis], Predicted]:
 
         mean, slopes = _with_slopes(hypothesis, temperature)
         slope = _gradients(hypothesis, x)[0]
-        own = _noise(like) ** 2 + (slope * like.position_sd) ** 2
+        own = _noise(like) ** 2 + _calibration(like) ** 2 + (slope * like.position_sd) ** 2
         return Predicted(mean, slopes, np.array([[own]]))
 
     return predict
@@ -357,8 +372,13 @@ def _second_level(hypothesis: Hypothesis) -> Predicted:
 
     mean, slopes = _with_slopes(hypothesis, temperatures)
     by_level = (temperatures(hypothesis.mean[None], HIGHER + 0.01) - mean)[0] / 0.01
-    noises = np.square([_noise(sensor) for sensor in sensors]) * (1 + probes + HIGHER**2 * holes)
-    return Predicted(mean, slopes, np.diag(noises) + np.outer(by_level, by_level))
+    own = np.square([_noise(sensor) for sensor in sensors]) * (1 + probes + HIGHER**2 * holes)
+    own[: len(fin)] += np.square(HIGHER * _gradients(hypothesis, x) * [s.position_sd for s in fin])
+    shared = np.array([_calibration(sensor) for sensor in sensors])
+    alike = np.array([[a.place == b.place for b in sensors] for a in sensors])
+    # the level itself is unknown: what only tells of it is as good as not read
+    whole = np.diag(own) + np.where(alike, np.outer(shared, shared), 0.0)
+    return Predicted(mean, slopes, whole + LEVEL**2 * np.outer(by_level, by_level))
 
 
 def _swap_test(first: Sensor, other: Sensor) -> Callable[[Hypothesis], Predicted]:

@@ -10,10 +10,10 @@ from finback.densities import Weighed
 from finback.faults import key
 from finback.hypotheses import Hypothesis
 from finback.models import solve
-from finback.parameters import ZERO_CELSIUS, Parameter
+from finback.parameters import ZERO_CELSIUS
 from finback.priors import Normal
 from finback.rig import TipName
-from finback.suspects import Suspect
+from finback.suspects import CHANGES, Suspect
 
 Array = NDArray[np.float64]
 
@@ -60,9 +60,9 @@ def effects(
     problem = hypothesis.base.problem
     values = dict(problem.values(z))
     right = {
-        name: np.asarray(_parameter(hypothesis, name).values(random.normal(prior.mean, prior.sd, len(z))))
+        name: _healthy_draws(hypothesis, name, prior, z, random)
         for name, prior in healthy.items()
-        if name in values and name in problem.names
+        if name in problem.names
     }
     own = problem.candidate.tip
     now = _solve(hypothesis, values, own)
@@ -104,9 +104,21 @@ def of_base(parts: Sequence[tuple[float, Array]], unit: str = "degC") -> Interva
     return pooled([(share, draws[1]) for share, draws in parts], unit, offset)
 
 
-def _parameter(hypothesis: Hypothesis, name: str) -> Parameter:
+def _healthy_draws(
+    hypothesis: Hypothesis, name: str, prior: Normal, z: Array, random: np.random.Generator
+) -> Array:
+    """Return draws (n,) of what a parameter would be without its cause, SI units.
+
+    The cause moved it by a shift and a spread: what it is now tells what it was before, as far as it lies
+    from where a typical healthy fin would have been moved to.
+    """
     problem = hypothesis.base.problem
-    return problem.parameters[problem.names.index(name)]
+    at = problem.names.index(name)
+    shift, spread = CHANGES[name]
+    told = prior.sd**2 / (prior.sd**2 + spread**2)
+    mean = prior.mean + told * (z[:, at] - prior.mean - shift)
+    drawn = random.normal(mean, spread * prior.sd / np.hypot(prior.sd, spread))
+    return problem.parameters[at].values(drawn)
 
 
 def _put_right(

@@ -48,9 +48,9 @@ ODDS: Mapping[Kind, float] = {
     "k": 0.10,
     "h": 0.12,
     "emissivity": 0.04,
-    "tip": 0.03,
-    "misfit": 0.04,
-    "scatter": 0.08,
+    "tip": 0.02,
+    "misfit": 0.02,
+    "scatter": 0.05,
 }
 """Of each kind against nothing wrong at all, before the readings. The odds of a kind are shared out over the
 sensors that it may concern."""

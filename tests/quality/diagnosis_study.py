@@ -1,9 +1,12 @@
 """Diagnose invented rigs, each healthy or with one fault, and print as JSON what was found and what could be.
 
-Run `python tests/quality/diagnosis_study.py 0 100` for the first hundred. Beside each diagnosis stands that
-of an ideal observer, who knows how the rigs are made: the size of every fault, how often each is met, and
-every uncertainty. Its evidence comes from code of its own: the textbook's pin with a convective tip behind a joint,
-and Laplace's method about the mode of each hypothesis. Nothing here is a measurement.
+Run `python tests/quality/diagnosis_study.py trial 0 100` for the first hundred. Beside each diagnosis stands
+that of an ideal observer, who knows how the rigs are made: the size of every fault, how often each is met,
+and every uncertainty. Its evidence comes from code of its own: the textbook's pin with a convective tip behind
+a joint, and Laplace's method about the mode of each hypothesis.
+
+`restored` in place of `trial` takes rigs with a cause in the fin alone, puts it right by hand, and compares
+the heat that this brings with what the diagnosis promised. Nothing here is a measurement.
 """
 
 import json
@@ -34,6 +37,8 @@ CODES = {
 }
 HEALTHY = 0.5  # of all rigs
 JOINT_TIMES, K_TIMES, H_TIMES, OFF, SHIFT, LOSS = 5.0, 0.75, 0.70, 2.0, 3e-3, 0.15
+CHANGES = {"h": (0, H_TIMES), "k": (1, K_TIMES), "joint": (2, JOINT_TIMES)}
+IN_THE_FIN = tuple(CHANGES)
 SPREADS = {"h": 0.05, "k": 0.03, "joint": 0.15}  # of a healthy fin, relative: it was measured when new
 LONGEST = np.array([1.0, 1.0, 1.0, 20.0, 20.0])  # step of a Newton iteration
 HEAT_NOISE, JOINT, K = 0.02, 5e-5, 167.0
@@ -113,9 +118,9 @@ def predict(bench: Bench, z: np.ndarray, holes: np.ndarray) -> np.ndarray:
     return np.concatenate([fin, plate, air, conductance * area * base], axis=1)
 
 
-def make(number: int) -> Case:
-    """Make one rig of the trial, healthy or with one fault."""
-    random = np.random.default_rng([20, number])
+def make(number: int, causes_alone: bool = False) -> Case:
+    """Make one rig of the trial, healthy or with one fault; with one in the fin where that is asked for."""
+    random = np.random.default_rng([20 + causes_alone, number])
     length, n = random.uniform(0.1, 0.15), int(random.integers(6, 11))
     steps = (np.arange(n) + 0.5) / n + random.uniform(-0.2, 0.2, n) / n
     bench = Bench(
@@ -128,13 +133,14 @@ def make(number: int) -> Case:
         h=round(float(random.uniform(20.0, 80.0)), 2),
     )
     kind = KINDS[0] if random.random() < HEALTHY else KINDS[int(random.integers(1, len(KINDS)))]
+    if causes_alone:
+        kind = IN_THE_FIN[int(random.integers(len(IN_THE_FIN)))]
     widths = [math.sqrt(math.log1p(SPREADS[name] ** 2)) for name in ("h", "k", "joint")]
     z = np.array([math.log(bench.h), math.log(K), math.log(JOINT), 0.0, 0.0])
     z[:3] += np.array(widths) * random.standard_normal(3)
     z[3:] = ZERO + random.uniform(70.0, 100.0), ZERO + random.uniform(18.0, 25.0)
-    change = {"h": (0, H_TIMES), "k": (1, K_TIMES), "joint": (2, JOINT_TIMES)}
-    if kind in change:
-        z[change[kind][0]] += math.log(change[kind][1])
+    if kind in CHANGES:
+        z[CHANGES[kind][0]] += math.log(CHANGES[kind][1])
     at, sign = int(random.integers(n)), random.choice([-1.0, 1.0])
     holes = bench.holes + bench.position * random.standard_normal(n)
     if kind == "shift":
@@ -261,5 +267,25 @@ def trial(number: int) -> dict[str, object]:
     }
 
 
+def restored(number: int) -> dict[str, object]:
+    """Put the cause of one rig right by hand: heat recovered, and the interval that was promised for it."""
+    case = make(number, causes_alone=True)
+    found = diagnosis.diagnose(case.bench.rig(), case.readings, seed=number)
+    before = case.truth
+    after = before.copy()
+    after[CHANGES[case.kind][0]] -= math.log(CHANGES[case.kind][1])
+    heats = predict(case.bench, np.array([before, after]), case.bench.holes)[:, -1]
+    cause = next((each for each in found.causes if each.code == CODES[case.kind]), None)
+    promised = None if cause is None else cause.heat_recovered
+    return {
+        "number": number,
+        "kind": case.kind,
+        "probability": 0.0 if cause is None else cause.probability,
+        "recovered": float(heats[1] - heats[0]),
+        "promised": None if promised is None else [promised.median, promised.low95, promised.high95],
+    }
+
+
 if __name__ == "__main__":
-    json.dump([trial(number) for number in range(int(sys.argv[1]), int(sys.argv[2]))], sys.stdout)
+    study = {"trial": trial, "restored": restored}[sys.argv[1]]
+    json.dump([study(number) for number in range(int(sys.argv[2]), int(sys.argv[3]))], sys.stdout)
