@@ -154,13 +154,15 @@ def summarise(
             label, unit = summaries.describe(name)
             found[name] = Summary(name, label, unit, None, None, None, None, None, None, None, "prior")
         return found
-    joint_judge = summaries.judge(outcomes[with_joint[0]], least_squares)
-    joint_mixture = summaries.mix(
-        [outcomes[i] for i in with_joint],
-        given_joint(outcomes, probabilities)[with_joint],
-        [evaluated[i] for i in with_joint],
-        mixture.which.shape[1],
-    )
+    joint_judge = best if with_joint[0] == 0 else summaries.judge(outcomes[with_joint[0]], least_squares)
+    joint_mixture = mixture
+    if len(with_joint) < len(outcomes):
+        joint_mixture = summaries.mix(
+            [outcomes[i] for i in with_joint],
+            given_joint(outcomes, probabilities)[with_joint],
+            [evaluated[i] for i in with_joint],
+            mixture.which.shape[1],
+        )
     absent = float(probabilities[with_joint].sum()) < 0.5
     for name in summaries.OF_THE_JOINT:
         found[name] = joint_judge.summarise(name, joint_mixture.values[name], absent)
