@@ -118,14 +118,17 @@ def _sniff(path: Path) -> tuple[str, str | None]:
                     del decoders[name]
                     continue
                 if _BINARY.search(text):
-                    decoders.clear()
+                    raise _no_text(path)
             chunk = following
     if workbook:
         return digest.hexdigest(), None
     if not decoders:
-        problem, remedy = "this is not a text file", "save the table as CSV in UTF-8, or as XLSX"
-        raise InputError(path, None, problem, remedy)
+        raise _no_text(path)
     return digest.hexdigest(), next(name for name in encodings if name in decoders)
+
+
+def _no_text(path: Path) -> InputError:
+    return InputError(path, None, "this is not a text file", "save the table as CSV in UTF-8, or as XLSX")
 
 
 def _rows(path: Path, encoding: str | None, names: set[str]) -> Iterator[Row]:

@@ -76,7 +76,7 @@ def test_fifty_kills_lose_nothing_and_repeat_nothing(folder: Path, seconds: floa
     random, before, counts = np.random.default_rng(6), {}, []
     for _ in range(KILLS):
         process = subprocess.Popen(command(folder, "killed", "--workers", "2", "--block", "3"))
-        time.sleep(random.uniform(0.0, seconds / 4))
+        time.sleep(random.uniform(0.0, seconds / 6))
         workers = children(process.pid)
         process.send_signal(signal.SIGKILL)
         process.wait()
