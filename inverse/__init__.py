@@ -15,6 +15,7 @@ __version__ = "0.1.0"
 
 if TYPE_CHECKING:
     from finback.analysis import fit
+    from finback.diagnosis import Diagnosis, diagnose
     from finback.errors import ComputationError, FinbackError, InputError
     from finback.estimate import Estimate
     from finback.findings import Finding
@@ -26,6 +27,7 @@ if TYPE_CHECKING:
 
 __all__ = [
     "ComputationError",
+    "Diagnosis",
     "Estimate",
     "FinbackError",
     "Finding",
@@ -35,6 +37,7 @@ __all__ = [
     "Rig",
     "Sensor",
     "__version__",
+    "diagnose",
     "fit",
     "read_readings",
     "read_rig",
@@ -42,6 +45,7 @@ __all__ = [
 
 _PLACES = {
     "ComputationError": ("finback.errors", "ComputationError"),
+    "Diagnosis": ("finback.diagnosis", "Diagnosis"),
     "Estimate": ("finback.estimate", "Estimate"),
     "FinbackError": ("finback.errors", "FinbackError"),
     "Finding": ("finback.findings", "Finding"),
@@ -50,6 +54,7 @@ _PLACES = {
     "Readings": ("finback.readings", "Readings"),
     "Rig": ("finback.rig", "Rig"),
     "Sensor": ("finback.rig", "Sensor"),
+    "diagnose": ("finback.diagnosis", "diagnose"),
     "fit": ("finback.analysis", "fit"),
     "read_readings": ("finback.readings", "read"),
     "read_rig": ("finback.rig", "read"),

@@ -1,4 +1,4 @@
-"""The command line: `fit`, `batch`, `check` and `demo`. The only module that prints.
+"""The command line: `fit`, `diagnose`, `batch`, `correlate`, `check` and `demo`. The only module that prints.
 
 Results go to standard output; errors and progress to standard error. Nothing heavy is imported at the top, so
 that `finback --help` answers at once. Exit status: 0 done, 1 the computation failed, 2 the input is wrong,
@@ -40,6 +40,9 @@ app = typer.Typer(
 
 RigFile = Annotated[Path, typer.Argument(metavar="RIG", help="The rig file, rig.toml.")]
 ReadingsFile = Annotated[Path, typer.Argument(metavar="READINGS", help="The readings, .csv or .xlsx.")]
+RunName = Annotated[
+    str | None, typer.Option("--run", metavar="NAME", help="The run, where there are several.")
+]
 Seed = Annotated[int, typer.Option("--seed", metavar="N", min=0, help="Seed of the random draws.")]
 Quiet = Annotated[bool, typer.Option("--quiet", help="Print nothing but errors.")]
 Force = Annotated[bool, typer.Option("--force", help="Overwrite an earlier result in the folder.")]
@@ -66,20 +69,43 @@ def fit(
     rig_file: RigFile,
     readings_file: ReadingsFile,
     out: Annotated[Path, typer.Option("--out", metavar="DIR", help="The folder to write the result to.")],
-    run: Annotated[
-        str | None, typer.Option("--run", metavar="NAME", help="The run, where there are several.")
-    ] = None,
+    run: RunName = None,
+    as_read: Annotated[
+        bool, typer.Option("--as-read", help="Take every reading as it stands, wrong ones too.")
+    ] = False,
     seed: Seed = 1,
     quiet: Quiet = False,
     force: Force = False,
 ) -> int:
     """Estimate h, k and the joint of one run and write the report."""
-    from finback import readings as readings_reader
-    from finback import rig as rig_reader
+    rig, readings = _read(rig_file, readings_file, run)
+    return _fit_into(out, rig, readings, seed=seed, quiet=quiet, force=force, as_read=as_read)
 
-    rig = rig_reader.read(rig_file)
-    readings = readings_reader.read(readings_file, rig).pick(run)
-    return _fit_into(out, rig, readings, seed=seed, quiet=quiet, force=force)
+
+@app.command()
+def diagnose(
+    rig_file: RigFile,
+    readings_file: ReadingsFile,
+    out: Annotated[Path, typer.Option("--out", metavar="DIR", help="The folder to write the result to.")],
+    run: RunName = None,
+    seed: Seed = 1,
+    quiet: Quiet = False,
+    force: Force = False,
+) -> int:
+    """Tell why a fin does less than it should, what that costs and what to measure next."""
+    from finback import diagnosis
+    from finback.report import diagnosis_files, diagnosis_terminal
+
+    rig, readings = _read(rig_file, readings_file, run)
+    diagnosis_files.prepare(out, force)
+    with _progress(quiet) as progress:
+        found = diagnosis.diagnose(rig, readings, seed=seed, progress=progress)
+        if progress is not None:
+            progress("writing the report", 1.0)
+        diagnosis_files.write(found, out, force)
+    if not quiet:
+        print(diagnosis_terminal.summary(found, out))
+    return 0
 
 
 @app.command()
@@ -230,8 +256,6 @@ def demo(
         known = ", ".join(datasets.names())
         raise InputError(None, "--rig", f"there is no bundled rig {quoted(name)}", f"choose one of {known}")
 
-    from finback import readings as readings_reader
-    from finback import rig as rig_reader
     from finback.report import files
 
     taken = [each for each in datasets.file_names(name) if (folder / each).exists()]
@@ -244,19 +268,35 @@ def demo(
         )
     files.prepare(folder, force)
     datasets.copy(name, folder)
-    rig = rig_reader.read(folder / "rig.toml")
-    readings = readings_reader.read(folder / "readings.csv", rig).pick(None)
+    rig, readings = _read(folder / "rig.toml", folder / "readings.csv", None)
     return _fit_into(folder, rig, readings, seed=seed, quiet=quiet, force=True)
 
 
-def _fit_into(folder: Path, rig: "Rig", readings: "Readings", *, seed: int, quiet: bool, force: bool) -> int:
+def _read(rig_file: Path, readings_file: Path, run: str | None) -> "tuple[Rig, Readings]":
+    """Return a rig and the readings of one run of it."""
+    from finback import readings, rig
+
+    found = rig.read(rig_file)
+    return found, readings.read(readings_file, found).pick(run)
+
+
+def _fit_into(
+    folder: Path,
+    rig: "Rig",
+    readings: "Readings",
+    *,
+    seed: int,
+    quiet: bool,
+    force: bool,
+    as_read: bool = False,
+) -> int:
     """Fit, write the result to the folder and print the summary; return the exit status."""
     from finback import analysis
     from finback.report import files, terminal
 
     files.prepare(folder, force)
     with _progress(quiet) as progress:
-        estimate = analysis.fit(rig, readings, seed=seed, progress=progress)
+        estimate = analysis.fit(rig, readings, seed=seed, progress=progress, as_read=as_read)
         if progress is not None:
             progress("writing the report", 1.0)
         files.write(estimate, folder, force)

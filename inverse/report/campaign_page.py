@@ -1,7 +1,5 @@
 """The page of a campaign: one self-contained HTML file, its pictures inside it, no script."""
 
-import base64
-
 from finback.campaign import Campaign
 from finback.campaign_digest import Digest
 from finback.ledger import Ledger
@@ -22,10 +20,7 @@ def render(campaign: Campaign, digest: Digest, ledger: Ledger) -> str:
     seen = campaign_view.build(campaign, digest, ledger)
     told = {trend.name: trend.verdict for trend in seen.trends} | {"speed": seen.speed}
     embedded = {
-        picture.name: html.Embedded(
-            f"data:image/svg+xml;base64,{base64.b64encode(picture.svg).decode('ascii')}",
-            ALT[picture.name].format(**told).strip(),
-        )
+        picture.name: html.embed(picture, ALT[picture.name].format(**told).strip())
         for picture in campaign_figures.draw(digest)
     }
     template = html.environment().get_template("campaign.html.j2")

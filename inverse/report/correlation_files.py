@@ -1,14 +1,12 @@
 """Files of a correlation: correlation.json, correlation.html, correlation_runs.csv and the picture."""
 
-import json
-from collections.abc import Callable
 from functools import partial
 from pathlib import Path
 
 import numpy as np
 
 from finback.correlate import ABSCISSAE, ORDINATES, Correlation
-from finback.report.files import FIGURES, put, unwritable
+from finback.report.files import FIGURES, Filler, of_json, of_pictures, of_text, put, unwritable
 from finback.report.files import prepare as prepare_files
 
 RESULT, PAGE, RUNS = "correlation.json", "correlation.html", "correlation_runs.csv"
@@ -33,13 +31,11 @@ def write(found: Correlation, folder: Path, force: bool = False) -> Path:
     prepare(folder, force)
     drawn = correlation_figure.draw(found)
     page = correlation_page.render(found, drawn)
-    text = json.dumps(found.to_dict(), allow_nan=False, ensure_ascii=False, indent=2) + "\n"
-    fillers: dict[str, Callable[[Path], object]] = {
-        PICTURES[0]: partial(Path.write_bytes, data=drawn.png),
-        PICTURES[1]: partial(Path.write_bytes, data=drawn.svg),
+    fillers: dict[str, Filler] = {
+        **of_pictures([drawn]),
         RUNS: partial(_write_runs, found=found),
-        PAGE: lambda place: place.write_text(page, encoding="utf-8", newline="\n"),
-        RESULT: lambda place: place.write_text(text, encoding="utf-8", newline="\n"),
+        PAGE: of_text(page),
+        RESULT: of_json(found.to_dict()),
     }
     try:
         put(folder, fillers)

@@ -11,9 +11,16 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
+from typing import TYPE_CHECKING, Any
 
 from finback.errors import InputError
 from finback.estimate import Estimate
+
+if TYPE_CHECKING:
+    from finback.report.figures import Picture
+
+Filler = Callable[[Path], object]
+"""What writes one file of a result."""
 
 ESTIMATE, REPORT, POSTERIOR, FIGURES = "estimate.json", "report.html", "posterior.nc", "figures"
 FIGURE_STEMS = ("drawing", "profile", "candidates", "pairs", "budget")
@@ -74,17 +81,12 @@ def write(estimate: Estimate, folder: Path, force: bool = False) -> Written:
     prepare(folder, force)
     pictures = figures.draw(estimate)
     page = html.render(estimate, pictures)
-    text = json.dumps(estimate.to_dict(), allow_nan=False, ensure_ascii=False, indent=2) + "\n"
-    draws = estimate.to_tree()
-
-    drawn = {
-        f"{FIGURES}/{p.name}{end}": data for p in pictures for end, data in ((".png", p.png), (".svg", p.svg))
-    }
-    fillers: dict[str, Callable[[Path], object]] = {
-        **{name: partial(Path.write_bytes, data=data) for name, data in drawn.items()},
+    drawn, draws = of_pictures(pictures), estimate.to_tree()
+    fillers: dict[str, Filler] = {
+        **drawn,
         POSTERIOR: lambda place: draws.to_netcdf(str(place), engine="h5netcdf"),
-        REPORT: lambda place: place.write_text(page, encoding="utf-8", newline="\n"),
-        ESTIMATE: lambda place: place.write_text(text, encoding="utf-8", newline="\n"),
+        REPORT: of_text(page),
+        ESTIMATE: of_json(estimate.to_dict()),
     }
     try:
         put(folder, fillers)
@@ -98,7 +100,26 @@ def write(estimate: Estimate, folder: Path, force: bool = False) -> Written:
     )
 
 
-def put(folder: Path, fillers: Mapping[str, Callable[[Path], object]]) -> None:
+def of_pictures(pictures: "Sequence[Picture]") -> dict[str, Filler]:
+    """Return what writes figures as PNG and SVG, by file name."""
+    return {
+        f"{FIGURES}/{picture.name}{suffix}": partial(Path.write_bytes, data=data)
+        for picture in pictures
+        for suffix, data in ((".png", picture.png), (".svg", picture.svg))
+    }
+
+
+def of_text(text: str) -> Filler:
+    """Return what writes a text."""
+    return partial(Path.write_text, data=text, encoding="utf-8", newline="\n")
+
+
+def of_json(contents: Mapping[str, Any]) -> Filler:
+    """Return what writes contents as JSON, which has no NaN."""
+    return of_text(json.dumps(contents, allow_nan=False, ensure_ascii=False, indent=2) + "\n")
+
+
+def put(folder: Path, fillers: Mapping[str, Filler]) -> None:
     """Fill a temporary file beside each place, then move all there; a failure leaves nothing behind."""
     filled: dict[Path, Path] = {}
     try:

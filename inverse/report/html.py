@@ -47,10 +47,15 @@ def render(estimate: Estimate, pictures: "Sequence[Picture]") -> str:
 
 
 def _embed(picture: "Picture", seen: view.View) -> Embedded:
-    data = base64.b64encode(picture.svg).decode("ascii")
     alt = ALT[picture.name].format(
         title=seen.title, run=seen.run, verdict=seen.verdict, shared=seen.improvement
     )
+    return embed(picture, alt)
+
+
+def embed(picture: "Picture", alt: str) -> Embedded:
+    """Return a figure for a page, as SVG, with the text for who cannot see it."""
+    data = base64.b64encode(picture.svg).decode("ascii")
     return Embedded(f"data:image/svg+xml;base64,{data}", alt)
 
 
