@@ -171,7 +171,7 @@ def _expected(rig: Rig, readings: Readings, reads_plate: bool) -> Healthy:
     try:
         return healthy.expect(rig, readings, reads_plate)
     except ValueError as error:
-        around = replace(rig.surroundings, speed=None, driven=None)
+        around = replace(rig.surroundings, speed=None, correlation=None)
         known = healthy.expect(replace(rig, surroundings=around), readings, reads_plate)
         message = f"What a healthy fin would show cannot be worked out: {error}."
         finding = Finding("out-of-range", "note", message, evidence={"key": "expected"})

@@ -86,7 +86,8 @@ def search(rig: Rig, readings: Readings, *, aside: bool = True) -> Search:
     bases = [hypotheses.base(rig, readings, problem.candidate) for problem in problems]
     found = [each for base in bases for each in hypotheses.weigh(base, [State()])]
     suspicions = tuple(suspicions_of(found))
-    clean, changed = readings, {}
+    clean: Readings = readings
+    changed: Mapping[str, str] = {}
     if aside and "heavy-tailed" not in rig.noise:
         clean, changed = _without(rig, readings, suspicions)
         scattered = [each for each in suspicions if each.suspect.kind == "scatter"]

@@ -90,9 +90,11 @@ def expect(rig: Rig, readings: Readings, reads_plate: bool) -> Healthy:
         spread = math.sqrt(math.expm1(priors["k"].sd ** 2)) * rig.conductivity.value
         rig = replace(rig, conductivity=replace(rig.conductivity, sd=spread))
     if rig.emissivity is not None:
-        if rig.emissivity.sd == 0:
-            rig = replace(rig, emissivity=replace(rig.emissivity, sd=UNSTATED_EMISSIVITY))
-        priors["emissivity"] = within(rig.emissivity.value, rig.emissivity.sd, *BOUNDS["emissivity"])
+        emissivity = rig.emissivity
+        if emissivity.sd == 0:
+            emissivity = replace(emissivity, sd=UNSTATED_EMISSIVITY)
+        priors["emissivity"] = within(emissivity.value, emissivity.sd, *BOUNDS["emissivity"])
+        rig = replace(rig, emissivity=emissivity)
     if rig.expected_joint is not None and reads_plate:
         state("joint", rig.expected_joint.value, rig.expected_joint.sd)
     wanted = ("h", "k", "joint") if reads_plate else ("h", "k")

@@ -304,9 +304,9 @@ def _pose(base: Base, rows: Sequence[_Row]) -> Posed:
             values[number, pair] = values[number, pair[::-1]]
         for at in row.freed:
             covariances[number, at, at] += free[at] ** 2
-        if row.misfit is not None:
+        if row.misfit is not None and base.smooth is not None:
             covariances[number] += _share(row.misfit) ** 2 * base.smooth
-        if row.scatter is not None:
+        if row.scatter is not None and base.scatter is not None:
             covariances[number] += _times(row.scatter) ** 2 * base.scatter
         before.setdefault(id(row.state), beforehand(base.problem, row.state))
     means, sds = (np.array([before[id(row.state)][i] for row in rows]) for i in (0, 1))
@@ -316,11 +316,11 @@ def _pose(base: Base, rows: Sequence[_Row]) -> Posed:
 
 def _share(node: int) -> float:
     prior = parameters.DEFAULT_PRIORS["misfit"][1]
-    return math.exp(prior.mean + NODES[node] * prior.sd)
+    return math.exp(prior.mean + float(NODES[node]) * prior.sd)
 
 
 def _times(node: int) -> float:
-    return suspects.SCATTER * suspects.SCATTER_FACTOR ** float(NODES[node])
+    return float(suspects.SCATTER * suspects.SCATTER_FACTOR ** float(NODES[node]))
 
 
 def free_errors(base: Base) -> Array:
@@ -367,10 +367,23 @@ def _hypotheses(
     wrong = _wrong(base, row)
     names = _names(base)
     mean, spread = fitted.modes[number], fitted.spreads[number]
-    made = (base, row.state, posed.values[number], posed.covariances[number])
+    values, whole = posed.values[number], posed.covariances[number]
     if not row.freed:
-        weights = (log_prior + evidence, log_prior)
-        yield Hypothesis(wrong, *weights, *made, (), (), mean, spread, np.zeros(0), np.zeros((0, 0)))
+        yield Hypothesis(
+            suspects=wrong,
+            log_weight=log_prior + evidence,
+            log_prior=log_prior,
+            base=base,
+            state=row.state,
+            values=values,
+            covariance=whole,
+            freed=(),
+            sizes=(),
+            mean=mean,
+            spread=spread,
+            errors=np.zeros(0),
+            error_spread=np.zeros((0, 0)),
+        )
         return
     freed, sd = list(row.freed), free_errors(base)[list(row.freed)]
     errors, covariance, with_unknowns = fitted.freed(number, freed, sd)
@@ -383,16 +396,19 @@ def _hypotheses(
         log_kinds = log_prior + sum(math.log(suspect.odds) for suspect in kinds)
         gain = with_unknowns @ np.linalg.inv(covariance)
         yield Hypothesis(
-            (*wrong, *kinds),
-            log_kinds + evidence + log_size,
-            log_kinds,
-            *made,
-            row.freed,
-            sizes,
-            mean + gain @ (error - errors),
-            spread + gain @ (error_spread - covariance) @ gain.T,
-            error,
-            error_spread,
+            suspects=(*wrong, *kinds),
+            log_weight=log_kinds + evidence + log_size,
+            log_prior=log_kinds,
+            base=base,
+            state=row.state,
+            values=values,
+            covariance=whole,
+            freed=row.freed,
+            sizes=sizes,
+            mean=mean + gain @ (error - errors),
+            spread=spread + gain @ (error_spread - covariance) @ gain.T,
+            errors=error,
+            error_spread=error_spread,
         )
 
 

@@ -22,6 +22,7 @@ from finback.suspects import CHANGES
 Array = NDArray[np.float64]
 
 SAMPLES = 300  # readings drawn for each
+FEWEST = 4  # of one hypothesis
 KEPT = 40  # hypotheses, the likeliest ones
 LEAST = 1e-4  # probability of one that is kept
 OPEN_LEVEL = 1e3  # K; of a temperature that nobody knows beforehand
@@ -150,7 +151,8 @@ def _gain(
 
 def _counts(weights: Array) -> NDArray[np.intp]:
     """Return how many readings are drawn of each hypothesis: of the unlikely ones a few as well."""
-    return np.maximum(np.round(SAMPLES * np.sqrt(weights) / np.sqrt(weights).sum()), 4).astype(int)
+    counts = np.maximum(np.round(SAMPLES * np.sqrt(weights) / np.sqrt(weights).sum()), FEWEST)
+    return np.asarray(counts, dtype=np.intp)
 
 
 def _entropy(shares: Array) -> Array:

@@ -78,7 +78,7 @@ def fit(problem: Problem, posed: Posed, start: Array) -> Normals:
     Arguments: problem, of p unknowns and n readings; posed; start (H, p) or (p,).
     """
     n = len(problem.measured.values)
-    precisions = np.linalg.inv(posed.covariances)
+    precisions: Array = np.asarray(np.linalg.inv(posed.covariances), dtype=np.float64)
     weights = 1 / np.square(posed.sds)
     z = np.array(np.broadcast_to(start, posed.means.shape))
     widths = np.minimum(DIFFERENCE * posed.sds, LARGEST_DIFFERENCE)
@@ -114,7 +114,7 @@ def fit(problem: Problem, posed: Posed, start: Array) -> Normals:
         if not len(active):
             break
     curvature = _curvature(slopes, bound_slopes, precisions, weights)
-    spreads = np.linalg.inv(curvature)
+    spreads: Array = np.asarray(np.linalg.inv(curvature), dtype=np.float64)
     log_dets = (
         np.linalg.slogdet(posed.covariances)[1]
         + np.linalg.slogdet(curvature)[1]
