@@ -16,7 +16,18 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import candidates, checks, densities, expectation, faults, healthy, hypotheses, posing, restoring
+from finback import (
+    candidates,
+    checks,
+    densities,
+    expectation,
+    faults,
+    healthy,
+    hypotheses,
+    optimum,
+    posing,
+    restoring,
+)
 from finback import next_measurements as planning
 from finback import readings as readings_file
 from finback import rig as rig_file
@@ -186,7 +197,7 @@ def _bases(known: Healthy, readings: Readings) -> list[Base]:
         chosen = [each for each in chosen if each.joint]
     problems = candidates.affordable([posing.pose(rig, readings, each) for each in chosen])
     drawn = [problem.candidate for problem in problems]
-    found = [hypotheses.base(rig, readings, each) for each in drawn]
+    found = [hypotheses.base(optimum.fit(problem)) for problem in problems]
     if rig.tip in TIPS and rig.has_tip_face:
         others = [tip for tip in TIPS if tip != rig.tip]
         for tip in others:
@@ -204,7 +215,7 @@ def _with_tip(rig: Rig, readings: Readings, drawn: Candidate, tip: TipName, susp
     problems = [posing.pose(rig, readings, drawn), posing.pose(open_rig, readings, other)]
     if len(candidates.affordable(problems)) < len(problems):
         return None
-    return hypotheses.base(open_rig, readings, other, suspect)
+    return hypotheses.base(optimum.fit(problems[1]), suspect)
 
 
 def _states(known: Healthy, base: Base) -> list[hypotheses.State]:

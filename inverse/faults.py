@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import candidates, checks, hypotheses, posing
+from finback import candidates, checks, hypotheses, optimum, posing
 from finback.errors import InputError
 from finback.findings import Finding, Severity
 from finback.hypotheses import Base, Hypothesis, State
@@ -79,12 +79,15 @@ def search(rig: Rig, readings: Readings, *, aside: bool = True) -> Search:
 
     Arguments: rig; readings, checked against it; aside, whether any are to be set aside. What is set aside
     keeps its reason. Nothing is where too few readings would be left, or where the rig asks for noise with
-    heavy tails, which makes little of a wrong reading by itself.
+    heavy tails, which makes little of a wrong reading by itself. Where the best fit gives no cause for
+    suspicion nothing is weighed.
     """
     chosen = candidates.enumerate_candidates(replace(rig, noise=("normal",)), readings)
     problems = candidates.affordable([posing.pose(rig, readings, each) for each in chosen])
-    bases = [hypotheses.base(rig, readings, problem.candidate) for problem in problems]
-    found = [each for base in bases for each in hypotheses.weigh(base, [State()])]
+    points = [optimum.fit(problem) for problem in problems]
+    if not is_suspicious(min(points, key=_deviance)):
+        return Search((), rig, readings, ())
+    found = [each for point in points for each in hypotheses.weigh(hypotheses.base(point), [State()])]
     suspicions = tuple(suspicions_of(found))
     clean: Readings = readings
     changed: Mapping[str, str] = {}
@@ -105,6 +108,14 @@ def _noise_unstated(rig: Rig) -> Rig:
             name: replace(sensor, noise=None, noise_relative=None) if sensor.place == "fin" else sensor
             for name, sensor in rig.sensors.items()
         },
+    )
+
+
+def _deviance(point: LeastSquares) -> float:
+    """Return how badly a fit does, as BIC counts it: up to a constant, and its unknowns against it."""
+    problem = point.problem
+    return problem.n_physical * math.log(len(problem.measured.values)) - 2 * float(
+        problem.log_likelihood(point.z[None])[0]
     )
 
 

@@ -14,13 +14,12 @@ from itertools import combinations
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import misfit, normals, optimum, parameters, posing, suspects
+from finback import misfit, normals, parameters, posing, suspects
 from finback import noise as noises
 from finback.normals import Normals, Posed
+from finback.optimum import LeastSquares
 from finback.priors import Normal
-from finback.problem import LOG_TWO_PI, Candidate, Problem
-from finback.readings import Readings
-from finback.rig import Rig
+from finback.problem import LOG_TWO_PI, Problem
 from finback.suspects import ODDS, Size, Suspect
 
 Array = NDArray[np.float64]
@@ -132,9 +131,8 @@ class _Weighed:
     height: float
 
 
-def base(rig: Rig, readings: Readings, candidate: Candidate, tip: Suspect | None = None) -> Base:
-    """Return a candidate to weigh hypotheses about, its noise linearised at the least-squares fit."""
-    point = optimum.fit(posing.pose(rig, readings, candidate))
+def base(point: LeastSquares, tip: Suspect | None = None) -> Base:
+    """Return a candidate to weigh hypotheses about, from its least-squares fit."""
     problem, z = point.problem, point.z
     n = len(problem.measured.values)
     if problem.noise.estimated:

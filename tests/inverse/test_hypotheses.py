@@ -8,7 +8,7 @@ from rigs import Truth, draw, pin_rig
 from scipy.integrate import quad
 from scipy.stats import multivariate_normal, norm
 
-from finback import densities, hypotheses, normals
+from finback import densities, hypotheses, normals, optimum, posing
 from finback.hypotheses import Base, Hypothesis, State
 from finback.normals import Posed
 from finback.problem import Candidate
@@ -27,7 +27,7 @@ def read(seed: int = 1, **changes: float) -> Readings:
 
 
 def weighed(readings: Readings) -> tuple[Base, list[Hypothesis]]:
-    base = hypotheses.base(RIG, readings, JOINT)
+    base = hypotheses.base(optimum.fit(posing.pose(RIG, readings, JOINT)))
     return base, sorted(hypotheses.weigh(base, [State()]), key=lambda each: -each.log_weight)
 
 
@@ -130,7 +130,8 @@ def test_a_reading_that_no_other_tells_of_stays_finite() -> None:
     # without a plate sensor and with h unknown nothing but the air thermometer says how warm the air is
     rig = replace(pin_rig(places=("air",), holes=(0.005, 0.06)), tip="convective")
     readings, _ = draw(rig, Truth(joint=None), np.random.default_rng(1))
-    base = hypotheses.base(rig, readings, Candidate("convective", False, False))
+    posed = posing.pose(rig, readings, Candidate("convective", False, False))
+    base = hypotheses.base(optimum.fit(posed))
     found = hypotheses.weigh(base, [State()])
     assert all(np.isfinite(each.log_weight) for each in found)
     assert all((np.linalg.eigvalsh(each.error_spread) > 0).all() for each in found if each.freed)
