@@ -141,7 +141,9 @@ def _part(reference: Array, factor: Array, estimated: bool) -> Noise:
         return Noise(inverse.T, np.ones(n), np.zeros(n), log_det, False)
     marked = inverse @ factor
     slope, vectors = np.linalg.eigh(marked @ marked.T)
-    slope = np.clip(np.round(slope * REFERENCE_SIGMA**2, ALIKE) / REFERENCE_SIGMA**2, 0.0, REFERENCE_SIGMA**-2)
+    slope = np.clip(
+        np.round(slope * REFERENCE_SIGMA**2, ALIKE) / REFERENCE_SIGMA**2, 0.0, REFERENCE_SIGMA**-2
+    )
     floor = np.clip(1 - REFERENCE_SIGMA**2 * slope, 0.0, None)
     floor[floor < 1e-12] = 0.0
     return Noise(inverse.T @ vectors, floor, slope, log_det, True)

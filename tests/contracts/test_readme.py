@@ -13,7 +13,13 @@ from finback import readings as readings_reader
 from finback.findings import Finding
 
 OPTION = re.compile(r"(?<![\w-])--[a-z][a-z-]*")
-FOREIGN = {"--check", "--no-deps", "--port", "--nworkers", "--nthreads"}  # options of other programs, should the README ever show one
+FOREIGN = {
+    "--check",
+    "--no-deps",
+    "--port",
+    "--nworkers",
+    "--nthreads",
+}  # options of other programs, should the README ever show one
 CAUTIONS = ("hot", "mains", "fans", "pressure", "local codes", "licensed practice", "no certificate")
 
 
