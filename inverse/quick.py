@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from finback import candidates, checks, conclusions, expectation, fast, pareto, summaries
+from finback import candidates, checks, conclusions, expectation, fast, faults, pareto, summaries
 from finback.estimate import CandidateScore, ReadingFit, SamplerRecord, Summary
 from finback.findings import Finding
 from finback.readings import Readings
@@ -57,6 +57,13 @@ def estimate(rig: Rig, readings: Readings, seed: int, settings: Settings | None 
     checks.check_run(rig, readings)
     warm = rig.warmed(expectation.mean_temperature(rig, readings), expectation.extremes(rig, readings))
     weighed = candidates.weigh(warm, readings, seed, _silent)
+    wrong: tuple[Finding, ...] = ()
+    if faults.is_suspicious(_plain_best(weighed).point):
+        looked = faults.search(warm, readings)
+        wrong = looked.findings
+        if looked.rig is not warm or looked.readings is not readings:
+            warm, readings = looked.rig, looked.readings
+            weighed = candidates.weigh(warm, readings, seed, _silent)
     outcomes = _outcomes(_with_a_part(weighed), settings or Settings())
     probabilities = candidates.probabilities(outcomes)
     outcomes = _thinned(outcomes, probabilities)
@@ -68,7 +75,7 @@ def estimate(rig: Rig, readings: Readings, seed: int, settings: Settings | None 
     mixture = summaries.mix(outcomes, probabilities, evaluated, DRAWS)
     found = conclusions.summarise(outcomes, probabilities, evaluated, mixture, least_squares=False)
     sampler = conclusions.sampler_record(outcomes, seed)
-    concluded = conclusions.draw(warm, readings, outcomes, scores, evaluated, found, sampler)
+    concluded = conclusions.draw(warm, readings, outcomes, scores, evaluated, found, sampler, wrong)
     own = tuple(finding for finding in concluded.findings if not _of_every_run(finding, warm))
     return QuickResult(concluded.status, found, scores, own, concluded.table, sampler, mixture)
 
@@ -78,6 +85,12 @@ def _of_every_run(finding: Finding, rig: Rig) -> bool:
     if finding.evidence.get("quantity") in summaries.OF_THE_JOINT:
         return not rig.sensors_on("plate")
     return finding in rig.assumed
+
+
+def _plain_best(weighed: Sequence[Route]) -> Route:
+    """Return the most probable route without a misfit, which may explain a wrong reading away."""
+    plain = [route for route in weighed if not route.point.problem.candidate.misfit]
+    return max(plain, key=lambda route: route.log_weight)
 
 
 def _silent(_stage: str, _fraction: float) -> None:
