@@ -10,6 +10,7 @@ import numpy as np
 import pytest
 from rigs import Truth, draw, exact_readings, pin_rig
 
+import finback
 from finback import diagnosis, readings, rig
 from finback.datasets import path
 from finback.diagnosis import Cause, Diagnosis
@@ -180,21 +181,22 @@ def test_one_seed_gives_one_diagnosis() -> None:
 # measured records: see test_real_records.py for their sources
 
 
-def record(fin: dict[str, Any], at: dict[float, float], air: float, noise: str, **tables: Any) -> Diagnosis:
+def record(
+    fin: dict[str, Any], at: dict[float, float], air: float, noise: str, **tables: Any
+) -> tuple[Rig, Readings]:
     sensors: dict[str, Any] = {f"T{i}": {"at": f"{1e3 * x:g} mm"} for i, x in enumerate(at, start=1)}
     sensors |= {"TA": {"on": "air"}, "defaults": {"noise": noise, "calibration": "0.1 K", "position": "1 mm"}}
     values = {f"T{i}": t + ZERO_CELSIUS for i, t in enumerate(at.values(), start=1)}
     of_rig = Rig.from_dict({"fin": fin, "sensors": sensors, **tables})
-    return diagnosis.diagnose(of_rig, Readings("record", values | {"TA": air + ZERO_CELSIUS}))
+    return of_rig, Readings("record", values | {"TA": air + ZERO_CELSIUS})
 
 
 def test_the_brass_bar_scatters_more_than_is_stated() -> None:
     # physics laboratory record, 2017, sample data of the public repository UncValue
     temperatures = (98.0, 74.7, 57.1, 47.3, 39.3, 34.2, 31.1, 29.3, 28.2, 27.6, 27.4)
     bar = {0.1 * (i + 1): t for i, t in enumerate(temperatures)}
-    found = record(
-        {"profile": "pin", "length": "1100 mm", "diameter": "30 mm", "tip": "convective"}, bar, 24.0, "0.1 K"
-    )
+    fin = {"profile": "pin", "length": "1100 mm", "diameter": "30 mm", "tip": "convective"}
+    found = diagnosis.diagnose(*record(fin, bar, 24.0, "0.1 K"))
     codes = {finding.code for finding in found.measurement_faults}
     assert codes & {"misfit", "air-reference"}
     air = next(cause for cause in found.causes if cause.code == "air-reference")
@@ -206,8 +208,11 @@ def test_the_copper_bar_scatters_and_its_h_stays() -> None:
     bar = {0.0: 64.77, 0.0306: 61.4, 0.055: 60.49, 0.0982: 58.16, 0.1715: 54.02, 0.2207: 53.51, 0.2807: 53.75}
     fin = {"profile": "rectangular", "length": "285 mm", "width": "12.7 mm", "thickness": "12.7 mm",
            "edges": "exposed", "tip": "convective"}  # fmt: skip
-    found = record(fin, bar, 22.32, "0.1 K", material={"conductivity": "388 W/(m K) +/- 1 %"})
+    copper = {"conductivity": "388 W/(m K) +/- 1 %"}
+    of_rig, run = record(fin, bar, 22.32, "0.1 K", material=copper)
+    found = diagnosis.diagnose(of_rig, run)
     assert any("scatter" in finding.message for finding in found.measurement_faults)
+    assert finback.fit(of_rig, run).parameters["h"].median == pytest.approx(10.8, rel=0.05)
 
 
 def test_no_fault_is_invented_on_the_aluminium_rod() -> None:
