@@ -71,12 +71,10 @@ class FastPosterior:
         mean, since a quantity may go far where the ratios alone look harmless.
         """
         ratios = np.exp(self.log_ratios - self.log_ratios.max())
-        away = np.abs(values - self.mean(values)).reshape(len(values), -1)
-        found = [
-            max(self.khat, pareto.shape(ratios * distance), pareto.shape(ratios * distance * distance))
-            for distance in away.T
-        ]
-        return np.reshape(found, values.shape[1:])
+        away = np.abs(values - self.mean(values)).reshape(len(values), -1).T
+        once = ratios * away
+        tails = pareto.shapes(np.concatenate([once, once * away])).reshape(2, -1).max(axis=0)
+        return np.reshape(np.maximum(tails, self.khat), values.shape[1:])
 
     def resample(self, count: int, random: np.random.Generator) -> NDArray[np.intp]:
         """Return the indices (count,) of draws chosen by weight, so that all count the same.

@@ -30,6 +30,7 @@ LIKELY = 0.5  # and above which it is said that it is wrong
 ALSO = 0.1  # share of that, from which another kind of error is named beside the likeliest
 SCATTER = ""  # stands for all sensors along the fin
 WORTH_A_LOOK = 3.0  # nats that one fault would have to gain at the fit, by linear algebra
+RARE = 4.5  # the same, for what is wrong with one of many sensors, and so less likely of each
 
 
 @dataclass(frozen=True, slots=True)
@@ -141,7 +142,10 @@ def is_suspicious(point: LeastSquares) -> bool:
     steps = pulls[:fin, None] - pulls[:fin]
     bends = diagonal[:fin, None] + diagonal[:fin] - 2 * weights[:fin, :fin]
     swaps = -(apart * steps + 0.5 * np.square(apart) * bends)
-    return bool(max(gains.max(initial=0.0), swaps.max(initial=0.0)) > WORTH_A_LOOK)
+    needed = np.array(
+        [RARE if s.place in ("fin", "plate") else WORTH_A_LOOK for s in problem.measured.sensors]
+    )
+    return bool((gains > needed[told]).any() or swaps.max(initial=0.0) > RARE)
 
 
 def probabilities(found: Sequence[Hypothesis]) -> Array:
