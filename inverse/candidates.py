@@ -126,30 +126,34 @@ def compare(
     return sorted(outcomes, key=lambda o: -o.log_weight)
 
 
-def weigh(rig: Rig, readings: Readings, seed: int, progress: Progress) -> list[Route]:
+def weigh(
+    rig: Rig, readings: Readings, seed: int, progress: Progress, smooth_within: float = WORTH_SMOOTHING
+) -> list[Route]:
     """Weigh every candidate by the fast route, and those that may matter with a smooth misfit as well.
 
-    Arguments: as those of `compare`.
+    Arguments: as those of `compare`; smooth_within [nats] below the best, by an estimate, a misfit matters.
     """
     run = zlib.crc32(readings.run.encode())
 
-    def one(problem: Problem, start: Array | None = None) -> Route:
+    def one(problem: Problem, best: float, start: Array | None = None) -> Route:
         number = zlib.crc32(problem.candidate.name.encode())
-        return routes.weigh(problem, np.random.SeedSequence([seed, run, number]), start)
+        return routes.weigh(problem, np.random.SeedSequence([seed, run, number]), start, best)
 
     chosen = enumerate_candidates(rig, readings)
     problems = affordable([pose(rig, readings, candidate) for candidate in chosen])
-    plain = []
+    plain: list[Route] = []
+    best = -math.inf
     for number, problem in enumerate(problems):
         progress("comparing candidates", 0.2 * number / len(problems))
-        plain.append(one(problem))
+        plain.append(one(problem, best))
+        best = max(best, plain[-1].log_weight)
     smoothed = []
-    bent = worth_smoothing(plain)
+    bent = worth_smoothing(plain, smooth_within)
     for number, route in enumerate(bent):
         progress("comparing candidates", 0.2 + 0.1 * number / len(bent))
         posed = pose(rig, readings, replace(route.point.problem.candidate, misfit=True))
         start = np.insert(route.point.z, posed.n_physical, posed.prior_mean[posed.n_physical])
-        smoothed.append(one(posed, start))
+        smoothed.append(one(posed, best, start))
     weighed = plain + smoothed
     worth = [matters(route, weighed) and route.khat > fast.TRUSTED for route in weighed]
     return [route.steadied() if unsteady else route for route, unsteady in zip(weighed, worth, strict=True)]
@@ -160,7 +164,7 @@ def matters(route: Route, weighed: Sequence[Route]) -> bool:
     return route.log_weight > max(each.log_weight for each in weighed) - WORTH_SAMPLING
 
 
-def worth_smoothing(weighed: Sequence[Route]) -> list[Route]:
+def worth_smoothing(weighed: Sequence[Route], within: float = WORTH_SMOOTHING) -> list[Route]:
     """Return the candidates that may matter with a smooth misfit.
 
     None where few sensors are on the fin, nor where the noise is estimated: it then holds what a model
@@ -176,7 +180,7 @@ def worth_smoothing(weighed: Sequence[Route]) -> list[Route]:
     odds = math.log(ODDS_OF_MISFIT)
     smoothed = [route.log_weight + routes.misfit_gain(route) + odds for route in weighed]
     best = max(*smoothed, *(route.log_weight for route in weighed))
-    return [route for route, log in zip(weighed, smoothed, strict=True) if log > best - WORTH_SMOOTHING]
+    return [route for route, log in zip(weighed, smoothed, strict=True) if log > best - within]
 
 
 def affordable(problems: Sequence[Problem]) -> list[Problem]:

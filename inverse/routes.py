@@ -28,6 +28,7 @@ Array = NDArray[np.float64]
 KEPT_DRAWS = 2500  # an ensemble
 CHAINS, RESAMPLED = 4, 1000  # of a candidate that is not sampled by MCMC
 SAME_MEAN, SAME_SD = 0.1, 0.1  # of its standard deviation, by which two routes may see a quantity differently
+HOPELESS = 20.0  # nats below another candidate by its mode, where no more of it can be seen
 SPARE_FOR_NOISE = (
     10  # readings more than unknowns, that know a noise to a quarter: its posterior is no funnel
 )
@@ -163,17 +164,26 @@ class Route:
         return tuple(found)
 
 
-def weigh(problem: Problem, seed: np.random.SeedSequence, start: Array | None = None) -> Route:
+def weigh(
+    problem: Problem, seed: np.random.SeedSequence, start: Array | None = None, best: float = -math.inf
+) -> Route:
     """Fit one candidate and weigh draws of a proposal that is fitted to its posterior.
 
     Arguments: problem; seed, of three streams: proposal and lattice, chain, bridge or dealing; start (p,) of
-    the least-squares fit.
+    the least-squares fit; best, the log weight of another candidate: one that lies far below it by its mode
+    is drawn a few times only.
     """
     seeds = seed.spawn(3)
     point = optimum.fit(problem, start)
     mode = find_mode(point)
     if problem.candidate.misfit:  # how much there is of it, the posterior tells and not least squares
         point = optimum.refit(point, mode.z)
+    told = mode.log_evidence + problem.candidate.log_prior
+    if told < best - HOPELESS and not is_funnel(problem):
+        proposal = proposals.from_mode(mode)
+        random = np.random.RandomState(np.random.MT19937(seeds[0]))
+        few = fast.glance(point.problem.log_density, proposal, random)
+        return Route(point, mode, proposal, few, seeds)
     proposal, weighted = fit_proposal(point.problem, mode, seeds[0])
     return Route(point, mode, proposal, weighted, seeds)
 
@@ -226,6 +236,12 @@ def find_mode(point: LeastSquares) -> Mode:
     return laplace.find_mode(problem.log_density, start, root)
 
 
+def is_funnel(problem: Problem) -> bool:
+    """Tell whether few readings leave a noise open, so that a mode says little of its posterior."""
+    spare = len(problem.measured.values) - problem.n_physical
+    return problem.noise.estimated and spare < SPARE_FOR_NOISE
+
+
 def fit_proposal(
     problem: Problem, mode: Mode, seed: np.random.SeedSequence
 ) -> tuple[Proposal, FastPosterior]:
@@ -235,8 +251,7 @@ def fit_proposal(
     it, where plate and air fit their readings without any noise: a ladder starts from the whole of it. So
     does one along the share of a misfit.
     """
-    spare = len(problem.measured.values) - problem.n_physical
-    funnel = problem.noise.estimated and spare < SPARE_FOR_NOISE
+    funnel = is_funnel(problem)
     random = np.random.RandomState(np.random.MT19937(seed)), np.random.default_rng(seed)
     if funnel or problem.candidate.misfit:
         ladder = proposals.ladder(problem.log_density, mode, -1 if funnel else problem.n_physical)
