@@ -7,6 +7,7 @@ block knows nothing of other blocks: however runs are shared out, each comes to 
 import copyreg
 import io
 import json
+import math
 import pickle
 import re
 import tempfile
@@ -112,7 +113,7 @@ def _record(block: Block, key: bytes, name: str, cells: tuple[str, ...]) -> Reco
     except Exception as error:  # noqa: BLE001  # a run that meets a defect must not take the others with it
         return failed(key, f"it could not be computed ({type(error).__name__}: {error})"[:LONGEST_REASON])
     posterior = _netcdf(rig, name, found, block.seed) if block.keep else None
-    return Record(key, _json(_contents(found)), posterior=posterior)
+    return Record(key, _json(_contents(found, rig)), posterior=posterior)
 
 
 def failed(key: bytes, reason: str, *, lasting: bool = True) -> Record:
@@ -129,7 +130,16 @@ def _reason(error: FinbackError) -> str:
     return f"{place}: {problem}; {error.remedy}" if place else f"{problem}; {error.remedy}"  # type: ignore[attr-defined]
 
 
-def _contents(found: Any) -> dict[str, Any]:
+def _uncertainty(row: Any, rig: Any) -> float:
+    """Return the standard uncertainty of a reading; of one that was set aside, as its sensor is stated."""
+    if row.excluded is None:
+        return float(row.uncertainty)
+    sensor = rig.sensors[row.sensor]
+    noise = (sensor.noise or 0.0) + (sensor.noise_relative or 0.0) * abs(row.measured)
+    return math.hypot(max(noise, row.uncertainty), sensor.calibration_at(row.measured))
+
+
+def _contents(found: Any, rig: Any) -> dict[str, Any]:
     best = found.scores[0]
     return {
         "status": found.status,
@@ -140,10 +150,11 @@ def _contents(found: Any) -> dict[str, Any]:
         "best": [best.name, _rounded(best.probability)],
         "findings": [[f.code, f.severity, f.sensor, f.message] for f in found.findings],
         "residuals": {
-            row.sensor: [_short(row.residual), _short(row.residual / row.uncertainty)]
+            row.sensor: [_short(row.residual), _short(row.residual / uncertainty)]
             for row in found.table
-            if row.excluded is None and row.uncertainty > 0
+            if (uncertainty := _uncertainty(row, rig)) > 0
         },
+        "aside": [row.sensor for row in found.table if row.excluded is not None],
         "sampled": found.sampler.ess_min is not None,
     }
 

@@ -42,8 +42,9 @@ LONGEST_REASONS = 500
 class SensorRecord:
     """How one sensor fared: runs, sums of residuals [K or W] and of their ratios to the uncertainty.
 
-    `beyond`: runs with a residual of more than two standard uncertainties; `unreadable`: rows that failed by
-    its cell; `findings`: by code.
+    `beyond`: runs with a residual of more than two standard uncertainties; `aside`: runs in which its reading
+    was set aside; `accused`: runs with a finding that names it; `findings`: those, by code; `unreadable`:
+    rows that failed by its cell.
     """
 
     runs: int = 0
@@ -51,6 +52,8 @@ class SensorRecord:
     ratios: float = 0.0
     squares: float = 0.0
     beyond: int = 0
+    aside: int = 0
+    accused: int = 0
     unreadable: int = 0
     findings: Counter[str] = field(default_factory=Counter)
 
@@ -136,6 +139,8 @@ class Digest:
             record.ratios += ratio
             record.squares += ratio * ratio
             record.beyond += abs(ratio) > 2.0
+        for name in result["aside"]:
+            self._sensor(source, name).aside += 1
 
     def _sensor(self, source: Source, name: str) -> SensorRecord:
         return self.sensors.setdefault((source.rig.title, name), SensorRecord())
@@ -177,6 +182,8 @@ class Digest:
 
     def _note_findings(self, source: Source, findings: Sequence[Sequence[str]]) -> None:
         worst = 0.0
+        for sensor in {sensor for _, _, sensor, _ in findings if sensor is not None}:
+            self._sensor(source, sensor).accused += 1
         for code, severity, sensor, _ in findings:
             worst = max(worst, GRAVITY[severity]) + 0.01 * (severity != "note")
             self.gravity[code] = max(GRAVITY[severity], self.gravity.get(code, 0))

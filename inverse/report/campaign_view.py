@@ -16,6 +16,7 @@ MOST_SHOWN = 100
 """Runs that the page shows one by one: those that ask for a look first."""
 MOST_REASONS = 15
 SYSTEMATIC = 1.0  # mean residual in standard uncertainties, from which a sensor is said to be off
+OFTEN = 0.1  # share of the runs with a finding that names a sensor, from which that is said
 RESTLESS = 2.0  # root mean square of the same, from which its uncertainty is said to be too small
 NOTHING_MUCH = 0.005  # mean residual in standard uncertainties that is as good as none
 SMALLEST_P = 0.0001  # that is told
@@ -271,7 +272,7 @@ def _sensors(campaign: Campaign, digest: Digest) -> tuple[Row, ...]:
     rows = []
     for (rig, name), record in digest.sensors.items():
         mean, spread = _mean_ratio(record), _spread(record)
-        off = abs(mean) >= SYSTEMATIC or spread >= RESTLESS
+        off = abs(mean) >= SYSTEMATIC or spread >= RESTLESS or _often_accused(record)
         known = {source.rig.title: source.rig for source in campaign.sources}[rig].sensors[name]
         unit = "K" if known.reads_temperature else "W"
         n = max(record.runs, 1)
@@ -282,12 +283,18 @@ def _sensors(campaign: Campaign, digest: Digest) -> tuple[Row, ...]:
             f"{mean:+.2f}".replace("-", "−"),
             f"{spread:.2f}",
             f"{100 * record.beyond / n:.1f} %",
+            f"{record.aside:,}",
             f"{record.unreadable:,}",
             ", ".join(f"{code} {count:,}" for code, count in record.findings.most_common())
             or phrases.NOTHING,
         )
         rows.append((-max(abs(mean), spread / RESTLESS), Row(shown, "caution" if off else "")))
     return tuple(row for _, row in sorted(rows, key=lambda each: (each[0], each[1].cells)))
+
+
+def _often_accused(record: SensorRecord) -> bool:
+    """Tell whether findings name a sensor in more runs than chance would."""
+    return record.accused > max(2, OFTEN * record.runs)
 
 
 def _mean_ratio(record: SensorRecord) -> float:
@@ -301,8 +308,14 @@ def _spread(record: SensorRecord) -> float:
 def _sensor_note(digest: Digest) -> str:
     by_size = sorted(digest.sensors.items(), key=lambda item: -abs(_mean_ratio(item[1])))
     off = [name for (_, name), each in by_size if abs(_mean_ratio(each)) >= SYSTEMATIC]
+    accused = [(name, each) for (_, name), each in by_size if _often_accused(each)]
     restless = [name for (_, name), each in by_size if _spread(each) >= RESTLESS and name not in off]
     told = []
+    if accused:
+        counts = ", ".join(
+            f"{phrases.clean(name)} ({each.accused:,} of {each.runs:,})" for name, each in accused
+        )
+        told.append(f"Found to be wrong in many runs: {counts}.")
     if off:
         others = "" if len(off) == 1 else "; the first draws the others the other way"
         told.append(f"Off in the same direction run after run: {', '.join(map(phrases.clean, off))}{others}.")

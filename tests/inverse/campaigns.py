@@ -36,7 +36,10 @@ Q = { on = "heat", noise = "3 %", calibration = "1 %" }
 """
 SENSORS = ("T1", "T2", "T3", "T4", "TA", "Q")
 KILLER = "the run that kills"
-NOTHING = '{"status":"ok","quantities":{},"best":["none",1.0],"findings":[],"residuals":{},"sampled":false}'
+NOTHING = (
+    '{"status":"ok","quantities":{},"best":["none",1.0],'
+    '"findings":[],"residuals":{},"aside":[],"sampled":false}'
+)
 
 
 @cache

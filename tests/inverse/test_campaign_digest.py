@@ -28,6 +28,7 @@ def entry(
         "best": ["convective tip", 1.0],
         "findings": [[code, severity, None, code] for code, severity in findings],
         "residuals": {"T1": [0.1 * residual, residual], "T2": [0.0, 0.0]},
+        "aside": ["T1"] if abs(residual) > 2 else [],
         "sampled": False,
     }
     return Entry(number, f"run {number}", 0, number, (speed, "x"), b"", result, None)
@@ -108,6 +109,7 @@ def test_residuals_add_up_by_sensor() -> None:
         DESCRIBED.title, "T1"
     ]
     assert (record.runs, record.ratios, record.squares, record.beyond) == (3, 3.0, 11.0, 1)
+    assert (record.aside, record.accused) == (1, 0)
     assert record.residuals == pytest.approx(0.3)
 
 

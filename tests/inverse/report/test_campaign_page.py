@@ -69,11 +69,12 @@ def test_names_are_shown_and_do_nothing(page: str) -> None:
 
 
 def test_what_went_wrong_is_told(page: str) -> None:
+    assert re.search(r"Found to be wrong in many runs: T3 \(1[0-2] of 12\)", page)
     assert "Off in the same direction run after run: T3" in page
     assert re.search(
         r"column T1: &#34;…&#34; is no number; write a number or leave it empty</td><td class=\"n\">2<", page
     )
-    assert "<code>misfit</code>" in page
+    assert "<code>sensor-outlier</code>" in page
     assert "An estimate is no certificate" in page
 
 
