@@ -34,6 +34,7 @@ LEFT, GAP, RIGHT = 1.55, 0.22, 0.12  # of the panels [in]
 SHARE = 0.56  # of the width, for the heat where the base temperature stands beside it
 LEAST_SPAN = 4.0  # K that the axis of the base temperature covers
 BAR = 0.56  # height of a bar in rows
+BESIDE_ROW = 0.42  # rows by which a number stands above a row that has no room for it
 BESIDE = {"plate": -0.07, "air": 1.07}  # of the length, where those readings are drawn
 
 
@@ -41,7 +42,7 @@ def draw(found: Diagnosis) -> tuple[Picture, ...]:
     """Return the pictures of a diagnosis, in the order of NAMES."""
     with matplotlib.rc_context(STYLE), warnings.catch_warnings():
         warnings.filterwarnings("ignore", "Glyph .* missing from", UserWarning)
-        figures = _waterfall(scenes.heat(found), scenes.base_temperature(found)), _readings(found)
+        figures = _waterfall(*scenes.waterfalls(found)), _readings(found)
         return tuple(picture(name, figure) for name, figure in zip(NAMES, figures, strict=True))
 
 
@@ -87,7 +88,7 @@ def _panel(axes: Axes, fall: scenes.Waterfall, from_zero: bool) -> None:
         _label(axes, level.text, level.low, level.high, row)
     for row, step in enumerate(fall.steps, start=1):
         reach = [step.start + part for part in (0.0, step.whole, step.low, step.high)]
-        _label(axes, step.text, min(reach), max(reach), row)
+        _label(axes, step.text, min(reach), max(reach), row, abs(step.whole))
 
 
 def _draw_step(axes: Axes, step: scenes.Step, row: int) -> None:
@@ -119,25 +120,30 @@ def _frame(axes: Axes, fall: scenes.Waterfall, from_zero: bool) -> None:
         low, high = low - more, high + more
     span = high - low
     axes.set_xlim(low - (0.0 if from_zero and low == 0 else 0.06 * span), high + 0.06 * span)
-    axes.set_ylim(len(fall.steps) + 1.5, -0.6)
+    axes.set_ylim(len(fall.steps) + 1.5, -0.65)
     axes.xaxis.set_major_locator(MaxNLocator(5))
     axes.tick_params(axis="y", length=0)
     axes.margins(0)
 
 
-def _label(axes: Axes, text: str, low: float, high: float, row: int) -> None:
-    """Write a number in its row, at the side of its bar where there is more room, or else on it."""
+def _label(axes: Axes, text: str, low: float, high: float, row: int, bar: float = 0.0) -> None:
+    """Write a number in its row, at the side of its bar where there is more room, or else on or above it.
+
+    Arguments: low and high, how far the row is taken; bar, how long its bar is.
+    """
     left, right = axes.get_xlim()
     margin = 0.02 * (right - left)
     width = LETTER * len(text) * (right - left) / (axes.get_position().width * WIDTH) + margin
+    height = float(row)
     if max(low - left, right - high) < width:
         at, side = (low + high) / 2, "center"
+        height -= 0.0 if bar > 1.5 * width else BESIDE_ROW
     elif low - left > right - high:
         at, side = low - margin, "right"
     else:
         at, side = high + margin, "left"
     backed = {"facecolor": "white", "edgecolor": "none", "pad": 1.2}
-    axes.text(at, row, text, ha=side, va="center", color=INK, fontsize=8.5, bbox=backed)
+    axes.text(at, height, text, ha=side, va="center", color=INK, fontsize=8.5, bbox=backed)
 
 
 def _readings(found: Diagnosis) -> Figure:

@@ -1,8 +1,10 @@
 """Scenes of a diagnosis: what its pictures show, in the units they are drawn in; nothing is drawn here."""
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import TypeGuard
 
-from finback.diagnosis import COSTED, HEALTHY, Cause, Cost, Diagnosis
+from finback.diagnosis import COSTED, HEALTHY, Cause, Diagnosis
 from finback.findings import Finding
 from finback.models.constants import ZERO_CELSIUS
 from finback.posing import is_read
@@ -11,6 +13,7 @@ from finback.restoring import Interval
 from finback.rig import Rig
 
 LEAST_REST = 0.02  # of what a healthy fin does more, from which the rest has a step of its own
+SEEN = 0.1  # and of the 95 % interval of that
 LONGEST_NAME = 22
 
 
@@ -64,74 +67,70 @@ class Read:
     should: float | None
 
 
-def moves(change: Interval | None) -> bool:
+def moves(change: Interval | None) -> TypeGuard[Interval]:
     """Tell whether a change is one at all: a wrong thermometer changes nothing in the fin."""
     return change is not None and (change.low95 != 0 or change.high95 != 0)
 
 
-def heat(found: Diagnosis) -> Waterfall:
-    """Return the waterfall of the heat into the fin [W]."""
-    changes = [(cause, cause.heat_recovered) for cause in _moving(found) if cause.heat_recovered]
-    return _waterfall(changes, *_ends(found, "heat"))
+def waterfalls(found: Diagnosis) -> tuple[Waterfall, Waterfall | None]:
+    """Return the waterfalls of the heat into the fin [W] and of the base temperature [°C], its steps in K.
 
-
-def base_temperature(found: Diagnosis) -> Waterfall | None:
-    """Return the waterfall of the base temperature [°C], its steps in K; None where nothing moves it."""
-    changes = [
-        (cause, cause.base_temperature_change) for cause in _moving(found) if cause.base_temperature_change
-    ]
-    return _waterfall(changes, *_ends(found, "base")) if any(moves(change) for _, change in changes) else None
-
-
-def _moving(found: Diagnosis) -> list[Cause]:
-    """Return the causes that change what the fin does, those likely enough to be costed."""
-    likely = [each for each in found.causes if each.code != HEALTHY and each.probability >= COSTED]
-    return [each for each in likely if moves(each.heat_recovered)]
-
-
-def _ends(found: Diagnosis, what: str) -> tuple[Level, Level]:
+    Both have the same steps. The second is None where nothing moves the base.
+    """
     now, healthy = found.costs[0], found.costs[-1]
-    return _level("now", now, what), _level("healthy", healthy, what)
+    likely = [each for each in found.causes if each.code != HEALTHY and each.probability >= COSTED]
+    causes = [each for each in likely if moves(each.heat_recovered)]
+    heat = _waterfall(causes, [each.heat_recovered for each in causes], now.heat, healthy.heat)
+    changes = [each.base_temperature_change for each in causes]
+    if not any(map(moves, changes)):
+        return (_with_rest(heat, "W") if _leaves(heat) else heat), None
+    base = _waterfall(causes, changes, now.base_temperature, healthy.base_temperature, "K")
+    if _leaves(heat) or _leaves(base):
+        heat, base = _with_rest(heat, "W"), _with_rest(base, "K")
+    return heat, base
 
 
-def _level(name: str, cost: Cost, what: str) -> Level:
-    value = cost.heat if what == "heat" else cost.base_temperature
-    return Level(name, value.median, value.low95, value.high95, middle(value))
-
-
-def _waterfall(changes: list[tuple[Cause, Interval]], now: Level, healthy: Level) -> Waterfall:
-    steps, at = [], now.value
-    for cause, change in changes:
+def _waterfall(
+    causes: Sequence[Cause],
+    changes: Sequence[Interval | None],
+    now: Interval,
+    healthy: Interval,
+    unit: str = "W",
+) -> Waterfall:
+    steps, at = [], now.median
+    for cause, known in zip(causes, changes, strict=True):
+        change = known or Interval(0.0, 0.0, 0.0, unit)
         expected = cause.probability * change.median
         name = (
             f"{phrases.clean(cause.name, LONGEST_NAME)}\nput right ({phrases.probability(cause.probability)})"
         )
-        steps.append(
-            Step(
-                name,
-                at,
-                expected,
-                change.median,
-                change.low95,
-                change.high95,
-                signed(change),
-            )
-        )
+        steps.append(Step(name, at, expected, change.median, change.low95, change.high95, signed(change)))
         at += expected
-    rest = healthy.value - at
-    if (
-        steps
-        and abs(rest) > LEAST_REST * abs(healthy.value - now.value)
-        and abs(rest) > 0.1 * _width(healthy)
-    ):
-        unit = changes[0][1].unit
-        text = signed(Interval(rest, rest, rest, unit))
-        steps.append(Step("all together,\nbeyond that", at, rest, rest, 0.0, 0.0, text))
-    return Waterfall(now, tuple(steps), healthy)
+    return Waterfall(_level("now", now), tuple(steps), _level("healthy", healthy))
 
 
-def _width(level: Level) -> float:
-    return level.high - level.low
+def _level(name: str, value: Interval) -> Level:
+    return Level(name, value.median, value.low95, value.high95, middle(value))
+
+
+def _rest(fall: Waterfall) -> float:
+    return fall.healthy.value - (fall.steps[-1].start + fall.steps[-1].expected)
+
+
+def _leaves(fall: Waterfall) -> bool:
+    """Tell whether the steps miss the healthy fin by something that is worth a step of its own."""
+    if not fall.steps:
+        return False
+    gained = abs(fall.healthy.value - fall.now.value)
+    return abs(_rest(fall)) > max(LEAST_REST * gained, SEEN * (fall.healthy.high - fall.healthy.low))
+
+
+def _with_rest(fall: Waterfall, unit: str) -> Waterfall:
+    """Return a waterfall with a step for what its causes do not bring."""
+    rest, half = _rest(fall), (fall.healthy.high - fall.healthy.low) / 2
+    text = signed(Interval(rest, rest - half, rest + half, unit))
+    last = Step("the rest\nput right", fall.healthy.value - rest, rest, rest, 0.0, 0.0, text)
+    return replace(fall, steps=(*fall.steps, last))
 
 
 def middle(value: Interval) -> str:

@@ -4,7 +4,7 @@ from pathlib import Path
 
 from finback.diagnosis import Diagnosis
 from finback.report import diagnosis_view, phrases
-from finback.report.terminal import wrap
+from finback.report.terminal import COLUMNS, wrap
 
 MOST_MEASUREMENTS = 3
 BAR = 20  # columns of a probability's bar
@@ -50,17 +50,23 @@ def _costs(seen: diagnosis_view.DiagnosisView) -> list[str]:
     lines = [f"{'What it costs':<{NAME}}{'heat (95 %)':<{HEAT}}base temperature (95 %)"]
     for row in seen.costs:
         name = wrap(row.what, INDENT * 2, INDENT)
-        if len(name[-1]) >= NAME:
-            name.append("")
         heat, base = f"{row.heat} ({row.heat_interval})", f"{row.base} ({row.base_interval})"
-        lines += [*name[:-1], f"{name[-1]:<{NAME}}{heat:<{HEAT}}{base}"]
+        if len(heat) >= HEAT or len(base) > COLUMNS - NAME - HEAT:
+            lines += [*name, *wrap(f"{heat}, {base}", INDENT * 2, INDENT * 2)]
+        else:
+            name += [""] * (len(name[-1]) >= NAME)
+            lines += [*name[:-1], f"{name[-1]:<{NAME}}{heat:<{HEAT}}{base}"]
+        if row.more:
+            brought = " and ".join(part for part in (row.more, row.warmer) if part)
+            lines += wrap(f"brings {brought}, if it is so", INDENT * 2, INDENT * 2)
     return lines
 
 
 def _next(seen: diagnosis_view.DiagnosisView) -> list[str]:
     lines = ["To measure next", *wrap(seen.left, INDENT, INDENT)] if seen.next else []
     for number, row in enumerate(seen.next[:MOST_MEASUREMENTS], start=1):
-        told = f"{row.what}: {row.gain} ({row.bits}); interval of h {row.narrower}."
+        bits = "" if row.bits == phrases.NOTHING else f" ({row.bits})"
+        told = f"{row.what}: {row.gain}{bits}; interval of h {row.narrower}."
         lines += wrap(told, INDENT * 3, f"{INDENT}{number}. ")
     return lines
 

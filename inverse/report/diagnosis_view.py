@@ -5,11 +5,11 @@ from dataclasses import dataclass
 from pathlib import PurePath
 from typing import TypeGuard
 
-from finback.diagnosis import CLEAR, HEALTHY, NAMES, Cause, Cost, Diagnosis
+from finback.diagnosis import CLEAR, HEALTHY, NAMES, Cause, Diagnosis
 from finback.findings import Finding
 from finback.next_measurements import NARROWER, NextMeasurement
 from finback.report import diagnosis_words, method, phrases
-from finback.report.diagnosis_scenes import limits, middle
+from finback.report.diagnosis_scenes import limits, middle, moves, signed
 from finback.restoring import Interval
 from finback.suspects import ODDS
 
@@ -17,6 +17,7 @@ LIKELY = 0.5  # probability from which a cause is spoken of as it is
 SURE = 0.9  # and from which no further measurement is asked for before it is put right
 ARTICLES = ("A ", "An ", "Another ", "The ")
 SAME = 0.1  # of the 95 % interval of the heat, within which a healthy fin does the same
+LEAST_DOUBT = 0.01  # bits, below which there is none
 SEVERITIES = ("fault", "caution", "note")
 
 METHOD = (
@@ -42,13 +43,18 @@ class CauseRow:
 
 @dataclass(frozen=True, slots=True)
 class CostRow:
-    """One row of the table of costs: heat [W] and base temperature [°C] with their intervals."""
+    """One row of the table of costs: heat and base temperature with their 95 % intervals.
+
+    `more` and `warmer`: what a cause put right brings, by the fin that has it; "" for now and healthy.
+    """
 
     what: str
     heat: str
     heat_interval: str
     base: str
     base_interval: str
+    more: str
+    warmer: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,16 +127,7 @@ def build(found: Diagnosis) -> DiagnosisView:
             f"{' and '.join(map(phrases.clean, pair.names))} at once: {phrases.probability(pair.probability)}"
             for pair in found.together
         ),
-        costs=tuple(
-            CostRow(
-                _what_of(cost, found),
-                middle(cost.heat),
-                limits(cost.heat),
-                middle(cost.base_temperature),
-                limits(cost.base_temperature),
-            )
-            for cost in found.costs
-        ),
+        costs=_costs(found),
         cannot_tell=tuple(phrases.told(sentence) for sentence in found.cannot_tell),
         next=tuple(_next(each, doubt(found)) for each in found.next_measurements),
         left=_left(told),
@@ -205,9 +202,30 @@ def _left(told: tuple[Cause, ...]) -> str:
     return ""
 
 
-def _what_of(cost: Cost, found: Diagnosis) -> str:
-    partly = bool(found.missing) and cost is found.costs[-1]
-    return phrases.clean(f"{cost.what}, as far as judged" if partly else cost.what)
+def _costs(found: Diagnosis) -> tuple[CostRow, ...]:
+    """Return the table of costs, each line of a cause with what it brings."""
+    causes, rows = list(found.causes), []
+    for cost in found.costs:
+        cause = next((one for one in causes if diagnosis_words.line_of_costs(one) == cost.what), None)
+        if cause is not None:
+            causes.remove(cause)
+        partly = bool(found.missing) and cost is found.costs[-1]
+        rows.append(
+            CostRow(
+                phrases.clean(f"{cost.what}, as far as judged" if partly else cost.what),
+                middle(cost.heat),
+                limits(cost.heat),
+                middle(cost.base_temperature),
+                limits(cost.base_temperature),
+                _brought(cause.heat_recovered if cause else None),
+                _brought(cause.base_temperature_change if cause else None),
+            )
+        )
+    return tuple(rows)
+
+
+def _brought(change: Interval | None) -> str:
+    return f"{signed(change)} ({limits(change)})" if moves(change) else ""
 
 
 def _cost(found: Diagnosis, told: tuple[Cause, ...]) -> str:
@@ -257,7 +275,8 @@ def _action(found: Diagnosis, told: tuple[Cause, ...]) -> str:
     if found.missing:
         add = "add to rig.toml the lines under “What could not be judged”, and run this again"
         steps.insert(0 if told and told[0].code == HEALTHY else len(steps), add)
-    return " ".join(diagnosis_words.sentence(step) for step in steps if step)
+    sentences = (diagnosis_words.sentence(phrases.clean(step, 500)) for step in steps if step)
+    return " ".join(sentences)
 
 
 def _cause(cause: Cause) -> CauseRow:
@@ -280,12 +299,12 @@ def _inside(words: str) -> str:
 
 
 def _next(each: NextMeasurement, open_bits: float) -> NextRow:
-    share = each.expected_gain / open_bits if open_bits > 0 else 0.0
+    doubtful = open_bits >= LEAST_DOUBT
     narrower = 100 * (1 - each.h_sd_ratio)
     return NextRow(
         _what(each),
-        diagnosis_words.settles(share),
-        f"{each.expected_gain:.2f} of {open_bits:.2f} bit",
+        diagnosis_words.settles(each.expected_gain / open_bits) if doubtful else diagnosis_words.SETTLED,
+        f"{each.expected_gain:.2f} of {open_bits:.2f} bit" if doubtful else phrases.NOTHING,
         f"{narrower:.0f} % narrower" if each.h_sd_ratio < NARROWER else "as now",
     )
 

@@ -2,7 +2,7 @@
 
 from collections.abc import Mapping
 
-from finback.diagnosis import NAMES, Cause
+from finback.diagnosis import NAMES, PUT_RIGHT, Cause
 
 KINDS: Mapping[str, str] = {name: kind for kind, name in NAMES.items()}
 
@@ -59,6 +59,8 @@ GAINS = (
 )
 """Words for what a measurement tells, from that share of the doubt on."""
 
+SETTLED = "no doubt of the cause is left"
+
 
 def surely(probability: float) -> str:
     """Return how sure a probability is, in words."""
@@ -80,10 +82,19 @@ def repair(cause: Cause) -> str:
     return _of_kind(REPAIRS, cause, "")
 
 
+def line_of_costs(cause: Cause) -> str:
+    """Return how the table of costs calls the fin with a cause put right; "" where it has no such line."""
+    put_right = PUT_RIGHT.get(_kind(cause), "")
+    return f"with {put_right}" if put_right else ""
+
+
+def _kind(cause: Cause) -> str:
+    return KINDS.get(cause.name.partition(" (")[0], "")
+
+
 def _of_kind(words: Mapping[str, str], cause: Cause, otherwise: str) -> str:
-    name, _, sensors = cause.name.partition(" (")
-    clause = words.get(KINDS.get(name, ""), otherwise)
-    return clause.replace("{sensor}", sensors.removesuffix(")"))
+    sensors = cause.name.partition(" (")[2].removesuffix(")")
+    return words.get(_kind(cause), otherwise).replace("{sensor}", sensors)
 
 
 def sentence(clause: str) -> str:

@@ -1,49 +1,18 @@
 import re
 from dataclasses import replace
-from html.parser import HTMLParser
 
 import numpy as np
 import pytest
+from pages import Page
 
 from finback.estimate import Draws, ProfileBand
 from finback.expectation import Expected
 from finback.report import figures, html
 
-VOID = {"meta", "img", "br", "link", "input", "hr"}
 SECTIONS = [
     "answer", "drawing", "profile", "candidates", "pairs", "quantities", "budget", "readings", "findings",
     "assumptions", "method", "provenance", "cautions",
 ]  # fmt: skip
-
-
-class Page(HTMLParser):
-    """What a page says: its elements, and the text of each section. Every element must be closed in order."""
-
-    def __init__(self, text):
-        super().__init__(convert_charrefs=True)
-        self.elements, self.open, self.texts, self.section = [], [], {}, ""
-        self.feed(text)
-        self.close()
-        assert self.open == []
-
-    def handle_starttag(self, tag, attrs):
-        self.elements.append((tag, dict(attrs)))
-        if tag not in VOID:
-            self.open.append(tag)
-        if tag == "section":
-            self.section = dict(attrs)["id"]
-        if tag in ("td", "th", "dt", "p", "li"):
-            self.texts[self.section] = self.texts.get(self.section, "") + "\n"
-
-    def handle_endtag(self, tag):
-        assert self.open.pop() == tag
-
-    def handle_data(self, data):
-        plain = data.replace("\N{NO-BREAK SPACE}", " ")
-        self.texts[self.section] = self.texts.get(self.section, "") + plain
-
-    def named(self, tag):
-        return [attributes for name, attributes in self.elements if name == tag]
 
 
 @pytest.fixture(scope="module")
