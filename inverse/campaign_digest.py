@@ -30,6 +30,9 @@ GRAVITY = {"note": 0, "caution": 1, "fault": 2}
 SPEED = re.compile(r"speed|velocity|flow|wind|\brpm\b|reynolds|\bfan\b", re.IGNORECASE)
 """What the name of a column may hold that h is looked at against."""
 _PLAIN = re.compile(r"[0-9.eE+\-\n]*")
+MOST_COUNTED = (
+    5.0  # standard uncertainties that a residual counts for, so that one run does not speak for all
+)
 FEWEST = 10  # runs of which a drift is asked
 DRIFTS = 0.01  # p-value below which there is said to be one
 TENTH = 10  # the first and the last part of the runs that a drift is measured by
@@ -40,7 +43,7 @@ LONGEST_REASONS = 500
 
 @dataclass
 class SensorRecord:
-    """How one sensor fared: runs, sums of residuals [K or W] and of their ratios to the uncertainty.
+    """How one sensor fared: runs, sums of residuals [K or W] and of their ratios to the uncertainty, cut off.
 
     `beyond`: runs with a residual of more than two standard uncertainties; `aside`: runs in which its reading
     was set aside; `accused`: runs with a finding that names it; `findings`: those, by code; `unreadable`:
@@ -134,10 +137,11 @@ class Digest:
         self._note_findings(source, result["findings"])
         for name, (residual, ratio) in result["residuals"].items():
             record = self._sensor(source, name)
+            counted = min(max(ratio, -MOST_COUNTED), MOST_COUNTED)
             record.runs += 1
-            record.residuals += residual
-            record.ratios += ratio
-            record.squares += ratio * ratio
+            record.residuals += residual * (counted / ratio if ratio else 1.0)
+            record.ratios += counted
+            record.squares += counted * counted
             record.beyond += abs(ratio) > 2.0
         for name in result["aside"]:
             self._sensor(source, name).aside += 1

@@ -113,6 +113,13 @@ def test_residuals_add_up_by_sensor() -> None:
     assert record.residuals == pytest.approx(0.3)
 
 
+def test_one_run_does_not_speak_for_all() -> None:
+    entries = [*(entry(i, 170.0, residual=0.0) for i in range(9)), entry(9, 170.0, residual=800.0)]
+    record = digest(*entries).sensors[DESCRIBED.title, "T1"]
+    assert (record.ratios, record.beyond) == (5.0, 1)
+    assert record.residuals == pytest.approx(0.5)  # as far as five of its uncertainties
+
+
 def test_the_speed_is_found_and_texts_are_told_from_numbers() -> None:
     cells = ("2.5", "", "-1e1", "2")
     found = digest(*(entry(i, 170.0, speed=cell) for i, cell in enumerate(cells)))
