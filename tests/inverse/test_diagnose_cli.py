@@ -232,6 +232,23 @@ def test_a_thermometer_that_is_off_is_found_and_the_fin_is_not_blamed(
     assert "The fin itself seems healthy" in out
 
 
+def test_swapped_thermometers_are_found_in_the_run_that_is_asked_for(tmp_path: Path) -> None:
+    datasets.copy("bench-pin", tmp_path)
+    table = tmp_path / "readings.csv"
+    header, good = table.read_text(encoding="utf-8").splitlines()
+    swapped = good.replace("bench,", "swapped,").replace("65.55,60.03", "60.03,65.55")
+    assert swapped.count("60.03,65.55") == 1
+    table.write_text("\n".join([header, good, swapped]), encoding="utf-8")
+    arguments = ("diagnose", tmp_path / "rig.toml", table, "--out", tmp_path / "out", "--quiet")
+    assert run(*arguments, "--run", "swapped") == 0
+    found = json.loads((tmp_path / "out" / "diagnosis.json").read_text(encoding="utf-8"))
+    assert found["run"] == "swapped"
+    assert found["causes"][0]["code"] == "sensor-swap"
+    (fault,) = found["measurement_faults"]
+    assert (fault["code"], "T2 and T3 are swapped" in fault["message"]) == ("sensor-swap", True)
+    assert found["fin_healthy_probability"] > 0.8
+
+
 @pytest.mark.parametrize("as_read", [True, False])
 def test_fit_takes_wrong_readings_as_they_stand_where_that_is_asked_for(
     rig: Path, monkeypatch: pytest.MonkeyPatch, as_read: bool
