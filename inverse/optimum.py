@@ -54,13 +54,17 @@ def fit(problem: Problem, start: Array | None = None) -> LeastSquares:
     it would be none.
     """
     z = starting_point(problem) if start is None else start
-    if posing.needs_linearising(problem):
-        for n in range(LINEARISING_ROUNDS):
-            before, z = z, _fit_given_noise_model(problem, z, NEAR).z
-            if n > 0 and np.array_equal(before, z):
-                break
-            problem = posing.linearise(problem, z)
-    return _fit_given_noise_model(problem, z)
+    if not posing.needs_linearising(problem):
+        return _fit_given_noise_model(problem, z)
+    z = _fit_given_noise_model(problem, z, NEAR).z
+    for _ in range(LINEARISING_ROUNDS):
+        problem = posing.linearise(problem, z)
+        found = _fit_given_noise_model(problem, z)
+        moved = found.point.jacobian @ (found.z - z)[: problem.n_physical]
+        if moved @ moved <= NEAR * found.point.chi_square:
+            break
+        z = found.z
+    return found
 
 
 def refit(found: LeastSquares, start: Array) -> LeastSquares:
