@@ -61,7 +61,7 @@ def collect(
         *([] if smooth is None else [smooth]),
         *wrong,
         *([] if explained else _misfit(quality)),
-        *_validity(found),
+        *thick_fin(found["transverse_biot"].median),
         *_thermocouples(best),
         *_heater(found, best, heat),
         *_unread_air(rig, found, best),
@@ -164,8 +164,8 @@ def _misfit(quality: FitQuality) -> list[Finding]:
     return [Finding("misfit", "caution", message, evidence={"p_value": quality.p_value})]
 
 
-def _validity(found: Mapping[str, Summary]) -> list[Finding]:
-    biot = found["transverse_biot"].median
+def thick_fin(biot: float | None) -> list[Finding]:
+    """Return a finding where a transverse Biot number is too large for one dimension."""
     if biot is None or biot <= TRANSVERSE_BIOT_LIMIT:
         return []
     message = (

@@ -19,7 +19,9 @@ from numpy.typing import NDArray
 from finback import (
     candidates,
     checks,
+    concerns,
     densities,
+    derived,
     expectation,
     faults,
     healthy,
@@ -275,6 +277,8 @@ def _assemble(
             cause = _cause(suspicion, known, parts)
             causes += [] if cause is None else [cause]
     causes.sort(key=lambda cause: -cause.probability)
+    likeliest = max(every, key=lambda each: each.log_weight)
+    biot = derived.evaluate(likeliest.base.problem, likeliest.mean[None])["transverse_biot"]
     return Diagnosis(
         rig=rig,
         readings=readings,
@@ -283,11 +287,11 @@ def _assemble(
         causes=tuple(causes),
         together=tuple(_together(every, shares)),
         costs=tuple(_costs(parts, suspicions)),
-        measurement_faults=tuple(faults.findings(suspicions, {})),
+        measurement_faults=tuple(faults.findings(suspicions, {}, heaters=True)),
         next_measurements=planning.rank(rig, every, np.random.SeedSequence(seed)),
         cannot_tell=tuple(_cannot_tell(causes)),
         missing=known.missing,
-        findings=(*known.findings, *rig.assumed),
+        findings=(*concerns.thick_fin(float(biot[0])), *known.findings, *rig.assumed),
         provenance=provenance(rig, readings),
     )
 

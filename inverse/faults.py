@@ -220,13 +220,19 @@ def _without(
     return clean, done
 
 
-def findings(suspicions: Sequence[Suspicion], done: Mapping[str, str]) -> list[Finding]:
-    """Return the findings of what is likely wrong; `done`, by sensor, what was done about it."""
+def findings(
+    suspicions: Sequence[Suspicion], done: Mapping[str, str], heaters: bool = False
+) -> list[Finding]:
+    """Return the findings of what is likely wrong.
+
+    Arguments: suspicions; done, by sensor, what was done about it; heaters, whether those that limit the heat
+    are spoken of: a fit has a finding of its own for them.
+    """
     found = []
     for name, own in _of_sensors(suspicions).items():
         total = sum(each.probability for each in own)
         limits = any(name == sensor.name for sensor in own[0].base.problem.measured.bounds)
-        if total > LIKELY and not limits:  # of an impossible heat the fit itself says how much it is
+        if total > LIKELY and (heaters or not limits):
             found += _of_reading(name, own, total, done.get(name))
     for each in suspicions:
         if each.suspect.kind == "swap" and each.probability > LIKELY:

@@ -234,3 +234,16 @@ def test_the_loose_joint_of_the_bench_is_named_and_its_cost_is_that_of_its_truth
     assert expected.startswith("5e-5")
     assert cause.heat_recovered is not None
     assert math.isclose(cause.heat_recovered.median, 1.6, abs_tol=0.3)
+
+
+def test_a_fin_that_is_too_thick_is_said_to_be() -> None:
+    found = diagnose(Truth(k=1.5), seed=None, length=0.03, diameter=0.02, holes=(0.002, 0.01, 0.02, 0.028),
+                     conductivity=Quantity(1.5, 0.05))  # fmt: skip
+    assert "thick-fin" in {finding.code for finding in found.findings}
+
+
+def test_a_heat_that_no_heater_supplies_is_a_fault_of_the_measurement() -> None:
+    of_rig = described(places=("plate", "air", "heater"))
+    run, _ = draw(of_rig, Truth(), np.random.default_rng(1), power=2.0)
+    found = diagnosis.diagnose(of_rig, run)
+    assert ("heat-balance", "PH") in {(finding.code, finding.sensor) for finding in found.measurement_faults}
