@@ -186,7 +186,7 @@ def _digest(sources: Sequence[Source], seed: int) -> str:
 def _taker(ledger: Ledger, sources: Sequence[Source], seed: int, keep: bool) -> Callable[[int], Block | None]:
     """Return what hands out the runs without a result, block after block."""
     settings = [
-        campaign_block.pack(source.rig, _sensors_alone(source.table.columns), source.table.decimal_comma)
+        campaign_block.pack(source.rig, sensors_alone(source.table.columns), source.table.decimal_comma)
         for source in sources
     ]
     last = 0
@@ -203,7 +203,7 @@ def _taker(ledger: Ledger, sources: Sequence[Source], seed: int, keep: bool) -> 
     return take
 
 
-def _sensors_alone(columns: Columns) -> Columns:
+def sensors_alone(columns: Columns) -> Columns:
     """Return the columns of a row that holds the sensors' cells alone, in their order."""
     moved = tuple(replace(column, index=at) for at, column in enumerate(columns.sensors))
     return Columns(moved, None, {})

@@ -20,6 +20,8 @@ from finback.errors import FinbackError, InputError
 from finback.wording import plain, quoted
 
 if TYPE_CHECKING:
+    from finback.campaign import Source
+    from finback.pooled_runs import Pool
     from finback.readings import Readings
     from finback.rig import Rig
 
@@ -130,6 +132,10 @@ def batch(
     keep_posteriors: Annotated[
         bool, typer.Option("--keep-posteriors", help="Write the posterior of every run as well.")
     ] = False,
+    share: Annotated[
+        str | None,
+        typer.Option("--share", metavar="NAMES", help="Estimate once for all runs as well, such as k,joint."),
+    ] = None,
     seed: Seed = 1,
     quiet: Quiet = False,
     force: Annotated[
@@ -143,6 +149,7 @@ def batch(
     from finback.report import campaign_terminal
 
     sources = campaign.read(inputs)
+    pool_of_runs = None if share is None else _pool_of(sources, share)
     campaign_table.prepare(out, force)
     pool = campaign.cluster(scheduler) if scheduler else campaign.processes(workers or os.cpu_count() or 1)
     with closing(pool), _campaign_progress(quiet) as progress:
@@ -158,6 +165,14 @@ def batch(
     digest = campaign_table.write(done)
     if not quiet:
         print(campaign_terminal.summary(done, digest))
+    if pool_of_runs is not None:
+        from finback import pooled
+        from finback.report import pooled_files
+
+        found = pooled.estimate(pool_of_runs, seed)
+        pooled_files.write(found, sources, out)
+        if not quiet:
+            print(pooled_files.summary(found, out))
     return 0 if digest.runs > digest.statuses["failed"] else 1
 
 
@@ -270,6 +285,13 @@ def demo(
     datasets.copy(name, folder)
     rig, readings = _read(folder / "rig.toml", folder / "readings.csv", None)
     return _fit_into(folder, rig, readings, seed=seed, quiet=quiet, force=True)
+
+
+def _pool_of(sources: "Sequence[Source]", share: str) -> "Pool":
+    """Return the runs of a campaign that are estimated together."""
+    from finback import pooled_runs
+
+    return pooled_runs.gather(sources, pooled_runs.parse(share, [source.rig for source in sources]))
 
 
 def _read(rig_file: Path, readings_file: Path, run: str | None) -> "tuple[Rig, Readings]":

@@ -1,0 +1,307 @@
+"""Newton steps for unknowns of which most belong to one run each and a few to all: an arrow-shaped system.
+
+With rows of residuals r, weights W, slopes J in a run's own unknowns and K in those that all runs share, the
+normal equations of Gauss and Newton have a block J'WJ for each run and a border J'WK. Own unknowns are
+eliminated run by run,
+
+    S = 1 + sum over runs of (K'WK - V'V),   V = L^-1 J'WK,   L L' = J'WJ,
+
+so that time and memory grow with the number of runs, and nothing is approximated. Several draws of what is
+held fixed (shared unknowns s, noise sigma) are solved side by side.
+"""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from finback.pooled_model import Group, Model
+
+Array = NDArray[np.float64]
+
+PREDICTIONS = 16_384  # of a piece: as many as are quick and small
+LARGEST_STEP = 1.0  # of an own unknown in one step, in its widest sd or in a logarithm
+SHORTER = 0.3  # share of a step that is tried next
+MOST_ROUNDS = 30
+SHARED_STEP = 1e-4  # of differences in shared unknowns, or a thousandth of their sd
+
+
+@dataclass
+class State:
+    """Where draws stand: own unknowns of each group (draws, R, p), and errors in common u (draws, m)."""
+
+    w: list[Array]
+    u: Array
+
+    def taken(self, draws: NDArray[np.bool_], other: "State") -> "State":
+        """Return the state with these draws (draws,) from another."""
+        at = draws[:, None, None]
+        w = [np.where(at, theirs, own) for own, theirs in zip(self.w, other.w, strict=True)]
+        return State(w, np.where(draws[:, None], other.u, self.u))
+
+    def moved(self, steps: "State", share: Array) -> "State":
+        """Return the state moved by shares (draws,) of steps."""
+        at = share[:, None, None]
+        w = [own + at * step for own, step in zip(self.w, steps.w, strict=True)]
+        return State(w, self.u + share[:, None] * steps.u)
+
+
+@dataclass(frozen=True)
+class Solved:
+    """A linearised system with its solution.
+
+    `cost` (draws,), half the weighted sum of squares and the log variances that hang on sigma; `gain`
+    (draws,), by how much a full step lowers it [nats]; `log_det` (draws,), of the curvature in own unknowns
+    and u; `border` (draws, q + m, q + m), the curvature in shared unknowns with the own ones eliminated, and
+    `step` (draws, q + m) in them, of which q are solved for where asked; `steps`, in everything but s;
+    `responses`, of own unknowns to those of the border (draws, R, p, q + m) a group; `spreads`, covariances
+    of own unknowns given the border's (draws, R, p, p); `squares` (R,) a group, weighted squares of each
+    run's readings, and `freedom`, how many of them its own unknowns use up; `scatter`, mean square of the
+    readings with an estimated noise [K²], with what their own unknowns leave open. The last five are of the
+    first draw only.
+    """
+
+    cost: Array
+    gain: Array
+    log_det: Array
+    border: Array
+    step: Array
+    steps: State
+    responses: list[Array]
+    spreads: list[Array]
+    squares: list[Array]
+    freedom: list[Array]
+    scatter: float
+
+
+@dataclass
+class _Sums:
+    """Sums over runs of what the border needs."""
+
+    cost: Array
+    gain: Array
+    log_det: Array
+    border: Array
+    pull: Array
+    scatter: float = 0.0
+    counted: int = 0
+
+
+def solve(model: Model, state: State, s: Array, sigma: Array, shared: bool = False) -> Solved:
+    """Linearise at a state and take a Gauss-Newton step.
+
+    Arguments: model, with the effects of its errors; state of D draws; s (D, q); sigma (D,) [K]; shared,
+    whether s is solved for too, with its prior, of one draw alone.
+    """
+    draws, m, q = len(s), len(model.errors), s.shape[1] if shared else 0
+    cost, gain, log_det = np.zeros((3, draws))
+    sums = _Sums(cost, gain, log_det, np.zeros((draws, q + m, q + m)), np.zeros((draws, q + m)))
+    pieces = [list(_pieces(model, group, w, s, state.u, sigma, shared, sums))
+              for group, w in zip(model.groups, state.w, strict=True)]  # fmt: skip
+    if shared and q:
+        means, sds = _beforehand(model)
+        sums.pull[:, :q] -= (s - means) / sds**2
+        sums.border[:, range(q), range(q)] += sds**-2
+        sums.cost += 0.5 * np.square((s - means) / sds).sum(axis=1)
+    sums.border[:, range(q, q + m), range(q, q + m)] += 1.0
+    sums.pull[:, q:] -= state.u
+    sums.cost += 0.5 * np.square(state.u).sum(axis=1)
+    step = np.asarray(np.linalg.solve(sums.border, sums.pull[..., None])[..., 0])
+    sums.gain += 0.5 * np.einsum("dg,dg->d", sums.pull, step)
+    sums.log_det += np.linalg.slogdet(sums.border)[1]
+    own_steps, responses, spreads, squares, freedom = [], [], [], [], []
+    for group, found in zip(model.groups, pieces, strict=True):
+        moved = [own - np.einsum("drpg,dg->drp", response, step) for own, response, *_ in found]
+        limits = np.minimum(group.own_sds, LARGEST_STEP) if group.problem else group.own_sds
+        limits = np.where([p.transform == "identity" for p in group.own], np.inf, limits)
+        own_steps.append(np.clip(np.concatenate(moved, axis=1), -limits, limits))
+        responses.append(np.concatenate([-each[1] for each in found], axis=1))
+        spreads.append(np.concatenate([each[2] for each in found]))
+        squares.append(np.concatenate([each[3] for each in found]))
+        freedom.append(np.concatenate([each[4] for each in found]))
+    scatter = sums.scatter / sums.counted if sums.counted else 0.0
+    steps = State(own_steps, step[:, q:])
+    return Solved(
+        sums.cost,
+        sums.gain,
+        sums.log_det,
+        sums.border,
+        step,
+        steps,
+        responses,
+        spreads,
+        squares,
+        freedom,
+        scatter,
+    )
+
+
+def settle(model: Model, state: State, s: Array, sigma: Array, tolerance: float) -> tuple[State, Solved]:
+    """Find the best own unknowns and errors in common, with s and sigma held.
+
+    Arguments: as those of `solve`; tolerance [nats] of what a last step would gain, which is taken off the
+    cost. A step that does not lower the cost is shortened, draw by draw.
+    """
+    share = np.ones(len(s))
+    best, found = state, solve(model, state, s, sigma)
+    cost, steps, gain = found.cost, found.steps, found.gain
+    for _ in range(MOST_ROUNDS):
+        active = gain > tolerance
+        if not active.any():
+            break
+        trial = best.moved(steps, np.where(active, share, 0.0))
+        tried = solve(model, trial, s, sigma)
+        better = active & (tried.cost < cost)
+        if better.any():
+            best = best.taken(better, trial)
+            at = better[:, None, None]
+            steps = State(
+                [np.where(at, new, old) for new, old in zip(tried.steps.w, steps.w, strict=True)],
+                np.where(better[:, None], tried.steps.u, steps.u),
+            )
+            cost = np.where(better, tried.cost, cost)
+            gain = np.where(better, tried.gain, gain)
+            found = _merged(found, tried, better)
+        share = np.where(better, 1.0, share * SHORTER)
+        if (share[active] < SHORTER**5).any():
+            gain = np.where(share < SHORTER**5, 0.0, gain)
+    return best, found
+
+
+def _merged(old: Solved, new: Solved, better: NDArray[np.bool_]) -> Solved:
+    """Return what was solved, from the new one where that is better."""
+    first = new if better[0] else old
+    return Solved(
+        np.where(better, new.cost, old.cost),
+        np.where(better, new.gain, old.gain),
+        np.where(better, new.log_det, old.log_det),
+        np.where(better[:, None, None], new.border, old.border),
+        np.where(better[:, None], new.step, old.step),
+        new.steps if better.all() else old.steps.taken(better, new.steps),
+        first.responses,
+        first.spreads,
+        first.squares,
+        first.freedom,
+        first.scatter,
+    )
+
+
+def cost_of(model: Model, state: State, s: Array, sigma: Array) -> Array:
+    """Return the cost of each draw (D,) with the prior of the shared unknowns, without linearising."""
+    found = 0.5 * np.square(state.u).sum(axis=1)
+    if s.shape[1]:
+        means, sds = _beforehand(model)
+        found = found + 0.5 * np.square((s - means) / sds).sum(axis=1)
+    for group, w in zip(model.groups, state.w, strict=True):
+        for runs in _blocks(group, len(s), 1):
+            own = w[:, runs]
+            predicted = _predict(group, own, s, runs)
+            residuals = _residuals(group, predicted, own, state.u, runs)
+            weights, logs = _weights(group, runs, sigma)
+            found = found + 0.5 * np.einsum("drn,drn->d", residuals**2, weights) + logs
+    return np.where(np.isfinite(found), found, np.inf)
+
+
+def _beforehand(model: Model) -> tuple[Array, Array]:
+    priors = [parameter.prior for parameter in model.shared[: model.n_physical]]
+    return np.array([prior.mean for prior in priors]), np.array([prior.sd for prior in priors])
+
+
+def _blocks(group: Group, draws: int, predictions: int) -> Iterator[slice]:
+    at_a_time = max(1, PREDICTIONS // (draws * predictions))
+    for start in range(0, group.size, at_a_time):
+        yield slice(start, min(start + at_a_time, group.size))
+
+
+def _predict(group: Group, w: Array, s: Array, runs: slice) -> Array:
+    """Predict readings and bounds for own unknowns (D, R, p) and shared ones (D, q)."""
+    draws, count, p = w.shape
+    numbers = np.tile(np.arange(runs.start, runs.stop), draws)
+    found = group.predict(w.reshape(-1, p), np.repeat(s, count, axis=0), numbers)
+    return found.reshape(draws, count, -1)
+
+
+def _residuals(group: Group, predicted: Array, w: Array, u: Array, runs: slice) -> Array:
+    """Return residuals of all rows (D, R, N)."""
+    errors = group.errors[runs]
+    count, rows, m = errors.shape
+    common = (u @ errors.reshape(-1, m).T).reshape(len(u), count, rows)
+    return np.asarray(group.targets[runs] - np.concatenate([predicted, w], axis=2) - common)
+
+
+def _weights(group: Group, runs: slice, sigma: Array) -> tuple[Array, Array]:
+    """Return weights (D, R, N), and what the log variances add to the cost (D,)."""
+    weights = group.weights[None, runs]
+    count = int(group.are_estimated.sum())
+    if not count:
+        return np.broadcast_to(weights, (len(sigma), *weights.shape[1:])), np.zeros(len(sigma))
+    factor = np.where(group.are_estimated, sigma[:, None, None] ** -2, 1.0)
+    return weights * factor, count * weights.shape[1] * np.log(sigma)
+
+
+def _pieces(
+    model: Model, group: Group, w: Array, s: Array, u: Array, sigma: Array, shared: bool, sums: _Sums
+) -> Iterator[tuple[Array, Array, Array, Array, Array]]:
+    """Add the runs of a group to the sums, block by block.
+
+    Yields for each block the own step given no step of the border (D, R, p), what the border's takes off it
+    (D, R, p, q + m), and of the first draw the spreads (R, p, p), squares (R,) and freedom (R,).
+    """
+    draws, _, p = w.shape
+    q = s.shape[1] if shared else 0
+    s_widths = np.minimum(1e-3 * _beforehand(model)[1], SHARED_STEP) if q else np.zeros(0)
+    readings = group.values.shape[1]
+    if not q:
+        stated, estimated = group.seen
+        sums.border += stated + estimated * sigma[:, None, None] ** -2
+    for runs in _blocks(group, draws, 1 + 2 * (p + q)):
+        own = w[:, runs]
+        centre = _predict(group, own, s, runs)
+        slopes = np.zeros((draws, own.shape[1], group.rows, p))
+        for j in range(p):
+            away = np.zeros(p)
+            away[j] = group.widths[j]
+            up, down = (_predict(group, own + sign * away, s, runs) for sign in (1, -1))
+            slopes[:, :, : up.shape[2], j] = (up - down) / (2 * group.widths[j])
+            slopes[:, :, up.shape[2] + j, j] = 1.0
+        errors = group.errors[runs]
+        border = np.zeros((draws if q else 0, own.shape[1], group.rows, q))
+        for j in range(q):
+            away = np.zeros(q)
+            away[j] = s_widths[j]
+            up, down = (_predict(group, own, s + sign * away, runs) for sign in (1, -1))
+            border[:, :, : up.shape[2], j] = (up - down) / (2 * s_widths[j])
+        border = np.concatenate([border, errors[None]], axis=3) if q else errors[None]
+        residuals = _residuals(group, centre, own, u, runs)
+        weights, logs = _weights(group, runs, sigma)
+        weighted = slopes.transpose(0, 1, 3, 2) * weights[:, :, None]
+        root = np.linalg.inv(np.linalg.cholesky(weighted @ slopes))
+        across = root @ (weighted @ border)
+        pull = root @ (weighted @ residuals[..., None])
+        if q:  # of one draw
+            flat = (border[0] * np.sqrt(weights[0])[..., None]).reshape(-1, border.shape[3])
+            sums.border += flat.T @ flat
+        seen = across.reshape(draws, -1, across.shape[-1])
+        sums.border -= seen.transpose(0, 2, 1) @ seen
+        sums.pull += (weights * residuals).reshape(draws, -1) @ border[0].reshape(-1, border.shape[3])
+        sums.pull -= (seen.transpose(0, 2, 1) @ pull.reshape(draws, -1, 1))[..., 0]
+        sums.cost += 0.5 * np.einsum("drn,drn->d", residuals**2, weights) + logs
+        sums.gain += 0.5 * np.square(pull).sum(axis=(1, 2, 3))
+        sums.log_det -= 2 * np.log(np.einsum("drpp->drp", root)).sum(axis=(1, 2))
+        back = root.transpose(0, 1, 3, 2)
+        spread = back[0] @ root[0]
+        used = np.einsum("rnp,rpk,rnk,rn->rn", slopes[0], spread, slopes[0], weights[0])[:, :readings]
+        squares = (residuals[0] ** 2 * weights[0])[:, :readings]
+        if group.estimated.any():
+            chosen = group.estimated
+            at = sigma[0] ** 2
+            sums.scatter += at * float((squares[:, chosen] + used[:, chosen]).sum())
+            sums.counted += int(chosen.sum()) * own.shape[1]
+        yield (
+            (back @ pull)[..., 0],
+            back @ across,
+            spread,
+            squares.sum(axis=1),
+            readings - used.sum(axis=1),
+        )
