@@ -314,6 +314,7 @@ def test_the_folder_of_another_campaign_is_left_alone(tmp_path: Path) -> None:
         campaign_table.prepare(out)
 
 
+@pytest.mark.slow
 def test_a_worker_that_dies_is_replaced(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setenv("FINBACK_TEST_MARKER", str(tmp_path / "marker"))
     pool = Doomed(2, dying_once)

@@ -11,6 +11,7 @@ from finback.errors import InputError
 distributed = pytest.importorskip("distributed")
 
 
+@pytest.mark.slow
 @pytest.mark.filterwarnings("ignore")  # the cluster's own, of ports and event loops
 def test_a_cluster_gives_the_same_bytes(tmp_path: Path) -> None:
     described, readings = write(tmp_path, readings=text(rows(12)))
