@@ -262,6 +262,14 @@ def _of_reading(name: str, own: Sequence[Suspicion], total: float, done: str | N
 def in_words(each: Suspicion) -> str:
     """Return what is wrong with a reading, how far it is off and what else would do the same."""
     name, error = each.suspect.sensor, f"{abs(each.error):.2g} ± {each.sd:.1g} K"
+    if each.suspect.kind == "swap":
+        return f"{name} and {each.suspect.other} are swapped: each reads what the other should"
+    if each.suspect.kind == "scatter" and each.base.scatter is not None:
+        stated = math.sqrt(float(np.trace(each.base.scatter)) / len(each.base.problem.measured.positions))
+        return (
+            f"The thermometers along the fin scatter by {_scatter(each):.2g} K about every model, where "
+            f"{stated:.2g} K is stated of them and their holes"
+        )
     higher = "higher" if each.error > 0 else "lower"
     if each.suspect.kind == "offset":
         return f"{name} reads {error} {higher} than the other readings say{_as_a_shift(each)}"
@@ -307,27 +315,22 @@ def _named(each: Suspicion) -> str:
 
 
 def _of_swap(each: Suspicion, done: str | None) -> Finding:
-    ending = f"; {done}" if done else ""
-    message = (
-        f"{each.suspect.sensor} and {each.suspect.other} are swapped: each reads what the other should "
-        f"(probability {_shown(each.probability)}){ending}."
-    )
-    evidence = {"probability": each.probability}
+    message = f"{in_words(each)} (probability {_shown(each.probability)}){f'; {done}' if done else ''}."
+    evidence = {"probability": each.probability, "other": str(each.suspect.other)}
     return Finding(each.suspect.code, _severity(each.probability), message, each.suspect.sensor, evidence)
 
 
 def _of_scatter(each: Suspicion, done: str | None) -> Finding:
-    best, fin = each.best, len(each.base.problem.measured.positions)
-    residuals = (best.values - best.base.problem.predict(best.mean[None])[0, : len(best.values)])[:fin]
-    scatter = float(np.sqrt(np.mean(np.square(residuals))))
-    stated = math.sqrt(float(np.trace(best.base.scatter) / fin)) if best.base.scatter is not None else 0.0
-    ending = f"; {done}" if done else ""
-    message = (
-        f"The thermometers along the fin scatter by {scatter:.2g} K about every model, where {stated:.2g} K "
-        f"is stated of them and their holes (probability {_shown(each.probability)}){ending}."
-    )
-    evidence = {"probability": each.probability, "scatter": scatter}
+    message = f"{in_words(each)} (probability {_shown(each.probability)}){f'; {done}' if done else ''}."
+    evidence = {"probability": each.probability, "scatter": _scatter(each)}
     return Finding(each.suspect.code, "caution", message, evidence=evidence)
+
+
+def _scatter(each: Suspicion) -> float:
+    """Return how far the readings along the fin scatter about the likeliest model [K]."""
+    best, fin = each.best, len(each.base.problem.measured.positions)
+    predicted = best.base.problem.predict(best.mean[None])[0, : len(best.values)]
+    return float(np.sqrt(np.mean(np.square(best.values - predicted)[:fin])))
 
 
 def _severity(probability: float) -> Severity:

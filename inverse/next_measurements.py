@@ -47,11 +47,12 @@ NARROWER = 0.97  # or the sd of h by which it is
 class NextMeasurement:
     """One thing to measure.
 
-    `what`; `expected_gain` [bits] about the cause; `message`; `h_sd_ratio`, the standard deviation of h
-    afterwards over that of now [1].
+    `what`, and `how` in words; `expected_gain` [bits] about the cause; `message`, all of it; `h_sd_ratio`,
+    the standard deviation of h afterwards over that of now [1].
     """
 
     what: str
+    how: str
     expected_gain: float
     message: str
     h_sd_ratio: float
@@ -85,18 +86,34 @@ def rank(rig: Rig, found: Sequence[Hypothesis], seed: np.random.SeedSequence) ->
     order = order[shares[order] > LEAST]
     kept = [found[at] for at in order]
     weights = shares[order] / shares[order].sum()
-    labels = [tuple(sorted(map(str, map(key, each.suspects)))) for each in kept]
+    labels = [_label(each) for each in kept]
     listed = []
     for option in _options(rig, kept, weights):
         predicted = [option.predict(each) for each in kept]
         gain = _gain(predicted, kept, weights, labels, np.random.default_rng(seed))
         ratio = _narrowing(predicted, kept, weights)
         if gain > WORTH or ratio < NARROWER:
-            listed.append(NextMeasurement(option.what, gain, _message(option.words, gain, ratio), ratio))
+            message = _message(option.words, gain, ratio)
+            listed.append(NextMeasurement(option.what, option.words, gain, message, ratio))
     listed.sort(key=lambda each: (-round(each.expected_gain, 3), each.h_sd_ratio))
     best = listed[0].expected_gain if listed else 0.0
     listed.sort(key=lambda each: each.what != PLATE or each.expected_gain < NEARLY * best)
     return tuple(_one_hole(listed))
+
+
+def doubt(found: Sequence[Hypothesis]) -> float:
+    """Return what is open about what is wrong [bits], by hypotheses with their weights."""
+    logs = np.array([each.log_weight for each in found])
+    weights = np.exp(logs - logs.max())
+    shares: dict[tuple[str, ...], float] = {}
+    for each, weight in zip(found, (weights / weights.sum()).tolist(), strict=True):
+        shares[_label(each)] = shares.get(_label(each), 0.0) + weight
+    return float(_entropy(np.array(list(shares.values()))))
+
+
+def _label(hypothesis: Hypothesis) -> tuple[str, ...]:
+    """Return what is wrong by a hypothesis, whatever the candidate."""
+    return tuple(sorted(map(str, map(key, hypothesis.suspects))))
 
 
 def _one_hole(listed: Sequence[NextMeasurement]) -> Iterator[NextMeasurement]:

@@ -178,7 +178,7 @@ class Problem:
 
     @cached_property
     def _kinds(self) -> tuple[NDArray[np.intp], NDArray[np.intp], Array]:
-        """Parts of the noise that are alike: where the first of each kind is, which kind each is, how many."""
+        """Parts of the noise that are alike: where the first of a kind is, which kind each is, how many."""
         both = np.stack([self.noise.floor, self.noise.slope])
         _, first, which, counts = np.unique(
             both, axis=1, return_index=True, return_inverse=True, return_counts=True
@@ -274,7 +274,7 @@ class Problem:
         return whitened, log_variances
 
     def bound_residuals(self, predicted: Array) -> Array:
-        """Return the whitened residuals of the heaters that only limit the heat, for predictions [W] (..., b)."""
+        """Return the whitened residuals of heaters that only limit the heat, for predictions [W] (..., b)."""
         from scipy.special import log_ndtr
 
         margin = (self.measured.bound_values - predicted) / self.measured.bound_sds

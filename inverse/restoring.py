@@ -36,13 +36,15 @@ class Effects:
     """What a fin does by one hypothesis, draw by draw: heat into the fin [W] and base temperature [K].
 
     `now` (2, n); `healthy` (2, n), with everything put right; `restored`, by the key of each suspect of the
-    hypothesis, with that one put right, (2, n) each; `values` (n,) of the parameters by name, SI units.
+    hypothesis, with that one put right, (2, n) each; `values` (n,) of the parameters by name, SI units, and
+    `right`, what those of a healthy fin would be.
     """
 
     now: Array
     healthy: Array
     restored: Mapping[tuple[str, str | None, str | None], Array]
     values: Mapping[str, Array]
+    right: Mapping[str, Array]
 
 
 def effects(
@@ -79,7 +81,7 @@ def effects(
     whole = tip if tipped and tip is not None else own
     healthy_now = now if not every and whole == own else _solve(hypothesis, {**values, **every}, whole)
     shown = {name: np.broadcast_to(np.asarray(value), (len(z),)) for name, value in values.items()}
-    return Effects(now, healthy_now, restored, shown)
+    return Effects(now, healthy_now, restored, shown, right)
 
 
 def pooled(parts: Sequence[tuple[float, Array]], unit: str, offset: float = 0.0) -> Interval:

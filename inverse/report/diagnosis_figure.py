@@ -10,6 +10,7 @@ from matplotlib.patches import Rectangle
 from matplotlib.ticker import MaxNLocator
 
 from finback.diagnosis import Diagnosis
+from finback.models.constants import ZERO_CELSIUS
 from finback.report import diagnosis_scenes as scenes
 from finback.report.figures import (
     BLUE,
@@ -152,25 +153,23 @@ def _readings(found: Diagnosis) -> Figure:
     figure = Figure(figsize=(WIDTH, 2.9))
     axes = figure.add_axes((0.105, 0.16, 0.875, 0.8))
     reads = scenes.temperatures(found)
-    right = sorted(
-        (read.x, read.measured if read.should is None else read.should)
-        for read in reads
-        if read.x is not None
-    )
+    x, temperatures = found.profile
     line: dict[str, Any] = {"color": SKY, "linewidth": 1.2, "zorder": 1}
-    axes.plot([x for x, _ in right], [value for _, value in right], **line, label="straight lines, a guide")
+    axes.plot(1e3 * x, temperatures - ZERO_CELSIUS, **line, label="the likeliest fin")
     for read in reads:
-        x = BESIDE[read.place] * length if read.x is None else read.x
+        at = BESIDE[read.place] * length if read.x is None else read.x
         shape, colour = MARKERS[read.place]
         if read.should is None:
-            axes.plot([x], [read.measured], shape, color=colour, markersize=5, label=f"{read.place} readings")
+            axes.plot(
+                [at], [read.measured], shape, color=colour, markersize=5, label=f"{read.place} readings"
+            )
             continue
-        axes.plot([x], [read.measured], "X", color=VERMILION, markersize=7, label="likely wrong")
-        axes.plot([x], [read.should], "o", markerfacecolor="white", color=BLUE, label="what it should read")
+        axes.plot([at], [read.measured], "X", color=VERMILION, markersize=7, label="likely wrong")
+        axes.plot([at], [read.should], "o", markerfacecolor="white", color=BLUE, label="what it should read")
         arrow: dict[str, Any] = {"arrowstyle": "-|>", "color": VERMILION, "shrinkA": 4, "shrinkB": 3}
-        axes.annotate("", (x, read.should), (x, read.measured), arrowprops=arrow)
+        axes.annotate("", (at, read.should), (at, read.measured), arrowprops=arrow)
         offset: dict[str, Any] = {"textcoords": "offset points", "xytext": (8, 4), "color": INK}
-        axes.annotate(read.name, (x, read.measured), **offset, **PLAIN)
+        axes.annotate(read.name, (at, read.measured), **offset, **PLAIN)
     axes.set_xlabel("distance from the base, mm (plate at the left, air at the right)")
     axes.set_ylabel("temperature, °C")
     handles = dict(zip(*reversed(axes.get_legend_handles_labels()), strict=True))

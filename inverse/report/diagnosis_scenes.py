@@ -4,13 +4,12 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import TypeGuard
 
-from finback.diagnosis import COSTED, HEALTHY, Cause, Diagnosis
-from finback.findings import Finding
+from finback.causes import COSTED, HEALTHY, Cause
+from finback.diagnosis import Diagnosis
 from finback.models.constants import ZERO_CELSIUS
 from finback.posing import is_read
 from finback.report import phrases
 from finback.restoring import Interval
-from finback.rig import Rig
 
 LEAST_REST = 0.02  # of what a healthy fin does more, from which the rest has a step of its own
 SEEN = 0.1  # and of the 95 % interval of that
@@ -176,17 +175,9 @@ def _should(found: Diagnosis) -> dict[str, float]:
         name = finding.sensor
         if name is None or name not in values or not found.rig.sensors[name].reads_temperature:
             continue
-        other = _swapped_with(finding, found.rig)
-        if other is not None and other in values:
+        other = str(finding.evidence.get("other", ""))
+        if other in values:
             wrong[name], wrong[other] = values[other], values[name]
         elif "error" in finding.evidence:
             wrong.setdefault(name, values[name] - float(finding.evidence["error"]))
     return wrong
-
-
-def _swapped_with(finding: Finding, rig: Rig) -> str | None:
-    """Return the other of two swapped sensors, which only the sentence of their finding names."""
-    if finding.code != "sensor-swap":
-        return None
-    named = (name for name in rig.sensors if finding.message.startswith(f"{finding.sensor} and {name} are "))
-    return next(named, None)

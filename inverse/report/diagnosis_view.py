@@ -1,11 +1,11 @@
 """View of a diagnosis: everything that its page and its summary say, as text."""
 
-import math
 from dataclasses import dataclass
 from pathlib import PurePath
 from typing import TypeGuard
 
-from finback.diagnosis import CLEAR, HEALTHY, NAMES, Cause, Diagnosis
+from finback.causes import CLEAR, HEALTHY, LIKELY, NAMES, Cause
+from finback.diagnosis import Diagnosis
 from finback.findings import Finding
 from finback.next_measurements import NARROWER, NextMeasurement
 from finback.report import diagnosis_words, method, phrases
@@ -13,8 +13,7 @@ from finback.report.diagnosis_scenes import limits, middle, moves, signed
 from finback.restoring import Interval
 from finback.suspects import ODDS
 
-LIKELY = 0.5  # probability from which a cause is spoken of as it is
-SURE = 0.9  # and from which no further measurement is asked for before it is put right
+SURE = 0.9  # probability from which no further measurement is asked for before it is put right
 ARTICLES = ("A ", "An ", "Another ", "The ")
 SAME = 0.1  # of the 95 % interval of the heat, within which a healthy fin does the same
 LEAST_DOUBT = 0.01  # bits, below which there is none
@@ -129,7 +128,7 @@ def build(found: Diagnosis) -> DiagnosisView:
         ),
         costs=_costs(found),
         cannot_tell=tuple(phrases.told(sentence) for sentence in found.cannot_tell),
-        next=tuple(_next(each, doubt(found)) for each in found.next_measurements),
+        next=tuple(_next(each, found.doubt) for each in found.next_measurements),
         left=_left(told),
         faults=_rows(found.measurement_faults),
         missing=tuple(phrases.told(sentence) for sentence in found.missing),
@@ -153,18 +152,6 @@ def leading(found: Diagnosis) -> tuple[Cause, ...]:
     return (first,) if first.probability >= LIKELY else ()
 
 
-def doubt(found: Diagnosis) -> float:
-    """Return the doubt that there is about the cause [bits], by what is listed."""
-    pairs = [pair.probability for pair in found.together]
-    alone = [
-        max(cause.probability - sum(p.probability for p in found.together if cause.name in p.names), 0.0)
-        for cause in found.causes
-    ]
-    shares = [*pairs, *alone]
-    shares.append(max(1.0 - sum(shares), 0.0))
-    return -sum(share * math.log2(share) for share in shares if share > 0)
-
-
 def _headline(found: Diagnosis, told: tuple[Cause, ...]) -> str:
     if not told:
         rivals = [
@@ -180,7 +167,7 @@ def _headline(found: Diagnosis, told: tuple[Cause, ...]) -> str:
     what = ", and ".join(diagnosis_words.is_wrong(cause) for cause in told)
     fin = found.fin_healthy_probability
     beside = ""
-    if fin >= CLEAR:
+    if fin is not None and fin >= CLEAR:
         part = " as far as it could be judged" if found.missing else ""
         beside = f" The fin itself seems healthy{part} ({phrases.probability(fin)})."
     return f"{what[0].upper()}{what[1:]}: {_sure(both)}.{beside}"
@@ -204,11 +191,9 @@ def _left(told: tuple[Cause, ...]) -> str:
 
 def _costs(found: Diagnosis) -> tuple[CostRow, ...]:
     """Return the table of costs, each line of a cause with what it brings."""
-    causes, rows = list(found.causes), []
+    rows = []
     for cost in found.costs:
-        cause = next((one for one in causes if diagnosis_words.line_of_costs(one) == cost.what), None)
-        if cause is not None:
-            causes.remove(cause)
+        cause = next((one for one in found.causes if one.name == cost.cause), None)
         partly = bool(found.missing) and cost is found.costs[-1]
         rows.append(
             CostRow(
@@ -243,7 +228,8 @@ def _cost(found: Diagnosis, told: tuple[Cause, ...]) -> str:
             words += f" Put right, the base of the fin would be {_between(base)} {side}."
         return words
     flows = f"{_between(now.heat)} flow into the fin, whose base has {middle(now.base_temperature)}"
-    if found.missing and found.fin_healthy_probability >= LIKELY:
+    sound = found.fin_healthy_probability is None or found.fin_healthy_probability >= LIKELY
+    if found.missing and sound:
         return f"{flows}. What a healthy fin would do cannot be told in full: see “What could not be judged”."
     if abs(healthy.heat.median - now.heat.median) < SAME * (now.heat.high95 - now.heat.low95):
         return f"{flows}; a healthy fin does the same."
@@ -280,17 +266,16 @@ def _action(found: Diagnosis, told: tuple[Cause, ...]) -> str:
 
 
 def _cause(cause: Cause) -> CauseRow:
-    nothing = cause.code == HEALTHY and cause.probability < LIKELY
     return CauseRow(
         phrases.clean(cause.name),
         phrases.probability(cause.probability),
         f"{100 * cause.probability:.1f}",
-        "Fin and readings are as they should be." if nothing else phrases.told(cause.message),
+        phrases.told(cause.message),
     )
 
 
 def _what(each: NextMeasurement) -> str:
-    return phrases.told(each.message.partition(":")[0] or each.what)
+    return phrases.told(each.how)
 
 
 def _inside(words: str) -> str:

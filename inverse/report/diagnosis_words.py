@@ -2,9 +2,7 @@
 
 from collections.abc import Mapping
 
-from finback.diagnosis import NAMES, PUT_RIGHT, Cause
-
-KINDS: Mapping[str, str] = {name: kind for kind, name in NAMES.items()}
+from finback.causes import Cause
 
 IS_WRONG: Mapping[str, str] = {
     "joint": "the joint between plate and fin is bad",
@@ -82,19 +80,9 @@ def repair(cause: Cause) -> str:
     return _of_kind(REPAIRS, cause, "")
 
 
-def line_of_costs(cause: Cause) -> str:
-    """Return how the table of costs calls the fin with a cause put right; "" where it has no such line."""
-    put_right = PUT_RIGHT.get(_kind(cause), "")
-    return f"with {put_right}" if put_right else ""
-
-
-def _kind(cause: Cause) -> str:
-    return KINDS.get(cause.name.partition(" (")[0], "")
-
-
 def _of_kind(words: Mapping[str, str], cause: Cause, otherwise: str) -> str:
-    sensors = cause.name.partition(" (")[2].removesuffix(")")
-    return words.get(_kind(cause), otherwise).replace("{sensor}", sensors)
+    sensors = f"{cause.sensor} and {cause.other}" if cause.other else cause.sensor or ""
+    return words.get(cause.kind, otherwise).replace("{sensor}", sensors)
 
 
 def sentence(clause: str) -> str:

@@ -48,6 +48,7 @@ LAYERS = (
     "hypotheses",
     "densities faults",
     "healthy restoring next_measurements",
+    "causes",
     "geometry",
     "linear",
     "summaries concerns",

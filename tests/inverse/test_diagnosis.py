@@ -13,7 +13,8 @@ from rigs import Truth, draw, exact_readings, pin_rig
 import finback
 from finback import diagnosis, readings, rig
 from finback.datasets import path
-from finback.diagnosis import Cause, Diagnosis
+from finback.causes import Cause
+from finback.diagnosis import Diagnosis
 from finback.models.constants import ZERO_CELSIUS
 from finback.quantity import Quantity
 from finback.readings import Readings

@@ -5,12 +5,14 @@ import re
 from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
 import pytest
 from pages import Page
 from rich.cells import cell_len
 
 from finback import datasets, readings, rig
-from finback.diagnosis import NAMES, Cause, Cost, Diagnosis, Together
+from finback.causes import NAMES, Cause, Cost, Together
+from finback.diagnosis import Diagnosis
 from finback.errors import InputError
 from finback.estimate import Provenance
 from finback.findings import Finding
@@ -46,11 +48,15 @@ def cause(
     code: str = "joint",
     message: str = "It is 8 times the healthy; put right, more would flow.",
 ) -> Cause:
-    """Return a cause; what it brings is known to a tenth of it."""
+    """Return a cause of this name, sensors in brackets; what it brings is known to a tenth of it."""
+    kinds = {words: kind for kind, words in NAMES.items()}
+    first, _, other = name.partition(" (")[2].removesuffix(")").partition(" and ")
     return Cause(
         code=code,
+        kind=kinds.get(name.partition(" (")[0], "healthy"),
         name=name,
-        sensor=None,
+        sensor=first or None,
+        other=other or None,
         probability=probability,
         message=message,
         heat_recovered=interval(watts, 0.1 * abs(watts), "W"),
@@ -63,8 +69,8 @@ JOINT = cause("bad joint", 0.95, watts=1.6, kelvin=18.0)
 WRONG_T4 = cause("wrong thermometer (T4)", 0.97, code="sensor-outlier", message="T4 reads 5 ± 0.2 K higher.")
 
 
-def cost(what: str, watts: float, degrees: float) -> Cost:
-    return Cost(what, interval(watts, 0.15, "W"), interval(degrees, 0.4, "degC"))
+def cost(what: str, watts: float, degrees: float, cause: str | None = None) -> Cost:
+    return Cost(what, cause, interval(watts, 0.15, "W"), interval(degrees, 0.4, "degC"))
 
 
 @pytest.fixture(scope="module")
@@ -77,21 +83,24 @@ def joint() -> Diagnosis:
         readings=readings.read(folder / "readings.csv", described).pick(None),
         healthy_probability=0.004,
         fin_healthy_probability=0.03,
+        doubt=0.4,
         causes=(JOINT, cause("low convection", 0.06, watts=0.5, kelvin=-2.0, code="low-convection"), HEALTHY),
         together=(Together(("bad joint", "low convection"), 0.02),),
         costs=(
             cost("now", 2.95, 56.4),
-            cost("with a healthy joint", 4.55, 74.4),
+            cost("with a healthy joint", 4.55, 74.4, "bad joint"),
             cost("healthy", 4.5, 73.4),
         ),
         measurement_faults=(),
         next_measurements=(
-            NextMeasurement("second power level", 0.2, "A second run with more heat: 0.20 bit.", 0.75),
-            NextMeasurement("swap test of T1 and T2", 0.01, "T1 and T2 exchanged: 0.01 bit.", 0.999),
+            NextMeasurement("second power level", "A second run with more heat", 0.2, "0.20 bit.", 0.75),
+            NextMeasurement("swap test of T1 and T2", "T1 and T2 exchanged", 0.01, "0.01 bit.", 0.999),
         ),
         cannot_tell=(),
         missing=(),
         findings=(Finding("assumed", "note", "No uncertainty is stated of the joint: 30 %."),),
+        profile=(np.array([0.0, 0.12]), np.array([330.0, 310.0])),
+        seed=1,
         provenance=PROVENANCE,
     )
 
@@ -192,17 +201,10 @@ def test_a_cause_whose_cost_nothing_tells_is_told_without_one(joint: Diagnosis) 
     assert diagnosis_scenes.waterfalls(found)[0].steps == ()
 
 
-def test_the_doubt_is_that_of_what_is_listed(joint: Diagnosis) -> None:
-    # by hand: two causes of 0.5 each that exclude each other are one bit; a certain one is none
-    even = replace(
-        joint, together=(), causes=(replace(JOINT, probability=0.5), replace(WRONG_T4, probability=0.5))
-    )
-    assert diagnosis_view.doubt(even) == pytest.approx(1.0)
-    assert diagnosis_view.doubt(replace(even, causes=(replace(JOINT, probability=1.0),))) == 0.0
-    both = Together((JOINT.name, WRONG_T4.name), 0.5)  # both at once, or neither, which is not listed
-    assert diagnosis_view.doubt(replace(even, together=(both,))) == pytest.approx(1.0)
-    none = diagnosis_view.build(replace(even, causes=(replace(JOINT, probability=1.0),))).next[0]
+def test_what_a_measurement_tells_is_a_share_of_the_doubt(joint: Diagnosis) -> None:
+    none = diagnosis_view.build(replace(joint, doubt=0.0)).next[0]
     assert (none.gain, none.bits) == ("no doubt of the cause is left", "–")
+    even = replace(joint, doubt=1.0)
     gains = [row.gain for row in diagnosis_view.build(even).next]
     assert gains == ["settles part of the doubt", "tells hardly anything of the cause"]
 
@@ -260,7 +262,7 @@ def test_a_wrong_reading_points_to_what_it_should_be(joint: Diagnosis) -> None:
     values = joint.readings.values
     outlier = Finding("sensor-outlier", "fault", "T4 reads high.", "T4", {"error": 5.0, "sd": 0.2})
     also = Finding("position-shift", "note", "Or its hole lies off.", "T4", {"error": 4.0, "sd": 0.2})
-    swap = Finding("sensor-swap", "fault", "T1 and T2 are swapped: so it is.", "T1", {"probability": 0.99})
+    swap = Finding("sensor-swap", "fault", "T1 and T2 are swapped.", "T1", {"other": "T2"})
     heat = Finding("heat-balance", "fault", "Q reads more.", "Q", {"error": 0.4, "sd": 0.1})
     found = replace(joint, measurement_faults=(outlier, also, swap, heat))
     reads = {read.name: read for read in diagnosis_scenes.temperatures(found)}
