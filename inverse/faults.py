@@ -316,7 +316,7 @@ def _named(each: Suspicion) -> str:
 
 def _of_swap(each: Suspicion, done: str | None) -> Finding:
     message = f"{in_words(each)} (probability {_shown(each.probability)}){f'; {done}' if done else ''}."
-    evidence = {"probability": each.probability, "other": str(each.suspect.other)}
+    evidence: dict[str, float | str] = {"probability": each.probability, "other": str(each.suspect.other)}
     return Finding(each.suspect.code, _severity(each.probability), message, each.suspect.sensor, evidence)
 
 
