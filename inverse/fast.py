@@ -22,6 +22,7 @@ Array = NDArray[np.float64]
 
 DRAWS = lattice.POINTS
 PIECE = 1024  # of them at a time, that stay in the processor's cache
+TAIL = 0.1  # of the draws, to each side, that limits of 95 % are looked for in
 FEW = 512
 TRUSTED = 0.7  # k-hat up to which a number is close to that of a long chain
 
@@ -58,12 +59,29 @@ class FastPosterior:
     def quantiles(self, values: Array, probabilities: Sequence[float]) -> Array:
         """Return quantiles (k, m) of quantities (n, m), or (k,) of one (n,), for k probabilities."""
         rows = np.ascontiguousarray(values.reshape(len(values), -1).T)
-        order = np.argsort(rows, axis=1)
-        weights = self.weights[order]
-        below = np.cumsum(weights, axis=1) - 0.5 * weights
-        rising = np.take_along_axis(rows, order, axis=1)
-        found = [np.interp(probabilities, p, v) for p, v in zip(below, rising, strict=True)]
-        return np.stack(found, axis=-1).reshape(-1, *values.shape[1:])
+        found = np.stack([self._quantiles(row, np.asarray(probabilities)) for row in rows], axis=-1)
+        return found.reshape(-1, *values.shape[1:])
+
+    def _quantiles(self, values: Array, probabilities: Array) -> Array:
+        """Return quantiles (k,) of one quantity (n,); those in its tails need no more than these sorted."""
+        n, found = len(values), np.full(len(probabilities), np.nan)
+        length = int(TAIL * n)
+        if n > 2 * length > 0 and (np.abs(probabilities - 0.5) > 0.5 - TAIL / 2).all():
+            order = np.argpartition(values, (length, n - length - 1))
+            for side, part in ((1, order[:length]), (-1, order[n - length :])):
+                here = (probabilities < 0.5) == (side > 0)
+                sign = side * values[part]
+                rising = part[np.argsort(sign)]
+                weights = self.weights[rising]
+                below = np.cumsum(weights) - 0.5 * weights
+                wanted = probabilities[here] if side > 0 else 1 - probabilities[here]
+                if len(below) and (wanted < below[-1]).all():
+                    found[here] = np.interp(wanted, below, values[rising])
+        if np.isnan(found).any():
+            order = np.argsort(values)
+            weights = self.weights[order]
+            found = np.interp(probabilities, np.cumsum(weights) - 0.5 * weights, values[order])
+        return found
 
     def khat_of(self, values: Array) -> Array:
         """Return the k-hat (m,) of mean and standard deviation of quantities (n, m), or that of one (n,).

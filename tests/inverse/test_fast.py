@@ -21,6 +21,7 @@ from scipy.stats import chi2, norm
 from finback import candidates, fast, optimum, posing, readings, rig, routes, sampling
 from finback import proposal as proposals
 from finback.datasets import path
+from finback.evidence import Evidence
 from finback.fast import FastPosterior
 from finback.laplace import Mode
 from finback.optimum import LeastSquares
@@ -277,3 +278,14 @@ def test_a_fast_posterior_costs_little_more_than_its_densities() -> None:
 
     z = whole().z
     assert fastest(whole) < 5 * fastest(lambda: point.problem.log_density(z))
+
+
+@pytest.mark.parametrize("spread", [0.1, 3.0])
+def test_limits_are_the_same_whatever_is_sorted_for_them(spread: float) -> None:
+    # weights far from even: those of the tails may not reach into what is looked at first
+    random = np.random.default_rng(3)
+    values, logs = random.normal(size=(500, 3)), spread * random.normal(size=500)
+    weights = np.exp(logs - np.log(np.exp(logs).sum()))
+    found = FastPosterior(values, logs, np.log(weights), 0.0, 1.0, Evidence(0.0, 0.0))
+    limits = found.quantiles(values, (0.025, 0.975))
+    assert limits == pytest.approx(found.quantiles(values, (0.025, 0.5, 0.975))[[0, 2]], abs=1e-12)
