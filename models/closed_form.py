@@ -56,10 +56,8 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
     base_slope = m * (one_minus_r - r * decay) / whole
 
     along = x[:, None]  # one row a position, one column a set: what follows runs over many sets at once
-    echo = r * np.expm1((2 * (along - L)) * m)
-    echo += one_plus_r
-    shape = np.exp(-along * m)
-    shape *= echo
+    echo = one_plus_r + r * np.expm1((2 * (along - L)) * m)
+    shape = np.exp(-along * m) * echo
 
     driving = base.plate_temperature if isinstance(base, Joint) else base.temperature
     bond = base.resistance * k if isinstance(base, Joint) else 0.0
@@ -82,14 +80,12 @@ def solve(fin: Fin, base: Base, air: Values, x: Array) -> Solution:
         scaled = theta_b / whole
         at_end = far * scaled
         tip_fall = m * one_minus_r * at_end
-        theta = shape
-        theta *= scaled
+        theta = shape * scaled
         tip_theta = one_plus_r * at_end
 
     base_heat = (k * A) * base_fall
-    theta += air
     return Solution(
-        temperatures=theta.T,
+        temperatures=(theta + air).T,
         base_temperature=_rows(theta_b + air, base_heat),
         base_heat=base_heat,
         tip_temperature=_rows(tip_theta + air, base_heat),
