@@ -79,9 +79,10 @@ def search(rig: Rig, readings: Readings, *, aside: bool = True) -> Search:
     """Look for wrong readings in a run, and return the readings without those that are surely wrong.
 
     Arguments: rig; readings, checked against it; aside, whether any are to be set aside. What is set aside
-    keeps its reason. Nothing is where too few readings would be left, or where the rig asks for noise with
-    heavy tails, which makes little of a wrong reading by itself. Where the best fit gives no cause for
-    suspicion nothing is weighed.
+    keeps its reason. Nothing is where too few readings would be left, where the whole profile departs from
+    every model, so that no reading stands out from anything known, or where the rig asks for noise with heavy
+    tails, which makes little of a wrong reading by itself. Where the best fit gives no cause for suspicion
+    nothing is weighed.
     """
     chosen = candidates.enumerate_candidates(replace(rig, noise=("normal",)), readings)
     problems = candidates.affordable([posing.pose(rig, readings, each) for each in chosen])
@@ -92,7 +93,8 @@ def search(rig: Rig, readings: Readings, *, aside: bool = True) -> Search:
     suspicions = tuple(suspicions_of(found))
     clean: Readings = readings
     changed: Mapping[str, str] = {}
-    if aside and "heavy-tailed" not in rig.noise:
+    bent = sum(each.probability for each in suspicions if each.suspect.kind == "misfit") > LIKELY
+    if aside and not bent and "heavy-tailed" not in rig.noise:
         clean, changed = _without(rig, readings, suspicions)
         scattered = [each for each in suspicions if each.suspect.kind == "scatter"]
         if scattered and scattered[0].probability >= SURE:

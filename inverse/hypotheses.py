@@ -32,7 +32,7 @@ FAINT = 16.0  # nats below the best, from which a row is not worked out
 SLIGHTEST = 0.05  # K, W: of an error's size, below which no reading tells it from none
 HOPELESS = 15.0  # nats below the best of those, from which no other level is tried
 LEVELS = np.exp(np.arange(math.log(0.01), math.log(10.0), 0.25))  # K: an unknown noise
-NODES = np.array([-2.0, -1.0, 0.0, 1.0, 2.0])  # sds of the logarithm of a misfit or a scatter
+NODES = np.array([-2.0, -1.0, 0.0, 1.0, 2.0, 3.0, 4.0])  # sds of the logarithm of a misfit or a scatter
 NODE_SHARES = np.exp(-0.5 * np.square(NODES)) / np.exp(-0.5 * np.square(NODES)).sum()
 
 

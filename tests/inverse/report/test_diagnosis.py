@@ -29,7 +29,7 @@ from finback.report import (
 from finback.restoring import Interval
 from finback.suspects import ODDS
 
-PROVENANCE = Provenance("0.1.0", {"python": "3.11.7"}, {"/home/me/rig.toml": "9f" * 32})
+PROVENANCE = Provenance("0.1.0", {"python": "3.11.7"}, {"/rigs/rig.toml": "9f" * 32})
 LINES = (
     'Nothing reads the plate: add TP = { on = "plate" } to [sensors], and expected = "5e-5 m^2 K/W" there.'
 )
