@@ -28,6 +28,8 @@ Array = NDArray[np.float64]
 KEPT_DRAWS = 2500  # an ensemble
 CHAINS, RESAMPLED = 4, 1000  # of a candidate that is not sampled by MCMC
 SAME_MEAN, SAME_SD = 0.1, 0.1  # of its standard deviation, by which two routes may see a quantity differently
+FOLLOWS = ("m", "base_heat_flux", "effectiveness", "transverse_biot")
+"""Quantities whose tails are those of h/k, of the heat and of the efficiency, or nearly so."""
 HOPELESS = 20.0  # nats below another candidate by its mode, where no more of it can be seen
 SPARE_FOR_NOISE = (
     10  # readings more than unknowns, that know a noise to a quarter: its posterior is no funnel
@@ -91,8 +93,8 @@ class Route:
 
     @cached_property
     def khats(self) -> Mapping[str, float]:
-        """The k-hat of each quantity, and "z", that of the weights alone."""
-        names = [*self.quantities]
+        """The k-hat of each quantity that does not follow another, and "z", that of the weights alone."""
+        names = [name for name in self.quantities if name not in FOLLOWS]
         khats = self.fast.khat_of(np.stack([self.quantities[name] for name in names], axis=1))
         return {"z": self.fast.khat, **dict(zip(names, khats.tolist(), strict=True))}
 
@@ -155,7 +157,7 @@ class Route:
         by_chain = derived.evaluate(self.point.problem, draws.reshape(-1, draws.shape[-1]))
         found = []
         for name, values in self.quantities.items():
-            if self.khats[name] > fast.TRUSTED:
+            if self.khats.get(name, 0.0) > fast.TRUSTED:
                 continue
             mean, sd = float(self.fast.mean(values)), float(self.fast.sd(values))
             other_mean, other_sd = float(by_chain[name].mean()), float(by_chain[name].std())
