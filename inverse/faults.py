@@ -138,9 +138,8 @@ def is_suspicious(point: LeastSquares) -> bool:
     told = diagonal > 1e-9 * diagonal.max()
     gains = 0.5 * np.square(pulls[told]) / diagonal[told]
     fin = len(problem.measured.positions)
-    apart = (
-        problem.measured.values[:fin] - problem.measured.values[:fin, None]
-    )  # d of the first for the second
+    along = problem.measured.values[:fin]
+    apart = along - along[:, None]
     steps = pulls[:fin, None] - pulls[:fin]
     bends = diagonal[:fin, None] + diagonal[:fin] - 2 * weights[:fin, :fin]
     swaps = -(apart * steps + 0.5 * np.square(apart) * bends)
