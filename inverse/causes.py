@@ -53,13 +53,15 @@ class Cost:
     """One line of the table of costs: `what`, with the heat into the fin and the base temperature.
 
     `cause`: the name of the one that is put right, where one alone is; the line then speaks of the fins that
-    have it, and not of all that may be.
+    have it, and not of all that may be, and `heat_now` and `base_now` are what those do now.
     """
 
     what: str
     cause: str | None
     heat: Interval
     base_temperature: Interval
+    heat_now: Interval | None = None
+    base_now: Interval | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,6 +85,7 @@ NAMES: Mapping[str, str] = {
     "swap": "swapped sensors",
     "misfit": "smooth misfit",
     "scatter": "thermometers that scatter",
+    "more": "more convection than expected",
 }
 SAID: Mapping[str, str] = {
     "h": "film coefficient",
@@ -161,7 +164,9 @@ def costs(parts: Parts, suspicions: Sequence[Suspicion]) -> list[Cost]:
         if moves and suspicion.probability >= COSTED and own:
             wanted = faults.key(suspect)
             restored = [(share, effects.restored[wanted]) for share, _, effects in own]
-            found.append(line(f"with {PUT_RIGHT[suspect.kind]}", _name(suspect), restored))
+            now = line("now", None, [(share, effects.now) for share, _, effects in own])
+            put_right = line(f"with {PUT_RIGHT[suspect.kind]}", _name(suspect), restored)
+            found.append(replace(put_right, heat_now=now.heat, base_now=now.base_temperature))
     found.append(line(HEALTHY, None, [(share, effects.healthy) for share, _, effects in parts]))
     return found
 
@@ -206,6 +211,14 @@ def _name(suspect: Suspect) -> str:
 def _told(suspicion: Suspicion, known: Healthy, parts: Parts) -> str:
     """Return what a cause is in words, with its number."""
     suspect = suspicion.suspect
+    if suspect.kind == "more":
+        now = restoring.pooled([(share, effects.values["h"]) for share, _, effects in parts], UNITS["h"])
+        expected = restoring.pooled([(share, effects.right["h"]) for share, _, effects in parts], UNITS["h"])
+        return (
+            f"Film coefficient {_number(now.median)} {pretty_unit(now.unit)} (95 %: {_number(now.low95)} to "
+            f"{_number(now.high95)}), more than the {_number(expected.median)} that the rig expects: check "
+            "what is expected"
+        )
     if suspect.kind in known.priors:
         now, right = (
             restoring.pooled([(share, values[suspect.kind]) for share, values in of], UNITS[suspect.kind])

@@ -190,7 +190,7 @@ def _with_tip(rig: Rig, readings: Readings, drawn: Candidate, tip: TipName, susp
 def _states(known: Healthy, base: Base) -> list[hypotheses.State]:
     """Return the states of the fin for one candidate: one cause at a time where its tip is a suspect."""
     names = set(base.problem.names)
-    found = [state for state in known.states() if all(suspect.kind in names for suspect in state.causes)]
+    found = [state for state in known.states() if names.issuperset(state.priors or {})]
     return found[:1] if base.tip is not None else found
 
 

@@ -23,9 +23,9 @@ UNSTATED_EMISSIVITY = 0.03
 """Standard uncertainty of an emissivity that is stated without one."""
 
 LINES: Mapping[str, str] = {
-    "h": 'expected_h = "45 W/(m^2 K) +/- 20 %" in [air], or speed = "2.5 m/s" for a correlation to tell',
-    "k": 'conductivity = "167 W/(m K) +/- 5 %" in [material], or the name of a handbook material',
-    "joint": 'expected = "5e-5 m^2 K/W +/- 30 %" in [joint]',
+    "h": 'such as expected_h = "45 W/(m^2 K) +/- 20 %" in [air], or speed = "2.5 m/s" there',
+    "k": 'such as conductivity = "167 W/(m K) +/- 5 %" in [material], or the name of a handbook material',
+    "joint": 'such as expected = "5e-5 m^2 K/W +/- 30 %" in [joint]',
 }
 """What to add to rig.toml for a cause to be judged, with numbers of the rig's own."""
 
@@ -54,9 +54,13 @@ class Healthy:
             (Suspect(CAUSES[name], ODDS[CAUSES[name]]), name, _moved(prior, name))
             for name, prior in self.priors.items()
         ]
+        if "h" in self.priors:  # it is what is expected that is wrong then, and not the fin
+            single.append((Suspect("more", ODDS["more"]), "h", _moved(self.priors["h"], "more")))
         found = [State((), self.priors)]
         for some in [*((one,) for one in single), *combinations(single, 2)]:
             changed = {name: prior for _, name, prior in some}
+            if len(changed) < len(some):  # no fin has less and more of the same
+                continue
             found.append(State(tuple(suspect for suspect, *_ in some), {**self.priors, **changed}))
         return found
 
@@ -105,7 +109,10 @@ def expect(rig: Rig, readings: Readings, reads_plate: bool) -> Healthy:
 
 def _missing(names: list[str], reads_plate: bool) -> Iterator[str]:
     for name in names:
-        yield f"Nothing says what {SAID[name]} a healthy fin has: to judge it, add {LINES[name]}."
+        yield (
+            f"Nothing says what {SAID[name]} a healthy fin has: to judge it, add a line with your own value, "
+            f"{LINES[name]}."
+        )
     if not reads_plate:
         yield (
             "Nothing reads the plate, so the joint cannot be judged: add a sensor such as "

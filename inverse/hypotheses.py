@@ -20,12 +20,14 @@ from finback.normals import Normals, Posed
 from finback.optimum import LeastSquares
 from finback.priors import Normal
 from finback.problem import LOG_TWO_PI, Problem
+from finback.rig import Sensor
 from finback.suspects import ODDS, Size, Suspect
 
 Array = NDArray[np.float64]
 
 FREE = 300.0  # K, or times a heat: the error of a reading that is freed of its thermometer, beforehand
 LEAST_TOLD = 1e-4  # of what is known of such an error beforehand
+PRESSED = 1.0  # standard deviations or so, that a heat comes near what a heater supplies
 PAIRED = 8  # readings and swaps, the likeliest ones alone, of which two at a time are tried
 STRIDE = 4  # levels of an unknown noise from one that is tried first to the next
 FAINT = 16.0  # nats below the best, from which a row is not worked out
@@ -177,7 +179,7 @@ def weigh(base: Base, states: Sequence[State]) -> list[Hypothesis]:
     """
     wrong = list(_of_readings(base))
     swaps = [each for each in wrong if each.kind == "swap"]
-    heaters = [Suspect("heat", ODDS["heat"], each.name) for each in base.problem.measured.bounds[:1]]
+    heaters = [Suspect("heat", ODDS["heat"], each.name) for each in _exceeded(base)]
     own = {name: [s for s in wrong if s.kind != "swap" and s.sensor == name] for name in _names(base)}
     free = [(at,) for at, name in enumerate(_names(base)) if own[name]]
     rows: list[_Row] = []
@@ -197,6 +199,16 @@ def weigh(base: Base, states: Sequence[State]) -> list[Hypothesis]:
     ranked = [(row, each.height) for row, each in zip(rows, singles, strict=True)]
     pairs = _weigh_rows(base, _pairs(ranked, states[0]), own)
     return [each for many in singles + pairs for each in many.found]
+
+
+def _exceeded(base: Base) -> tuple[Sensor, ...]:
+    """Return the heater whose power the fit exceeds or nearly so: nothing speaks against another."""
+    measured = base.problem.measured
+    if not measured.bounds:
+        return ()
+    predicted = base.problem.predict(base.start[None])[0, len(measured.values) :]
+    pressed = base.problem.bound_residuals(predicted) > PRESSED
+    return tuple(sensor for sensor, is_so in zip(measured.bounds, pressed, strict=True) if is_so)[:1]
 
 
 def _names(base: Base) -> list[str]:

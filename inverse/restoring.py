@@ -13,7 +13,7 @@ from finback.models import solve
 from finback.parameters import ZERO_CELSIUS
 from finback.priors import Normal
 from finback.rig import TipName
-from finback.suspects import CHANGES, Suspect
+from finback.suspects import Suspect
 
 Array = NDArray[np.float64]
 
@@ -62,7 +62,9 @@ def effects(
     problem = hypothesis.base.problem
     values = dict(problem.values(z))
     right = {
-        name: _healthy_draws(hypothesis, name, prior, z, random)
+        name: problem.parameters[problem.names.index(name)].values(
+            random.normal(prior.mean, prior.sd, len(z))
+        )
         for name, prior in healthy.items()
         if name in problem.names
     }
@@ -104,23 +106,6 @@ def of_base(parts: Sequence[tuple[float, Array]], unit: str = "degC") -> Interva
     """Return the interval of a base temperature of effects (2, n), or of a change of it in K."""
     offset = ZERO_CELSIUS if unit == "degC" else 0.0
     return pooled([(share, draws[1]) for share, draws in parts], unit, offset)
-
-
-def _healthy_draws(
-    hypothesis: Hypothesis, name: str, prior: Normal, z: Array, random: np.random.Generator
-) -> Array:
-    """Return draws (n,) of what a parameter would be without its cause, SI units.
-
-    The cause moved it by a shift and a spread: what it is now tells what it was before, as far as it lies
-    from where a typical healthy fin would have been moved to.
-    """
-    problem = hypothesis.base.problem
-    at = problem.names.index(name)
-    shift, spread = CHANGES[name]
-    told = prior.sd**2 / (prior.sd**2 + spread**2)
-    mean = prior.mean + told * (z[:, at] - prior.mean - shift)
-    drawn = random.normal(mean, spread * prior.sd / np.hypot(prior.sd, spread))
-    return problem.parameters[at].values(drawn)
 
 
 def _put_right(

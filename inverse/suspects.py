@@ -18,7 +18,19 @@ from finback.rig import Rig, Sensor
 
 Array = NDArray[np.float64]
 Kind = Literal[
-    "offset", "shift", "swap", "air", "heat", "joint", "k", "h", "emissivity", "tip", "misfit", "scatter"
+    "offset",
+    "shift",
+    "swap",
+    "air",
+    "heat",
+    "joint",
+    "k",
+    "h",
+    "emissivity",
+    "tip",
+    "misfit",
+    "scatter",
+    "more",
 ]
 
 CODES: Mapping[Kind, str] = {
@@ -34,9 +46,11 @@ CODES: Mapping[Kind, str] = {
     "tip": "misfit",
     "misfit": "misfit",
     "scatter": "misfit",
+    "more": "healthy",
 }
 """The finding that speaks of each kind: a fin that radiates less than it should is one that the air cools
-less, and one whose tip is not as drawn is one that no model of the rig fits."""
+less, one whose tip is not as drawn is one that no model of the rig fits, and one with more convection than is
+expected of it is healthy."""
 
 ODDS: Mapping[Kind, float] = {
     "offset": 0.12,
@@ -51,6 +65,7 @@ ODDS: Mapping[Kind, float] = {
     "tip": 0.02,
     "misfit": 0.02,
     "scatter": 0.05,
+    "more": 0.10,
 }
 """Of each kind against nothing wrong at all, before the readings. The odds of a kind are shared out over the
 sensors that it may concern."""
@@ -72,10 +87,12 @@ CHANGES: Mapping[str, tuple[float, float]] = {
     "k": (math.log(0.75), 0.10),
     "h": (math.log(0.70), 0.12),
     "emissivity": (-1.5, 0.7),
+    "more": (math.log(1.4), 0.25),
 }
 """What a cause does to the coordinate of its parameter: by how much it moves, and the spread of that. A joint
 that lost its grease or its pressure has some five times its resistance; the wrong alloy conducts a quarter
-less; dirt or a failing fan takes a third of h; a bright surface radiates a quarter of a dark one."""
+less; dirt or a failing fan takes a third of h; a bright surface radiates a quarter of a dark one. Convection
+that is expected too low is so by some tens of per cent, and may be by a factor of two."""
 
 OF_THE_FIN: tuple[Kind, ...] = ("joint", "k", "h", "emissivity", "tip")
 """Kinds that make a fin do less, and not only its thermometers say so."""

@@ -111,12 +111,12 @@ class DiagnosisView:
 def build(found: Diagnosis) -> DiagnosisView:
     """Return the view of a diagnosis."""
     told = leading(found)
-    ill = bool(told) and told[0].code != HEALTHY
+    ill = bool(told) and told[0].kind != HEALTHY
     return DiagnosisView(
         title=phrases.clean(found.rig.title),
         run=phrases.clean(found.readings.run),
-        status="caution" if ill or not told else "ok",
-        status_text="Not clear" if not told else "Something is wrong" if ill else "Nothing found wrong",
+        status="caution" if ill or not told or found.missing else "ok",
+        status_text=_status(found, told),
         headline=phrases.told(_headline(found, told)),
         number=_number(told),
         cost=_cost(found, told),
@@ -142,6 +142,16 @@ def build(found: Diagnosis) -> DiagnosisView:
     )
 
 
+def _status(found: Diagnosis, told: tuple[Cause, ...]) -> str:
+    if not told:
+        return "Not clear"
+    if told[0].code != HEALTHY:
+        return "Something is wrong"
+    if told[0].kind != HEALTHY:
+        return "Not as expected"
+    return "Nothing found wrong in what could be judged" if found.missing else "Nothing found wrong"
+
+
 def leading(found: Diagnosis) -> tuple[Cause, ...]:
     """Return what is spoken of: the likeliest cause, two that are likely at once, none where that is open."""
     named = {cause.name: cause for cause in found.causes}
@@ -155,12 +165,12 @@ def leading(found: Diagnosis) -> tuple[Cause, ...]:
 def _headline(found: Diagnosis, told: tuple[Cause, ...]) -> str:
     if not told:
         rivals = [
-            f"{'nothing is wrong' if cause.code == HEALTHY else diagnosis_words.is_wrong(cause)} "
+            f"{'nothing is wrong' if cause.kind == HEALTHY else diagnosis_words.is_wrong(cause)} "
             f"({phrases.probability(cause.probability)})"
             for cause in found.causes[:2]
         ]
         return f"It is not clear what is wrong. Likeliest: {', or '.join(rivals)}."
-    if told[0].code == HEALTHY:
+    if told[0].kind == HEALTHY:
         judged = "Nothing seems wrong with what could be judged" if found.missing else "Nothing seems wrong"
         return f"{judged}, in the fin or in its readings: {_sure(told[0].probability)}."
     both = found.together[0].probability if len(told) > 1 else told[0].probability
@@ -179,7 +189,7 @@ def _sure(probability: float) -> str:
 
 def _number(told: tuple[Cause, ...]) -> str:
     """Return how large it is what is spoken of, without what it costs."""
-    parts = [cause.message.partition("; put right")[0].rstrip(".") for cause in told if cause.code != HEALTHY]
+    parts = [cause.message.partition("; put right")[0].rstrip(".") for cause in told if cause.kind != HEALTHY]
     return " ".join(f"{phrases.told(part)}." for part in parts)
 
 
@@ -198,15 +208,19 @@ def _costs(found: Diagnosis) -> tuple[CostRow, ...]:
         rows.append(
             CostRow(
                 phrases.clean(f"{cost.what}, as far as judged" if partly else cost.what),
-                middle(cost.heat),
+                _from(cost.heat_now) + middle(cost.heat),
                 limits(cost.heat),
-                middle(cost.base_temperature),
+                _from(cost.base_now) + middle(cost.base_temperature),
                 limits(cost.base_temperature),
                 _brought(cause.heat_recovered if cause else None),
                 _brought(cause.base_temperature_change if cause else None),
             )
         )
     return tuple(rows)
+
+
+def _from(now: Interval | None) -> str:
+    return "" if now is None else f"{middle(now).rpartition(' ')[0]} → "
 
 
 def _brought(change: Interval | None) -> str:
@@ -254,13 +268,15 @@ def _between(change: Interval) -> str:
 def _action(found: Diagnosis, told: tuple[Cause, ...]) -> str:
     """Return what to do: put right what is likely, measure while that is not sure, add what is missing."""
     steps = [diagnosis_words.repair(cause) for cause in told]
+    if told and told[0].kind == HEALTHY and not found.missing:
+        steps.append("nothing needs to be done")
     unsure = not told or told[0].probability < SURE
     if unsure and found.next_measurements:
         before = "to be surer" if told else "before anything is changed"
         steps.append(f"{before}, add this measurement: {_inside(_what(found.next_measurements[0]))}")
     if found.missing:
         add = "add to rig.toml the lines under “What could not be judged”, and run this again"
-        steps.insert(0 if told and told[0].code == HEALTHY else len(steps), add)
+        steps.insert(0 if told and told[0].kind == HEALTHY else len(steps), add)
     sentences = (diagnosis_words.sentence(phrases.clean(step, 500)) for step in steps if step)
     return " ".join(sentences)
 

@@ -17,6 +17,7 @@ IS_WRONG: Mapping[str, str] = {
     "swap": "the thermometers {sensor} are swapped",
     "misfit": "the temperatures depart from every model in a smooth pattern",
     "scatter": "the thermometers along the fin scatter more than is stated",
+    "more": "the air takes more heat from the fin than the rig expects",
 }
 """What a cause is, by its kind; "{sensor}" stands for what it concerns."""
 
@@ -35,6 +36,7 @@ REPAIRS: Mapping[str, str] = {
     "swap": "trace the leads of {sensor} to the instrument, and exchange them there or in the table",
     "misfit": "see whether the air reaches all parts of the fin alike, and whether leads carry heat off",
     "scatter": "read the thermometers along the fin at one temperature, and state the noise that they have",
+    "more": "check expected_h or the speed of the air in rig.toml",
 }
 """What to do about a cause, by its kind."""
 
