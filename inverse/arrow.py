@@ -53,8 +53,9 @@ class Solved:
 
     `cost` (draws,), half the weighted sum of squares and the log variances that hang on sigma; `gain`
     (draws,), by how much a full step lowers it [nats]; `log_det` (draws,), of the curvature in own unknowns
-    and u; `border` (draws, q + m, q + m), the curvature in shared unknowns with the own ones eliminated, and
-    `step` (draws, q + m) in them, of which q are solved for where asked; `steps`, in everything but s;
+    and u, `log_det_own` in own ones; `border` (draws, q + m, q + m), the curvature in shared unknowns with
+    the own ones eliminated, and `step` (draws, q + m) in them, of which q are solved for where asked;
+    `steps`, in everything but s;
     `responses`, of own unknowns to those of the border (draws, R, p, q + m) a group; `spreads`, covariances
     of own unknowns given the border's (draws, R, p, p); `squares` (R,) a group, weighted squares of each
     run's readings, and `freedom`, how many of them its own unknowns use up; `scatter`, mean square of the
@@ -65,6 +66,7 @@ class Solved:
     cost: Array
     gain: Array
     log_det: Array
+    log_det_own: Array
     border: Array
     step: Array
     steps: State
@@ -105,8 +107,9 @@ def solve(model: Model, state: State, s: Array, sigma: Array, shared: bool = Fal
         sums.border[:, range(q), range(q)] += sds**-2
         sums.cost += 0.5 * np.square((s - means) / sds).sum(axis=1)
     sums.border[:, range(q, q + m), range(q, q + m)] += 1.0
-    sums.pull[:, q:] -= state.u
-    sums.cost += 0.5 * np.square(state.u).sum(axis=1)
+    sums.pull[:, q:] += push_of(model) - state.u
+    sums.cost += 0.5 * np.square(state.u).sum(axis=1) - state.u @ push_of(model)
+    log_det_own = sums.log_det.copy()
     step = np.asarray(np.linalg.solve(sums.border, sums.pull[..., None])[..., 0])
     sums.gain += 0.5 * np.einsum("dg,dg->d", sums.pull, step)
     sums.log_det += np.linalg.slogdet(sums.border)[1]
@@ -126,6 +129,7 @@ def solve(model: Model, state: State, s: Array, sigma: Array, shared: bool = Fal
         sums.cost,
         sums.gain,
         sums.log_det,
+        log_det_own,
         sums.border,
         step,
         steps,
@@ -176,6 +180,7 @@ def _merged(old: Solved, new: Solved, better: NDArray[np.bool_]) -> Solved:
         np.where(better, new.cost, old.cost),
         np.where(better, new.gain, old.gain),
         np.where(better, new.log_det, old.log_det),
+        np.where(better, new.log_det_own, old.log_det_own),
         np.where(better[:, None, None], new.border, old.border),
         np.where(better[:, None], new.step, old.step),
         new.steps if better.all() else old.steps.taken(better, new.steps),
@@ -189,7 +194,7 @@ def _merged(old: Solved, new: Solved, better: NDArray[np.bool_]) -> Solved:
 
 def cost_of(model: Model, state: State, s: Array, sigma: Array) -> Array:
     """Return the cost of each draw (D,) with the prior of the shared unknowns, without linearising."""
-    found = 0.5 * np.square(state.u).sum(axis=1)
+    found = 0.5 * np.square(state.u).sum(axis=1) - state.u @ push_of(model)
     if s.shape[1]:
         means, sds = _beforehand(model)
         found = found + 0.5 * np.square((s - means) / sds).sum(axis=1)
@@ -197,10 +202,16 @@ def cost_of(model: Model, state: State, s: Array, sigma: Array) -> Array:
         for runs in _blocks(group, len(s), 1):
             own = w[:, runs]
             predicted = _predict(group, own, s, runs)
-            residuals = _residuals(group, predicted, own, state.u, runs)
+            bending = _bending(group, state.u, runs)
+            residuals = _residuals(group, predicted, own, s, state.u, bending, runs)
             weights, logs = _weights(group, runs, sigma)
             found = found + 0.5 * np.einsum("drn,drn->d", residuals**2, weights) + logs
     return np.where(np.isfinite(found), found, np.inf)
+
+
+def push_of(model: Model) -> Array:
+    """Return what errors in common are pushed by beside readings and their own sizes (m,) [nats]."""
+    return np.asarray(model.tilt + model.lean[model.n_physical :])
 
 
 def _beforehand(model: Model) -> tuple[Array, Array]:
@@ -222,11 +233,26 @@ def _predict(group: Group, w: Array, s: Array, runs: slice) -> Array:
     return found.reshape(draws, count, -1)
 
 
-def _residuals(group: Group, predicted: Array, w: Array, u: Array, runs: slice) -> Array:
+def _bending(group: Group, u: Array, runs: slice) -> Array:
+    """Return what errors in common add to slopes of readings (D, R, n, p + q) in own and shared unknowns."""
+    bends, u = group.bends[runs], u - group.anchor_errors
+    return np.asarray((u @ bends.reshape(-1, u.shape[1]).T).reshape(len(u), *bends.shape[:3]))
+
+
+def _away(group: Group, w: Array, s: Array, runs: slice) -> Array:
+    """Return how far unknowns (D, R, p + q) are from where the effects of errors were taken."""
+    shared = np.broadcast_to((s - group.anchor_shared)[:, None], (*w.shape[:2], s.shape[1]))
+    return np.concatenate([w - group.anchor[runs], shared], axis=2)
+
+
+def _residuals(
+    group: Group, predicted: Array, w: Array, s: Array, u: Array, bending: Array, runs: slice
+) -> Array:
     """Return residuals of all rows (D, R, N)."""
     errors = group.errors[runs]
     count, rows, m = errors.shape
-    common = (u @ errors.reshape(-1, m).T).reshape(len(u), count, rows)
+    common = ((u - group.anchor_errors) @ errors.reshape(-1, m).T).reshape(len(u), count, rows)
+    common[..., : bending.shape[2]] += np.einsum("drnc,drc->drn", bending, _away(group, w, s, runs))
     return np.asarray(group.targets[runs] - np.concatenate([predicted, w], axis=2) - common)
 
 
@@ -260,31 +286,41 @@ def _pieces(
         centre = _predict(group, own, s, runs)
         slopes = np.zeros((draws, own.shape[1], group.rows, p))
         for j in range(p):
-            away = np.zeros(p)
-            away[j] = group.widths[j]
-            up, down = (_predict(group, own + sign * away, s, runs) for sign in (1, -1))
+            nudge = np.zeros(p)
+            nudge[j] = group.widths[j]
+            up, down = (_predict(group, own + sign * nudge, s, runs) for sign in (1, -1))
             slopes[:, :, : up.shape[2], j] = (up - down) / (2 * group.widths[j])
             slopes[:, :, up.shape[2] + j, j] = 1.0
-        errors = group.errors[runs]
+        errors, bending = group.errors[runs], _bending(group, u, runs)
+        slopes[:, :, :readings] += bending[..., :p]
         border = np.zeros((draws if q else 0, own.shape[1], group.rows, q))
         for j in range(q):
-            away = np.zeros(q)
-            away[j] = s_widths[j]
-            up, down = (_predict(group, own, s + sign * away, runs) for sign in (1, -1))
+            nudge = np.zeros(q)
+            nudge[j] = s_widths[j]
+            up, down = (_predict(group, own, s + sign * nudge, runs) for sign in (1, -1))
             border[:, :, : up.shape[2], j] = (up - down) / (2 * s_widths[j])
+        away = _away(group, own, s, runs)
+        if q:  # of one draw
+            border[:, :, :readings] += bending[..., p:]
+            errors = errors.copy()
+            errors[:, :readings] += np.einsum("rncm,rc->rnm", group.bends[runs], away[0])
         border = np.concatenate([border, errors[None]], axis=3) if q else errors[None]
-        residuals = _residuals(group, centre, own, u, runs)
+        residuals = _residuals(group, centre, own, s, u, bending, runs)
         weights, logs = _weights(group, runs, sigma)
         weighted = slopes.transpose(0, 1, 3, 2) * weights[:, :, None]
         root = np.linalg.inv(np.linalg.cholesky(weighted @ slopes))
         across = root @ (weighted @ border)
         pull = root @ (weighted @ residuals[..., None])
-        if q:  # of one draw
+        if q:
             flat = (border[0] * np.sqrt(weights[0])[..., None]).reshape(-1, border.shape[3])
             sums.border += flat.T @ flat
         seen = across.reshape(draws, -1, across.shape[-1])
         sums.border -= seen.transpose(0, 2, 1) @ seen
-        sums.pull += (weights * residuals).reshape(draws, -1) @ border[0].reshape(-1, border.shape[3])
+        pulled = weights * residuals
+        sums.pull += pulled.reshape(draws, -1) @ border[0].reshape(-1, border.shape[3])
+        if not q:
+            moved = pulled[..., :readings, None] * away[:, :, None]
+            sums.pull += moved.reshape(draws, -1) @ group.bends[runs].reshape(-1, border.shape[3])
         sums.pull -= (seen.transpose(0, 2, 1) @ pull.reshape(draws, -1, 1))[..., 0]
         sums.cost += 0.5 * np.einsum("drn,drn->d", residuals**2, weights) + logs
         sums.gain += 0.5 * np.square(pull).sum(axis=(1, 2, 3))

@@ -26,7 +26,7 @@ Array = NDArray[np.float64]
 
 PAIRS, SLOW_PAIRS = 1_000_000, 100_000
 """Draws times runs that are looked at: of fins that are quick to solve, and of others."""
-FEWEST_DRAWS = 256
+FEWEST_DRAWS, MOST_DRAWS = 256, 2048
 POOR = 0.5  # efficiency below which a proposal is fitted again
 SMALLEST_SHARE = 0.005  # probability below which a candidate has no part in the averages
 AT_A_TIME = 0.05  # share of the runs that are left out in one round, at the most
@@ -120,7 +120,7 @@ def _sample(fitted: Fitted, seed: int, members: int) -> FastPosterior | None:
     runs = sum(group.size for group in model.groups)
     wanted = (PAIRS if model.is_linear else SLOW_PAIRS) // (runs * members)
     stride = 1
-    while lattice.POINTS // stride > max(wanted, FEWEST_DRAWS):
+    while lattice.POINTS // stride > min(max(wanted, FEWEST_DRAWS), MOST_DRAWS):
         stride *= 2
     number = zlib.crc32(model.candidate.name.encode())
     random = np.random.default_rng([seed, number])

@@ -32,6 +32,8 @@ sensors of its place. A rig states one error of all sensors of a kind: thermocou
 instrument. A tenth makes a third of it each sensor's own (0.32), and the whole is as stated."""
 
 ErrorKind = Literal["common", "own", "position", "length", "level"]
+BEND = 1.0  # K, or per cent: steps of differences of effects
+SMALLEST_SHARE = 0.3  # of a heat that is read, at which a noise in per cent is taken at the least
 TEMPERATURE = 500.0  # K, half a width of what a rig of one temperature may have
 
 
@@ -43,20 +45,28 @@ class SharedError:
     name: str
 
 
+def _nothing() -> Array:
+    return np.zeros(0)
+
+
 @dataclass(frozen=True)
 class Group:
     """Runs that read the same sensors.
 
-    `problem`: the candidate posed on one of them, None where they are of one temperature throughout; `runs`
+    `problem`: the candidate posed on one of them, None where they are of one temperature throughout, with
+    holes and lengths where they are thought to be, and `stated`, where the rig has them; `runs`
     (R,), their numbers; `values` (R, n) [K, W]; `variances` (R, n) of their noise, 0 where that is
     estimated, `estimated` (n,); `fixed`, what is exactly known in each run, (R,) by name; `bound_values`,
     `bound_sds` (R, b) [W]; `calibrations` (R, n), the stated common errors [K, W]; `own`, the run's own
     unknowns; `own_sds` (p,), what they scatter about their level by; `shared`, for each shared unknown that
     the problem has, its place there and among all shared ones; `errors` (R, N, m), what each of m shared
-    errors does to each of the N rows for one standard uncertainty.
+    errors does to each of the N rows for one standard uncertainty, at own unknowns `anchor` (R, p) and shared
+    ones `anchor_shared` (q,) and errors `anchor_errors` (m,), and `bends` (R, n, p + q, m), how that changes
+    with own and shared unknowns.
     """
 
     problem: Problem | None
+    stated: Problem | None
     sensors: tuple[Sensor, ...]
     runs: NDArray[np.intp]
     values: Array
@@ -70,7 +80,11 @@ class Group:
     own_sds: Array
     places: NDArray[np.intp]
     shared: tuple[tuple[int, int], ...]
-    errors: Array = field(default_factory=lambda: np.zeros((0, 0, 0)))
+    errors: Array = field(default_factory=_nothing)
+    anchor: Array = field(default_factory=_nothing)
+    anchor_shared: Array = field(default_factory=_nothing)
+    anchor_errors: Array = field(default_factory=_nothing)
+    bends: Array = field(default_factory=_nothing)
 
     @property
     def size(self) -> int:
@@ -158,7 +172,10 @@ class Model:
     """A candidate posed on all runs of a pool.
 
     `groups`; `shared`, the unknowns that all runs share, the noise last where it is estimated; `errors`, what
-    else they share.
+    else they share; `tilt` (m,), by how much the curvature in own unknowns favours larger ones [nats for one
+    standard uncertainty], 0 where that is left out; `lean` (q + m,), by how much shared unknowns and errors
+    are favoured as the runs are spread as they are and not as wide as wide priors have it, counted from
+    `lean_from` (q + m,).
     """
 
     rig: Rig
@@ -167,6 +184,9 @@ class Model:
     shared: tuple[Parameter, ...]
     noise_estimated: bool
     errors: tuple[SharedError, ...]
+    tilt: Array
+    lean: Array
+    lean_from: Array
 
     @property
     def n_physical(self) -> int:
@@ -178,13 +198,22 @@ class Model:
         """Whether all fins are quick to solve."""
         return all(group.problem is None or group.problem.is_linear for group in self.groups)
 
-    def linearised(self, w: Sequence[Array], s: Array) -> "Model":
-        """Return the model with the effects of shared errors taken at own (R, p) and shared unknowns (q,)."""
-        groups = tuple(
-            replace(group, errors=_effects(self, group, own, s))
-            for group, own in zip(self.groups, w, strict=True)
-        )
-        return replace(self, groups=groups)
+    def linearised(self, w: Sequence[Array], s: Array, u: Array) -> "Model":
+        """Return the model with the effects of shared errors taken at a point.
+
+        Arguments: own unknowns (R, p) of each group, shared ones s (q,) and errors u (m,). Holes and lengths
+        are moved to where these have them, so that what is linear is only the way on from there.
+        """
+        kinds = [error.kind for error in self.errors]
+        moved = np.where(np.isin(kinds, ("position", "length")), u, 0.0)
+        groups = []
+        for group, own in zip(self.groups, w, strict=True):
+            there = replace(group, problem=_displaced(self, group, moved), anchor_errors=moved)
+            at = _at_predicted(there, own, s)
+            bends = _bends(self, at, own, s)
+            effects = _effects(self, at, own, s)
+            groups.append(replace(at, errors=effects, bends=bends, anchor=own, anchor_shared=s))
+        return replace(self, groups=tuple(groups))
 
 
 def pose(pool: Pool, candidate: Candidate) -> Model:
@@ -219,7 +248,11 @@ def pose(pool: Pool, candidate: Candidate) -> Model:
     if estimated:
         unknowns.append(Parameter("noise", DEFAULT_PRIORS["noise"][1]))
     errors = tuple(_shared_errors(rig, groups))
-    return Model(rig, candidate, tuple(groups), tuple(unknowns), estimated, errors)
+    m, q = len(errors), len(names)
+    nothing = np.zeros(q + m)
+    return Model(
+        rig, candidate, tuple(groups), tuple(unknowns), estimated, errors, nothing[q:], nothing, nothing
+    )
 
 
 def _possible(candidate: Candidate, rig: Rig, row: Row) -> Candidate:
@@ -247,6 +280,7 @@ def _group(
     variances, estimated, calibrations = _noise(measured.sensors, values)
     return Group(
         problem=problem,
+        stated=problem,
         sensors=measured.sensors,
         runs=np.array([order[row.name] for row in rows]),
         values=values,
@@ -271,6 +305,7 @@ def _isothermal_group(rig: Rig, rows: Sequence[Row], order: Mapping[str, int]) -
     variances, estimated, calibrations = _noise(sensors, values)
     return Group(
         problem=None,
+        stated=None,
         sensors=sensors,
         runs=np.array([order[row.name] for row in rows]),
         values=values,
@@ -309,6 +344,52 @@ def _noise(sensors: Sequence[Sensor], values: Array) -> tuple[Array, NDArray[np.
     estimated = np.isnan(random).any(axis=0)
     common = np.stack([part[1] for part in parts], axis=1)
     return np.where(estimated, 0.0, np.square(random)), np.asarray(estimated, dtype=bool), common
+
+
+def _at_predicted(group: Group, w: Array, s: Array) -> Group:
+    """Return the group with the errors that are a share of a reading as at what is predicted for it.
+
+    With shares of the readings themselves low ones would count for more than high ones: twice the square of
+    a noise of 3 % makes a bias of 0.2 %, which no number of runs averages out.
+    """
+    if not any(s.noise_relative is not None or s.calibration_relative is not None for s in group.sensors):
+        return group
+    runs = np.arange(group.size)
+    predicted = group.predict(w, _repeated(s, group.size), runs)[:, : group.values.shape[1]]
+    variances, _, calibrations = _noise(group.sensors, np.where(np.isfinite(predicted), predicted, 0.0))
+    relative = np.array([sensor.noise_relative is not None for sensor in group.sensors])
+    floor = SMALLEST_SHARE * np.abs(group.values)  # of a heat that a step has lost sight of
+    relative_sd = [sensor.noise_relative or 0.0 for sensor in group.sensors]
+    least = np.square(floor * relative_sd)
+    found = np.where(relative, np.maximum(variances, least), group.variances)
+    shared = np.array([sensor.calibration_relative is not None for sensor in group.sensors])
+    return replace(group, variances=found, calibrations=np.where(shared, calibrations, group.calibrations))
+
+
+def _displaced(model: Model, group: Group, moved: Array) -> Problem | None:
+    """Return the problem of a group with its holes and lengths moved by standard uncertainties (m,)."""
+    problem = group.stated
+    if problem is None or not moved.any():
+        return problem
+    by = {(error.kind, error.name): float(each) for error, each in zip(model.errors, moved, strict=True)}
+    geometry = {
+        name: replace(quantity, value=quantity.value + by.get(("length", name), 0.0) * quantity.sd)
+        for name, quantity in problem.rig.geometry.items()
+    }
+    rig = replace(problem.rig, geometry=geometry)
+    sensors = tuple(
+        sensor
+        if sensor.position is None
+        else replace(sensor, position=_inside(rig, sensor, by.get(("position", sensor.name), 0.0)))
+        for sensor in problem.measured.sensors
+    )
+    return replace(problem, rig=rig, measured=replace(problem.measured, sensors=sensors))
+
+
+def _inside(rig: Rig, sensor: Sensor, moved: float) -> float:
+    """Return where a sensor is that is moved by standard uncertainties, inside the fin [m]."""
+    assert sensor.position is not None, "only holes move"
+    return min(max(sensor.position + moved * sensor.position_sd, 0.0), rig.length)
 
 
 def _has_level(parameter: Parameter, read: set[str]) -> bool:
@@ -375,6 +456,32 @@ def _effects(model: Model, group: Group, w: Array, s: Array) -> Array:
                     found[:, i, column] = np.sqrt(OWN_SHARE) * group.calibrations[:, i]
                 elif sensor.name == error.name and error.kind == "position":
                     found[:, i, column] = slopes[:, i] * sensor.position_sd
+    return found
+
+
+def _bends(model: Model, group: Group, w: Array, s: Array) -> Array:
+    """Return how the effects on readings change with own and shared unknowns (R, n, p + q, m).
+
+    They matter: a conductivity that is higher and a heat that reads too little are one and the same for all
+    runs together, but only if what the error does grows with what is predicted, as it does.
+    """
+    n, p, q = group.values.shape[1], len(group.own), model.n_physical
+    found = np.zeros((group.size, n, p + q, len(model.errors)))
+    if group.problem is None:
+        return found
+    own = BEND * np.array([1.0 if each.transform == "identity" else 0.01 for each in group.own])
+    shared = BEND * np.array(
+        [1.0 if each.transform == "identity" else 0.01 for each in model.shared[:q]], dtype=np.float64
+    )
+    for c in range(p + q):
+        step = np.zeros(p + q)
+        step[c] = np.concatenate([own, shared])[c]
+        sides = []
+        for sign in (1, -1):
+            w_there, s_there = w + sign * step[:p], s + sign * step[p:]
+            at = _at_predicted(group, w_there, s_there)
+            sides.append(_effects(model, at, w_there, s_there)[:, :n])
+        found[:, :, c] = (sides[0] - sides[1]) / (2 * step[c])
     return found
 
 
