@@ -131,7 +131,12 @@ def _reason(error: FinbackError) -> str:
 
 
 def _uncertainty(row: Any, rig: Any) -> float:
-    """Return the standard uncertainty of a reading; of one that was set aside, as its sensor is stated."""
+    """Return the standard uncertainty of a reading; of one that was set aside, as its sensor is stated.
+
+    It is 0 for a heater that only limits the heat: what it reads is expected to be more.
+    """
+    if row.place == "heater" and not rig.losses_stated:
+        return 0.0
     if row.excluded is None:
         return float(row.uncertainty)
     sensor = rig.sensors[row.sensor]

@@ -94,7 +94,7 @@ def diagnose(
     quiet: Quiet = False,
     force: Force = False,
 ) -> int:
-    """Tell why a fin does less than it should, what that costs and what to measure next."""
+    """Tell why a fin does less than it should, and what to do."""
     from finback import diagnosis
     from finback.report import diagnosis_files, diagnosis_terminal
 
@@ -142,7 +142,7 @@ def batch(
         bool, typer.Option("--force", help="Start anew, and overwrite earlier results.")
     ] = False,
 ) -> int:
-    """Estimate every run of one or several tables, and go on where an earlier call has ended."""
+    """Estimate every run of one or several tables, and resume."""
     from contextlib import closing
 
     from finback import campaign, campaign_table
@@ -231,7 +231,7 @@ def correlate(
     quiet: Quiet = False,
     force: Force = False,
 ) -> int:
-    """Fit a law such as Nu = C Re^n Pr^(1/3) through many runs, with errors in both axes."""
+    """Fit a law such as Nu = C Re^n Pr^(1/3) through many runs."""
     from finback import correlate as correlating
     from finback import results as results_reader
     from finback import rig as rig_reader

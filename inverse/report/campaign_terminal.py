@@ -16,7 +16,7 @@ def summary(campaign: Campaign, digest: Digest) -> str:
     rate = f", {computed / campaign.seconds:.3g} a second" if computed and campaign.seconds > 0 else ""
     lines = [line for title in titles for line in wrap(title)]
     told = ", ".join(f"{digest.statuses[name]} {name}" for name in ("ok", "caution", "failed"))
-    lines += ["", *wrap(f"{digest.runs} runs: {told}")]
+    lines += ["", *wrap(f"{digest.runs} run{'s' * (digest.runs != 1)}: {told}")]
     earlier = f"{campaign.found} were in the ledger, " if campaign.found else ""
     lines += wrap(f"{earlier}{computed} computed in {campaign.seconds:.3g} s{rate}", "  ", "  ")
     if digest.sampled:
