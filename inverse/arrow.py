@@ -22,7 +22,7 @@ Array = NDArray[np.float64]
 
 PREDICTIONS = 16_384  # of a piece: as many as are quick and small
 LARGEST_STEP = 1.0  # of an own unknown in one step, in its widest sd or in a logarithm
-SHORTER = 0.3  # share of a step that is tried next
+SHORTER, SHORTEST = 0.3, 0.003  # share of a step that is tried next, and at which none is any more
 MOST_ROUNDS = 30
 SHARED_STEP = 1e-4  # of differences in shared unknowns, or a thousandth of their sd
 
@@ -34,11 +34,17 @@ class State:
     w: list[Array]
     u: Array
 
-    def taken(self, draws: NDArray[np.bool_], other: "State") -> "State":
-        """Return the state with these draws (draws,) from another."""
-        at = draws[:, None, None]
-        w = [np.where(at, theirs, own) for own, theirs in zip(self.w, other.w, strict=True)]
-        return State(w, np.where(draws[:, None], other.u, self.u))
+    def of(self, draws: NDArray[np.intp]) -> "State":
+        """Return the state of some draws alone."""
+        return State([own[draws] for own in self.w], self.u[draws])
+
+    def with_draws(self, draws: NDArray[np.intp], other: "State") -> "State":
+        """Return the state with these draws as in another, which has them alone."""
+        w, u = [own.copy() for own in self.w], self.u.copy()
+        for own, theirs in zip(w, other.w, strict=True):
+            own[draws] = theirs
+        u[draws] = other.u
+        return State(w, u)
 
     def moved(self, steps: "State", share: Array) -> "State":
         """Return the state moved by shares (draws,) of steps."""
@@ -75,6 +81,18 @@ class Solved:
     squares: list[Array]
     freedom: list[Array]
     scatter: float
+
+    def with_draws(self, draws: NDArray[np.intp], other: "Solved", chosen: NDArray[np.intp]) -> "Solved":
+        """Return what was solved, with these draws as the chosen ones of another."""
+        changed = {}
+        for name in ("cost", "gain", "log_det", "log_det_own", "border", "step"):
+            each = getattr(self, name).copy()
+            each[draws] = getattr(other, name)[chosen]
+            changed[name] = each
+        first = other if draws[0] == 0 else self
+        kept = {name: getattr(first, name) for name in ("spreads", "squares", "freedom", "scatter")}
+        steps = self.steps.with_draws(draws, other.steps.of(chosen))
+        return Solved(**changed, **kept, steps=steps, responses=first.responses)
 
 
 @dataclass
@@ -144,52 +162,24 @@ def solve(model: Model, state: State, s: Array, sigma: Array, shared: bool = Fal
 def settle(model: Model, state: State, s: Array, sigma: Array, tolerance: float) -> tuple[State, Solved]:
     """Find the best own unknowns and errors in common, with s and sigma held.
 
-    Arguments: as those of `solve`; tolerance [nats] of what a last step would gain, which is taken off the
-    cost. A step that does not lower the cost is shortened, draw by draw.
+    Arguments: as those of `solve`; tolerance [nats] of what a last step would gain, which is not taken. A
+    step that does not lower the cost is shortened, draw by draw; draws that have settled are left alone.
     """
-    share = np.ones(len(s))
     best, found = state, solve(model, state, s, sigma)
-    cost, steps, gain = found.cost, found.steps, found.gain
+    share = np.ones(len(s))
     for _ in range(MOST_ROUNDS):
-        active = gain > tolerance
-        if not active.any():
+        at = np.flatnonzero((found.gain > tolerance) & (share > SHORTEST))
+        if not len(at):
             break
-        trial = best.moved(steps, np.where(active, share, 0.0))
-        tried = solve(model, trial, s, sigma)
-        better = active & (tried.cost < cost)
+        trial = best.of(at).moved(found.steps.of(at), share[at])
+        tried = solve(model, trial, s[at], sigma[at])
+        better = tried.cost < found.cost[at]
+        share[at] = np.where(better, 1.0, share[at] * SHORTER)
         if better.any():
-            best = best.taken(better, trial)
-            at = better[:, None, None]
-            steps = State(
-                [np.where(at, new, old) for new, old in zip(tried.steps.w, steps.w, strict=True)],
-                np.where(better[:, None], tried.steps.u, steps.u),
-            )
-            cost = np.where(better, tried.cost, cost)
-            gain = np.where(better, tried.gain, gain)
-            found = _merged(found, tried, better)
-        share = np.where(better, 1.0, share * SHORTER)
-        if (share[active] < SHORTER**5).any():
-            gain = np.where(share < SHORTER**5, 0.0, gain)
+            chosen = np.flatnonzero(better)
+            best = best.with_draws(at[chosen], trial.of(chosen))
+            found = found.with_draws(at[chosen], tried, chosen)
     return best, found
-
-
-def _merged(old: Solved, new: Solved, better: NDArray[np.bool_]) -> Solved:
-    """Return what was solved, from the new one where that is better."""
-    first = new if better[0] else old
-    return Solved(
-        np.where(better, new.cost, old.cost),
-        np.where(better, new.gain, old.gain),
-        np.where(better, new.log_det, old.log_det),
-        np.where(better, new.log_det_own, old.log_det_own),
-        np.where(better[:, None, None], new.border, old.border),
-        np.where(better[:, None], new.step, old.step),
-        new.steps if better.all() else old.steps.taken(better, new.steps),
-        first.responses,
-        first.spreads,
-        first.squares,
-        first.freedom,
-        first.scatter,
-    )
 
 
 def cost_of(model: Model, state: State, s: Array, sigma: Array) -> Array:

@@ -33,7 +33,7 @@ FEWEST_SPREAD = 3  # runs of a group for each of their own unknowns, whose sprea
 ROUNDS = 3  # of the mode, and the effects of shared errors there
 NUDGE = 0.2  # of a shared error, for how the curvature in own unknowns goes with it
 DONE = 1e-6  # nats that a joint step would gain
-SETTLED = 1e-3  # nats that a step in own unknowns would gain, beyond which it is no more taken
+SETTLED = 0.03  # nats that a last step would gain: it is not taken, and its gain is right to a thousandth
 KEPT = 3_000_000  # numbers that are held at a time
 LARGEST_STEP = 1.0  # of a shared unknown in one step, in its coordinate, unless that is a temperature
 TRIED_RUNS = 30  # of a group, for where shared unknowns start
@@ -231,7 +231,7 @@ def start_of(model: Model) -> tuple[Array, State]:
     """Return where to set out from: shared unknowns (q + noise,) and a state of one draw, from a grid."""
     physical = model.shared[: model.n_physical]
     grids = [_grid_of(parameter) for parameter in physical]
-    choices = np.array(list(product(*grids))).reshape(-1, len(physical))
+    choices = np.array(list(product(*grids)), dtype=np.float64)
     few = [_fewer(group) for group in model.groups]
     costs = np.array([sum(_own_start(group, s)[1].sum() for group in few) for s in choices])
     s = choices[int(np.argmin(costs))]
