@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from finback import faults, restoring
 from finback.densities import Weighed
 from finback.faults import Suspicion
+from finback.findings import Finding
 from finback.healthy import Healthy
 from finback.hypotheses import Hypothesis
 from finback.quantity import format_number, pretty_unit
@@ -23,6 +24,7 @@ COSTED = 0.05  # and from which what it costs is shown
 LIKELY = 0.5  # and from which it is spoken of as it is
 OPEN = 0.15  # probability from which a cause is among those that cannot be told apart
 CLEAR = 0.8  # and from which nothing is left to tell
+STEEP = 0.2  # of the excess temperature of a plate, that falls over a joint: worth a look in any case
 HEALTHY = "healthy"
 UNSEEN_JOINT = Suspect("joint", ODDS["joint"])
 """A bad joint where nothing reads the plate: it stays as likely as it was."""
@@ -169,6 +171,24 @@ def costs(parts: Parts, suspicions: Sequence[Suspicion]) -> list[Cost]:
             found.append(replace(put_right, heat_now=now.heat, base_now=now.base_temperature))
     found.append(line(HEALTHY, None, [(share, effects.healthy) for share, _, effects in parts]))
     return found
+
+
+def unjudged_joint(known: Healthy, parts: Parts) -> list[Finding]:
+    """Return what the readings say of a joint of which nothing says what a healthy one has."""
+    if "joint" in known.priors or not all("joint" in effects.values for _, _, effects in parts):
+        return []
+    found = restoring.pooled(
+        [(share, effects.values["joint"]) for share, _, effects in parts], UNITS["joint"]
+    )
+    steps = [(share, effects.values["plate"] - effects.now[1]) for share, _, effects in parts]
+    whole = [(share, effects.values["plate"] - effects.values["air"]) for share, _, effects in parts]
+    step, excess = (restoring.pooled(each, "K").median for each in (steps, whole))
+    message = (
+        f"The joint has {_number(found.median)} {pretty_unit(found.unit)} (95 %: {_number(found.low95)} to "
+        f"{_number(found.high95)}), a step of {_number(step, 2)} K of the {_number(excess, 2)} K between "
+        "plate and air; nothing says what a healthy one has."
+    )
+    return [Finding("joint", "caution" if abs(step) > STEEP * abs(excess) else "note", message)]
 
 
 def together(every: Sequence[Hypothesis], shares: Array) -> list[Together]:

@@ -259,7 +259,12 @@ def _assemble(
         next_measurements=planning.rank(rig, every, np.random.SeedSequence(seed)),
         cannot_tell=tuple(causes.cannot_tell(listed)),
         missing=known.missing,
-        findings=(*concerns.thick_fin(float(biot[0])), *known.findings, *rig.assumed),
+        findings=(
+            *causes.unjudged_joint(known, parts),
+            *concerns.thick_fin(float(biot[0])),
+            *known.findings,
+            *rig.assumed,
+        ),
         profile=_profile(likeliest),
         seed=seed,
         provenance=provenance(rig, readings),

@@ -12,8 +12,8 @@ from rigs import Truth, draw, exact_readings, pin_rig
 
 import finback
 from finback import diagnosis, readings, rig
-from finback.datasets import path
 from finback.causes import Cause
+from finback.datasets import path
 from finback.diagnosis import Diagnosis
 from finback.models.constants import ZERO_CELSIUS
 from finback.quantity import Quantity
@@ -157,6 +157,24 @@ def test_a_rig_that_expects_nothing_is_told_which_lines_to_add() -> None:
     for line in ("expected_h =", "[air]", "conductivity =", "[material]", "expected =", "[joint]"):
         assert line in text
     assert first(found).code == "healthy"
+
+
+def test_a_joint_that_cannot_be_judged_is_told_with_its_step() -> None:
+    found = diagnose(Truth(joint=5e-4), seed=None, expected_joint=None)
+    (joint,) = [finding for finding in found.findings if finding.code == "joint"]
+    assert joint.severity == "caution"
+    assert "5.0" in joint.message or "4.9" in joint.message
+    assert "nothing says what a healthy one has" in joint.message
+
+
+@pytest.mark.parametrize("places", [("plate", "air", "heat"), ("plate", "air", "heater")])
+def test_an_expectation_that_is_too_low_is_no_fault_of_the_fin(places: tuple[str, ...]) -> None:
+    found = diagnose(Truth(), seed=None, places=places, expected_coefficient=Quantity(22.0, 3.3))
+    assert first(found).name == "more convection than expected"
+    assert "check what is expected" in first(found).message
+    assert found.fin_healthy_probability is not None
+    assert found.fin_healthy_probability > 0.7
+    assert not any(cause.sensor == "PH" for cause in found.causes)  # it supplies enough
 
 
 # what is written
