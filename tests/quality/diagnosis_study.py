@@ -2,8 +2,8 @@
 
 Run `python tests/quality/diagnosis_study.py trial 0 100` for the first hundred. Beside each diagnosis stands
 that of an ideal observer, who knows how the rigs are made: the size of every fault, how often each is met,
-and every uncertainty. Its evidence comes from code of its own: the textbook's pin with a convective tip behind
-a joint, and Laplace's method about the mode of each hypothesis.
+and every uncertainty. Its evidence comes from code of its own: the textbook's pin with a convective tip
+behind a joint, and Laplace's method about the mode of each hypothesis.
 
 `restored` in place of `trial` takes rigs with a cause in the fin alone, puts it right by hand, and compares
 the heat that this brings with what the diagnosis promised. Nothing here is a measurement.
