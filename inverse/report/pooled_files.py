@@ -131,7 +131,8 @@ def summary(found: Pooled, folder: Path) -> str:
     )
     lines = ["", f"Shared by all runs ({counts})"]
     for each in found.shared.values():
-        lines += wrap(f"{each.label}: {each.in_words()}", "    ", "  ")
+        known = f", 95 % in {phrases.interval(each)}" if each.median is not None else ""
+        lines += wrap(f"{each.label}: {phrases.value(each)}{known}", "    ", "  ")
     for finding in found.findings:
         if finding.severity != "note":
             lines += wrap(f"{finding.code}: {phrases.clean(finding.message, 1000)}", "    ", "  ")
