@@ -160,8 +160,8 @@ def _expected(rig: Rig, readings: Readings, reads_plate: bool) -> Healthy:
 
 def _bases(known: Healthy, readings: Readings) -> list[Base]:
     """Return the candidates that causes are weighed on: as the rig draws its fin, and with another tip."""
-    rig = known.rig
-    chosen = [each for each in candidates.enumerate_candidates(rig, readings) if not each.heavy_tails]
+    rig = replace(known.rig, noise=("normal",))  # a wrong reading is a cause of its own here
+    chosen = list(candidates.enumerate_candidates(rig, readings))
     if "joint" in known.priors:  # a healthy fin has the one that is expected
         chosen = [each for each in chosen if each.joint]
     problems = candidates.affordable([posing.pose(rig, readings, each) for each in chosen])
@@ -231,7 +231,8 @@ def _assemble(
     pairs = list(zip(shares.tolist(), every, strict=True))
     none = sum(share for share, each in pairs if not each.suspects)
     sound = sum(share for share, each in pairs if not any(s.of_the_fin for s in each.suspects))
-    judged = any(suspect.of_the_fin for each in every for suspect in each.suspects)
+    of_the_fin = {suspect for each in every for suspect in each.suspects if suspect.of_the_fin}
+    judged = bool(of_the_fin - {UNSEEN_JOINT})
     random = np.random.default_rng(seed)
     tip = rig.tip
     parts = [

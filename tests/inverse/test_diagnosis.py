@@ -177,6 +177,22 @@ def test_an_expectation_that_is_too_low_is_no_fault_of_the_fin(places: tuple[str
     assert not any(cause.sensor == "PH" for cause in found.causes)  # it supplies enough
 
 
+def test_heavy_tailed_noise_alone_is_no_obstacle() -> None:
+    found = diagnose(Truth(), {"T4": 4.0}, noise=0.15)
+    heavy = described()
+    run, _ = draw(heavy, Truth(), np.random.default_rng(1))
+    wrong = Readings("r", dict(run.values) | {"T4": run.values["T4"] + 4.0})
+    same = diagnosis.diagnose(replace(heavy, noise=("heavy-tailed",)), wrong)
+    assert (first(same).code, first(same).sensor) == (first(found).code, first(found).sensor)
+    assert first(same).sensor == "T4"
+
+
+def test_what_nothing_judges_has_no_probability() -> None:
+    unknown = {"conductivity": None, "expected_coefficient": None, "expected_joint": None, "tip": None}
+    found = diagnose(Truth(joint=None), seed=None, places=("air",), **unknown)
+    assert found.fin_healthy_probability is None
+
+
 # what is written
 
 
